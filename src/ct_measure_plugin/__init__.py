@@ -1,0 +1,1 @@
+"""Docked measuring tools for CT volumes in napari."""

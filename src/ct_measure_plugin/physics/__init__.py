@@ -1,0 +1,35 @@
+"""Arrays and millimetres in, frozen results out.
+
+What belongs here: the definitions and algorithms of the measurements, the shapes of regions and
+results, the Volume. What it may import: numpy, scipy, scikit-image, the standard library's maths
+and typing, and xraydb in the one file that looks up attenuation. What it must not do: read files
+or clocks, draw random numbers without a given seed, know of DICOM, napari or Qt.
+
+Each measurement's function has the measurement's name and lives in the file of that name.
+"""
+
+from __future__ import annotations
+
+from ct_measure_plugin.physics.results import (
+    Caution,
+    Curve,
+    NotMeasured,
+    Picture,
+    Quantity,
+    Result,
+    ResultGroup,
+)
+from ct_measure_plugin.physics.volume import Acquisition, Source, Volume
+
+__all__ = [
+    "Acquisition",
+    "Caution",
+    "Curve",
+    "NotMeasured",
+    "Picture",
+    "Quantity",
+    "Result",
+    "ResultGroup",
+    "Source",
+    "Volume",
+]

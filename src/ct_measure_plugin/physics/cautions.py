@@ -1,0 +1,81 @@
+"""The one registry of caution codes.
+
+A :class:`~ct_measure_plugin.physics.results.Caution` may carry only a code that is listed
+here, and each code has a section of the same name on the page ``docs/cautions.md``, where it
+is explained at length. A test holds both.
+
+To add one: a line below, a section in the page.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Literal
+
+__all__ = ["KINDS", "CautionKind"]
+
+Level = Literal["note", "warning"]
+
+
+@dataclass(frozen=True, slots=True)
+class CautionKind:
+    """What a caution code stands for.
+
+    Attributes
+    ----------
+    title : str
+        A few words, shown as its heading.
+    level : {"note", "warning"}
+        A note says how a number is to be read; a warning says that it may mislead.
+    """
+
+    title: str
+    level: Level
+
+    page: str = "cautions.md"
+
+
+def _note(title: str) -> CautionKind:
+    return CautionKind(title, "note")
+
+
+def _warning(title: str) -> CautionKind:
+    return CautionKind(title, "warning")
+
+
+#: code -> kind. Codes are lower-case words joined by hyphens and never change their meaning.
+KINDS: dict[str, CautionKind] = {
+    # --- the series -----------------------------------------------------------------
+    "lossy-compression": _warning("Lossy compressed pixels"),
+    "uneven-spacing": _warning("Slices are not evenly spaced"),
+    "missing-slice": _warning("A slice is missing"),
+    "duplicate-slice": _warning("Two images at one position"),
+    "gantry-tilt": _warning("Slices lean against their stacking direction"),
+    "tilt-tag-disagrees": _note("Gantry tilt tag disagrees with the orientation"),
+    "oblique": _note("Slices lie oblique in the patient"),
+    "mixed-thickness": _warning("Slice thickness changes within the series"),
+    "spacing-tag-wrong": _note("A spacing tag contradicts the positions"),
+    "padding": _note("Padding pixels are masked"),
+    "padding-undeclared": _warning("Fill outside the reconstruction is not declared"),
+    "padding-mistyped": _note("Padding value is stored with the wrong sign type"),
+    "not-hu": _warning("Values are not in HU"),
+    "hu-assumed": _warning("HU were assumed"),
+    "spacing-assumed": _warning("Pixel size was entered by hand"),
+    "implausible-hu": _warning("HU look wrong"),
+    "headerless-file": _note("DICOM file without preamble or file meta"),
+    "missing-geometry": _warning("Position or orientation is missing"),
+    "unreadable-files": _warning("Files that could not be read"),
+    "split-series": _note("One series UID holds several volumes"),
+    "simulated": _note("Simulated data"),
+    # --- the region -----------------------------------------------------------------
+    "clipped-values": _warning("Values at the end of the stored range"),
+    "padding-excluded": _warning("Padding inside the region was left out"),
+    "outside-image": _warning("The region reaches outside the image"),
+    "few-pixels": _warning("Few pixels"),
+    "not-finite": _warning("Pixels without a finite value were left out"),
+    # --- the numbers ----------------------------------------------------------------
+    "no-uncertainty": _note("A number without a stated uncertainty"),
+    "correlated-noise": _note("Noise correlation estimated from the region"),
+    "independence-assumed": _note("Independent pixels were assumed"),
+    "few-independent-samples": _warning("Few independent samples"),
+}

@@ -1,0 +1,316 @@
+"""Regions: shapes in millimetres, on one slice, over a slice range, or on every slice.
+
+The frame is the *image frame* of a Volume: z along the slice normal, y down the rows, x along the
+columns, in mm. For a DICOM series it is the patient frame seen along the image's own axes, so a
+region drawn on one reconstruction measures another of different field of view; for a plain array
+its origin is the centre of voxel (0, 0, 0).
+
+Angles are degrees counter-clockwise as seen on the screen, from +x, with +y pointing down.
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, ClassVar, TypeAlias
+
+import numpy as np
+
+from ct_measure_plugin.errors import RegionError
+
+if TYPE_CHECKING:
+    from numpy.typing import NDArray
+
+__all__ = ["Box", "Disc", "Ellipse", "Mask", "Polygon", "Region", "Segment", "direction"]
+
+Point: TypeAlias = tuple[float, float]
+Extent: TypeAlias = float | tuple[float, float] | None
+
+
+def direction(angle_deg: float) -> Point:
+    """Return the unit vector (y, x) at an angle counter-clockwise on the screen from +x.
+
+    >>> direction(90.0) == (-1.0, math.cos(math.pi / 2))
+    True
+    """
+    turn = math.radians(angle_deg)
+    return -math.sin(turn), math.cos(turn)
+
+
+def _finite(name: str, *values: float) -> None:
+    if not all(math.isfinite(value) for value in values):
+        raise RegionError(name, "must be finite", values)
+
+
+def _positive(name: str, *values: float) -> None:
+    _finite(name, *values)
+    if not all(value > 0 for value in values):
+        raise RegionError(name, "must be greater than 0", values if len(values) > 1 else values[0])
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Region:
+    """Parent of all regions.
+
+    Attributes
+    ----------
+    z_mm : float, (float, float) or None
+        The slice nearest to a position, the slices whose centres lie in a range (both ends
+        included), or None for every slice.
+    name : str
+        A name people gave it; shown in tables and records.
+    """
+
+    kind: ClassVar[str] = "region"
+
+    z_mm: Extent = None
+    name: str = ""
+
+    def __post_init__(self) -> None:
+        if isinstance(self.z_mm, tuple):
+            _finite("z_mm", *self.z_mm)
+            if self.z_mm[0] > self.z_mm[1]:
+                raise RegionError("z_mm", "must be given as (low, high)", self.z_mm)
+        elif self.z_mm is not None:
+            _finite("z_mm", self.z_mm)
+
+
+@dataclass(frozen=True, slots=True)
+class Disc(Region):
+    """A disc; over a slice range, a cylinder.
+
+    Attributes
+    ----------
+    center_mm : (float, float)
+        y and x of the centre.
+    radius_mm : float
+        Radius.
+
+    Examples
+    --------
+    >>> Disc((12.0, -3.5), 10.0, z_mm=40.0).area_mm2
+    314.1592653589793
+    """
+
+    kind: ClassVar[str] = "disc"
+
+    center_mm: Point
+    radius_mm: float
+
+    def __post_init__(self) -> None:
+        Region.__post_init__(self)
+        _finite("center_mm", *self.center_mm)
+        _positive("radius_mm", self.radius_mm)
+
+    @property
+    def area_mm2(self) -> float:
+        """Area in closed form."""
+        return math.pi * self.radius_mm**2
+
+
+@dataclass(frozen=True, slots=True)
+class Ellipse(Region):
+    """An ellipse.
+
+    Attributes
+    ----------
+    center_mm : (float, float)
+        y and x of the centre.
+    radii_mm : (float, float)
+        Semi-axis across and semi-axis along the direction `angle_deg`; at angle 0 they are the
+        vertical and the horizontal one.
+    angle_deg : float
+        Direction of the second semi-axis.
+    """
+
+    kind: ClassVar[str] = "ellipse"
+
+    center_mm: Point
+    radii_mm: Point
+    angle_deg: float = 0.0
+
+    def __post_init__(self) -> None:
+        Region.__post_init__(self)
+        _finite("center_mm", *self.center_mm)
+        _finite("angle_deg", self.angle_deg)
+        _positive("radii_mm", *self.radii_mm)
+
+    @property
+    def area_mm2(self) -> float:
+        """Area in closed form."""
+        return math.pi * self.radii_mm[0] * self.radii_mm[1]
+
+
+@dataclass(frozen=True, slots=True)
+class Box(Region):
+    """A rectangle, possibly turned.
+
+    Attributes
+    ----------
+    center_mm : (float, float)
+        y and x of the centre.
+    size_mm : (float, float)
+        Height and width; at angle 0 along y and x.
+    angle_deg : float
+        Direction of the width.
+    """
+
+    kind: ClassVar[str] = "box"
+
+    center_mm: Point
+    size_mm: Point
+    angle_deg: float = 0.0
+
+    def __post_init__(self) -> None:
+        Region.__post_init__(self)
+        _finite("center_mm", *self.center_mm)
+        _finite("angle_deg", self.angle_deg)
+        _positive("size_mm", *self.size_mm)
+
+    @property
+    def area_mm2(self) -> float:
+        """Area in closed form."""
+        return self.size_mm[0] * self.size_mm[1]
+
+    @property
+    def vertices_mm(self) -> tuple[Point, ...]:
+        """The four corners, counter-clockwise on the screen, as (y, x)."""
+        along_y, along_x = direction(self.angle_deg)
+        across_y, across_x = direction(self.angle_deg + 90.0)
+        h, w = self.size_mm[0] / 2, self.size_mm[1] / 2
+        y, x = self.center_mm
+        return tuple(
+            (y + i * w * along_y + j * h * across_y, x + i * w * along_x + j * h * across_x)
+            for i, j in ((-1, -1), (1, -1), (1, 1), (-1, 1))
+        )
+
+
+@dataclass(frozen=True, slots=True)
+class Polygon(Region):
+    """A simple polygon, convex or not.
+
+    Attributes
+    ----------
+    vertices_mm : tuple of (float, float)
+        The corners as (y, x), in either sense of rotation; closed by itself.
+    """
+
+    kind: ClassVar[str] = "polygon"
+
+    vertices_mm: tuple[Point, ...]
+
+    def __post_init__(self) -> None:
+        Region.__post_init__(self)
+        if len(self.vertices_mm) < 3:
+            raise RegionError("vertices_mm", "must have at least 3 corners", len(self.vertices_mm))
+        for vertex in self.vertices_mm:
+            _finite("vertices_mm", *vertex)
+        if _crosses_itself(self.vertices_mm):
+            raise RegionError(
+                "vertices_mm", "must not cross itself", f"{len(self.vertices_mm)} corners that do"
+            )
+        if self.area_mm2 <= 0:
+            raise RegionError("vertices_mm", "must enclose an area", self.area_mm2)
+
+    @property
+    def area_mm2(self) -> float:
+        """Area by the shoelace formula."""
+        y, x = np.asarray(self.vertices_mm, dtype=float).T
+        y, x = y - y.mean(), x - x.mean()
+        return float(abs(np.sum(x * np.roll(y, -1) - np.roll(x, -1) * y)) / 2)
+
+
+@dataclass(frozen=True, slots=True)
+class Segment(Region):
+    """A straight line from A to B, with a width across which a profile is averaged.
+
+    Attributes
+    ----------
+    start_mm, end_mm : (float, float)
+        The ends as (y, x).
+    width_mm : float
+        Full width across the line; 0 for the line itself.
+    """
+
+    kind: ClassVar[str] = "segment"
+
+    start_mm: Point
+    end_mm: Point
+    width_mm: float = 0.0
+
+    def __post_init__(self) -> None:
+        Region.__post_init__(self)
+        _finite("start_mm", *self.start_mm)
+        _finite("end_mm", *self.end_mm)
+        _finite("width_mm", self.width_mm)
+        if self.width_mm < 0:
+            raise RegionError("width_mm", "must not be negative", self.width_mm)
+        if self.length_mm <= 0:
+            raise RegionError("end_mm", "must differ from start_mm", self.end_mm)
+
+    @property
+    def length_mm(self) -> float:
+        """Distance between the ends."""
+        return math.dist(self.start_mm, self.end_mm)
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Mask(Region):
+    """A region given pixel by pixel, as from a label map.
+
+    Attributes
+    ----------
+    inside : ndarray of bool, shape (ny, nx) or (nz, ny, nx)
+        True inside. A flat mask lies on the slices that `z_mm` names; a deep one brings its own.
+    spacing_mm : (float, float, float)
+        dz, dy, dx of the mask's grid.
+    origin_mm : (float, float, float)
+        z, y, x of the centre of its first voxel.
+    """
+
+    kind: ClassVar[str] = "mask"
+
+    inside: NDArray[np.bool_]
+    spacing_mm: tuple[float, float, float]
+    origin_mm: tuple[float, float, float] = (0.0, 0.0, 0.0)
+
+    def __post_init__(self) -> None:
+        Region.__post_init__(self)
+        if self.inside.ndim not in (2, 3):
+            raise RegionError("inside", "must be 2-D or 3-D", self.inside.shape)
+        if self.inside.dtype != np.bool_:
+            raise RegionError("inside", "must be an array of bool", self.inside.dtype)
+        if not self.inside.any():
+            raise RegionError("inside", "must hold at least one pixel", "none")
+        _positive("spacing_mm", *self.spacing_mm)
+        _finite("origin_mm", *self.origin_mm)
+
+    @property
+    def area_mm2(self) -> float:
+        """Area of the pixels inside, summed over slices."""
+        return float(np.count_nonzero(self.inside)) * self.spacing_mm[1] * self.spacing_mm[2]
+
+
+def _crosses_itself(vertices: tuple[Point, ...]) -> bool:
+    """Tell whether any two edges that share no corner touch or cross."""
+    points = np.asarray(vertices, dtype=float)
+    n = len(points)
+    ends = np.roll(points, -1, axis=0)
+
+    def side(a: NDArray[np.float64], b: NDArray[np.float64], c: NDArray[np.float64]) -> NDArray[np.float64]:
+        cross = (b[..., 0] - a[..., 0]) * (c[..., 1] - a[..., 1]) - (b[..., 1] - a[..., 1]) * (
+            c[..., 0] - a[..., 0]
+        )
+        return np.sign(cross)
+
+    for i in range(n - 2):
+        stop = n - 1 if i == 0 else n  # the last edge touches the first one at a corner
+        others = slice(i + 2, stop)
+        c, d = points[others], ends[others]
+        if len(c) == 0:
+            continue
+        a, b = points[i], ends[i]
+        crossing = (side(a, b, c) * side(a, b, d) < 0) & (side(c, d, a) * side(c, d, b) < 0)
+        if bool(crossing.any()):
+            return True
+    return False

@@ -132,5 +132,5 @@ class RecordError(CtMeasureError):
     """A record or the logbook cannot be read or written."""
 
 
-class Cancelled(CtMeasureError):
+class Cancelled(CtMeasureError):  # noqa: N818 - a wish fulfilled, not an error
     """The user stopped the work; nothing was kept of it."""

@@ -10,6 +10,7 @@ Each measurement's function has the measurement's name and lives in the file of 
 
 from __future__ import annotations
 
+from ct_measure_plugin.physics.region_statistics import RegionStatistics, region_statistics
 from ct_measure_plugin.physics.results import (
     Caution,
     Curve,
@@ -28,8 +29,10 @@ __all__ = [
     "NotMeasured",
     "Picture",
     "Quantity",
+    "RegionStatistics",
     "Result",
     "ResultGroup",
     "Source",
     "Volume",
+    "region_statistics",
 ]

@@ -297,7 +297,9 @@ def _crosses_itself(vertices: tuple[Point, ...]) -> bool:
     n = len(points)
     ends = np.roll(points, -1, axis=0)
 
-    def side(a: NDArray[np.float64], b: NDArray[np.float64], c: NDArray[np.float64]) -> NDArray[np.float64]:
+    def side(
+        a: NDArray[np.float64], b: NDArray[np.float64], c: NDArray[np.float64]
+    ) -> NDArray[np.float64]:
         cross = (b[..., 0] - a[..., 0]) * (c[..., 1] - a[..., 1]) - (b[..., 1] - a[..., 1]) * (
             c[..., 0] - a[..., 0]
         )

@@ -54,7 +54,7 @@ class Quantity:
 
     Examples
     --------
-    >>> print(Quantity(31.2345, "HU", 0.0421))
+    >>> print(Quantity(31.2341, "HU", 0.0421))
     31.234 ± 0.042 HU
     >>> print(Quantity(81.0, "px", 0.0))
     81 px

@@ -1,0 +1,102 @@
+"""What every measurement is: a name, settings, regions, and one method."""
+
+from __future__ import annotations
+
+from abc import ABC, abstractmethod
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, ClassVar
+
+from pydantic import BaseModel, ConfigDict
+
+from ct_measure_plugin.errors import RegionError
+
+if TYPE_CHECKING:
+    from collections.abc import Sequence
+
+    from ct_measure_plugin.physics.regions import Region
+    from ct_measure_plugin.physics.results import NotMeasured, Result
+    from ct_measure_plugin.physics.volume import Volume
+
+__all__ = ["Measurement", "RegionNeed", "Settings"]
+
+
+class Settings(BaseModel):
+    """Parent of all settings: frozen, complete, and strict about unknown names.
+
+    A field's type makes its control in the form, its description the tooltip and the command's
+    help.
+    """
+
+    model_config = ConfigDict(frozen=True, extra="forbid")
+
+
+@dataclass(frozen=True, slots=True)
+class RegionNeed:
+    """Which regions a measurement takes.
+
+    Attributes
+    ----------
+    kinds : tuple of str
+        Kinds it accepts ("disc", "ellipse", "box", "polygon", "segment", "mask").
+    at_least : int
+        How many it needs.
+    together : bool
+        True if it takes all regions as one set and gives one result; False if it measures each
+        region by itself.
+    """
+
+    kinds: tuple[str, ...]
+    at_least: int = 1
+    together: bool = False
+
+
+AREAS = ("disc", "ellipse", "box", "polygon", "segment", "mask")
+
+
+class Measurement(ABC):
+    """One kind of measurement.
+
+    Subclasses set the class attributes and implement :meth:`measure`.
+
+    Attributes
+    ----------
+    name : str
+        The public name, the same as the physics function's.
+    title : str
+        What docks, tables and reports call it.
+    summary : str
+        One sentence.
+    settings_type : type of Settings
+        Its settings.
+    regions : RegionNeed
+        The regions it takes.
+    columns : tuple of str
+        Result fields worth a column in a narrow table, in order.
+    """
+
+    name: ClassVar[str]
+    title: ClassVar[str]
+    summary: ClassVar[str]
+    settings_type: ClassVar[type[Settings]]
+    regions: ClassVar[RegionNeed]
+    columns: ClassVar[tuple[str, ...]]
+
+    @abstractmethod
+    def measure(
+        self, volume: Volume, regions: Sequence[Region], settings: Settings
+    ) -> Result | NotMeasured:
+        """Measure the regions on the volume: one region, or all where `regions.together` is set."""
+
+    def check_regions(self, regions: Sequence[Region]) -> None:
+        """Raise RegionError if the regions are not what this measurement takes."""
+        if len(regions) < self.regions.at_least:
+            raise RegionError(
+                "regions",
+                f"must hold at least {self.regions.at_least} for {self.name}",
+                len(regions),
+            )
+        for region in regions:
+            if region.kind not in self.regions.kinds:
+                raise RegionError(
+                    "regions", f"must be of kind {', '.join(self.regions.kinds)}", region.kind
+                )

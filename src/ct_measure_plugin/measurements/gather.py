@@ -1,0 +1,136 @@
+"""Pixels of a region out of a Volume: values, coverage, and what had to be left out."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from ct_measure_plugin.physics.coverage import Rule, plane_coverage, slices_of
+from ct_measure_plugin.physics.results import Caution, NotMeasured
+
+if TYPE_CHECKING:
+    from numpy.typing import NDArray
+
+    from ct_measure_plugin.physics.regions import Region
+    from ct_measure_plugin.physics.volume import Volume
+
+    Floats = NDArray[np.float64]
+
+__all__ = ["Gathered", "gather"]
+
+#: Share of a region's pixels at the end of the stored range from which its mean and spread are
+#: biased beyond use: 0.1 % (the clipped tail of a Gaussian then starts about 3 SD out).
+CLIPPED_SHARE = 1e-3
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Gathered:
+    """A region's pixels.
+
+    Attributes
+    ----------
+    values, weights : ndarray, shape (nz, h, w) or, for one slice, (h, w)
+        CT numbers and coverage on the crop; weight 0 where a pixel was left out.
+    slices : list of int
+        Indices of the slices.
+    spacing_mm : tuple of float
+        Of the crop's axes.
+    cautions : tuple of Caution
+        The volume's, and what was left out here.
+    """
+
+    values: Floats
+    weights: Floats
+    slices: list[int]
+    spacing_mm: tuple[float, ...]
+    cautions: tuple[Caution, ...]
+
+
+def gather(volume: Volume, region: Region, *, rule: Rule = "area") -> Gathered | NotMeasured:
+    """Return the pixels of a region, with padding and the outside left out and cautioned.
+
+    NotMeasured if the region misses the volume or holds only padding.
+    """
+    slices = slices_of(region, volume)
+    positions = volume.positions_mm
+    covers = []
+    for k in slices:
+        cover = plane_coverage(
+            region,
+            volume.shape[1:],
+            spacing_mm=volume.spacing_mm[1:],
+            origin_mm=volume.origin_mm[1:],
+            rule=rule,
+            z_mm=float(positions[k]),
+        )
+        if cover.weights.any():
+            covers.append((k, cover))
+    if not covers:
+        return NotMeasured("the region lies outside the volume", "move it onto the image")
+    rows, columns = _union([c.rows for _, c in covers]), _union([c.columns for _, c in covers])
+    shape = (len(covers), rows.stop - rows.start, columns.stop - columns.start)
+    values, weights = np.zeros(shape), np.zeros(shape)
+    padded = 0
+    clipped = 0
+    for i, (k, cover) in enumerate(covers):
+        plane = np.asarray(volume.hu[k, rows, columns])
+        values[i] = plane
+        own = weights[i, _within(cover.rows, rows), _within(cover.columns, columns)]
+        own[...] = cover.weights
+        padding = volume.padding(k, plane)
+        if padding is not None:
+            padded += int(np.count_nonzero(padding & (weights[i] > 0)))
+            weights[i][padding] = 0.0
+        if volume.representable_hu is not None:
+            low, high = volume.representable_hu
+            clipped += int(np.count_nonzero(((plane <= low) | (plane >= high)) & (weights[i] > 0)))
+    outside = max(c.outside for _, c in covers)
+    cautions = (*volume.cautions, *_left_out(outside, padded, clipped, int((weights > 0).sum())))
+    if not weights.any():
+        return NotMeasured("the region holds only padding", "move it onto the image", cautions)
+    if len(covers) == 1:
+        values, weights = values[0], weights[0]
+        spacing: tuple[float, ...] = volume.spacing_mm[1:]
+    else:
+        spacing = volume.spacing_mm
+    return Gathered(values, weights, [k for k, _ in covers], spacing, cautions)
+
+
+def _union(spans: list[slice]) -> slice:
+    return slice(min(s.start for s in spans), max(s.stop for s in spans))
+
+
+def _within(inner: slice, outer: slice) -> slice:
+    return slice(inner.start - outer.start, inner.stop - outer.start)
+
+
+def _left_out(outside: float, padded: int, clipped: int, kept: int) -> list[Caution]:
+    found = []
+    if outside > 0:
+        found.append(
+            Caution(
+                "outside-image",
+                f"{100 * outside:.1f} % of the region lies outside the image and was left out.",
+                "Move the region onto the image.",
+            )
+        )
+    if padded:
+        found.append(
+            Caution(
+                "padding-excluded",
+                f"{padded} padding pixels inside the region were left out.",
+                "Keep the region within the reconstructed circle.",
+            )
+        )
+    if kept and clipped > CLIPPED_SHARE * kept:
+        found.append(
+            Caution(
+                "clipped-values",
+                f"{clipped} of {kept} pixels stand at the end of the stored range; mean and SD are"
+                " biased.",
+                "Reconstruct with an extended CT-number range, or measure elsewhere.",
+            )
+        )
+    return found

@@ -1,0 +1,77 @@
+"""Statistics of the pixels in each region."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+from typing import TYPE_CHECKING, ClassVar, Literal, cast
+
+from pydantic import Field
+
+from ct_measure_plugin.measurements.base import AREAS, Measurement, RegionNeed, Settings
+from ct_measure_plugin.measurements.gather import gather
+from ct_measure_plugin.physics.region_statistics import region_statistics
+from ct_measure_plugin.physics.results import NotMeasured
+
+if TYPE_CHECKING:
+    from collections.abc import Sequence
+
+    from ct_measure_plugin.physics.region_statistics import RegionStatistics
+    from ct_measure_plugin.physics.regions import Region
+    from ct_measure_plugin.physics.volume import Volume
+
+__all__ = ["MeasureRegionStatistics", "RegionStatisticsSettings"]
+
+#: Fewer pixels than this are refused: a spread from so few tells nothing (common practice).
+TOO_FEW_PIXELS = 9
+
+
+class RegionStatisticsSettings(Settings):
+    """Settings of region statistics."""
+
+    coverage: Literal["area", "center"] = Field(
+        "area",
+        title="Pixel weighting",
+        description="area: border pixels count by the exact fraction inside; center: a pixel"
+        " counts whole if its centre lies inside",
+    )
+
+
+class MeasureRegionStatistics(Measurement):
+    """Mean, SD, extremes, median and shape of the pixels in a region."""
+
+    name: ClassVar[str] = "region_statistics"
+    title: ClassVar[str] = "Region statistics"
+    summary: ClassVar[str] = "Mean, SD, area and extremes of the pixels in each region."
+    settings_type: ClassVar[type[Settings]] = RegionStatisticsSettings
+    regions: ClassVar[RegionNeed] = RegionNeed(AREAS)
+    columns: ClassVar[tuple[str, ...]] = (
+        "mean",
+        "sd",
+        "n",
+        "area",
+        "volume",
+        "minimum",
+        "maximum",
+        "median",
+    )
+
+    def measure(
+        self, volume: Volume, regions: Sequence[Region], settings: Settings
+    ) -> RegionStatistics | NotMeasured:
+        """Measure one region."""
+        wanted = cast("RegionStatisticsSettings", settings)
+        found = gather(volume, regions[0], rule=wanted.coverage)
+        if isinstance(found, NotMeasured):
+            return found
+        count = int((found.weights > 0).sum())
+        if count < TOO_FEW_PIXELS:
+            return NotMeasured(
+                f"the region holds {count} pixel{'s' * (count != 1)};"
+                f" at least {TOO_FEW_PIXELS} are needed",
+                "draw it larger, or over more slices",
+                found.cautions,
+            )
+        result = region_statistics(
+            found.values, found.weights, spacing_mm=found.spacing_mm, unit=volume.unit
+        )
+        return replace(result, cautions=(*found.cautions, *result.cautions))

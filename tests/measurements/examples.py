@@ -1,0 +1,46 @@
+"""One example a measurement, for the laws that all of them obey.
+
+A new measurement adds an entry: a Volume and the regions on which it gives a result.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass, field
+from typing import Any
+
+import numpy as np
+
+from ct_measure_plugin.physics.regions import Disc, Region
+from ct_measure_plugin.physics.volume import Volume
+
+__all__ = ["EXAMPLES", "Example"]
+
+
+@dataclass(frozen=True)
+class Example:
+    volume: Volume
+    regions: tuple[Region, ...]
+    settings: dict[str, Any] = field(default_factory=dict)
+    #: How each Quantity answers when 100 is added to every value: "moves" or "stays".
+    moves_with_level: tuple[str, ...] = ()
+    #: Power of the pixel size that each Quantity scales with; others do not change.
+    scales_with_spacing: dict[str, int] = field(default_factory=dict)
+
+
+def _noise() -> Volume:
+    rng = np.random.default_rng(11)
+    values = np.rint(rng.normal(40, 12, (3, 64, 64))).astype(np.int16)
+    return Volume(values, (2.0, 0.5, 0.5))
+
+
+def region_statistics() -> Example:
+    return Example(
+        _noise(),
+        (Disc((15.75, 15.75), 9.0, z_mm=2.0),),
+        moves_with_level=("mean", "minimum", "maximum", "median"),
+        scales_with_spacing={"area": 2},
+    )
+
+
+EXAMPLES: dict[str, Callable[[], Example]] = {"region_statistics": region_statistics}

@@ -1,0 +1,132 @@
+"""The laws that every measurement in the catalogue obeys."""
+
+from __future__ import annotations
+
+from concurrent.futures import ThreadPoolExecutor
+from dataclasses import replace
+
+import numpy as np
+import pytest
+from examples import EXAMPLES, Example
+
+from ct_measure_plugin.errors import CtMeasureError
+from ct_measure_plugin.measurements import NAMES, find, measure
+from ct_measure_plugin.measurements.base import Settings
+from ct_measure_plugin.physics.regions import Box, Disc, Ellipse, Polygon, Region
+from ct_measure_plugin.physics.results import Result, quantities_of
+from ct_measure_plugin.physics.volume import Volume
+
+# adding a constant moves sums of floats by their rounding
+ROUNDING = 1e-9
+
+
+def run(example: Example, volume: Volume | None = None, regions: tuple[Region, ...] = ()) -> Result:
+    found = measure(
+        NAME[id(example)], volume or example.volume, regions or example.regions, **example.settings
+    )
+    assert found, str(found)
+    return found
+
+
+NAME: dict[int, str] = {}
+
+
+@pytest.fixture(params=NAMES)
+def example(request) -> Example:
+    made = EXAMPLES[request.param]()
+    NAME[id(made)] = request.param
+    return made
+
+
+def test_every_measurement_has_an_example():
+    assert set(EXAMPLES) == set(NAMES)
+
+
+def test_the_input_is_untouched(example):
+    before = example.volume.hu.copy()
+    run(example)
+    np.testing.assert_array_equal(example.volume.hu, before)
+
+
+def test_the_same_question_has_the_same_answer(example):
+    first, second = quantities_of(run(example)), quantities_of(run(example))
+    assert first == second
+
+
+def test_threads_do_not_disturb_each_other(example):
+    alone = quantities_of(run(example))
+    with ThreadPoolExecutor(4) as pool:
+        together = list(pool.map(lambda _: quantities_of(run(example)), range(8)))
+    assert all(found == alone for found in together)
+
+
+def test_a_shift_by_100_hu_moves_levels_only(example):
+    plain = quantities_of(run(example))
+    raised = quantities_of(run(example, replace(example.volume, hu=example.volume.hu + 100)))
+    for name, quantity in plain.items():
+        expected = quantity.value + (100 if name in example.moves_with_level else 0)
+        assert raised[name].value == pytest.approx(expected, abs=ROUNDING, rel=ROUNDING), name
+        if quantity.uncertainty is not None:
+            assert raised[name].uncertainty == pytest.approx(
+                quantity.uncertainty, abs=ROUNDING, rel=1e-6
+            ), name
+
+
+def turned(region: Region, side_mm: float) -> Region:
+    """Turn a region by a quarter, counter-clockwise on the screen, with its square image."""
+
+    def point(p):
+        return side_mm - p[1], p[0]
+
+    if isinstance(region, Disc):
+        return replace(region, center_mm=point(region.center_mm))
+    if isinstance(region, Ellipse | Box):
+        return replace(region, center_mm=point(region.center_mm), angle_deg=region.angle_deg + 90)
+    if isinstance(region, Polygon):
+        return replace(region, vertices_mm=tuple(point(p) for p in region.vertices_mm))
+    raise NotImplementedError(region.kind)
+
+
+def test_a_quarter_turn_changes_nothing(example):
+    plain = quantities_of(run(example))
+    hu = np.rot90(example.volume.hu, axes=(1, 2)).copy()
+    side = (example.volume.shape[1] - 1) * example.volume.spacing_mm[1]
+    regions = tuple(turned(region, side) for region in example.regions)
+    after = quantities_of(run(example, replace(example.volume, hu=hu), regions))
+    for name, quantity in plain.items():
+        assert after[name].value == pytest.approx(quantity.value, rel=1e-6, abs=1e-9), name
+
+
+def test_larger_pixels_scale_lengths_only(example):
+    plain = quantities_of(run(example))
+    dz, dy, dx = example.volume.spacing_mm
+    volume = replace(example.volume, spacing_mm=(dz, 2 * dy, 2 * dx), slice_positions_mm=None)
+    regions = []
+    for region in example.regions:
+        assert isinstance(region, Disc)
+        center = (2 * region.center_mm[0], 2 * region.center_mm[1])
+        regions.append(replace(region, center_mm=center, radius_mm=2 * region.radius_mm))
+    after = quantities_of(run(example, volume, tuple(regions)))
+    for name, quantity in plain.items():
+        power = example.scales_with_spacing.get(name, 0)
+        assert after[name].value == pytest.approx(quantity.value * 2.0**power, rel=1e-9), name
+
+
+def test_the_settings_name_themselves_completely(example):
+    kind = find(NAME[id(example)]).settings_type
+    settings = kind(**example.settings)
+    assert isinstance(settings, Settings)
+    assert kind.model_validate_json(settings.model_dump_json()) == settings
+    with pytest.raises(CtMeasureError, match="no setting of"):
+        measure(NAME[id(example)], example.volume, example.regions, no_such_setting=1)
+
+
+def test_every_setting_has_words_for_its_control(example):
+    for name, field in find(NAME[id(example)]).settings_type.model_fields.items():
+        assert field.description, name
+
+
+def test_every_column_is_a_field_of_the_result(example):
+    found = run(example)
+    for name in find(NAME[id(example)]).columns:
+        assert hasattr(found, name), name

@@ -20,12 +20,13 @@ from ct_measure_plugin.physics.results import (
     Result,
     ResultGroup,
 )
-from ct_measure_plugin.physics.volume import Acquisition, Source, Volume
+from ct_measure_plugin.physics.volume import Acquisition, HeaderWindow, Source, Volume
 
 __all__ = [
     "Acquisition",
     "Caution",
     "Curve",
+    "HeaderWindow",
     "NotMeasured",
     "Picture",
     "Quantity",

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass, field
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, Literal
 
 import numpy as np
 
@@ -14,7 +14,7 @@ from ct_measure_plugin.physics.results import Caution
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
-__all__ = ["Acquisition", "Source", "Volume"]
+__all__ = ["Acquisition", "HeaderWindow", "Source", "Volume"]
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -31,6 +31,26 @@ class Acquisition:
     reconstruction_diameter_mm: float | None = None
     isocentre_mm: tuple[float, float, float] | None = None
     acquisition_number: int | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class HeaderWindow:
+    """A display window that the series' header offers; it never changes data.
+
+    Attributes
+    ----------
+    centre, width : float
+        In the Volume's unit, as the header gives them.
+    explanation : str
+        What the header calls it; may be empty.
+    function : {"LINEAR", "LINEAR_EXACT", "SIGMOID"}
+        How centre and width are meant (DICOM PS3.3, C.11.2.1.2).
+    """
+
+    centre: float
+    width: float
+    explanation: str = ""
+    function: Literal["LINEAR", "LINEAR_EXACT", "SIGMOID"] = "LINEAR"
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -89,6 +109,10 @@ class Volume:
         Faults found on reading; they travel into every result.
     source : Source
         Provenance.
+    windows : tuple of HeaderWindow
+        The display windows the header offers.
+    patient_position : str
+        "HFS", "FFP", …: how the patient lay, as the header says; the affine already holds it.
 
     Examples
     --------
@@ -112,6 +136,8 @@ class Volume:
     acquisition: tuple[Acquisition, ...] = ()
     cautions: tuple[Caution, ...] = ()
     source: Source = field(default_factory=Source)
+    windows: tuple[HeaderWindow, ...] = ()
+    patient_position: str = ""
 
     def __post_init__(self) -> None:
         values = self.hu if hasattr(self.hu, "ndim") else np.asarray(self.hu)

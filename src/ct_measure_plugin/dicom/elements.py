@@ -26,6 +26,10 @@ ITEM_END: Final = 0xFFFEE00D
 SEQUENCE_END: Final = 0xFFFEE0DD
 #: nesting of the functional groups is three deep; a file that nests deeper is hostile
 MAX_DEPTH: Final = 24
+#: twenty thousand frames of a dozen functional groups; bounds what a hostile header can claim
+MAX_ITEMS: Final = 1 << 18
+#: no wanted value is longer than a few hundred bytes
+LONGEST_VALUE: Final = 1024
 
 _SHORT_VRS = frozenset(b"AE AS AT CS DA DS DT FL FD IS LO LT PN SH SL SS ST TM UI UL US".split())
 _LONG_VRS = frozenset(b"OB OD OF OL OV OW SQ SV UC UN UR UT UV".split())
@@ -33,11 +37,21 @@ _NUMBER_CODES = {"US": "H", "SS": "h", "UL": "L", "SL": "l", "FL": "f", "FD": "d
 
 
 class BrokenHeaderError(Exception):
-    """The bytes are not a data set; stays inside the room."""
+    """The bytes are not a data set; stays inside the room.
+
+    `seen` are the elements before the fault, if there were any.
+    """
+
+    seen: Elements | None = None
 
 
 class ShortHeaderError(Exception):
-    """The bytes end inside the data set; more of the file is needed, or the file is cut."""
+    """The bytes end inside the data set; more of the file is needed, or the file is cut.
+
+    `seen` are the elements before the end, if there were any.
+    """
+
+    seen: Elements | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -72,9 +86,11 @@ class Elements:
         How it is written.
     """
 
-    __slots__ = ("data", "encoding", "found", "items")
+    __slots__ = ("budget", "data", "encoding", "found", "items")
 
-    def __init__(self, data: bytes, encoding: Encoding) -> None:
+    def __init__(self, data: bytes, encoding: Encoding, budget: list[int] | None = None) -> None:
+        #: how many more sequence items may be kept, one count for the whole file
+        self.budget = [MAX_ITEMS] if budget is None else budget
         self.data = data
         self.encoding = encoding
         #: tag -> (value representation, start, length)
@@ -85,12 +101,12 @@ class Elements:
         return tag in self.found
 
     def raw(self, tag: int) -> bytes:
-        """Return the value's bytes, empty if the element is absent."""
+        """Return the value's bytes (the first 1024 at most), empty if the element is absent."""
         place = self.found.get(tag)
         if place is None:
             return b""
         _, start, length = place
-        return self.data[start : start + length]
+        return self.data[start : start + min(length, LONGEST_VALUE)]
 
     def text(self, tag: int) -> str:
         """Return the value as text without padding, ``""`` if absent."""
@@ -102,13 +118,11 @@ class Elements:
         place = self.found.get(tag)
         if place is None:
             return ()
-        vr, start, length = place
-        raw = self.data[start : start + length]
-        code = _NUMBER_CODES.get(vr)
+        raw = self.raw(tag)
+        code = _NUMBER_CODES.get(place[0])
         if code is None:
             return _decimal_numbers(raw)
-        size = struct.calcsize("<" + code)
-        count = min(length // size, 64)
+        count = len(raw) // struct.calcsize("<" + code)
         values = struct.unpack_from(f"{self.encoding.order}{count}{code}", raw)
         return tuple(float(v) if math.isfinite(v) else None for v in values)
 
@@ -143,7 +157,7 @@ def _plain_text(raw: bytes) -> str:
 @lru_cache(maxsize=8192)
 def _decimal_numbers(raw: bytes) -> tuple[float | None, ...]:
     values: list[float | None] = []
-    for part in raw[:1024].strip(b" \0").split(b"\\"):
+    for part in raw.strip(b" \0").split(b"\\"):
         try:
             value = float(part.strip(b" \0"))
         except ValueError:
@@ -173,7 +187,11 @@ def index_elements(data: bytes, start: int, encoding: Encoding) -> Elements:
         If the bytes do not follow the encoding.
     """
     elements = Elements(data, encoding)
-    _walk(elements, start, len(data), depth=0, closed=False)
+    try:
+        _walk(elements, start, len(data), depth=0, closed=False)
+    except (BrokenHeaderError, ShortHeaderError) as problem:
+        problem.seen = elements
+        raise
     return elements
 
 
@@ -276,7 +294,10 @@ def _read_items(
             break
         if marker != ITEM:
             raise BrokenHeaderError("a sequence holds something other than items")
-        item = Elements(into.data, encoding)
+        item = Elements(into.data, encoding, into.budget)
+        into.budget[0] -= 1
+        if into.budget[0] < 0:
+            raise BrokenHeaderError("there are more sequence items than a CT image has")
         if length == UNDEFINED:
             position = _walk(item, position, end, depth=depth + 1, closed=True)
         else:

@@ -160,17 +160,19 @@ def _images_of(header: Header, path: Path, uid: str) -> list[ImageFacts]:
         lossy=_is_lossy(elements, header.syntax_uid),
         **_own_facts(elements, elements, layout),  # type: ignore[arg-type]
     )
-    if sources is None:
-        _require_axial(image)
-        return [image]
-    images = [
-        replace(image, frame=k, **_own_facts(source, elements, layout))  # type: ignore[arg-type]
-        for k, source in enumerate(sources)
-    ]
-    kept = [one for one in images if "LOCALIZER" not in one.image_type]
-    if not kept:
+    images = [image]
+    if sources is not None:
+        images = [
+            replace(image, frame=k, **_own_facts(source, elements, layout))  # type: ignore[arg-type]
+            for k, source in enumerate(sources)
+        ]
+    images = [one for one in images if "LOCALIZER" not in one.image_type]
+    if not images:
         raise UnreadableFileError("a localiser, not a slice", stray=True)
-    return kept
+    images = [one for one in images if one.pixel_spacing is not None]
+    if not images:
+        raise UnreadableFileError("the pixel spacing is missing, so nothing is known in mm")
+    return images
 
 
 def _require_ct(elements: Elements) -> None:
@@ -188,11 +190,6 @@ def _class_name(uid: str) -> str:
 
     entry = UID_dictionary.get(uid)
     return entry[0] if entry else "an object of another kind"
-
-
-def _require_axial(image: ImageFacts) -> None:
-    if "LOCALIZER" in image.image_type:
-        raise UnreadableFileError("a localiser, not a slice", stray=True)
 
 
 def _layout_of(elements: Elements) -> PixelLayout:
@@ -241,6 +238,8 @@ def _pixels_of(header: Header, layout: PixelLayout, count: int) -> tuple[int, in
     if syntax.encapsulated != (length == UNDEFINED):
         raise UnreadableFileError("its pixel data contradict its transfer syntax")
     if syntax.encapsulated:
+        if layout.allocated > 16 and syntax.family != "rle":
+            raise UnreadableFileError("compressed pixels of more than 16 bits are not read here")
         if offset >= header.size:
             raise UnreadableFileError("the pixel data are missing")
         return offset, header.size - offset

@@ -38,13 +38,13 @@ def frame_items(elements: Elements, count: int) -> list[Elements] | None:
         If a file of several frames does not say where each of them lies.
     """
     frames = elements.items.get(tags.FRAME_GROUPS, [])
+    shared = elements.first_item(tags.SHARED_GROUPS)
     if not frames:
         if count > 1:
             raise UnreadableFileError("several frames without a position of their own")
-        return None
+        return None if shared is None else [_flat(elements, shared, shared)]
     if len(frames) != count:
         raise UnreadableFileError(f"{count} frames are declared and {len(frames)} are described")
-    shared = elements.first_item(tags.SHARED_GROUPS)
     return [_flat(elements, shared, frame) for frame in frames]
 
 

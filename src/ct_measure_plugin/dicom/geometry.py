@@ -106,6 +106,8 @@ class StackGeometry:
         Slices that the gaps leave room for.
     even : bool
         True if no gap differs from dz by more than 0.01 mm or 1 %.
+    aside_mm : float
+        How far slices lie beside the straight line from the first to the last.
     """
 
     frame: Frame
@@ -117,6 +119,7 @@ class StackGeometry:
     tilt_deg: float
     missing: int
     even: bool
+    aside_mm: float
 
     @property
     def direction_lps(self) -> FloatArray:
@@ -152,6 +155,7 @@ def stack_geometry(images: Sequence[ImageFacts], frame: Frame) -> StackGeometry:
         tilt_deg=tilt if tilt > TILT_THRESHOLD_DEG else 0.0,
         missing=missing,
         even=even,
+        aside_mm=_aside(places, z, step / dz),
     )
 
 
@@ -169,6 +173,12 @@ def _spacing(gaps: FloatArray) -> tuple[float, bool, int]:
     # a gap is a hole if it is a whole number of steps; each step may be off by the tolerance
     holes = wide & (np.abs(gaps - multiples * middle) <= tolerance * multiples)
     return middle, False, int(np.sum(multiples[holes] - 1))
+
+
+def _aside(places: FloatArray, z: FloatArray, slope: FloatArray) -> float:
+    """Return the largest distance of a slice from the straight line through the first."""
+    line = places[0] + np.outer(z - z[0], slope)
+    return float(np.max(np.hypot.reduce(places - line, axis=1)))
 
 
 def _stacking_step(places: FloatArray, z: FloatArray, dz: float) -> FloatArray:

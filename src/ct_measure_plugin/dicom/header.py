@@ -21,6 +21,7 @@ from ct_measure_plugin.dicom.syntaxes import (
     EXPLICIT_LITTLE,
     IMPLICIT_LITTLE,
 )
+from ct_measure_plugin.dicom.texts import digest_of
 
 if TYPE_CHECKING:
     from pathlib import Path
@@ -100,12 +101,12 @@ def read_header(path: Path | str) -> Header:
         while True:
             try:
                 return _header_of(data, size)
-            except ShortHeaderError:
+            except ShortHeaderError as problem:
                 if len(data) >= min(size, LARGEST_HEADER):
-                    raise UnreadableFileError(_short_reason(size)) from None
+                    raise _damaged(_short_reason(size), problem.seen) from None
                 data += _read_up_to(file, min(len(data) * 7, LARGEST_HEADER - len(data)))
             except BrokenHeaderError as problem:
-                raise UnreadableFileError(f"the header is damaged: {problem}") from None
+                raise _damaged(f"the header is damaged: {problem}", problem.seen) from None
 
 
 def _read_up_to(file: object, count: int) -> bytes:
@@ -114,6 +115,16 @@ def _read_up_to(file: object, count: int) -> bytes:
     if not more:
         raise UnreadableFileError("the file became shorter while it was read")
     return more
+
+
+def _damaged(reason: str, seen: Elements | None) -> UnreadableFileError:
+    """Return the error of a damaged file, told by what came before the damage."""
+    if seen is None:
+        return UnreadableFileError(reason)
+    uid = seen.text(tags.SERIES_UID)
+    modality = seen.text(tags.MODALITY)
+    stray = bool(modality) and modality != "CT"
+    return UnreadableFileError(reason, stray=stray, series_digest=digest_of(uid) if uid else "")
 
 
 def _short_reason(size: int) -> str:

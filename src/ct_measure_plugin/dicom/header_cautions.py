@@ -22,6 +22,8 @@ __all__ = ["encoding_names", "header_cautions", "lossy_caution"]
 
 #: an axis-aligned normal written with three decimals is true to 0.06°
 _OBLIQUE_DEG: Final = 0.5
+#: positions are written to 0.001 mm or finer; a tenth of a millimetre is no rounding
+_ASIDE_MM: Final = 0.1
 #: methods in use accept 0.5 % between diameter / matrix and pixel spacing
 _DIAMETER_TOLERANCE: Final = 0.005
 
@@ -120,7 +122,7 @@ def _identity(stack: Stack) -> list[Caution]:
             Caution(
                 "duplicate-slice",
                 f"Left out: {' and '.join(parts)}.",
-                "Remove the duplicates, or choose the series by hand.",
+                "Remove from the folder what does not belong there.",
             )
         )
     if stack.split_by:
@@ -138,10 +140,19 @@ def _counted(number: int) -> str:
 
 
 def _gaps(geometry: StackGeometry) -> list[Caution]:
+    cautions = []
+    if geometry.aside_mm > _ASIDE_MM:
+        cautions.append(
+            Caution(
+                "uneven-spacing",
+                f"Slices lie up to {geometry.aside_mm:.3g} mm beside their stacking direction.",
+                "Measure in the plane; the patient frame holds for the first slice.",
+            )
+        )
     if geometry.even:
-        return []
+        return cautions
     gaps = geometry.z_mm[1:] - geometry.z_mm[:-1]
-    cautions = [
+    cautions += [
         Caution(
             "uneven-spacing",
             f"The distance between slices runs from {gaps.min():.4g} to {gaps.max():.4g} mm.",

@@ -9,20 +9,18 @@ from typing import TYPE_CHECKING, Any, Final
 
 import numpy as np
 
+from ct_measure_plugin.dicom.asking import stop_if_asked
 from ct_measure_plugin.dicom.padding import PaddingFound, padding_in
 from ct_measure_plugin.dicom.pixels import stored_into, stored_plane
 from ct_measure_plugin.dicom.rescale import Rescale, apply_whole, rescale_of
-from ct_measure_plugin.errors import Cancelled
 
 if TYPE_CHECKING:
-    from collections.abc import Callable, Sequence
+    from collections.abc import Sequence
 
     from numpy.typing import NDArray
 
+    from ct_measure_plugin.dicom.asking import Cancel, Progress
     from ct_measure_plugin.dicom.facts import ImageFacts
-
-    Progress = Callable[[int, int], None]
-    Cancel = Callable[[], bool]
 
 __all__ = ["Loaded", "float_plane", "load_all", "whole_by_header"]
 
@@ -99,8 +97,7 @@ def _load(
     fill = _whole_slice if dtype == np.int16 else _float_slice
 
     def work(start: int) -> list[tuple[PaddingFound, bool]]:
-        if cancel is not None and cancel():
-            raise Cancelled("reading was stopped")
+        stop_if_asked(cancel)
         stop = min(start + _CHUNK, len(images))
         return [fill(images[k], values[k], hounsfield) for k in range(start, stop)]
 

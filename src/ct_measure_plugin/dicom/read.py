@@ -21,15 +21,13 @@ from ct_measure_plugin.errors import NoSeriesError, SeriesChoiceError
 from ct_measure_plugin.physics.volume import Source, Volume
 
 if TYPE_CHECKING:
-    from collections.abc import Callable, Sequence
+    from collections.abc import Sequence
 
     from numpy.typing import NDArray
 
+    from ct_measure_plugin.dicom.asking import Cancel, Progress
     from ct_measure_plugin.dicom.facts import ImageFacts
     from ct_measure_plugin.physics.results import Caution
-
-    Progress = Callable[[int, int], None]
-    Cancel = Callable[[], bool]
 
 __all__ = ["read_series"]
 
@@ -57,8 +55,8 @@ def read_series(
         series larger than half of the machine's memory is lazy.
     progress : callable(done, total), optional
         Called with files while headers are read, then with slices.
-    cancel : callable() -> bool, optional
-        Asked now and then; True stops the work.
+    cancel : callable() -> bool or threading.Event, optional
+        Asked now and then; True, or a set event, stops the work.
 
     Returns
     -------

@@ -9,18 +9,18 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Final
 
 from ct_measure_plugin.dicom import tags
+from ct_measure_plugin.dicom.asking import stop_if_asked
 from ct_measure_plugin.dicom.elements import Elements
 from ct_measure_plugin.dicom.entries import SeriesEntry, SeriesScan, SkippedFile, entry_of
 from ct_measure_plugin.dicom.facts import ImageFacts, images_of
 from ct_measure_plugin.dicom.grouping import stacks_of
 from ct_measure_plugin.dicom.header import UnreadableFileError, read_header
-from ct_measure_plugin.errors import Cancelled, SeriesError
+from ct_measure_plugin.errors import SeriesError
 
 if TYPE_CHECKING:
-    from collections.abc import Callable, Iterable
+    from collections.abc import Iterable
 
-    Progress = Callable[[int, int], None]
-    Cancel = Callable[[], bool]
+    from ct_measure_plugin.dicom.asking import Cancel, Progress
 
 __all__ = ["scan_folder", "scan_series"]
 
@@ -45,8 +45,8 @@ def scan_series(
         other file, which stands for the series it belongs to, in its own folder.
     progress : callable(done, total), optional
         Called as files are read.
-    cancel : callable() -> bool, optional
-        Asked now and then; True stops the scan.
+    cancel : callable() -> bool or threading.Event, optional
+        Asked now and then; True, or a set event, stops the scan.
 
     Raises
     ------
@@ -175,8 +175,7 @@ def _images_in(
     skipped: list[tuple[SkippedFile, str]] = []
     for done, path in enumerate(paths):
         if done % _CHECK_EVERY == 0:
-            if cancel is not None and cancel():
-                raise Cancelled("the scan was stopped")
+            stop_if_asked(cancel)
             if progress is not None:
                 progress(done, len(paths))
         try:

@@ -78,4 +78,8 @@ KINDS: dict[str, CautionKind] = {
     "correlated-noise": _note("Noise correlation estimated from the region"),
     "independence-assumed": _note("Independent pixels were assumed"),
     "few-independent-samples": _warning("Few independent samples"),
+    # --- the CT-number scale --------------------------------------------------------
+    "rod-reads-as-another": _warning("A rod reads as another material"),
+    "one-energy-fails": _warning("No single energy describes the rods"),
+    "one-rod-decides": _note("One rod decides the line"),
 }

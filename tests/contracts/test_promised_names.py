@@ -52,3 +52,15 @@ def test_the_public_names_of_the_design():
     for name in ("Disc", "Ellipse", "Box", "Polygon", "Segment", "Mask"):
         assert hasattr(ct_measure_plugin.regions, name), name
     assert callable(ct_measure_plugin.physics.region_statistics)
+
+
+def test_regions_are_there_before_anything_else_is_loaded():
+    """In a fresh process, since any other import may load them on the way."""
+    import subprocess
+    import sys
+
+    code = "import ct_measure_plugin as ctm; print(ctm.regions.Disc.kind)"
+    done = subprocess.run(
+        [sys.executable, "-c", code], capture_output=True, text=True, check=True, timeout=60
+    )
+    assert done.stdout.strip() == "disc"

@@ -10,6 +10,7 @@ Each measurement's function has the measurement's name and lives in the file of 
 
 from __future__ import annotations
 
+from ct_measure_plugin.physics import regions
 from ct_measure_plugin.physics.region_statistics import RegionStatistics, region_statistics
 from ct_measure_plugin.physics.results import (
     Caution,
@@ -36,4 +37,5 @@ __all__ = [
     "Source",
     "Volume",
     "region_statistics",
+    "regions",
 ]

@@ -258,7 +258,8 @@ def _fine_log_mu(entered: Material) -> FloatArray:
 
 def _mu(entered: Material, energy: ArrayLike) -> FloatArray:
     """Return μ by interpolation of its logarithm, within 2e-6 of the table between its edges."""
-    return np.exp(np.interp(np.asarray(energy, dtype=float), _FINE_KEV, _fine_log_mu(entered)))
+    at = np.asarray(energy, dtype=float)
+    return np.asarray(np.exp(np.interp(at, _FINE_KEV, _fine_log_mu(entered))), dtype=float)
 
 
 def _mu_at(rods: _Rods, energy: float) -> tuple[FloatArray, FloatArray]:

@@ -68,6 +68,8 @@ class Measurement(ABC):
         One sentence.
     settings_type : type of Settings
         Its settings.
+    result_type : type of Result
+        What it answers; a record is rebuilt from it.
     regions : RegionNeed
         The regions it takes.
     columns : tuple of str
@@ -78,6 +80,7 @@ class Measurement(ABC):
     title: ClassVar[str]
     summary: ClassVar[str]
     settings_type: ClassVar[type[Settings]]
+    result_type: ClassVar[type[Result]]
     regions: ClassVar[RegionNeed]
     columns: ClassVar[tuple[str, ...]]
 

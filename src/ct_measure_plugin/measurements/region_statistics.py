@@ -9,13 +9,12 @@ from pydantic import Field
 
 from ct_measure_plugin.measurements.base import AREAS, Measurement, RegionNeed, Settings
 from ct_measure_plugin.measurements.gather import gather
-from ct_measure_plugin.physics.region_statistics import region_statistics
-from ct_measure_plugin.physics.results import NotMeasured
+from ct_measure_plugin.physics.region_statistics import RegionStatistics, region_statistics
+from ct_measure_plugin.physics.results import NotMeasured, Result
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
 
-    from ct_measure_plugin.physics.region_statistics import RegionStatistics
     from ct_measure_plugin.physics.regions import Region
     from ct_measure_plugin.physics.volume import Volume
 
@@ -43,6 +42,7 @@ class MeasureRegionStatistics(Measurement):
     title: ClassVar[str] = "Region statistics"
     summary: ClassVar[str] = "Mean, SD, area and extremes of the pixels in each region."
     settings_type: ClassVar[type[Settings]] = RegionStatisticsSettings
+    result_type: ClassVar[type[Result]] = RegionStatistics
     regions: ClassVar[RegionNeed] = RegionNeed(AREAS)
     columns: ClassVar[tuple[str, ...]] = (
         "mean",

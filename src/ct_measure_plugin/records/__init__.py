@@ -1,0 +1,34 @@
+"""What was asked and what was found: plans, records, the logbook, exchange formats.
+
+What belongs here: turning questions and answers into text and back, exactly; keeping them; judging
+them against tolerances. What it may import: measurements, physics, pydantic, YAML, SQLAlchemy. What
+it must not do: measure, draw, or hold anything that identifies a patient.
+"""
+
+from __future__ import annotations
+
+from ct_measure_plugin.records.exchange import read_json, write_csv, write_json
+from ct_measure_plugin.records.logbook import Logbook
+from ct_measure_plugin.records.plan import Plan, PlanStep, load_plan, save_plan
+from ct_measure_plugin.records.record import Preview, Record, SourceFacts
+from ct_measure_plugin.records.region_text import region_from_dict, region_to_dict
+from ct_measure_plugin.records.tolerances import Tolerance, Verdict, judge
+
+__all__ = [
+    "Logbook",
+    "Plan",
+    "PlanStep",
+    "Preview",
+    "Record",
+    "SourceFacts",
+    "Tolerance",
+    "Verdict",
+    "judge",
+    "load_plan",
+    "read_json",
+    "region_from_dict",
+    "region_to_dict",
+    "save_plan",
+    "write_csv",
+    "write_json",
+]

@@ -1,0 +1,69 @@
+"""Regions survive being written down, and bad text is refused by name."""
+
+from __future__ import annotations
+
+import json
+
+import numpy as np
+import pytest
+
+from ct_measure_plugin.errors import RegionError
+from ct_measure_plugin.physics.regions import Box, Disc, Ellipse, Mask, Polygon, Segment
+from ct_measure_plugin.records import region_from_dict, region_to_dict
+
+REGIONS = [
+    Disc((0.1 + 0.2, -3.0), 7.0, z_mm=4.0, name="water"),
+    Ellipse((1, 2), (3, 4), 33.0, z_mm=(1.0, 9.0)),
+    Box((1, 2), (3, 4)),
+    Polygon(((0, 0), (0, 5), (5, 1.25))),
+    Segment((0, 0), (3, 4), 1.5, name="ä ± µ"),
+]
+
+
+@pytest.mark.parametrize("region", REGIONS, ids=lambda region: region.kind)
+def test_a_region_comes_back_the_same(region):
+    text = json.dumps(region_to_dict(region))
+    assert region_from_dict(json.loads(text)) == region
+
+
+@pytest.mark.parametrize("shape", [(7, 5), (3, 11, 13)])
+def test_a_mask_comes_back_pixel_by_pixel(shape):
+    inside = np.random.default_rng(1).random(shape) < 0.4
+    mask = Mask(inside, (2.0, 0.5, 0.7), (1.0, 2.0, 3.0), z_mm=5.0)
+    again = region_from_dict(json.loads(json.dumps(region_to_dict(mask))))
+    assert isinstance(again, Mask)
+    np.testing.assert_array_equal(again.inside, inside)
+    assert (again.spacing_mm, again.origin_mm, again.z_mm) == (
+        mask.spacing_mm, mask.origin_mm, mask.z_mm,
+    )  # fmt: skip
+
+
+@pytest.mark.parametrize(
+    ("given", "message"),
+    [
+        ("disc", "'region' must be a set of named values"),
+        ({"kind": "blob"}, "'kind' must be one of box, disc"),
+        ({"kind": "disc", "radius_mm": 3}, "'center_mm' must be given for a disc"),
+        ({"kind": "disc", "center_mm": [0, 0], "radius_mm": 3, "hue": 1}, "'hue' must be one"),
+        ({"kind": "disc", "center_mm": [0, 0], "radius_mm": "3"}, "'radius_mm' must be a number"),
+        ({"kind": "disc", "center_mm": [0, 0], "radius_mm": True}, "'radius_mm' must be a number"),
+        ({"kind": "disc", "center_mm": [0, 0], "radius_mm": 3, "name": 4}, "'name' must be text"),
+        ({"kind": "mask", "inside": {"shape": [9, 9], "bits": "eJw="}, "spacing_mm": [1, 1, 1]},
+         "'inside' must hold the shape"),
+        ({"kind": "mask", "inside": {"shape": [10**6, 10**6], "bits": ""}, "spacing_mm": [1, 1, 1]},
+         "'inside' must hold the shape"),
+    ],
+)  # fmt: skip
+def test_bad_text_is_refused_by_name(given, message):
+    with pytest.raises(RegionError, match=message):
+        region_from_dict(given)
+
+
+def test_a_mask_that_would_unpack_without_end_is_cut_short():
+    import base64
+    import zlib
+
+    bomb = base64.b64encode(zlib.compress(b"\0" * 10**7)).decode()
+    given = {"kind": "mask", "inside": {"shape": [8, 8], "bits": bomb}, "spacing_mm": [1, 1, 1]}
+    with pytest.raises(RegionError, match="'inside' must hold the shape"):
+        region_from_dict(given)

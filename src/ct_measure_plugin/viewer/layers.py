@@ -1,0 +1,433 @@
+"""napari Image layers and Volumes: units, axis order and position, settled here and nowhere else.
+
+A layer's world and a Volume's image frame are the same millimetres whenever the layer's axes are
+the world's axes, in mm. Where they are not (mirrored, turned, in other units, pixel size entered
+by hand), a :class:`Placement` says how they meet. Always go through it:
+
+- ``placement.frame_of(world)``: where a point of the viewer lies in the Volume, mm;
+- ``placement.world_of(frame)``: the way back;
+- ``placement.plane_of(world)``: the slice that the viewer shows at a point.
+
+Along z the frame follows the Volume's own slice positions. napari draws slices evenly, so on an
+unevenly spaced series the world's z is that of an even stack and the frame's is the true one.
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass, replace
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from ct_measure_plugin.errors import ArgumentError
+from ct_measure_plugin.physics.results import Caution
+from ct_measure_plugin.physics.volume import Source, Volume
+from ct_measure_plugin.physics.windowing import limits_of
+
+if TYPE_CHECKING:
+    from collections.abc import Sequence
+
+    from napari.layers import Image
+    from numpy.typing import NDArray
+
+    Floats = NDArray[np.float64]
+    LayerTuple = tuple[Any, dict[str, Any], str]
+
+__all__ = [
+    "KEY",
+    "Asked",
+    "Placement",
+    "contrast_limits_for",
+    "is_ct",
+    "layer_of",
+    "own_volume",
+    "placement_of",
+    "questions_for",
+    "shows_slab",
+    "volume_of",
+]
+
+#: Our one key in a layer's metadata; it holds the Volume.
+KEY = "ct_measure_plugin"
+
+#: The soft-tissue window (common practice) shown where the header offers none.
+_PLAIN_WINDOW = (50.0, 400.0)
+
+#: Cosine above which two axes are no longer at right angles: 0.06 degrees, far above rounding.
+_SQUARE = 1e-3
+
+#: A stack that leans by more than this is said to; less is rounding in a stored affine.
+_LEANING_DEG = 0.1
+
+
+@dataclass(frozen=True, slots=True)
+class Asked:
+    """What a person told us about a layer that does not say it itself.
+
+    Attributes
+    ----------
+    spacing_mm : (float, float, float) or None
+        dz, dy, dx of one voxel; None if not entered.
+    unit : str
+        What the values are: "HU", or another unit, or "" for unknown.
+    """
+
+    spacing_mm: tuple[float, float, float] | None = None
+    unit: str = "HU"
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Placement:
+    """Where a layer's Volume lies in the viewer's world.
+
+    Attributes
+    ----------
+    volume : Volume
+        What to measure on.
+    layer : Image
+        The layer it came from.
+    leading : tuple of int
+        Fixed indices of the axes before z, for layers of more than three.
+    """
+
+    volume: Volume
+    layer: Image
+    leading: tuple[int, ...] = ()
+
+    def index_of(self, world: Sequence[float]) -> tuple[float, float, float]:
+        """Return the voxel coordinates (slice, row, column) of a world point, not rounded."""
+        data = [float(v) for v in self.layer.world_to_data(world)]
+        z, y, x = data[-3:] if self.layer.ndim > 2 else (0.0, *data[-2:])
+        return z, y, x
+
+    def plane_of(self, world: Sequence[float]) -> int:
+        """Return the slice that the viewer shows when it stands at a world point."""
+        nearest = round(self.index_of(world)[0])  # half to even, as napari rounds
+        return min(max(nearest, 0), self.volume.shape[0] - 1)
+
+    def frame_of(self, world: Sequence[float]) -> tuple[float, float, float]:
+        """Return the place (z, y, x) of a world point in the Volume's image frame, mm."""
+        k, row, column = self.index_of(world)
+        _, dy, dx = self.volume.spacing_mm
+        _, y, x = self.volume.origin_mm
+        return _z_at(self.volume, k), y + row * dy, x + column * dx
+
+    def world_of(self, frame_mm: Sequence[float]) -> tuple[float, ...]:
+        """Return the world point, one number an axis of the layer, of a place (z, y, x) in mm."""
+        z, y, x = frame_mm
+        _, dy, dx = self.volume.spacing_mm
+        _, y_0, x_0 = self.volume.origin_mm
+        inside = (_index_at(self.volume, z), (y - y_0) / dy, (x - x_0) / dx)
+        data = (*self.leading, *inside) if self.layer.ndim > 2 else inside[1:]
+        return tuple(float(v) for v in self.layer.data_to_world(data))
+
+
+def _z_at(volume: Volume, k: float) -> float:
+    """Return the z of a fractional slice index, going on evenly beyond the ends."""
+    positions, dz = volume.positions_mm, volume.spacing_mm[0]
+    last = len(positions) - 1
+    if k < 0:
+        return float(positions[0] + k * dz)
+    if k > last:
+        return float(positions[last] + (k - last) * dz)
+    return float(np.interp(k, np.arange(last + 1), positions))
+
+
+def _index_at(volume: Volume, z_mm: float) -> float:
+    """Return the fractional slice index of a z; the way back from :func:`_z_at`."""
+    positions, dz = volume.positions_mm, volume.spacing_mm[0]
+    last = len(positions) - 1
+    if z_mm < positions[0]:
+        return float((z_mm - positions[0]) / dz)
+    if z_mm > positions[last]:
+        return float(last + (z_mm - positions[last]) / dz)
+    return float(np.interp(z_mm, positions, np.arange(last + 1)))
+
+
+# --- from a Volume to a layer ---------------------------------------------------------
+
+
+def layer_of(volume: Volume, name: str = "") -> LayerTuple:
+    """Return the data, attributes and type of a layer that shows a Volume.
+
+    Parameters
+    ----------
+    volume : Volume
+        Shown as it is: nothing is resampled, a lazy array stays lazy.
+    name : str, optional
+        The layer's name; the Volume's title by default.
+
+    Returns
+    -------
+    (array, dict, "image")
+        As a napari reader returns it. Millimetres, axes z, y, x; `projection_mode` is "none", so
+        that the canvas shows one slice and never the mean of several.
+    """
+    attributes = {
+        "name": name or volume.source.title or "CT",
+        "scale": volume.spacing_mm,
+        "translate": volume.origin_mm,
+        "units": "mm",
+        "axis_labels": ("z", "y", "x"),
+        "contrast_limits": contrast_limits_for(volume),
+        "rgb": False,
+        "colormap": "gray",
+        "projection_mode": "none",
+        "metadata": {KEY: volume},
+    }
+    return volume.hu, attributes, "image"
+
+
+def contrast_limits_for(volume: Volume) -> tuple[float, float]:
+    """Return the limits to open a Volume with.
+
+    The header's first window if it is linear, else the soft-tissue window for HU, else the range
+    of the middle slice.
+    """
+    for window in volume.windows:
+        if window.function != "SIGMOID":
+            return limits_of(window.centre, window.width, window.function)
+    if volume.is_hu:
+        return limits_of(*_PLAIN_WINDOW)
+    middle = volume.plane(volume.shape[0] // 2)
+    finite = middle[np.isfinite(middle)]
+    low, high = (float(finite.min()), float(finite.max())) if finite.size else (0.0, 1.0)
+    return (low, high) if low < high else (low, low + 1.0)
+
+
+# --- from a layer to a Volume ---------------------------------------------------------
+
+
+def own_volume(layer: Any) -> Volume | None:
+    """Return the Volume that we put into a layer, None if it is not one of ours."""
+    found = layer.metadata.get(KEY)
+    return found if isinstance(found, Volume) else None
+
+
+def is_ct(layer: Any) -> bool:
+    """Tell whether a layer shows CT numbers: opened by us and in HU."""
+    volume = own_volume(layer)
+    return volume is not None and volume.is_hu
+
+
+def questions_for(layer: Image) -> tuple[str, ...]:
+    """Return what a person must say before a layer is measured: "spacing", "unit", both or neither.
+
+    The spacing must be entered where an axis has no unit of length; the unit of the values has the
+    answer "HU" until someone says otherwise, and every result says that it was assumed.
+    """
+    if _unchanged(layer) is not None:
+        return ()
+    questions = () if _world_in_mm(layer) is not None else ("spacing",)
+    return questions if own_volume(layer) is not None else (*questions, "unit")
+
+
+def shows_slab(layer: Image, dims: Any) -> bool:
+    """Tell whether the canvas shows several slices projected into one, not the slice measured."""
+    axis = -3
+    if layer.ndim < 3 or str(layer.projection_mode) == "none" or dims.ndisplay != 2:
+        return False
+    return float(dims.margin_left[axis]) + float(dims.margin_right[axis]) > 0
+
+
+def volume_of(
+    layer: Image, asked: Asked | None = None, *, point: Sequence[float] | None = None
+) -> Volume:
+    """Return the Volume that a layer shows; see :func:`placement_of`."""
+    return placement_of(layer, asked, point=point).volume
+
+
+def placement_of(
+    layer: Image, asked: Asked | None = None, *, point: Sequence[float] | None = None
+) -> Placement:
+    """Return a layer's Volume and where it lies in the viewer's world.
+
+    Parameters
+    ----------
+    layer : Image
+        Any image layer of the viewer, opened by us or not: flat or deep, in any unit of length or
+        in pixels, mirrored, turned by its affine, multiscale (the finest level is taken), lazy.
+    asked : Asked, optional
+        What a person said about it; see :func:`questions_for`.
+    point : sequence of float, optional
+        Where the viewer stands (``viewer.dims.point``); needed for layers of more than three axes,
+        whose first axes are held there.
+
+    Raises
+    ------
+    ArgumentError
+        If the layer is coloured, has too few or too many axes, is in pixels and no spacing was
+        entered, or its rows and columns are not at right angles.
+    """
+    _check_kind(layer)
+    unchanged = _unchanged(layer)
+    if unchanged is not None:
+        return Placement(unchanged, layer)
+    asked = Asked() if asked is None else asked
+    data, leading = _finest_data(layer, point)
+    spacing, origin, tilt, by_hand = _geometry(layer, asked)
+    own = own_volume(layer)
+    cautions = [*(own.cautions if own is not None else ())]
+    if by_hand:
+        cautions.append(_spacing_caution(spacing))
+    if tilt > _LEANING_DEG:
+        cautions.append(_tilt_caution(tilt))
+    if own is None:
+        cautions.append(_unit_caution(asked.unit))
+    volume = Volume(
+        data,
+        spacing_mm=spacing,
+        origin_mm=origin,
+        tilt_deg=tilt,
+        unit=own.unit if own is not None else asked.unit,
+        cautions=tuple(cautions),
+        source=Source(
+            title=layer.name, spacing_source="entered by hand" if by_hand else "napari layer"
+        ),
+    )
+    if own is not None:
+        volume = _carried_over(own, volume)
+    return Placement(volume, layer, leading)
+
+
+def _check_kind(layer: Image) -> None:
+    if getattr(layer, "rgb", False):
+        raise ArgumentError("layer", "must hold CT numbers, not colours", f"RGB '{layer.name}'")
+    if layer.ndim < 2:
+        raise ArgumentError("layer", "must have two or three axes", layer.ndim)
+
+
+def _finest_data(layer: Image, point: Sequence[float] | None) -> tuple[Any, tuple[int, ...]]:
+    data = layer.data[0] if layer.multiscale else layer.data
+    extra = layer.ndim - 3
+    if extra <= 0:
+        return data, ()
+    if point is None:
+        raise ArgumentError(
+            "layer", "must have three axes, or the viewer must say where it stands", layer.ndim
+        )
+    where = layer.world_to_data(point)[:extra]
+    leading = tuple(
+        min(max(round(float(v)), 0), size - 1)
+        for v, size in zip(where, data.shape[:extra], strict=True)
+    )
+    return data[leading], leading
+
+
+def _unchanged(layer: Image) -> Volume | None:
+    """Return our own Volume if the layer still shows just that, in the same place."""
+    own = own_volume(layer)
+    if own is None or layer.multiscale or layer.data is not own.hu:
+        return None
+    matrix, shift, factors = _world(layer)
+    if factors is None:
+        return None
+    same = np.allclose(matrix * factors[:, None], np.diag(own.spacing_mm), rtol=1e-9, atol=1e-12)
+    return own if same and np.allclose(shift * factors, own.origin_mm, atol=1e-9) else None
+
+
+def _carried_over(own: Volume, found: Volume) -> Volume:
+    """Return a changed layer's Volume with what our own still says about it."""
+    if found.shape != own.shape:
+        return found
+    return replace(
+        found,
+        padding_hu=own.padding_hu,
+        representable_hu=own.representable_hu,
+        acquisition=own.acquisition,
+        windows=own.windows,
+    )
+
+
+def _world(layer: Image) -> tuple[Floats, Floats, Floats | None]:
+    """Return the last axes' data-to-world matrix and shift, and mm a world unit (None: pixels).
+
+    napari turns one point at a time, so the matrix is taken from one call an axis.
+    """
+    n = layer.ndim
+    zero = np.asarray(layer.data_to_world(np.zeros(n)), dtype=float)
+    columns = [np.asarray(layer.data_to_world(np.eye(n)[i]), dtype=float) - zero for i in range(n)]
+    last = slice(max(0, n - 3), n)
+    return np.stack(columns, axis=1)[last, last], zero[last], _world_in_mm(layer)
+
+
+def _world_in_mm(layer: Image) -> Floats | None:
+    """Return the millimetres of one world unit along the last axes, None if any is no length."""
+    units = layer.units[-3:]
+    if any("[length]" not in unit.dimensionality for unit in units):
+        return None
+    return np.array([float((1.0 * unit).to("mm").magnitude) for unit in units])
+
+
+def _geometry(
+    layer: Image, asked: Asked
+) -> tuple[tuple[float, float, float], tuple[float, float, float], float, bool]:
+    """Return spacing, origin, tilt and whether the spacing was entered by hand."""
+    matrix, shift, factors = _world(layer)
+    by_hand = factors is None
+    if factors is None and asked.spacing_mm is None:
+        raise ArgumentError(
+            "layer", "must be in a unit of length, or its pixel size be entered", layer.name
+        )
+    if factors is not None:
+        matrix, shift = matrix * factors[:, None], shift * factors
+    spacing, directions, tilt = _axes(matrix, layer.name)
+    origin = directions @ shift
+    if by_hand:
+        entered = np.asarray(asked.spacing_mm, dtype=float)[-len(spacing) :]
+        origin, spacing = origin * entered / spacing, entered
+    dz = asked.spacing_mm[0] if asked.spacing_mm is not None else 1.0
+    if len(spacing) == 2:
+        spacing, origin = np.array([dz, *spacing]), np.array([0.0, *origin])
+    z, y, x = (float(v) for v in spacing)
+    z_0, y_0, x_0 = (float(v) for v in origin)
+    return (z, y, x), (z_0, y_0, x_0), tilt, by_hand
+
+
+def _axes(matrix: Floats, name: str) -> tuple[Floats, Floats, float]:
+    """Return spacing, unit directions (rows) and stacking tilt of the columns of a matrix."""
+    lengths = np.linalg.norm(matrix, axis=0)
+    if not bool(np.all(lengths > 0)):
+        raise ArgumentError("layer", "must have a pixel size greater than 0 on each axis", name)
+    along = matrix / lengths
+    if abs(float(along[:, -2] @ along[:, -1])) > _SQUARE:
+        raise ArgumentError("layer", "must have rows and columns at right angles", name)
+    if len(lengths) == 2:
+        return lengths, along.T, 0.0
+    normal = np.cross(along[:, 1], along[:, 2])
+    rise = float(normal @ along[:, 0])
+    if abs(rise) < _SQUARE:
+        raise ArgumentError("layer", "must have slices that do not lie in one plane", name)
+    normal *= math.copysign(1.0, rise)
+    tilt = math.degrees(math.acos(min(1.0, abs(rise))))
+    spacing = np.array([lengths[0] * abs(rise), lengths[1], lengths[2]])
+    return spacing, np.stack([normal, along[:, 1], along[:, 2]]), tilt
+
+
+def _spacing_caution(spacing: tuple[float, float, float]) -> Caution:
+    dz, dy, dx = spacing
+    return Caution(
+        "spacing-assumed",
+        f"The layer is in pixels; {dz:g} × {dy:g} × {dx:g} mm (z, y, x) was entered by hand.",
+        "Check the pixel size against the scan's own data.",
+    )
+
+
+def _tilt_caution(tilt: float) -> Caution:
+    return Caution(
+        "gantry-tilt",
+        f"The layer's slices lean by {tilt:.1f}° against their stacking direction.",
+        "Measure in the plane only, or reformat without tilt.",
+    )
+
+
+def _unit_caution(unit: str) -> Caution:
+    if unit == "HU":
+        return Caution(
+            "hu-assumed",
+            "The layer does not say what its values are; HU were assumed.",
+            "Open the DICOM series itself, or enter the unit.",
+        )
+    said = f"in '{unit}'" if unit else "of no known unit"
+    return Caution("not-hu", f"The values were said to be {said}.", "Measure HU on a CT series.")

@@ -31,6 +31,7 @@ __all__ = [
     "Result",
     "ResultGroup",
     "curves_of",
+    "label_of",
     "pictures_of",
     "quantities_of",
 ]
@@ -248,6 +249,37 @@ class ResultGroup(Result):
 
     def __getitem__(self, index: int) -> Result | NotMeasured:
         return self.parts[index]
+
+
+#: Field names whose label is not simply their words.
+_LABELS = {
+    "sd": "SD",
+    "population_sd": "Population SD",
+    "n": "n",
+    "effective_n": "Effective n",
+    "cnr": "CNR",
+    "snr": "SNR",
+    "mtf": "MTF",
+    "esf": "ESF",
+    "lsf": "LSF",
+    "psf": "PSF",
+    "ssp": "SSP",
+    "fwhm": "FWHM",
+    "fwtm": "FWTM",
+    "f50": "f50",
+    "f10": "f10",
+    "f2": "f2",
+}
+
+
+def label_of(name: str) -> str:
+    """Return what tables and pages call a field, the same everywhere.
+
+    >>> label_of("sd"), label_of("peak_frequency")
+    ('SD', 'Peak frequency')
+    """
+    words = name.replace("_", " ")
+    return _LABELS.get(name, words[:1].upper() + words[1:])
 
 
 def _fields_of(result: Any, kind: type[_T]) -> dict[str, _T]:

@@ -14,6 +14,8 @@ from ct_measure_plugin.records import Preview
 if TYPE_CHECKING:
     from collections.abc import Sequence
 
+    from numpy.typing import NDArray
+
     from ct_measure_plugin.physics.regions import Region
     from ct_measure_plugin.physics.volume import Volume
 
@@ -26,7 +28,8 @@ LONGEST_SIDE = 256
 def preview_of(volume: Volume, regions: Sequence[Region]) -> Preview | None:
     """Return a picture of the slice that the first region lies on, or None if it lies on none.
 
-    Every second, third, … pixel is taken; grey runs over the central 98 % of the finite values.
+    Every second, third, … pixel is taken. Grey runs over the header's first window, else over the
+    central 98 % of the values denser than air.
     """
     slices = slices_of(regions[0], volume) if regions else list(range(volume.shape[0]))
     if not slices:
@@ -39,9 +42,7 @@ def preview_of(volume: Volume, regions: Sequence[Region]) -> Preview | None:
     usable = np.isfinite(small) if padding is None else np.isfinite(small) & ~padding
     if not usable.any():
         return None
-    low, high = (float(v) for v in np.percentile(small[usable], [1, 99]))
-    if high - low < 1:
-        low, high = low - 0.5, high + 0.5
+    low, high = _window(volume, small[usable])
     grey = np.nan_to_num(np.clip((small - low) / (high - low), 0, 1)) * 255
     data = zlib.compress(np.rint(grey).astype(np.uint8).tobytes(), 9)
     _, dy, dx = volume.spacing_mm
@@ -60,3 +61,12 @@ def preview_of(volume: Volume, regions: Sequence[Region]) -> Preview | None:
         z_mm=float(volume.positions_mm[k]),
         window_hu=(low, high),
     )
+
+
+def _window(volume: Volume, values: NDArray[np.float32]) -> tuple[float, float]:
+    if volume.windows:
+        center, width = volume.windows[0].centre, volume.windows[0].width
+        return center - width / 2, center + width / 2
+    dense = values[values > -500]
+    low, high = np.percentile(dense if dense.size > 100 else values, [1, 99])
+    return (float(low), float(high)) if high - low >= 1 else (float(low) - 0.5, float(low) + 0.5)

@@ -1,0 +1,77 @@
+"""`ct-measure measure`: measure regions of a series, or everything in a plan."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING, Any
+
+from ct_measure_plugin.cli.outputs import add_output_options, deliver
+from ct_measure_plugin.cli.region_words import HELP, region_from_words
+from ct_measure_plugin.errors import ArgumentError, SeriesChoiceError
+
+if TYPE_CHECKING:
+    import argparse
+
+    from ct_measure_plugin.physics.volume import Volume
+    from ct_measure_plugin.records import Plan
+
+__all__ = ["add_parser", "run"]
+
+
+def add_parser(commands: argparse._SubParsersAction[argparse.ArgumentParser]) -> None:
+    """Add the subcommand."""
+    parser = commands.add_parser("measure", help="measure regions of a series")
+    parser.add_argument("series", help="a folder, a DICOMDIR, or one file of the series")
+    parser.add_argument("measurement", nargs="?", help="its name, for example region_statistics")
+    parser.add_argument(
+        "--index", type=int, help="which series, as `ct-measure series` counts them"
+    )
+    parser.add_argument("--region", action="append", default=[], metavar="WORDS", help=HELP)
+    parser.add_argument("--set", action="append", default=[], metavar="NAME=VALUE",
+                        help="a setting of the measurement")  # fmt: skip
+    parser.add_argument("--plan", metavar="FILE", help="a YAML or JSON plan instead of the above")
+    add_output_options(parser)
+    parser.set_defaults(run=run)
+
+
+def run(arguments: argparse.Namespace) -> int:
+    """Measure."""
+    from ct_measure_plugin.records import load_plan
+    from ct_measure_plugin.run import run_plan
+
+    if bool(arguments.plan) == bool(arguments.measurement):
+        raise ArgumentError("measurement", "must be given, or else --plan", arguments.measurement)
+    plan = load_plan(arguments.plan) if arguments.plan else None
+    volume = _volume(arguments)
+    plan = plan or _plan(arguments, volume)
+    return deliver(run_plan(plan, volume), arguments, plan)
+
+
+def _volume(arguments: argparse.Namespace) -> Volume:
+    from ct_measure_plugin.dicom import read_series, scan_series
+
+    if arguments.index is None:
+        return read_series(arguments.series)
+    entries = scan_series(arguments.series)
+    if not 0 <= arguments.index < len(entries):
+        raise SeriesChoiceError(f"there are {len(entries)} series; --index counts from 0")
+    return read_series(entries[arguments.index])
+
+
+def _plan(arguments: argparse.Namespace, volume: Volume) -> Plan:
+    from ct_measure_plugin.measurements.catalogue import settings_for
+    from ct_measure_plugin.records import Plan, PlanStep, region_to_dict
+
+    given: dict[str, Any] = {}
+    for pair in arguments.set:
+        name, equals, value = pair.partition("=")
+        if not equals:
+            raise ArgumentError("set", "must be NAME=VALUE", pair)
+        given[name] = value
+    settings = settings_for(arguments.measurement, given)
+    regions = [region_from_words(words, volume) for words in arguments.region]
+    step = PlanStep(
+        measurement=arguments.measurement,
+        settings=settings.model_dump(mode="json"),
+        regions=tuple(region_to_dict(region) for region in regions),
+    )
+    return Plan(steps=(step,))

@@ -1,0 +1,99 @@
+"""What every measuring command does with its records: print them, write them, judge them."""
+
+from __future__ import annotations
+
+import json
+import sys
+from typing import TYPE_CHECKING
+
+from ct_measure_plugin.cli import DONE, NOT_MEASURABLE, TOLERANCE_FAILED
+
+if TYPE_CHECKING:
+    import argparse
+    from collections.abc import Sequence
+
+    from ct_measure_plugin.records import Plan, Record
+
+__all__ = ["add_output_options", "deliver", "print_records"]
+
+
+def add_output_options(parser: argparse.ArgumentParser) -> None:
+    """Add the options that say where records go."""
+    parser.add_argument("--json", action="store_true", help="print the records as JSON")
+    parser.add_argument("--csv", metavar="FILE", help="write a table, one row a quantity")
+    parser.add_argument("--save", metavar="FILE", help="write the records as JSON")
+    parser.add_argument("--report", metavar="FILE", help="write a one-page HTML report")
+    parser.add_argument(
+        "--logbook",
+        metavar="PLACE",
+        nargs="?",
+        const="",
+        help="add the records to the logbook: the user's own, a file, or a URL",
+    )
+
+
+def deliver(records: Sequence[Record], arguments: argparse.Namespace, plan: Plan | None) -> int:
+    """Print and write the records, and return the exit code that they deserve."""
+    from ct_measure_plugin.records import Logbook, write_csv, write_json
+
+    if arguments.csv:
+        write_csv(records, arguments.csv)
+    if arguments.save:
+        write_json(records, arguments.save)
+    if arguments.report:
+        from ct_measure_plugin.report import write_report
+
+        write_report(records, arguments.report)
+    if arguments.logbook is not None:
+        with Logbook(arguments.logbook or None) as book:
+            book.add(records)
+    if arguments.json:
+        data = [record.model_dump(mode="json", exclude={"preview"}) for record in records]
+        print(json.dumps(data, indent=1, ensure_ascii=False))
+    else:
+        print_records(records)
+    return _code(records, plan, quiet=arguments.json)
+
+
+def print_records(records: Sequence[Record]) -> None:
+    """Print each record in words, its refusals and warnings with it."""
+    from ct_measure_plugin.measurements import find
+    from ct_measure_plugin.physics.results import NotMeasured, label_of, quantities_of
+
+    for record in records:
+        print(f"{record.title}: {record.region_names}")
+        answer = record.answer()
+        if isinstance(answer, NotMeasured):
+            print(f"  {answer}")
+        else:
+            found = quantities_of(answer)
+            order = [name for name in find(record.measurement).columns if name in found]
+            order += [name for name in found if name not in order]
+            for name in order:
+                print(f"  {label_of(name):<16} {found[name]}")
+        for caution in answer.cautions:
+            print(f"  {caution.kind.level}: {caution}")
+
+
+def _code(records: Sequence[Record], plan: Plan | None, *, quiet: bool) -> int:
+    from ct_measure_plugin.physics.results import NotMeasured
+
+    failed = _judge(records, plan, quiet=quiet) if plan else False
+    refusals = [a for a in (record.answer() for record in records) if isinstance(a, NotMeasured)]
+    for refusal in refusals:
+        print(f"ct-measure: {refusal}", file=sys.stderr)
+    if refusals:
+        return NOT_MEASURABLE
+    return TOLERANCE_FAILED if failed else DONE
+
+
+def _judge(records: Sequence[Record], plan: Plan, *, quiet: bool) -> bool:
+    """Print each tolerance's verdict; return whether one failed."""
+    from ct_measure_plugin.records.verdicts import verdicts_of
+
+    failed = False
+    for line, passed in verdicts_of(records, plan):
+        failed = failed or not passed
+        if not quiet:
+            print(line)
+    return failed

@@ -1,0 +1,188 @@
+"""The command line: exit codes, one sentence for bad input, and the same numbers as Python."""
+
+from __future__ import annotations
+
+import json
+import subprocess
+import sys
+
+import numpy as np
+import pytest
+from series_writer import line, noise, save, write_series
+
+import ct_measure_plugin as ctm
+from ct_measure_plugin.cli import BAD_INPUT, DONE, NOT_MEASURABLE, TOLERANCE_FAILED, main
+
+WATER = "disc center=6,6 radius=4 slice=1 name=water"
+
+
+@pytest.fixture
+def folder(tmp_path):
+    return write_series(tmp_path / "ct", noise((4, 64, 64)), line(4))
+
+
+def run(capsys, *arguments) -> tuple[int, str, str]:
+    code = main([str(argument) for argument in arguments])
+    out, err = capsys.readouterr()
+    return code, out, err
+
+
+def test_series_lists_what_is_there(capsys, folder):
+    code, out, err = run(capsys, "series", folder)
+    assert (code, err) == (DONE, "")
+    assert "4 slices of 64 × 64" in out
+    code, out, _ = run(capsys, "series", folder, "--json")
+    assert json.loads(out)["series"][0]["slices"] == 4
+
+
+def test_measure_prints_the_number_that_python_gives(capsys, folder):
+    code, out, _ = run(capsys, "measure", folder, "region_statistics", "--region", WATER, "--json")
+    assert code == DONE
+    [record] = json.loads(out)
+    volume = ctm.read_series(folder)
+    z = float(volume.positions_mm[1])
+    found = ctm.measure("region_statistics", volume, ctm.regions.Disc((6, 6), 4, z_mm=z))
+    assert record["result"]["mean"]["value"] == found.mean.value
+    assert record["result"]["mean"]["uncertainty"] == found.mean.uncertainty
+    assert record["regions"][0]["name"] == "water"
+
+
+def test_settings_are_taken_by_name(capsys, folder):
+    code, out, _ = run(
+        capsys, "measure", folder, "region_statistics", "--region", WATER,
+        "--set", "coverage=center", "--json",
+    )  # fmt: skip
+    assert code == DONE
+    assert json.loads(out)[0]["settings"]["coverage"] == "center"
+
+
+def test_every_output_is_written(capsys, folder, tmp_path):
+    names = ["t.csv", "r.json", "p.html", "b.sqlite"]
+    csv, saved, page, book = (tmp_path / name for name in names)
+    code, out, _ = run(
+        capsys, "measure", folder, "region_statistics", "--region", WATER,
+        "--csv", csv, "--save", saved, "--report", page, "--logbook", book,
+    )  # fmt: skip
+    assert code == DONE
+    assert "HU" in out
+    assert all(file.stat().st_size > 500 for file in (csv, saved, page, book))
+    code, out, _ = run(capsys, "logbook", "--place", book)
+    assert (code, "water" in out) == (DONE, True)
+    code, out, _ = run(capsys, "report", saved, tmp_path / "again.html", "--title", "Again")
+    assert code == DONE
+    assert "<h1>Again</h1>" in (tmp_path / "again.html").read_text(encoding="utf-8")
+
+
+PLAN = """
+steps:
+  - measurement: region_statistics
+    regions: [{{kind: disc, center_mm: [6, 6], radius_mm: 4, name: water}}]
+    tolerances: [{{quantity: mean, low: {low}, high: {high}}}]
+"""
+
+
+@pytest.mark.parametrize(
+    ("low", "high", "code", "word"),
+    [(-10, 10, DONE, "pass"), (500, 600, TOLERANCE_FAILED, "fail")],
+)
+def test_a_plan_is_judged(capsys, folder, tmp_path, low, high, code, word):
+    (tmp_path / "plan.yaml").write_text(PLAN.format(low=low, high=high))
+    found, out, _ = run(capsys, "measure", folder, "--plan", tmp_path / "plan.yaml")
+    assert found == code
+    assert f"{word}: water, mean" in out
+
+
+def test_what_cannot_be_measured_says_why(capsys, folder):
+    code, _, err = run(
+        capsys,
+        "measure",
+        folder,
+        "region_statistics",
+        "--region",
+        "disc center=6,6 radius=.3 slice=1",
+    )
+    assert code == NOT_MEASURABLE
+    assert "at least 9 are needed" in err
+    code, _, err = run(
+        capsys, "measure", folder, "region_statistics", "--region", "disc center=900,900 radius=3"
+    )
+    assert code == NOT_MEASURABLE
+    assert "the region lies outside the volume" in err
+    assert "Remedy: move it onto the image" in err
+
+
+@pytest.mark.parametrize(
+    ("arguments", "sentence"),
+    [
+        (["series", "no such folder"], "there is no such folder or file"),
+        (["measure", "{folder}"], "'measurement' must be given"),
+        (["measure", "{folder}", "edge", "--region", WATER], "no measurement is called 'edge'"),
+        (["measure", "{folder}", "region_statistics"], "'regions' must hold at least 1"),
+        (["measure", "{folder}", "region_statistics", "--region", "blob"], "'kind' must be one of"),
+        (["measure", "{folder}", "region_statistics", "--region", "disc center=1 radius=2"],
+         "'center' must be two numbers y,x"),
+        (["measure", "{folder}", "region_statistics", "--region", "disc center=1,1 radius=two"],
+         "'radius' must be a number"),
+        (["measure", "{folder}", "region_statistics", "--region",
+          "disc center=1,1 radius=2 slice=4"],
+         "'slice' must lie within 0 to 3"),
+        (["measure", "{folder}", "region_statistics", "--region", WATER, "--set", "coverage=half"],
+         "'coverage' must be valid"),
+        (["measure", "{folder}", "region_statistics", "--region", WATER, "--set", "colour=red"],
+         "no setting of region_statistics is called 'colour'"),
+        (["measure", "{folder}", "--plan", "gone.yaml"], "gone.yaml: cannot be read"),
+        (["measure", "{folder}", "region_statistics", "--region", WATER, "--index", "5"],
+         "there are 1 series"),
+        (["report", "gone.json", "page.html"], "gone.json cannot be read"),
+        (["measure", "{folder}", "region_statistics", "--region", WATER, "--csv", "no/dir/t.csv"],
+         "No such file or directory"),
+    ],
+)  # fmt: skip
+def test_bad_input_gets_one_sentence_and_its_code(capsys, folder, arguments, sentence):
+    code, _, err = run(capsys, *(argument.format(folder=folder) for argument in arguments))
+    assert code == BAD_INPUT
+    assert sentence in err
+    assert err.startswith("ct-measure: ")
+    assert len(err.strip().splitlines()) == 1
+
+
+def test_a_file_that_is_no_dicom_is_bad_input(capsys, tmp_path):
+    (tmp_path / "junk").write_bytes(b"junk" * 1000)
+    code, _, err = run(capsys, "measure", tmp_path, "region_statistics", "--region", WATER)
+    assert code == BAD_INPUT
+    assert len(err.strip().splitlines()) == 1
+
+
+def test_two_series_ask_which_one(capsys, tmp_path):
+    write_series(tmp_path / "a", noise((3, 32, 32)), line(3))
+    from pydicom import dcmread
+
+    for file in sorted((tmp_path / "a").iterdir()):
+        ds = dcmread(file)
+        ds.SeriesInstanceUID = "1.2.3.4"
+        ds.SOPInstanceUID = f"{ds.SOPInstanceUID}.1"[:64]
+        save(ds, tmp_path / "b" / file.name)
+    words = "disc center=0,0 radius=3"
+    code, _, err = run(capsys, "measure", tmp_path, "region_statistics", "--region", words)
+    assert code == BAD_INPUT
+    code, _, err = run(
+        capsys, "measure", tmp_path, "region_statistics", "--region", words, "--index", 1
+    )
+    assert (code, err) == (DONE, "")
+
+
+def test_the_installed_command_answers():
+    done = subprocess.run(
+        [sys.executable, "-m", "ct_measure_plugin.cli", "--help"],
+        capture_output=True, text=True, check=True, timeout=60,
+    )  # fmt: skip
+    assert "Exit codes: 0 done, 1 a tolerance failed" in done.stdout
+
+
+def test_json_on_stdout_is_nothing_but_json(capsys, folder):
+    _, out, _ = run(
+        capsys, "measure", folder, "region_statistics", "--region", "disc center=99,99 radius=3",
+        "--json",
+    )  # fmt: skip
+    assert json.loads(out)[0]["measured"] is False
+    assert np.isfinite(json.loads(out)[0]["source"]["spacing_mm"]).all()

@@ -142,9 +142,7 @@ def write_series(
     """Write one file a slice, named in an order that means nothing."""
     names = np.random.default_rng(7).permutation(len(stored))
     for k, (plane, position) in enumerate(zip(stored, positions, strict=True)):
-        own = {
-            name: value(k) if callable(value) else value for name, value in changes.items()
-        }
+        own = {name: value(k) if callable(value) else value for name, value in changes.items()}
         ds = ct_slice(plane, position=position, **own)
         ds.InstanceNumber = int(names[k]) + 1
         save(ds, folder / f"{names[k]:04d}", syntax)

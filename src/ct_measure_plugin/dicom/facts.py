@@ -104,6 +104,7 @@ class ImageFacts:
     padding: tuple[int, int] | None
     padding_mistyped: bool
     lossy: bool
+    simulated: bool
     acquisition: Acquisition
     windows: tuple[HeaderWindow, ...]
     moments: tuple[object, ...]
@@ -158,6 +159,7 @@ def _images_of(header: Header, path: Path, uid: str) -> list[ImageFacts]:
         spacing_between=elements.number(tags.SPACING_BETWEEN),
         tilt_tag=elements.number(tags.GANTRY_TILT),
         lossy=_is_lossy(elements, header.syntax_uid),
+        simulated=_is_simulated(elements),
         **_own_facts(elements, elements, layout),  # type: ignore[arg-type]
     )
     images = [image]
@@ -260,6 +262,11 @@ def _is_lossy(elements: Elements, syntax_uid: str) -> bool:
     said = elements.text(tags.LOSSY)
     kind = SYNTAXES[syntax_uid].lossy
     return said == "01" or kind == "yes" or (kind == "possible" and said != "00")
+
+
+def _is_simulated(elements: Elements) -> bool:
+    said = (elements.text(tags.MANUFACTURER), *elements.text(tags.IMAGE_TYPE).split("\\"))
+    return "SIMULATED" in said
 
 
 def _own_facts(own: Elements, whole: Elements, layout: PixelLayout) -> dict[str, object]:

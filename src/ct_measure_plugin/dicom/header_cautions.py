@@ -40,6 +40,10 @@ def header_cautions(stack: Stack, geometry: StackGeometry | None) -> list[Cautio
     """
     images = stack.images
     cautions = [*_encoding(images), *_unit(images), *_identity(stack)]
+    if any(image.simulated for image in images):
+        cautions.append(
+            Caution("simulated", "The header says that the image was simulated, not acquired.")
+        )
     if geometry is None:
         cautions.append(
             Caution(

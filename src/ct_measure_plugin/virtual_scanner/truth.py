@@ -253,17 +253,19 @@ class Truth:
         variance = recipe.detector.variance(through, quanta) * (slope / step) ** 2
         return float(np.mean(variance))
 
-    def _noise_density(self, f: FloatArray) -> FloatArray:
-        """Return K²/f for unit reading variance, views and pitch factors apart; any f > 0."""
+    def _filter(self, f: FloatArray) -> FloatArray:
+        """Return K(f): ramp, window and lookup, with the images a linear lookup leaves."""
         pitch = self.recipe.geometry.pitch_mm
         if self.recipe.grid.lookup == "linear":
-            period = 1.0 / pitch
-            folded = np.abs(f - period * np.rint(f / period))
+            folded = np.abs(f - np.rint(f * pitch) / pitch)
         else:
             folded = f
         window = self.recipe.kernel.window(folded) * self._rebinning(folded)
-        filtered = folded * window * self._lookup(f)
-        return np.divide(filtered**2, f, out=np.zeros_like(f), where=f > 0)
+        return np.asarray(folded * window * self._lookup(f))
+
+    def _noise_density(self, f: FloatArray) -> FloatArray:
+        """Return K²/f for unit reading variance, views and pitch factors apart; any f >= 0."""
+        return np.divide(self._filter(f) ** 2, f, out=np.zeros_like(f), where=f > 0)
 
     def nps_2d(
         self,
@@ -340,6 +342,37 @@ class Truth:
         f = np.asarray((np.arange(20000) + 0.5) * step, dtype=float)
         ring = 2.0 * np.pi * float(np.sum(f * self._noise_density(f))) * step
         return math.sqrt(self._noise_scale(at_mm, index) * ring + 1.0 / 12.0)
+
+    # --- faults -----------------------------------------------------------------------------
+    def rings(self, radius_mm: ArrayLike) -> FloatArray:
+        """Return what the gain errors add at distances from the isocentre, HU.
+
+        Parameters
+        ----------
+        radius_mm : array_like
+            Distances.
+
+        Notes
+        -----
+        For a whole turn. A channel at t₀ adds −ln(1+ε) to every view; backprojection makes of
+        it ½ ∮ q(r cos θ) dθ with q(t) = −ln(1+ε) d ∫ K(f) cos 2πf(t−t₀) df over all f. With a
+        spectrum the beam-hardening correction scales it; that is left out. Far from the centre
+        the amplitude falls with the square root of the radius.
+        """
+        r = np.abs(np.asarray(radius_mm, dtype=float))
+        geometry = self.recipe.geometry
+        step = self._noise_reach() / 1500
+        f: FloatArray = np.asarray((np.arange(1500) + 0.5) * step, dtype=np.float64)
+        span = np.arange(0.0, 2.0 * geometry.radius_mm + float(np.max(r)), geometry.pitch_mm / 16)
+        waves: FloatArray = np.cos(2.0 * np.pi * np.outer(span, f))
+        wave = 2.0 * step * np.dot(waves, self._filter(f))
+        around = np.cos((np.arange(4000) + 0.5) * (np.pi / 4000))
+        total = np.zeros(r.shape)
+        for channel, error in self.recipe.detector.gain_errors:
+            place = (channel - 0.5 * (geometry.channels - 1)) * geometry.pitch_mm
+            q = np.interp(np.abs(r[..., None] * around - place), span, wave)
+            total += -math.log1p(error) * geometry.pitch_mm * np.pi * q.mean(axis=-1)
+        return total * 1000.0 / (0.1 * self.recipe.calibration.mu_water)
 
     # --- along z ----------------------------------------------------------------------------
     def slice_profile(self, z_mm: ArrayLike) -> FloatArray:

@@ -1,0 +1,165 @@
+"""What is drawn is what is measured: shapes as regions in millimetres."""
+
+from __future__ import annotations
+
+import math
+
+import numpy as np
+import pytest
+
+from ct_measure_plugin.physics.regions import Box, Disc, Ellipse, Polygon
+from ct_measure_plugin.viewer.layers import layer_of, placement_of
+from ct_measure_plugin.viewer.shapes import (
+    drawn_on,
+    names_on,
+    new_regions_layer,
+    rename,
+    repair,
+    shape_of,
+)
+
+FLOAT32 = 2e-5  # mm; napari keeps corners in float32, coordinates here are below 100
+
+
+@pytest.fixture
+def scene(viewer_model, volume):
+    data, attributes, _ = layer_of(volume, "CT")
+    image = viewer_model.add_image(data, **attributes)
+    return viewer_model, image, placement_of(image)
+
+
+def add(scene, corners, kind, **more):
+    viewer, image, placement = scene
+    layer = new_regions_layer(viewer, image)
+    layer.add(np.asarray(corners, dtype=float), shape_type=kind, **more)
+    return drawn_on(layer, placement, viewer.dims.point)
+
+
+def on_slice(k, corners):
+    return [[k, *corner] for corner in corners]
+
+
+def test_a_circle_becomes_a_disc_in_millimetres(scene, volume):
+    """Corners in voxels: rows 10 to 20, columns 20 to 30 on slice 3, pixels of 0.7 mm."""
+    [found] = add(scene, on_slice(3, [(10, 20), (10, 30), (20, 30), (20, 20)]), "ellipse")
+    assert isinstance(found.region, Disc)
+    assert found.region.radius_mm == pytest.approx(3.5, abs=FLOAT32)
+    expected = (-14.0 + 15 * 0.7, 7.0 + 25 * 0.7)
+    assert found.region.center_mm == pytest.approx(expected, abs=FLOAT32)
+    assert found.region.z_mm == volume.positions_mm[3]
+
+
+@pytest.mark.parametrize("angle", [0.0, 30.0, 90.0, 135.0, 170.0])
+@pytest.mark.parametrize("kind", ["ellipse", "rectangle"])
+def test_a_turned_shape_keeps_its_angle(scene, volume, kind, angle):
+    """Drawn with napari's own corners at an angle counter-clockwise on the screen."""
+    made = (
+        Ellipse((0.0, 25.0), (3.0, 8.0), angle, z_mm=-15.0)
+        if kind == "ellipse"
+        else Box((0.0, 25.0), (6.0, 16.0), angle, z_mm=-15.0)
+    )
+    corners, word = shape_of(made)
+    assert word == kind
+    voxels = (corners - np.asarray(volume.origin_mm[1:])) / 0.7
+    [found] = add(scene, on_slice(2, voxels), kind)
+    assert type(found.region) is type(made)
+    assert found.region.center_mm == pytest.approx(made.center_mm, abs=FLOAT32)
+    difference = (found.region.angle_deg - angle + 90.0) % 180.0 - 90.0
+    if kind == "rectangle" and abs(difference) > 45:
+        # a box that stands on end: width and height have changed places
+        assert found.region.size_mm == pytest.approx(made.size_mm[::-1], abs=1e-4)
+    else:
+        assert difference == pytest.approx(0.0, abs=1e-3)
+    assert found.region.area_mm2 == pytest.approx(made.area_mm2, rel=1e-5)
+
+
+def test_a_polygon_keeps_its_corners(scene):
+    [found] = add(scene, on_slice(0, [(5, 5), (5, 25), (30, 15)]), "polygon")
+    assert isinstance(found.region, Polygon)
+    assert found.region.area_mm2 == pytest.approx(250 * 0.49, rel=1e-5)
+
+
+@pytest.mark.parametrize(
+    ("corners", "kind", "problem"),
+    [
+        (on_slice(1, [(5, 5), (25, 25), (25, 5), (5, 25)]), "polygon", "must not cross itself"),
+        (on_slice(1, [(5, 5), (25, 25)]), "line", "a line has no area"),
+        (on_slice(1, [(5, 5), (25, 25), (5, 30)]), "path", "a path has no area"),
+        ([[1, 5, 5], [2, 5, 25], [1, 30, 15]], "polygon", "lie on different slices"),
+        (on_slice(9, [(5, 5), (5, 25), (30, 15)]), "polygon", "above or below the volume"),
+    ],
+)
+def test_what_cannot_be_a_region_says_why(scene, corners, kind, problem):
+    [found] = add(scene, corners, kind)
+    assert found.region is None
+    assert problem in found.problem
+
+
+def test_a_flat_layer_follows_the_slice_shown(scene, volume):
+    viewer, _, placement = scene
+    layer = viewer.add_shapes(
+        [np.array([[-7.0, 14.0], [-7.0, 28.0], [7.0, 28.0], [7.0, 14.0]])],
+        shape_type="ellipse", units="mm",
+    )  # fmt: skip
+    for k in (0, 4):
+        viewer.dims.set_point(0, volume.positions_mm[k])
+        [found] = drawn_on(layer, placement, viewer.dims.point)
+        assert found.region.z_mm == volume.positions_mm[k]
+        assert found.region.center_mm == pytest.approx((0.0, 21.0), abs=FLOAT32)
+
+
+def test_a_layer_in_other_pixels_means_the_same_place(scene):
+    """A Shapes layer of 0.1 mm units shifted by (1, 2) mm: its own transform is followed."""
+    viewer, _, placement = scene
+    layer = viewer.add_shapes(
+        [np.array([[0, 0], [0, 100], [100, 100], [100, 0]])], shape_type="rectangle",
+        scale=(0.1, 0.1), translate=(-6.0, 12.0), units="mm",
+    )  # fmt: skip
+    [found] = drawn_on(layer, placement, viewer.dims.point)
+    assert found.region.center_mm == pytest.approx((-1.0, 17.0), abs=FLOAT32)
+    assert found.region.size_mm == pytest.approx((10.0, 10.0), abs=FLOAT32)
+
+
+def test_stretched_pixels_turn_a_drawn_circle_into_the_ellipse_it_is(viewer_model):
+    """A foreign layer with rows of 1 mm and columns of 0.5 mm, drawn at 45° in its pixels."""
+    image = viewer_model.add_image(np.zeros((60, 60)), scale=(1.0, 0.5), units="mm")
+    placement = placement_of(image)
+    layer = new_regions_layer(viewer_model, image)
+    turn = math.radians(45)
+    along, across = (
+        np.array([-math.sin(turn), math.cos(turn)]),
+        np.array([-math.cos(turn), -math.sin(turn)]),
+    )
+    corners = [
+        30 + i * 10 * along + j * 10 * across for i, j in ((-1, -1), (1, -1), (1, 1), (-1, 1))
+    ]
+    layer.add(np.asarray(corners), shape_type="ellipse")
+    [found] = drawn_on(layer, placement, viewer_model.dims.point)
+    assert sorted(found.region.radii_mm) == pytest.approx([5.0, 10.0], abs=1e-4)
+    assert found.region.angle_deg == pytest.approx(90.0, abs=1e-3)
+
+
+def test_names_live_in_the_features_beside_foreign_columns(scene):
+    viewer, image, _ = scene
+    layer = new_regions_layer(viewer, image)
+    square = [(5, 5), (5, 25), (25, 25), (25, 5)]
+    layer.add(np.asarray(on_slice(1, square)), shape_type="rectangle")
+    layer.features = {"foreign": [3.5]}
+    layer.add(np.asarray(on_slice(1, square)), shape_type="ellipse")
+    rename(layer, 1, " liver ")
+    assert names_on(layer) == ["region 1", "liver"]
+    assert layer.features["foreign"].iloc[0] == 3.5
+
+
+def test_a_cancelled_polygon_is_repaired(scene):
+    """napari leaves one row of features too many; a later shape would take it over."""
+    viewer, image, placement = scene
+    layer = new_regions_layer(viewer, image)
+    layer.add(np.asarray(on_slice(1, [(5, 5), (5, 25), (25, 25), (25, 5)])), shape_type="rectangle")
+    rename(layer, 0, "kept")
+    assert repair(layer) is False
+    layer._feature_table.append(layer._feature_table.defaults)  # what the bug amounts to
+    assert len(layer.features) == 2
+    assert repair(layer) is True
+    assert len(layer.features) == layer.nshapes == 1
+    assert drawn_on(layer, placement, viewer.dims.point)[0].name == "kept"

@@ -118,13 +118,9 @@ class Elements:
         place = self.found.get(tag)
         if place is None:
             return ()
-        raw = self.raw(tag)
-        code = _NUMBER_CODES.get(place[0])
-        if code is None:
-            return _decimal_numbers(raw)
-        count = len(raw) // struct.calcsize("<" + code)
-        values = struct.unpack_from(f"{self.encoding.order}{count}{code}", raw)
-        return tuple(float(v) if math.isfinite(v) else None for v in values)
+        vr, start, length = place
+        length = min(length, LONGEST_VALUE)
+        return _numbers(self.data[start : start + length], vr, self.encoding.big)
 
     def number(self, tag: int) -> float | None:
         """Return the first value as a number, None if absent or not a finite number."""
@@ -155,6 +151,17 @@ def _plain_text(raw: bytes) -> str:
 
 
 @lru_cache(maxsize=8192)
+def _numbers(raw: bytes, vr: str, big: bool) -> tuple[float | None, ...]:
+    """Return a value's numbers; slices of one series repeat most of them."""
+    code = _NUMBER_CODES.get(vr)
+    if code is None:
+        return _decimal_numbers(raw)
+    order = ">" if big else "<"
+    count = len(raw) // struct.calcsize("<" + code)
+    values = struct.unpack_from(f"{order}{count}{code}", raw)
+    return tuple(float(v) if math.isfinite(v) else None for v in values)
+
+
 def _decimal_numbers(raw: bytes) -> tuple[float | None, ...]:
     values: list[float | None] = []
     for part in raw.strip(b" \0").split(b"\\"):
@@ -217,6 +224,9 @@ def _walk(into: Elements, start: int, end: int, *, depth: int, closed: bool) -> 
             position += 8
             if vr not in short_vrs:
                 vr, length, position = _long_length(data, vr, position, end, order)
+            elif group << 16 | element not in wanted:  # most elements end here
+                position += length
+                continue
         tag = group << 16 | element
         if length == UNDEFINED and tag not in pixel_tags:
             position = _enter(into, tag, vr, position, end, depth)

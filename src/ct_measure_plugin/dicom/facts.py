@@ -21,8 +21,6 @@ from ct_measure_plugin.dicom.windows import windows_of
 from ct_measure_plugin.physics.volume import Acquisition
 
 if TYPE_CHECKING:
-    from pathlib import Path
-
     from ct_measure_plugin.physics.volume import HeaderWindow
 
 __all__ = ["ImageFacts", "PixelLayout", "images_of"]
@@ -78,7 +76,7 @@ class PixelLayout:
 class ImageFacts:
     """The facts of one image; stays inside the room, for it knows the file and its UIDs."""
 
-    path: Path
+    path: str
     frame: int
     frame_count: int
     syntax_uid: str
@@ -115,7 +113,7 @@ class ImageFacts:
         return self.pixel_offset + self.frame * self.layout.plane_bytes
 
 
-def images_of(header: Header, path: Path) -> list[ImageFacts]:
+def images_of(header: Header, path: str) -> list[ImageFacts]:
     """Return the facts of every image in a file.
 
     Raises
@@ -133,7 +131,7 @@ def images_of(header: Header, path: Path) -> list[ImageFacts]:
         raise
 
 
-def _images_of(header: Header, path: Path, uid: str) -> list[ImageFacts]:
+def _images_of(header: Header, path: str, uid: str) -> list[ImageFacts]:
     elements = header.elements
     layout = _layout_of(elements)
     count = elements.whole(tags.FRAMES)

@@ -150,7 +150,7 @@ def _by_place(
 def _preference(image: ImageFacts) -> tuple[bool, bool, str, int, str]:
     """Sort key: exact pixels before lossy ones, plain before compressed."""
     encapsulated = SYNTAXES[image.syntax_uid].encapsulated
-    return image.lossy, encapsulated, image.instance_uid, image.frame, str(image.path)
+    return image.lossy, encapsulated, image.instance_uid, image.frame, image.path
 
 
 def _without_copies(places: list[list[ImageFacts]]) -> tuple[list[ImageFacts], int]:
@@ -164,7 +164,7 @@ def _without_copies(places: list[list[ImageFacts]]) -> tuple[list[ImageFacts], i
             if image.instance_uid and name in best:
                 copies += 1
                 continue
-            best.setdefault(name if image.instance_uid else (str(image.path), image.frame), image)
+            best.setdefault(name if image.instance_uid else (image.path, image.frame), image)
         kept.extend(best.values())
     return kept, copies
 

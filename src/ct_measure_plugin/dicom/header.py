@@ -5,7 +5,7 @@ from __future__ import annotations
 import os
 import zlib
 from dataclasses import dataclass
-from typing import TYPE_CHECKING, Final
+from typing import Final
 
 from ct_measure_plugin.dicom import tags
 from ct_measure_plugin.dicom.elements import (
@@ -22,9 +22,6 @@ from ct_measure_plugin.dicom.syntaxes import (
     IMPLICIT_LITTLE,
 )
 from ct_measure_plugin.dicom.texts import digest_of
-
-if TYPE_CHECKING:
-    from pathlib import Path
 
 __all__ = ["Header", "UnreadableFileError", "data_set_start", "inflate", "read_header"]
 
@@ -83,7 +80,7 @@ class Header:
         return self.syntax_uid == DEFLATED
 
 
-def read_header(path: Path | str) -> Header:
+def read_header(path: str | os.PathLike[str]) -> Header:
     """Read and index a file's header.
 
     Raises

@@ -24,8 +24,9 @@ if TYPE_CHECKING:
 
 __all__ = ["Loaded", "float_plane", "load_all", "whole_by_header"]
 
-#: reading waits for the disk and copying for memory; more threads than this gain nothing
-_THREADS: Final = min(4, os.cpu_count() or 1)
+#: one reads while the other waits for the disk; from the cache of the system two are no faster
+#: than one, and the decoders do not run side by side
+_THREADS: Final = min(2, os.cpu_count() or 1)
 _CHUNK: Final = 8
 
 

@@ -88,36 +88,35 @@ def scan_folder(
 
 def _scan_around(file: Path, progress: Progress | None, cancel: Cancel | None) -> SeriesScan:
     """Return the series that a file belongs to; an unusable file is the only one skipped."""
-    images, skipped = _images_in([file], None, None)
+    images, skipped = _images_in([str(file)], None, None)
     if not images:
         return SeriesScan((), tuple(item for item, _ in skipped))
-    neighbours = sorted(path for path in file.parent.iterdir() if _is_regular(path))
+    neighbours = sorted(str(path) for path in file.parent.iterdir() if path.is_file())
     scan = _scan(neighbours, progress, cancel)
     kept = tuple(entry for entry in scan.entries if _holds(entry, file))
     return SeriesScan(kept, scan.skipped)
 
 
 def _holds(entry: SeriesEntry, file: Path) -> bool:
-    return any(image.path == file for image in entry._stack.images)
+    return any(image.path == str(file) for image in entry._stack.images)
 
 
-def _is_regular(path: Path) -> bool:
+def _is_regular(path: str) -> bool:
     """Return True for a plain file; opening a pipe or a device could wait for ever."""
     try:
-        return stat.S_ISREG(path.stat().st_mode)
+        return stat.S_ISREG(os.stat(path).st_mode)
     except OSError:
         return False
 
 
-def _files_under(folder: Path) -> list[Path]:
-    found: list[Path] = []
-    for where, _, names in os.walk(folder):
-        base = Path(where)
-        found.extend(base / name for name in names)
-    return sorted(found)
+def _files_under(folder: Path) -> list[str]:
+    """Return all files under a folder; links to folders are not followed, they may run round."""
+    return sorted(
+        os.path.join(where, name) for where, _, names in os.walk(folder) for name in names
+    )
 
 
-def _listed_in(file: Path) -> list[Path] | None:
+def _listed_in(file: Path) -> list[str] | None:
     """Return the files a DICOMDIR lists, None if the file is no DICOMDIR.
 
     Its names are text from outside: they are looked for below its own folder and nowhere else.
@@ -130,7 +129,7 @@ def _listed_in(file: Path) -> list[Path] | None:
         return None
     root = file.parent
     named = (_referenced(record, root) for record in elements.items[tags.DIRECTORY_RECORDS])
-    return sorted({path for path in named if path is not None})
+    return sorted({str(path) for path in named if path is not None})
 
 
 def _referenced(record: Elements, root: Path) -> Path | None:
@@ -148,7 +147,7 @@ def _climbs(step: str) -> bool:
     return step in (".", "..") or any(mark in step for mark in "/\\:\0")
 
 
-def _scan(files: list[Path], progress: Progress | None, cancel: Cancel | None) -> SeriesScan:
+def _scan(files: list[str], progress: Progress | None, cancel: Cancel | None) -> SeriesScan:
     images, skipped = _images_in(files, progress, cancel)
     damaged = Counter(digest for item, digest in skipped if item.damaged and digest)
     by_series: dict[str, list[ImageFacts]] = defaultdict(list)
@@ -167,7 +166,7 @@ def _scan(files: list[Path], progress: Progress | None, cancel: Cancel | None) -
 
 
 def _images_in(
-    files: Iterable[Path], progress: Progress | None, cancel: Cancel | None
+    files: Iterable[str], progress: Progress | None, cancel: Cancel | None
 ) -> tuple[list[ImageFacts], list[tuple[SkippedFile, str]]]:
     """Return the images of some files, and the skipped files with their series' digests."""
     paths = list(files)
@@ -181,17 +180,17 @@ def _images_in(
         try:
             images += _images_of_file(path)
         except UnreadableFileError as problem:
-            item = SkippedFile(path, problem.reason, damaged=not problem.stray)
+            item = SkippedFile(Path(path), problem.reason, damaged=not problem.stray)
             skipped.append((item, problem.series_digest))
         except OSError as problem:
             reason = os.strerror(problem.errno).lower() if problem.errno else "cannot be opened"
-            skipped.append((SkippedFile(path, f"cannot be opened: {reason}"), ""))
+            skipped.append((SkippedFile(Path(path), f"cannot be opened: {reason}"), ""))
     if progress is not None:
         progress(len(paths), len(paths))
     return images, skipped
 
 
-def _images_of_file(path: Path) -> list[ImageFacts]:
+def _images_of_file(path: str) -> list[ImageFacts]:
     if not _is_regular(path):
         raise UnreadableFileError("not a plain file, or it is gone", stray=True)
     header = read_header(path)

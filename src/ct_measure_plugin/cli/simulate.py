@@ -19,7 +19,9 @@ def add_parser(commands: argparse._SubParsersAction[argparse.ArgumentParser]) ->
     parser = commands.add_parser(
         "simulate", help="make the sample volumes with the virtual scanner"
     )
-    parser.add_argument("--samples", metavar="FOLDER", required=True, help="where to write them")
+    task = parser.add_mutually_exclusive_group(required=True)
+    task.add_argument("--samples", metavar="FOLDER", help="where to write them")
+    task.add_argument("--list", action="store_true", help="say which there are, and make none")
     parser.add_argument("--only", metavar="NAME", action="append", help="only this one; repeatable")
     parser.set_defaults(run=run)
 
@@ -32,6 +34,10 @@ def run(arguments: argparse.Namespace) -> int:
         if sys.stderr.isatty():
             print(f"\r{done}/{total} slices", end="", file=sys.stderr)
 
+    if arguments.list:
+        for item in samples.catalogue().values():
+            print(f"{item.name:12} {item.title}. {item.purpose}")
+        return DONE
     written = samples.remake(Path(arguments.samples), arguments.only, progress=show)
     print(f"Wrote {len(written)} files to {arguments.samples}")
     return DONE

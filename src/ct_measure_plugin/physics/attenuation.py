@@ -12,7 +12,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from functools import lru_cache
 from types import MappingProxyType
 from typing import TYPE_CHECKING, TypeAlias
@@ -222,7 +222,7 @@ class Material:
     name: str
     composition: str | tuple[tuple[str, float], ...]
     density_g_cm3: float
-    note: str = ""
+    note: str = field(default="", repr=False)
 
     def __post_init__(self) -> None:
         if not 0 < self.density_g_cm3 < math.inf:

@@ -24,15 +24,19 @@ if TYPE_CHECKING:
     from collections.abc import Iterator
 
 __all__ = [
+    "BEADS_MM",
     "BEAD_DIAMETER_MM",
     "CYLINDER_MM",
     "RAMP_DEG",
+    "RAMP_THICKNESS_MM",
     "SECTIONS",
     "WIRE_DIAMETER_MM",
+    "WIRE_TILT_DEG",
     "Insert",
     "bench_phantom",
     "edge_blocks",
     "faint_discs",
+    "fine_parts",
     "material_rods",
     "slice_centres",
 ]
@@ -50,7 +54,10 @@ SECTIONS = {
 }
 
 WIRE_DIAMETER_MM = 0.2
+WIRE_TILT_DEG = 3.0
 BEAD_DIAMETER_MM = 0.5
+#: z, y, x of the beads.
+BEADS_MM = ((50.0, 22.0, -26.0), (48.4, 44.0, -8.0), (51.7, 8.0, -38.0))
 RAMP_DEG = 25.0
 RAMP_THICKNESS_MM = 0.3
 
@@ -126,14 +133,15 @@ def faint_discs() -> tuple[Insert, ...]:
     )
 
 
-def _fine_parts() -> Iterator[Part]:
+def fine_parts() -> Iterator[Part]:
+    """Yield the wire, the beads and the two ramps."""
     extent = SECTIONS["fine"]
     copper, aluminium = material("copper"), material("aluminium")
     wire = tilted_wire(
-        (50.0, -20.0, 18.0), WIRE_DIAMETER_MM, tilt_deg=3.0, towards_deg=40.0, z_mm=extent
+        (50.0, -20.0, 18.0), WIRE_DIAMETER_MM, tilt_deg=WIRE_TILT_DEG, towards_deg=40.0, z_mm=extent
     )
     yield Part(wire, copper, WATER, "wire")
-    for place in ((50.0, 22.0, -26.0), (48.4, 44.0, -8.0), (51.7, 8.0, -38.0)):
+    for place in BEADS_MM:
         yield Part(Bead(place, 0.5 * BEAD_DIAMETER_MM), copper, WATER, "bead")
     for place, towards in (((50.0, 8.0, 10.0), 0.0), ((50.0, 32.0, 14.0), 180.0)):
         strip = ramp_strip(
@@ -167,5 +175,5 @@ def bench_phantom() -> Phantom:
         for insert in inserts:
             solid = disc_rod(insert.centre_mm, 0.5 * insert.size_mm, SECTIONS[section])
             parts.append(Part(solid, insert.material, WATER, insert.material.name))
-    parts.extend(_fine_parts())
+    parts.extend(fine_parts())
     return Phantom(tuple(parts), "Spindle stack (invented)")

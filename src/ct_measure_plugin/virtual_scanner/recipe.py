@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import hashlib
 import math
+import re
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING
 
@@ -25,6 +26,8 @@ if TYPE_CHECKING:
     FloatArray = NDArray[np.float64]
 
 __all__ = ["Recipe"]
+
+_NUMBER = re.compile(r"-?\d+\.\d+(?:e[-+]?\d+)?")
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -126,5 +129,10 @@ class Recipe:
         )
 
     def digest(self) -> str:
-        """Return the SHA-256 of everything in the recipe, hexadecimal."""
-        return hashlib.sha256(repr(self).encode()).hexdigest()
+        """Return the SHA-256 of everything in the recipe, hexadecimal.
+
+        Numbers enter with nine digits, so that the last bit of a sine on another machine does
+        not make another series of it.
+        """
+        text = _NUMBER.sub(lambda found: f"{float(found.group()):.9g}", repr(self))
+        return hashlib.sha256(text.encode()).hexdigest()

@@ -241,7 +241,7 @@ def remake(
     progress: Callable[[int, int], object] | None = None,
     cancel: Callable[[], bool] | None = None,
 ) -> tuple[Path, ...]:
-    """Make samples again, each in a folder of its name.
+    """Make samples again, each in a folder of its name; with all of them, their truth table.
 
     Parameters
     ----------
@@ -266,8 +266,10 @@ def remake(
     Cancelled
         If `cancel` answered True; series already written stay.
     """
+    from ct_measure_plugin.virtual_scanner.sample_table import truth_table
     from ct_measure_plugin.virtual_scanner.writer import write_enhanced, write_series
 
+    everything = wanted is None
     chosen = [sample(name) for name in (names() if wanted is None else wanted)]
     in_all = sum(len(item.recipe.positions_mm) for item in chosen)
     done = 0
@@ -288,4 +290,8 @@ def remake(
             paths.append(write_enhanced(volume, item.recipe, home / "frames.dcm", labels=marks))
         else:
             paths.extend(write_series(volume, item.recipe, home, labels=marks))
+    if everything:
+        page = Path(target) / "README.md"
+        page.write_bytes(truth_table().encode())
+        paths.append(page)
     return tuple(paths)

@@ -113,6 +113,15 @@ class SeriesEntry:
             parts.append(f"{self.kvp:g} kV")
         return ", ".join(parts)
 
+    def places_of(self, file: Path) -> tuple[int, ...]:
+        """Return the indices of the slices that come from a file; empty if none does."""
+        images = self._stack.images
+        return tuple(index for index, image in enumerate(images) if image.path == file)
+
+    def holds(self, file: Path) -> bool:
+        """Tell whether any slice comes from a file."""
+        return any(image.path == file for image in self._stack.images)
+
 
 @dataclass(frozen=True, slots=True)
 class SkippedFile:

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections import Counter
 from dataclasses import dataclass, field
+from os import fspath
 from typing import TYPE_CHECKING
 
 from ct_measure_plugin.dicom.geometry import StackGeometry, stack_geometry
@@ -115,12 +116,12 @@ class SeriesEntry:
 
     def places_of(self, file: Path) -> tuple[int, ...]:
         """Return the indices of the slices that come from a file; empty if none does."""
-        images = self._stack.images
-        return tuple(index for index, image in enumerate(images) if image.path == file)
+        images, name = self._stack.images, fspath(file)
+        return tuple(index for index, image in enumerate(images) if fspath(image.path) == name)
 
     def holds(self, file: Path) -> bool:
         """Tell whether any slice comes from a file."""
-        return any(image.path == file for image in self._stack.images)
+        return bool(self.places_of(file))
 
 
 @dataclass(frozen=True, slots=True)

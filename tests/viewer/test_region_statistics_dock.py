@@ -1,0 +1,223 @@
+"""The dock shows what Python measures, follows what is drawn, and survives what users do."""
+
+from __future__ import annotations
+
+import csv
+
+import numpy as np
+import pytest
+from qtpy.QtCore import Qt
+
+from ct_measure_plugin.measurements import measure
+from ct_measure_plugin.physics.regions import Disc
+from ct_measure_plugin.physics.results import NotMeasured
+from ct_measure_plugin.records import Logbook, read_json
+from ct_measure_plugin.viewer.docks.region_statistics import RegionStatisticsDock
+from ct_measure_plugin.viewer.layers import layer_of
+from ct_measure_plugin.viewer.shapes import new_regions_layer, rename, shape_of
+
+Z = -15.0  # slice 2 of the volume that conftest makes
+
+
+def corners_of(region, volume, k=2):
+    """A region's corners in voxels of the volume, on one slice."""
+    flat, kind = shape_of(region)
+    step, origin = np.asarray(volume.spacing_mm[1:]), np.asarray(volume.origin_mm[1:])
+    return np.c_[np.full(len(flat), k), (flat - origin) / step], kind
+
+
+@pytest.fixture
+def scene(qtbot, viewer_model, volume):
+    data, attributes, _ = layer_of(volume, "CT")
+    image = viewer_model.add_image(data, **attributes)
+    layer = new_regions_layer(viewer_model, image)
+    viewer_model.dims.set_point(0, Z)
+    dock = RegionStatisticsDock(viewer_model)
+    qtbot.addWidget(dock)
+    dock._image.choices = (image,)
+    dock._shapes.choices = (layer,)
+    dock.choose(image, layer)
+    return viewer_model, image, layer, dock
+
+
+def draw(layer, volume, region, name="", k=2):
+    corners, kind = corners_of(region, volume, k)
+    layer.add(corners, shape_type=kind)
+    if name:
+        rename(layer, layer.nshapes - 1, name)
+
+
+def test_the_table_shows_the_number_that_python_gives(scene, volume):
+    _, _, layer, dock = scene
+    draw(layer, volume, Disc((0.0, 24.0), 6.0), "water")
+    dock.refresh_now()
+    [row] = dock.model.rows
+    [drawn] = dock._drawn
+    direct = measure("region_statistics", volume, drawn.region)
+    assert row.answer.mean == direct.mean
+    assert row.name == "water"
+    assert dock.model.heading(1) == "Mean (HU)"
+    value, doubt = direct.mean.rounded()
+    assert dock.model.text(0, 1) == f"{value} ± {doubt}"
+
+
+def test_moving_a_region_changes_its_row_only(scene, volume):
+    _, _, layer, dock = scene
+    for x in (18.0, 30.0):
+        draw(layer, volume, Disc((0.0, x), 4.0))
+    dock.refresh_now()
+    before = [row.answer for row in dock.model.rows]
+    moved = [np.asarray(d) for d in layer.data]
+    moved[1] = moved[1] + [0, 3, 0]
+    layer.data = moved
+    dock.refresh_now()
+    after = [row.answer for row in dock.model.rows]
+    assert after[0] is before[0]
+    assert after[1].mean.value != before[1].mean.value
+
+
+def test_a_pasted_shape_is_followed(scene, volume, qtbot):
+    """napari emits no data event for a paste; the dock must not depend on one."""
+    _, _, layer, dock = scene
+    dock.show()
+    draw(layer, volume, Disc((0.0, 24.0), 6.0))
+    layer.selected_data = {0}
+    layer._copy_data()
+    layer._paste_data()
+    qtbot.waitUntil(lambda: len(dock.model.rows) == 2, timeout=3000)
+
+
+def test_rows_and_shapes_are_linked_both_ways(scene, volume):
+    viewer, _, layer, dock = scene
+    draw(layer, volume, Disc((0.0, 18.0), 4.0), k=1)
+    draw(layer, volume, Disc((0.0, 30.0), 4.0), k=4)
+    dock.refresh_now()
+    dock.table.selectRow(1)
+    assert layer.selected_data == {1}
+    assert round(viewer.dims.point[0], 6) == volume.positions_mm[4]
+    layer.selected_data = {0}
+    assert dock.table.chosen() == [0]
+
+
+def test_a_name_is_edited_in_the_table(scene, volume):
+    _, _, layer, dock = scene
+    draw(layer, volume, Disc((0.0, 18.0), 4.0))
+    dock.refresh_now()
+    cell = dock.model.index(0, 0)
+    assert dock.model.flags(cell) & Qt.ItemFlag.ItemIsEditable
+    assert dock.model.setData(cell, "spleen")
+    assert layer.features["name"].iloc[0] == "spleen"
+    dock.refresh_now()
+    assert dock.model.text(0, 0) == "spleen"
+
+
+def test_what_cannot_be_measured_says_so_in_its_row(scene, volume):
+    _, _, layer, dock = scene
+    layer.add(np.array([[2, 5, 5], [2, 20, 20], [2, 20, 5], [2, 5, 20]]), shape_type="polygon")
+    draw(layer, volume, Disc((300.0, 300.0), 4.0))
+    draw(layer, volume, Disc((0.0, 24.0), 0.4))
+    dock.refresh_now()
+    texts = [dock.model.text(i, 1) for i in range(3)]
+    assert "must not cross itself" in texts[0]
+    assert "outside the volume" in texts[1]
+    assert "at least 9 are needed" in texts[2]
+    assert all(isinstance(row.answer, NotMeasured) for row in dock.model.rows)
+
+
+def test_the_copy_is_a_table_with_units(scene, volume):
+    _, _, layer, dock = scene
+    draw(layer, volume, Disc((0.0, 24.0), 6.0), "water")
+    dock.refresh_now()
+    head, line = dock.model.as_text().splitlines()
+    assert head.startswith("Region\tMean (HU)\tSD (HU)\tn (px)\tArea (mm²)")
+    assert line.startswith("water\t")
+
+
+def test_what_is_exported_is_what_is_shown(scene, volume, tmp_path):
+    _, _, layer, dock = scene
+    draw(layer, volume, Disc((0.0, 24.0), 6.0), "water")
+    dock.refresh_now()
+    shown = dock.model.rows[0].answer
+    [record] = read_json(dock.keeping.export_to(tmp_path / "r.json"))
+    assert record.answer().mean == shown.mean
+    with dock.keeping.export_to(tmp_path / "r.csv").open(encoding="utf-8-sig") as stream:
+        rows = {row["quantity"]: row for row in csv.DictReader(stream)}
+    assert float(rows["mean"]["value"]) == shown.mean.value
+    page = dock.keeping.report_to(tmp_path / "p.html").read_text(encoding="utf-8")
+    assert f">{shown.mean.rounded()[0]}<" in page
+    with Logbook(tmp_path / "b.sqlite") as book:
+        assert dock.keeping.record_in(book) == 1
+        assert book.find()[0].answer().mean == shown.mean
+    assert len(dock.session.records) == 1
+
+
+def test_a_foreign_layer_is_asked_about_and_the_result_says_so(qtbot, viewer_model):
+    image = viewer_model.add_image(np.random.default_rng(1).normal(50, 5, (3, 64, 64)))
+    layer = new_regions_layer(viewer_model, image)
+    layer.add(np.array([[0, 20, 20], [0, 20, 40], [0, 40, 40], [0, 40, 20]]), shape_type="ellipse")
+    dock = RegionStatisticsDock(viewer_model)
+    qtbot.addWidget(dock)
+    dock._image.choices = (image,)
+    dock._shapes.choices = (layer,)
+    dock.choose(image, layer)
+    dock.refresh_now()
+    assert not dock.model.rows
+    assert "pixel size" in dock.message.text()
+    assert not dock.questions.isHidden()
+    for axis, step in zip("zyx", (2.0, 0.5, 0.5), strict=True):
+        dock.questions._steps[axis].setValue(step)
+    dock.refresh_now()
+    [row] = dock.model.rows
+    assert row.answer.area.value == pytest.approx(np.pi * 100 * 0.25, rel=1e-5)
+    codes = {caution.code for caution in row.answer.cautions}
+    assert {"spacing-assumed", "hu-assumed"} <= codes
+
+
+def test_layers_may_go_at_any_time(scene, volume):
+    viewer, image, layer, dock = scene
+    draw(layer, volume, Disc((0.0, 24.0), 6.0))
+    dock.refresh_now()
+    viewer.layers.remove(layer)
+    dock._shapes.choices = ()
+    dock.reset_choices()
+    dock.refresh_now()
+    assert not dock.model.rows
+    viewer.layers.remove(image)
+    dock._image.choices = ()
+    dock.reset_choices()
+    dock.refresh_now()
+    assert "Open an image first" in dock.message.text()
+
+
+def test_a_hidden_dock_does_nothing(scene, volume, qtbot):
+    _, _, layer, dock = scene
+    dock.hide()
+    draw(layer, volume, Disc((0.0, 24.0), 6.0))
+    qtbot.wait(120)
+    assert not dock.model.rows
+    dock.show()
+    qtbot.waitUntil(lambda: len(dock.model.rows) == 1, timeout=3000)
+
+
+@pytest.mark.canvas
+def test_a_real_drag_is_followed(make_napari_viewer, qtbot, volume):
+    """Mouse events on a real canvas: draw an ellipse by dragging, see its row appear."""
+    viewer = make_napari_viewer(show=True)
+    data, attributes, _ = layer_of(volume, "CT")
+    image = viewer.add_image(data, **attributes)
+    dock = RegionStatisticsDock(viewer)
+    viewer.window.add_dock_widget(dock, name="Region statistics")
+    dock.choose(image)
+    dock._start_drawing()
+    layer = dock._shapes.value
+    assert str(layer.mode) == "add_ellipse"
+    canvas = viewer.window._qt_viewer.canvas.native
+    centre = canvas.rect().center()
+    qtbot.mousePress(canvas, Qt.MouseButton.LeftButton, pos=centre)
+    for step in range(1, 9):
+        qtbot.mouseMove(canvas, centre + type(centre)(step * 12, step * 10))
+        qtbot.wait(20)
+    qtbot.mouseRelease(canvas, Qt.MouseButton.LeftButton, pos=centre + type(centre)(96, 80))
+    qtbot.waitUntil(lambda: len(dock.model.rows) == 1, timeout=5000)
+    assert layer.nshapes == 1
+    assert dock.model.rows[0].answer, str(dock.model.rows[0].answer)

@@ -202,7 +202,9 @@ def index_elements(data: bytes, start: int, encoding: Encoding) -> Elements:
     return elements
 
 
-def _walk(into: Elements, start: int, end: int, *, depth: int, closed: bool) -> int:
+def _walk(  # noqa: C901 - the one hot loop of opening a series
+    into: Elements, start: int, end: int, *, depth: int, closed: bool
+) -> int:
     """Index elements from `start`; return where they end.
 
     `closed` says that an item delimiter must end them (an item of undefined length).

@@ -18,7 +18,14 @@ if TYPE_CHECKING:
 
     from ct_measure_plugin.dicom.facts import ImageFacts
 
-__all__ = ["NO_PADDING", "PaddingFound", "padding_cautions", "padding_in", "padding_unseen"]
+__all__ = [
+    "IMPOSSIBLE_HU",
+    "NO_PADDING",
+    "PaddingFound",
+    "padding_cautions",
+    "padding_in",
+    "padding_unseen",
+]
 
 #: no matter attenuates less than vacuum (−1000 HU); noise and streaks reach a few hundred below
 IMPOSSIBLE_HU: Final = -1500.0

@@ -7,10 +7,15 @@ from typing import TYPE_CHECKING, Any, Final
 
 import numpy as np
 
+from ct_measure_plugin.dicom.padding import IMPOSSIBLE_HU
 from ct_measure_plugin.physics.results import Caution
 
 if TYPE_CHECKING:
+    from collections.abc import Sequence
+
     from numpy.typing import NDArray
+
+    from ct_measure_plugin.dicom.padding import PaddingFound
 
 __all__ = ["Sample", "implausible", "observed_limits", "sample_of"]
 
@@ -39,13 +44,32 @@ class Sample:
         return float(np.count_nonzero(inside)) / self.values.size
 
 
-def sample_of(planes: list[tuple[NDArray[Any], float, float]]) -> Sample:
-    """Return every fourth pixel of every fourth row of planes given with their padding range."""
+def sample_of(planes: Sequence[tuple[NDArray[Any], PaddingFound]]) -> Sample:
+    """Return every fourth pixel of every fourth row, without padding.
+
+    Where padding was only guessed from its value, no more than one fill value is left out: numbers
+    that are too low throughout must not hide themselves.
+    """
     parts = []
-    for plane, low, high in planes:
+    for plane, padding in planes:
         thin = plane[::4, ::4].ravel()
-        parts.append(thin[~((thin >= low) & (thin <= high))])
+        if padding.undeclared:
+            parts.append(_without_fill(thin))
+        else:
+            parts.append(thin[~((thin >= padding.low) & (thin <= padding.high))])
     return Sample(np.concatenate(parts) if parts else np.empty(0))
+
+
+def _without_fill(values: NDArray[Any]) -> NDArray[Any]:
+    low = values[values <= IMPOSSIBLE_HU]
+    if low.size == 0:
+        return values
+    found, counts = np.unique(low, return_counts=True)
+    commonest = int(np.argmax(counts))
+    if 2 * counts[commonest] < low.size:
+        return values
+    kept: NDArray[Any] = values[values != found[commonest]]
+    return kept
 
 
 def implausible(sample: Sample) -> Caution | None:

@@ -137,9 +137,7 @@ def _loaded_volume(entry: SeriesEntry, loaded: Loaded) -> Volume:
     limits = representable_of(images)
     if entry.unit == "HU":
         chosen = np.unique(np.linspace(0, len(images) - 1, _SAMPLED_SLICES).astype(int))
-        sample = sample_of(
-            [(loaded.values[k], loaded.padding[k].low, loaded.padding[k].high) for k in chosen]
-        )
+        sample = sample_of([(loaded.values[k], loaded.padding[k]) for k in chosen])
         doubt = implausible(sample)
         cautions += [doubt] if doubt else []
         limits = observed_limits(sample, limits)

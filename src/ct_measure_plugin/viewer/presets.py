@@ -21,7 +21,7 @@ from ct_measure_plugin.physics.windowing import WindowFunction, check_window
 __all__ = ["ANATOMY", "GROUPS", "OWN", "QUALITY", "Preset", "PresetShelf", "presets_file"]
 
 ANATOMY, QUALITY, OWN = "Anatomy", "Image quality", "Own"
-GROUPS = (ANATOMY, QUALITY, OWN)
+GROUPS = (OWN, QUALITY, ANATOMY)
 
 _LONGEST_NAME = 60
 
@@ -69,7 +69,7 @@ def _quality(name: str, width: float, centre: float, note: str) -> Preset:
 BUILT_IN: tuple[Preset, ...] = (
     _anatomy("Brain", 80, 40),
     _anatomy("Brain, narrow", 40, 40, "Grey against white matter."),
-    _anatomy("Blood beside bone", 200, 75),
+    _anatomy("Blood near bone", 200, 75, "Thin bleedings along the skull."),
     _anatomy("Temporal bone", 2800, 600),
     _anatomy("Soft tissue", 400, 50),
     _anatomy("Abdomen", 350, 50),
@@ -78,14 +78,14 @@ BUILT_IN: tuple[Preset, ...] = (
     _anatomy("Lung", 1500, -600),
     _anatomy("Bone", 2000, 500),
     _anatomy("Spine", 250, 50),
-    _anatomy("Vessels with contrast", 600, 300),
-    _quality("Water uniformity", 100, 0, "Cupping, shading and rings in water."),
+    _anatomy("Vessels", 600, 300, "Vessels filled with contrast agent."),
+    _quality("Water", 100, 0, "Cupping, shading and rings in water."),
     _quality("Low contrast", 60, 40, "Set the centre to the background's mean: 'From a region'."),
     _quality("Rings", 50, 0, "Set the centre to the background's mean: 'From a region'."),
-    _quality("Rods and inserts", 400, 0, "Alignment, and inserts near water."),
-    _quality("Bars, dense inserts", 1000, 1100, "High-contrast detail."),
+    _quality("Rods", 400, 0, "Alignment, and inserts near water."),
+    _quality("Dense inserts", 1000, 1100, "Bar patterns and other high-contrast detail."),
     _quality("Wire and beads", 3000, 800, "Small dense objects, without clipping their peak."),
-    _quality("Phantom's outline", 1000, -500, "The edge against air."),
+    _quality("Outline in air", 1000, -500, "The edge against air."),
     _quality("Full scale", 4096, 1024, "Everything from -1024 to 3071 HU, as 12 bits hold it."),
 )
 

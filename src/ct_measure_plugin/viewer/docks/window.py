@@ -23,7 +23,7 @@ from qtpy.QtWidgets import (
 from ct_measure_plugin.errors import CtMeasureError
 from ct_measure_plugin.physics.windowing import window_of_spread
 from ct_measure_plugin.viewer.docks.dock import Dock
-from ct_measure_plugin.viewer.docks.window_controls import WindowControls
+from ct_measure_plugin.viewer.docks.window_controls import WindowControls, number
 from ct_measure_plugin.viewer.docks.window_presets import WindowPresets
 from ct_measure_plugin.viewer.layers import is_ct, own_volume
 from ct_measure_plugin.viewer.presets import PresetShelf
@@ -128,10 +128,10 @@ class WindowDock(Dock):
 
     def _add_shortcuts(self) -> None:
         """Ctrl+Alt+1 to 9 pick the first presets of the list, while the dock is there."""
-        for number in range(1, _SHORTCUTS + 1):
-            keys = QShortcut(QKeySequence(f"Ctrl+Alt+{number}"), self)
+        for digit in range(1, _SHORTCUTS + 1):
+            keys = QShortcut(QKeySequence(f"Ctrl+Alt+{digit}"), self)
             keys.setContext(Qt.ShortcutContext.WindowShortcut)
-            keys.activated.connect(lambda at=number - 1: self._pick_at(at))
+            keys.activated.connect(lambda at=digit - 1: self._pick_at(at))
 
     def _pick_at(self, place: int) -> None:
         names = self.presets.names()
@@ -213,7 +213,7 @@ class WindowDock(Dock):
 
     def _mapping_text(self, first: Any, function: str, unit: str, layers: tuple[Any, ...]) -> str:
         low, high = (float(limit) for limit in first.contrast_limits)
-        ends = f"{low:.5g} to {high:.5g} {unit}".strip()
+        ends = f"{number(low)} to {number(high)} {unit}".strip()
         if function == "SIGMOID":
             text = f"Contrast limits {ends}; the curve is in the colour map."
         else:

@@ -12,7 +12,7 @@ from ct_measure_plugin.physics.windowing import FUNCTIONS
 if TYPE_CHECKING:
     from ct_measure_plugin.physics.windowing import WindowFunction
 
-__all__ = ["FUNCTION_NAMES", "WindowControls"]
+__all__ = ["FUNCTION_NAMES", "WindowControls", "number"]
 
 #: DICOM's terms, in words.
 FUNCTION_NAMES: dict[WindowFunction, str] = {
@@ -103,6 +103,11 @@ class WindowControls(QWidget):
             blocker = QSignalBlocker(slider)
             slider.setValue(_step(width) if value is None else value)
             del blocker
+
+
+def number(value: float) -> str:
+    """Return a number as it is printed, with a true minus sign."""
+    return f"{value:.6g}".replace("-", "−")
 
 
 def _spin(name: str, low: float, high: float, tip: str) -> QDoubleSpinBox:

@@ -19,8 +19,8 @@ from qtpy.QtWidgets import (
 )
 
 from ct_measure_plugin.errors import ArgumentError
-from ct_measure_plugin.viewer.docks.window_controls import FUNCTION_NAMES
-from ct_measure_plugin.viewer.presets import ANATOMY, GROUPS, OWN, Preset, PresetShelf
+from ct_measure_plugin.viewer.docks.window_controls import FUNCTION_NAMES, number
+from ct_measure_plugin.viewer.presets import GROUPS, OWN, Preset, PresetShelf
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
@@ -104,7 +104,7 @@ class WindowPresets(QWidget):
                 self._add_group(group, members)
         for index in range(self.tree.topLevelItemCount()):
             item = self.tree.topLevelItem(index)
-            item.setExpanded(not folded.get(item.text(0), item.text(0) == ANATOMY))
+            item.setExpanded(not folded.get(item.text(0), False))
         self._allow_removal()
 
     def names(self) -> list[str]:
@@ -128,7 +128,9 @@ class WindowPresets(QWidget):
         group.setFirstColumnSpanned(True)
         group.setFlags(Qt.ItemFlag.ItemIsEnabled)
         for preset in members:
-            item = QTreeWidgetItem(group, [preset.name, f"{preset.centre:g}", f"{preset.width:g}"])
+            item = QTreeWidgetItem(
+                group, [preset.name, number(preset.centre), number(preset.width)]
+            )
             item.setData(0, _ROLE, preset)
             for column in (1, 2):
                 item.setTextAlignment(column, Qt.AlignmentFlag.AlignRight)
@@ -232,7 +234,10 @@ def _of_header(number: int, window: HeaderWindow) -> Preset:
 
 
 def _tip(preset: Preset, *, own: bool) -> str:
-    lines = [f"Centre {preset.centre:g}, width {preset.width:g}", FUNCTION_NAMES[preset.function]]
+    lines = [
+        f"Centre {number(preset.centre)}, width {number(preset.width)}",
+        FUNCTION_NAMES[preset.function],
+    ]
     if preset.note:
         lines.append(preset.note)
     if own:

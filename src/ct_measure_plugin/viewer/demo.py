@@ -1,0 +1,124 @@
+"""Open napari on a series with every dock filled.
+
+``python -m ct_measure_plugin.viewer.demo FOLDER [--records FILE]``
+
+The docks are those of the plugin's own manifest, so a new one appears here by itself.
+"""
+
+from __future__ import annotations
+
+import argparse
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    from collections.abc import Iterable, Sequence
+
+    from ct_measure_plugin.physics.regions import Region
+    from ct_measure_plugin.records import Record
+
+__all__ = ["PLUGIN", "add_docks", "draw_regions", "fill", "main", "regions_of"]
+
+PLUGIN = "ct-measure-plugin"
+
+
+def main(arguments: Sequence[str] | None = None) -> int:
+    """Open the window and stay until it is closed."""
+    parser = argparse.ArgumentParser(prog="ct_measure_plugin.viewer.demo", description=__doc__)
+    parser.add_argument("folder", type=Path, help="a folder with a CT series")
+    parser.add_argument("--records", type=Path, help="records whose regions are drawn")
+    given = parser.parse_args(arguments)
+    import napari
+
+    from ct_measure_plugin.records import read_json
+
+    records = read_json(given.records) if given.records else ()
+    viewer = napari.Viewer(title="CT Measure")
+    fill(viewer, given.folder, records)
+    napari.run()
+    return 0
+
+
+def fill(viewer: Any, folder: Path, records: Sequence[Record] = ()) -> None:
+    """Open a series, draw the records' regions on it, and open every dock.
+
+    Parameters
+    ----------
+    viewer : napari.Viewer
+        Any viewer with a window.
+    folder : Path
+        Holds the series.
+    records : sequence of Record
+        Kept in the session; their regions are drawn.
+    """
+    from ct_measure_plugin.viewer.session import Session
+
+    image = viewer.open(str(folder), plugin=PLUGIN)[0]
+    session = Session.of(viewer)
+    for record in records:
+        session.keep(record)
+    draw_regions(viewer, image, regions_of(records))
+    add_docks(viewer)
+    viewer.canvas.overlays.scale_bar.visible = True
+    viewer.reset_view()
+
+
+def regions_of(records: Iterable[Record]) -> list[Region]:
+    """Return the regions of records, each once, that have an outline to draw."""
+    from ct_measure_plugin.records import region_from_dict
+
+    found: dict[str, Region] = {}
+    for record in records:
+        for text in record.regions:
+            if text.get("kind") != "mask":
+                found.setdefault(str(text), region_from_dict(text))
+    return list(found.values())
+
+
+def draw_regions(viewer: Any, image: Any, regions: Sequence[Region]) -> Any:
+    """Draw regions on a layer over an image, each on the slice in its middle; go to the first.
+
+    Returns the Shapes layer.
+    """
+    import numpy as np
+
+    from ct_measure_plugin.physics.coverage import slices_of
+    from ct_measure_plugin.viewer.session import Session
+    from ct_measure_plugin.viewer.shapes import new_regions_layer, rename, shape_of
+
+    placement = Session.of(viewer).placement(image)
+    layer = new_regions_layer(viewer, image)
+    stand = None
+    for region in regions:
+        slices = slices_of(region, placement.volume)
+        z = float(placement.volume.positions_mm[slices[len(slices) // 2]])
+        corners, kind = shape_of(region)
+        worlds = [placement.world_of((z, float(y), float(x))) for y, x in corners]
+        layer.add([np.array([layer.world_to_data(world) for world in worlds])], shape_type=kind)
+        rename(layer, layer.nshapes - 1, region.name)
+        stand = worlds[0] if stand is None else stand
+    if stand is not None and layer.ndim == 3:
+        viewer.dims.set_point(0, stand[0])
+        layer.selected_data = {0}
+    layer.mode = "select"
+    return layer
+
+
+def add_docks(viewer: Any) -> list[Any]:
+    """Open every dock of the manifest, as tabs of one column; return the widgets."""
+    from npe2 import PluginManager
+
+    manifest = PluginManager.instance().get_manifest(PLUGIN)
+    found: list[tuple[Any, Any]] = []
+    for widget in manifest.contributions.widgets or ():
+        dock, inside = viewer.window.add_plugin_dock_widget(
+            PLUGIN, widget.display_name, tabify=bool(found)
+        )
+        found.append((dock, inside))
+    if found:
+        found[-1][0].raise_()
+    return [inside for _, inside in found]
+
+
+if __name__ == "__main__":
+    raise SystemExit(main())

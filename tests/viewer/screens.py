@@ -1,0 +1,104 @@
+"""Pictures of the docks as people see them, 1280 × 800, dark and light.
+
+    xvfb-run -a -s "-screen 0 1400x900x24" python tests/viewer/screens.py FOLDER
+
+Without a folder they go to docs/images. 256 colours keep each under 200 kB.
+"""
+
+from __future__ import annotations
+
+import argparse
+import os
+import tempfile
+from pathlib import Path
+
+os.environ.setdefault(
+    "NAPARI_CONFIG", str(Path(tempfile.mkdtemp(prefix="ct-measure-screens-")) / "settings.yaml")
+)
+os.environ.setdefault("QT_API", "pyside6")
+
+ROOT = Path(__file__).parents[2]
+SIZE = (1280, 800)
+THEMES = ("dark", "light")
+
+
+def wait(seconds=0.6):
+    """Let Qt draw and timers run."""
+    from qtpy.QtCore import QEventLoop, QTimer
+
+    loop = QEventLoop()
+    QTimer.singleShot(int(seconds * 1000), loop.quit)
+    loop.exec()
+
+
+def records_of_demo(folder):
+    from ct_measure_plugin.dicom import read_series
+    from ct_measure_plugin.records import load_plan
+    from ct_measure_plugin.run import run_plan
+    from ct_measure_plugin.virtual_scanner import samples
+
+    return run_plan(load_plan(samples.folder() / "demo_plan.yaml"), read_series(folder))
+
+
+def open_filled():
+    """Return a napari window as the demo fills it, and its docks by display name."""
+    import napari
+    from npe2 import PluginManager
+
+    from ct_measure_plugin.viewer import demo
+    from ct_measure_plugin.virtual_scanner import samples
+
+    folder = samples.folder("standard")
+    viewer = napari.Viewer(show=True)
+    viewer.window.resize(*SIZE)
+    demo.fill(viewer, folder, records_of_demo(folder))
+    manifest = PluginManager.instance().get_manifest(demo.PLUGIN)
+    names = [widget.display_name for widget in manifest.contributions.widgets]
+    docks = {
+        name: next(dock for title, dock in viewer.window.dock_widgets.items() if name in title)
+        for name in names
+    }
+    return viewer, docks
+
+
+def raise_tab(widget):
+    """Bring the tab of a docked widget to the front."""
+    from qtpy.QtWidgets import QDockWidget
+
+    while widget is not None and not isinstance(widget, QDockWidget):
+        widget = widget.parentWidget()
+    if widget is not None:
+        widget.show()
+        widget.raise_()
+
+
+def save(viewer, path):
+    """Write a picture of the whole window."""
+    from PIL import Image
+
+    pixels = viewer.screenshot(canvas_only=False, flash=False)[..., :3]
+    few = Image.fromarray(pixels).quantize(256, dither=Image.Dither.NONE)
+    few.save(path, optimize=True)
+    return pixels.shape
+
+
+def main():
+    parser = argparse.ArgumentParser(description=__doc__)
+    parser.add_argument("folder", type=Path, nargs="?", default=ROOT / "docs/images")
+    given = parser.parse_args()
+    given.folder.mkdir(parents=True, exist_ok=True)
+    viewer, docks = open_filled()
+    for theme in THEMES:
+        viewer.theme = theme
+        for name, dock in docks.items():
+            raise_tab(dock)
+            wait()
+            file = given.folder / f"{name.lower().replace(' ', '_')}_{theme}.png"
+            shape = save(viewer, file)
+            size = f"{file.stat().st_size / 1000:.0f} kB"
+            print(f"{file.name}: {shape[1]} × {shape[0]}, {size}")  # noqa: T201
+    viewer.close()
+
+
+if __name__ == "__main__":
+    main()

@@ -13,7 +13,7 @@ from typing import TYPE_CHECKING, Any, Final
 import numpy as np
 
 from ct_measure_plugin.dicom.codestream import Codestream, codestream_of
-from ct_measure_plugin.dicom.syntaxes import SYNTAXES, missing_decoder
+from ct_measure_plugin.dicom.syntaxes import SYNTAXES, installed, missing_decoder
 from ct_measure_plugin.errors import DecoderMissingError, SeriesError
 
 if TYPE_CHECKING:
@@ -27,6 +27,20 @@ if TYPE_CHECKING:
 __all__ = ["decoded_plane", "require_decoder"]
 
 _ITEM: Final = b"\xfe\xff\x00\xe0"
+#: where the DICOM library and its decoders log from while they decode
+_LOUD: Final = (
+    "pydicom",
+    "pydicom.misc",
+    "pydicom.encaps",
+    "pydicom.pixels.common",
+    "pydicom.pixels.utils",
+    "pydicom.pixels.decoders.base",
+    "jpeg_ls",
+    "pylibjpeg",
+    "pylibjpeg.utils",
+    "openjpeg.utils",
+    "libjpeg.utils",
+)
 _RLE_NOTE: Final = "The decoded RLE segment contains non-conformant padding"
 
 
@@ -73,7 +87,7 @@ def decoded_plane(image: ImageFacts) -> tuple[NDArray[Any], bool | None]:
     if SYNTAXES[image.syntax_uid].family == "rle":
         return _decoded(image, data, image.layout.allocated), True
     stream = codestream_of(data)
-    _require_same_plane(image, stream)
+    _require_sound(image, data, stream)
     assert stream is not None  # noqa: S101 - checked in the line above
     plane = _decoded(image, data, 8 if stream.precision <= 8 else 16)
     if plane.dtype.itemsize == 1 and image.layout.allocated > 8:
@@ -83,12 +97,16 @@ def decoded_plane(image: ImageFacts) -> tuple[NDArray[Any], bool | None]:
     return plane, stream.exact
 
 
-def _require_same_plane(image: ImageFacts, stream: Codestream | None) -> None:
+def _require_sound(image: ImageFacts, data: bytes, stream: Codestream | None) -> None:
     layout = image.layout
     if stream is None:
         raise SeriesError("a compressed slice is damaged: its stream has no frame header")
     if (stream.rows, stream.columns, stream.components) != (layout.rows, layout.columns, 1):
         raise SeriesError("a compressed slice is damaged: its stream holds another plane")
+    # some decoders fill what is cut off with made-up values; the end marker is on the last bytes,
+    # before a little padding
+    if b"\xff\xd9" not in data[-16:]:
+        raise SeriesError("a compressed slice is damaged: its stream is cut short")
     if not 2 <= stream.precision <= 16:
         raise SeriesError("a compressed slice has more than 16 bits, which is not read here")
 
@@ -123,7 +141,12 @@ def _decoded(image: ImageFacts, data: bytes, allocated: int) -> NDArray[Any]:
     try:
         with _silenced():
             plane, _ = get_decoder(image.syntax_uid).as_array(
-                encapsulate([data]), index=0, raw=True, validate=False, **options
+                encapsulate([data]),
+                index=0,
+                raw=True,
+                validate=False,
+                decoding_plugin=_plugin(image.syntax_uid),
+                **options,
             )
     except MemoryError:
         raise
@@ -134,6 +157,14 @@ def _decoded(image: ImageFacts, data: bytes, allocated: int) -> NDArray[Any]:
         raise SeriesError("a compressed slice is damaged: its stream holds another plane")
     unsigned: NDArray[Any] = plane.view(f"u{plane.dtype.itemsize}")
     return unsigned
+
+
+def _plugin(syntax_uid: str) -> str:
+    """Return which decoder to use: one for each syntax, so that numbers do not depend on chance."""
+    syntax = SYNTAXES[syntax_uid]
+    if syntax.family == "rle":
+        return "pydicom"
+    return "pyjpegls" if installed(syntax) == "jpeg_ls" else "pylibjpeg"
 
 
 def _frame_bytes(image: ImageFacts) -> bytes:
@@ -217,7 +248,8 @@ def _silenced() -> Iterator[None]:
     Thread-safe: the log filter looks at a flag of this thread only. The warning is refused by an
     entry that names its text; `warnings.catch_warnings` would change the filters of all threads.
     """
-    logging.getLogger("pydicom").addFilter(_quiet)  # adding it again does nothing
+    for name in _LOUD:
+        logging.getLogger(name).addFilter(_quiet)  # adding it again does nothing
     if not any(entry[0] == "ignore" and _names_rle(entry) for entry in warnings.filters):
         warnings.filterwarnings("ignore", message=_RLE_NOTE)
     _quiet.here.on = True

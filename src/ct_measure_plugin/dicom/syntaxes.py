@@ -7,7 +7,7 @@ from dataclasses import dataclass
 from functools import lru_cache
 from typing import Final
 
-__all__ = ["IMPLICIT_LITTLE", "SYNTAXES", "Syntax", "missing_decoder"]
+__all__ = ["IMPLICIT_LITTLE", "SYNTAXES", "Syntax", "installed", "missing_decoder"]
 
 EXPLICIT_LITTLE: Final = "1.2.840.10008.1.2.1"
 IMPLICIT_LITTLE: Final = "1.2.840.10008.1.2"
@@ -88,6 +88,11 @@ def _importable(module: str) -> bool:
     return importlib.util.find_spec(module) is not None
 
 
+def installed(syntax: Syntax) -> str:
+    """Return the first importable module that decodes a syntax, ``""`` if there is none."""
+    return next((module for module in syntax.modules if _importable(module)), "")
+
+
 def missing_decoder(syntax: Syntax) -> str:
     """Return the pip command that brings the missing decoder, ``""`` if none is missing.
 
@@ -96,6 +101,4 @@ def missing_decoder(syntax: Syntax) -> str:
     >>> missing_decoder(SYNTAXES[IMPLICIT_LITTLE])
     ''
     """
-    if not syntax.modules or any(_importable(module) for module in syntax.modules):
-        return ""
-    return syntax.pip_command
+    return syntax.pip_command if syntax.modules and not installed(syntax) else ""

@@ -98,9 +98,8 @@ def rebin(values: FloatArray, geometry: FanBeam) -> Parallel:
     """Return the parallel projections of a fan scan, by cubic splines in view and channel.
 
     The parallel ray (θ, t) is the fan ray γ = arcsin(t/D), β = θ − γ (Kak and Slaney 1988,
-    ch. 3). Cubic spline interpolation between the channels multiplies the spectrum by
-    3 sinc⁴(fd)/(2 + cos 2πfd) on the average over positions (M. Unser, IEEE Signal Process. Mag.
-    16(6), 1999, 22-38; reference from memory).
+    ch. 3). Near the isocentre the rays of the two grids nearly coincide, and nothing is lost;
+    further out the splines blur a little.
     """
     count = math.floor(2.0 * geometry.radius_mm / geometry.pitch_mm) + 1
     count -= (count - geometry.channels) % 2

@@ -69,7 +69,7 @@ def _quality(name: str, width: float, centre: float, note: str) -> Preset:
 BUILT_IN: tuple[Preset, ...] = (
     _anatomy("Brain", 80, 40),
     _anatomy("Brain, narrow", 40, 40, "Grey against white matter."),
-    _anatomy("Blood near bone", 200, 75, "Thin bleedings along the skull."),
+    _anatomy("Blood by bone", 200, 75, "Thin bleedings along the skull."),
     _anatomy("Temporal bone", 2800, 600),
     _anatomy("Soft tissue", 400, 50),
     _anatomy("Abdomen", 350, 50),

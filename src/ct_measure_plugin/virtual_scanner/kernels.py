@@ -37,7 +37,7 @@ class Kernel:
     order : int
         "butterworth": n.
     gain : float
-        "enhancing": g. A exceeds 1 for g above π²/4; at 6 it peaks at 1.31 at u = 0.43.
+        "enhancing": g. A exceeds 1 for g above π²/4; at 6 it peaks at 1.285 at u = 0.42.
 
     Notes
     -----

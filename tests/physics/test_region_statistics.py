@@ -109,7 +109,9 @@ def test_misuse_names_the_argument():
 def test_a_flat_list_says_that_it_was_taken_as_independent():
     found = region_statistics(np.arange(60.0), spacing_mm=(0.5, 0.5))
     assert "independence-assumed" in codes(found)
-    assert found.mean.uncertainty == pytest.approx(found.sd.value / math.sqrt(60))
+    student = stats.t.ppf(0.975, 59) / stats.norm.ppf(0.975)
+    error = found.sd.value / math.sqrt(60) * student
+    assert found.mean.uncertainty == pytest.approx(error, rel=1e-4)  # the factor is tabulated
 
 
 def test_few_pixels_are_cautioned_from_the_stated_number_on():
@@ -144,5 +146,6 @@ def test_stated_uncertainties_match_the_scatter_of_repeats():
         stated = np.array([getattr(f, name).uncertainty for f in found])
         ratio = math.sqrt(np.mean(stated**2)) / values.std()
         # 3,000 repeats fix the scatter to 1.3 %; the median's order-statistic estimate and the
-        # small-sample terms of skewness and kurtosis (about 3/n) add a few percent
-        assert ratio == pytest.approx(1.0, abs=0.06), name
+        # small-sample terms of skewness and kurtosis (about 3/n) add a few percent; Student's factor
+        # widens the mean's, never narrows it
+        assert 0.94 < ratio < 1.09, name

@@ -2,19 +2,23 @@
 
 The variance of a weighted mean is ``sum_lag C(lag) R(lag) / W**2``, with `C` the autocovariance of
 the noise, `R` the autocorrelation of the weights and `W` their sum: the same integral as
-∬ S |W(f)|² df over the noise power spectrum `S`. Here `S` is estimated from the region itself: its
-ring-averaged autocovariance is fitted by spectra that are nowhere negative, so that a region of
-few pixels still gives a spectrum that could exist.
+∬ S |W(f)|² df over the noise power spectrum `S`. Here `S` is judged from the region itself: every
+spectrum of a library is weighed by how well it explains the region's periodogram, and the
+variances that the spectra give are averaged with these weights. What the region cannot decide
+widens the standard error by the factor of Student's distribution.
 """
 
 from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from functools import cache
 from typing import TYPE_CHECKING
 
 import numpy as np
-from scipy import fft, optimize
+from scipy import fft, stats
+
+from ct_measure_plugin.physics.noise_spectra import Geometry, geometry, library
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -23,17 +27,16 @@ if TYPE_CHECKING:
 
 __all__ = ["MeanDoubt", "doubt_of_mean", "independent_doubt"]
 
-#: Widths s of the model's Gaussian envelopes, in pixels: from noise that is white to the eye to
-#: blobs eight pixels across.
-WIDTHS = (1.0, 1.4, 2.0, 2.8, 4.0, 5.6, 8.0)
+#: A known white floor, in units of the region's variance, added to data and model alike: it keeps
+#: frequencies at which there is next to no noise from outvoting those that decide the mean.
+FLOOR = 0.05
 
-#: How much better a correlated model must fit than white noise, in units of the variance of one
-#: squared correlation (2 for the two sides of a lag): white noise passes for correlated about once
-#: in fifty regions.
-CORRELATION_STANDS_OUT = 16.0
+#: Independent values of the periodogram that may vote; in larger regions the highest frequencies
+#: lose their vote first, since no spectrum of the library fits them to the last percent.
+VOTES = 600.0
 
-#: Longest lag looked at, in pixels; beyond it the envelopes above have died out.
-LONGEST_LAG = 18
+#: Below so many pixels the noise is taken as independent.
+FEWEST = 16.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -43,33 +46,53 @@ class MeanDoubt:
     Attributes
     ----------
     variance_of_mean : float
-        Variance of the weighted mean, in squared units of the values.
+        Square of the standard error of the weighted mean, in squared units of the values. The
+        standard error is enlarged by t(0.975, freedom)/1.96, so that ±1.96 of it hold the mean 95 %
+        of the time although it is itself an estimate (JCGM 100:2008, G.3).
     power_samples : float
         Number of independent samples as the sample variance sees them,
         ``W**2 / sum_lag rho(lag)**2 R(lag)``: twice the inverse squared relative uncertainty of
         the variance.
     reach : float
-        Distance to which the noise is correlated (|rho| over 0.05), in the unit of the spacing; 0
+        Distance to which the noise is correlated (|rho| over 0.1), in the unit of the spacing; 0
         if the pixels are independent.
+    freedom : float
+        Degrees of freedom of the variance of the mean.
     """
 
     variance_of_mean: float
     power_samples: float
     reach: float
+    freedom: float
+
+
+@cache
+def _student_table() -> tuple[Floats, Floats]:
+    freedom = np.geomspace(2.0, 1e5, 500)
+    factor: Floats = np.asarray(stats.t.ppf(0.975, freedom) / stats.norm.ppf(0.975), float)
+    return np.log(freedom), factor
+
+
+def _student(freedom: float) -> float:
+    """Return t(0.975, freedom)/1.96; freedom below 2 counts as 2."""
+    return float(np.interp(math.log(freedom), *_student_table()))
 
 
 def independent_doubt(values: Floats, weights: Floats) -> MeanDoubt:
     """Return the doubt of a weighted mean of independent samples.
 
-    >>> doubt = independent_doubt(np.array([1.0, 2.0, 3.0]), np.ones(3))
-    >>> round(doubt.variance_of_mean, 12)  # s**2 / n
-    0.333333333333
+    >>> doubt = independent_doubt(np.arange(2000.0), np.ones(2000))
+    >>> round(float(doubt.variance_of_mean / (np.var(np.arange(2000.0), ddof=1) / 2000)), 2)
+    1.0
     """
     total = float(weights.sum())
     squares = float(np.sum(weights**2))
     residual = values - float(np.sum(weights * values)) / total
     spread = float(np.sum((weights * residual) ** 2))
-    return MeanDoubt(spread / (total**2 - squares), total**2 / squares, 0.0)
+    samples = total**2 / squares
+    freedom = max(samples - 1, 1.0)
+    variance = spread / (total**2 - squares)
+    return MeanDoubt(variance * _student(freedom) ** 2, samples, 0.0, freedom)
 
 
 def doubt_of_mean(values: Floats, weights: Floats, spacing_mm: tuple[float, ...]) -> MeanDoubt:
@@ -85,102 +108,104 @@ def doubt_of_mean(values: Floats, weights: Floats, spacing_mm: tuple[float, ...]
     Notes
     -----
     Within a slice the noise is taken as isotropic and stationary. With ``r`` the residuals about
-    the mean, the autocorrelation of ``w r`` divided by that of ``w`` estimates ``C(lag) - V``, V
-    being the variance of the mean itself, which subtracting the sample mean takes away at every
-    lag. Both are linear in the coefficients of the model spectrum
+    the mean, the periodogram of ``w r``, averaged over directions, is compared with what each
+    spectrum of the library makes one expect: its autocovariance times the autocorrelation of the
+    weights, less the variance of the mean itself, transformed alike (the expectation of a debiased
+    Whittle likelihood [1]_). Each value is taken as gamma-distributed with as many degrees of
+    freedom as the region has independent ones in that ring. The weights of the spectra times their
+    prior give the mean and the variance of ln Var(mean); the degrees of freedom are 2 over the
+    latter. Between slices the correlation is taken from equal pixels, followed until it falls into
+    its own noise.
 
-        S(f) = c + (a + b f²) exp(-π² s² f²),   all coefficients ≥ 0,
-
-    (a: smooth noise; b: noise that vanishes at f = 0 as filtered backprojection's does), so a
-    non-negative least-squares fit gives them for each width s, and the best s is kept. Between
-    slices the correlation is taken from equal pixels, followed until it falls into its own noise.
+    References
+    ----------
+    .. [1] Sykulski, Olhede, Guillaumin, Lilly, Early 2019, "The debiased Whittle likelihood",
+       Biometrika 106, 251-266 (cited from memory).
     """
-    steps = spacing_mm[-2:]
     stack = (values if values.ndim == 3 else values[None]).astype(float)
     cover = weights if weights.ndim == 3 else weights[None]
     total = float(cover.sum())
-    white = independent_doubt(values[weights > 0], weights[weights > 0])
+    inside = weights > 0
+    white = independent_doubt(values[inside], weights[inside])
+    if white.variance_of_mean == 0 or total < FEWEST:
+        return white
     residual = np.where(cover > 0, stack - float(np.sum(cover * stack)) / total, 0.0)
     signal = cover * residual
-    if white.variance_of_mean == 0 or total < 16:
-        return white
-    lags = _lags(signal, cover, steps)
-    model = _fit(lags, total)
-    if model is None:
-        return white
     slices, slice_power = _between_slices(signal, cover)
-    variance = float(np.sum(model * lags.pairs)) / total**2 * slices
-    rho = model / model[lags.zero]
-    power = total**2 / float(np.sum(rho**2 * lags.pairs)) / slice_power
-    correlated = lags.distance[np.abs(rho) > 0.05]
-    return MeanDoubt(variance, max(power, 1.0), float(correlated.max(initial=0.0)))
-
-
-@dataclass(frozen=True, slots=True, eq=False)
-class _Lags:
-    """Lags of a window about 0, flattened: lengths (mm and px²), covariance sums and pair sums."""
-
-    distance: Floats
-    square: Floats
-    covariance: Floats
-    pairs: Floats
-    zero: int
-
-
-def _lags(signal: Floats, cover: Floats, steps: tuple[float, ...]) -> _Lags:
-    longest = [min(LONGEST_LAG, n - 1) for n in signal.shape[1:]]
-    size = [
-        fft.next_fast_len(n + m, real=True) for n, m in zip(signal.shape[1:], longest, strict=True)
-    ]
-    power = np.abs(fft.rfft2(np.concatenate([signal, cover]), size)) ** 2
-    nz = len(signal)
-    auto = fft.irfft2(np.stack([power[:nz].sum(0), power[nz:].sum(0)]), size)
-    rows = np.arange(-longest[0], longest[0] + 1)
-    columns = np.arange(longest[1] + 1)  # the other half mirrors this one
-    covariance, pairs = auto[:, rows[:, None], columns[None, :]]
-    pairs = np.where(pairs > 0.5, pairs, 0.0)
-    twice = np.where(columns == 0, 1.0, 2.0)
-    finest = min(steps)
-    square_mm = (rows[:, None] * steps[0]) ** 2 + (columns[None, :] * steps[1]) ** 2
-    return _Lags(
-        np.sqrt(square_mm).ravel(),
-        (square_mm / finest**2).ravel(),
-        (np.where(pairs > 0, covariance, 0.0) * twice).ravel(),
-        (pairs * twice).ravel(),
-        int(longest[0] * (longest[1] + 1)),
+    seen = _observe(signal, cover, spacing_mm[-2:])
+    dof = white.power_samples / slice_power
+    weight, variance, level = _weigh(seen, dof, slices / total**2)
+    log_variance = np.log(variance)
+    middle = float(weight @ log_variance)
+    spread = float(weight @ (log_variance - middle) ** 2) + 2.0 / min(dof, VOTES)
+    freedom = 2.0 / spread
+    power, reach = _correlation(seen, weight * level, total**2)
+    return MeanDoubt(
+        math.exp(middle) * _student(freedom) ** 2,
+        max(power / slice_power, 1.0),
+        reach * min(spacing_mm[-2:]),
+        freedom,
     )
 
 
-def _fit(lags: _Lags, total: float) -> Floats | None:
-    """Return the model autocovariance at every lag, or None if white noise explains them."""
-    ring = np.rint(np.sqrt(lags.square)).astype(int)
-    pairs = np.bincount(ring, lags.pairs)
-    used = pairs > 0
-    weight = np.sqrt(pairs[used])
-    measured = np.bincount(ring, lags.covariance)[used] / pairs[used]
-    if not measured[0] > 0:
-        return None
-    target = measured / measured[0] * weight
+@dataclass(frozen=True, slots=True, eq=False)
+class _Seen:
+    """A region's autocovariance sums and pair counts by length of lag."""
 
-    def attempt(basis: Floats) -> tuple[float, Floats]:
-        shapes = np.stack([np.bincount(ring, b * lags.pairs)[used] for b in basis], axis=1)
-        own = (basis @ lags.pairs) / total**2  # each shape's variance of the mean
-        design = (shapes / pairs[used, None] - own) * weight[:, None]
-        coefficients, misfit = optimize.nnls(design, target)
-        return float(misfit), measured[0] * (coefficients @ basis)
+    geometry: Geometry
+    covariance: Floats
+    pairs: Floats
 
-    white = np.zeros((1, len(lags.square)))
-    white[0, lags.zero] = 1.0
-    alone, _ = attempt(white)
-    least, best = math.inf, None
-    for width in WIDTHS:
-        q = lags.square / width**2
-        envelope = np.exp(-q)
-        # their transforms: exp(-π² s² f²) and f² exp(-π² s² f²), up to a factor
-        misfit, model = attempt(np.concatenate([white, [envelope, (1 - q) * envelope]]))
-        if misfit < least:
-            least, best = misfit, model
-    return best if alone**2 - least**2 > CORRELATION_STANDS_OUT else None
+
+def _observe(signal: Floats, cover: Floats, steps: tuple[float, ...]) -> _Seen:
+    finest = min(steps)
+    stretch = (steps[0] / finest, steps[1] / finest)
+    area = float(cover.sum()) / len(cover) * stretch[0] * stretch[1]
+    radius = max(round(2 * math.sqrt(area / math.pi)), 2) / 2
+    shape = (signal.shape[1], signal.shape[2])
+    grid = geometry(shape, radius, (round(stretch[0], 6), round(stretch[1], 6)))
+    power = np.zeros((2, grid.size[0], grid.size[1] // 2 + 1))
+    for plane, mask in zip(signal, cover, strict=True):
+        spectrum = fft.rfft2(np.stack([plane, mask]), grid.size)
+        power += spectrum.real**2 + spectrum.imag**2
+    auto = fft.irfft2(power, grid.size)[:, :, : power.shape[2]]
+    return _Seen(grid, grid.by_lag(auto[0]), np.maximum(grid.by_lag(auto[1]), 0.0))
+
+
+def _weigh(seen: _Seen, samples: float, scale: float) -> tuple[Floats, Floats, Floats]:
+    """Return weight, variance of the mean and level of every spectrum, white noise first."""
+    grid, shelf = seen.geometry, library()
+    window = grid.wave @ seen.pairs
+    few = grid.covariance * seen.pairs
+    own = few.sum(axis=1) * scale
+    few_expected = few @ grid.wave.T - own[:, None] * window
+    expected = np.empty((len(shelf.log_prior), len(window)))
+    unit_variance = np.empty(len(shelf.log_prior))
+    unit_variance[0] = seen.pairs[0] * scale
+    expected[0] = seen.pairs[0] - unit_variance[0] * window
+    unit_variance[1:] = np.maximum(shelf.coefficients @ own, 1e-12 * unit_variance[0])
+    np.matmul(shelf.coefficients, few_expected, out=expected[1:])
+    np.maximum(expected, 0.0, out=expected)
+    expected += FLOOR * seen.pairs[0]
+    periodogram = grid.wave @ seen.covariance + FLOOR * seen.covariance[0]
+    periodogram = np.maximum(periodogram, 0.01 * FLOOR * seen.covariance[0])
+    votes = 2 * math.pi * grid.frequency * grid.step * samples
+    votes = votes / (1 + (grid.frequency / math.sqrt(VOTES / math.pi / samples)) ** 4)
+    all_votes = float(votes.sum())
+    level = (periodogram / expected) @ votes / all_votes
+    log_weight = shelf.log_prior - all_votes / 2 * np.log(level) - np.log(expected) @ votes / 2
+    weight = np.exp(log_weight - log_weight.max())
+    return weight / weight.sum(), level * unit_variance, level
+
+
+def _correlation(seen: _Seen, share: Floats, squared_total: float) -> tuple[float, float]:
+    """Return the power samples and the reach (in pixels) of the spectra's mean."""
+    model = (share[1:] @ library().coefficients) @ seen.geometry.covariance
+    model[0] += share[0]
+    rho = model / model[0]
+    power = squared_total / float(np.sum(rho**2 * seen.pairs))
+    correlated = seen.geometry.lag[np.abs(rho) > 0.1]
+    return power, float(correlated.max(initial=0.0))
 
 
 def _between_slices(signal: Floats, cover: Floats) -> tuple[float, float]:

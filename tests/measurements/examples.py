@@ -43,4 +43,17 @@ def region_statistics() -> Example:
     )
 
 
-EXAMPLES: dict[str, Callable[[], Example]] = {"region_statistics": region_statistics}
+def noise_power() -> Example:
+    frequencies = ("peak_frequency", "mean_frequency", "lowest_frequency")
+    return Example(
+        _noise(),
+        (Disc((15.75, 15.75), 15.0),),
+        settings={"patch_px": 16, "layout": "grid"},
+        scales_with_spacing=dict.fromkeys(frequencies, -1),
+    )
+
+
+EXAMPLES: dict[str, Callable[[], Example]] = {
+    "region_statistics": region_statistics,
+    "noise_power": noise_power,
+}

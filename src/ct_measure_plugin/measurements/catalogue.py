@@ -24,6 +24,7 @@ __all__ = ["NAMES", "find", "measure", "measure_each", "settings_for"]
 #: Public name -> class, in the file of that name. Adding a measurement adds a line.
 _CLASSES: dict[str, str] = {
     "region_statistics": "MeasureRegionStatistics",
+    "noise_power": "MeasureNoisePower",
 }
 
 NAMES: tuple[str, ...] = tuple(_CLASSES)

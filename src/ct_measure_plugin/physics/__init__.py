@@ -11,6 +11,7 @@ Each measurement's function has the measurement's name and lives in the file of 
 from __future__ import annotations
 
 from ct_measure_plugin.physics import regions
+from ct_measure_plugin.physics.noise_power import NoisePower, noise_power
 from ct_measure_plugin.physics.region_statistics import RegionStatistics, region_statistics
 from ct_measure_plugin.physics.results import (
     Caution,
@@ -21,6 +22,8 @@ from ct_measure_plugin.physics.results import (
     Result,
     ResultGroup,
 )
+from ct_measure_plugin.physics.scan_difference import scan_difference
+from ct_measure_plugin.physics.standard_error import standard_error_from_nps
 from ct_measure_plugin.physics.volume import Acquisition, HeaderWindow, Source, Volume
 
 __all__ = [
@@ -28,6 +31,7 @@ __all__ = [
     "Caution",
     "Curve",
     "HeaderWindow",
+    "NoisePower",
     "NotMeasured",
     "Picture",
     "Quantity",
@@ -36,6 +40,9 @@ __all__ = [
     "ResultGroup",
     "Source",
     "Volume",
+    "noise_power",
     "region_statistics",
     "regions",
+    "scan_difference",
+    "standard_error_from_nps",
 ]

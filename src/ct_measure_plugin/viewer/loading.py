@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import time
 from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -26,6 +27,9 @@ __all__ = ["MOST_AT_ONCE", "entries_at", "is_open", "layers_of", "name_of", "one
 #: Series opened at once when nobody is there to choose; the rest are named in a warning.
 MOST_AT_ONCE = 8
 
+#: File systems stamp files by a coarse clock, up to some ten milliseconds late.
+_COARSE_NS = 50_000_000
+
 
 @dataclass(slots=True)
 class _Seen:
@@ -33,6 +37,7 @@ class _Seen:
 
     folder: Path | None = None
     changed_ns: int = 0
+    scanned_ns: int = 0
     entries: tuple[SeriesEntry, ...] = ()
 
 
@@ -65,6 +70,8 @@ def _known_around(path: Path) -> tuple[SeriesEntry, ...]:
     """Return a file's series if a file beside it was opened just before."""
     if path.is_dir() or path.parent != _seen.folder or _changed(path.parent) != _seen.changed_ns:
         return ()
+    if _changed(path) > _seen.scanned_ns:  # written over since, which its folder does not show
+        return ()
     return tuple(entry for entry in _seen.entries if entry.holds(path))
 
 
@@ -72,6 +79,7 @@ def _scan(path: Path, passed_over: dict[str, int]) -> tuple[SeriesEntry, ...]:
     def job(work: Work) -> SeriesScan:
         return scan_folder(path, progress=work.progress, cancel=work.cancelled)
 
+    began = time.time_ns() - _COARSE_NS
     scan = run_here(job, "Looking for CT series")
     for reason, count in scan.reasons().items():
         passed_over[reason] = passed_over.get(reason, 0) + count
@@ -79,13 +87,15 @@ def _scan(path: Path, passed_over: dict[str, int]) -> tuple[SeriesEntry, ...]:
         folder, changed = path.parent, _changed(path.parent)
         same = (folder, changed) == (_seen.folder, _seen.changed_ns)
         kept = _seen.entries if same else ()
-        _seen.folder, _seen.changed_ns, _seen.entries = folder, changed, (*kept, *scan.entries)
+        _seen.scanned_ns = min(began, _seen.scanned_ns) if same else began
+        _seen.folder, _seen.changed_ns = folder, changed
+        _seen.entries = (*kept, *scan.entries)
     return scan.entries
 
 
-def _changed(folder: Path) -> int:
+def _changed(path: Path) -> int:
     try:
-        return folder.stat().st_mtime_ns
+        return path.stat().st_mtime_ns
     except OSError:
         return -1
 

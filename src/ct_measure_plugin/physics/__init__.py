@@ -11,6 +11,7 @@ Each measurement's function has the measurement's name and lives in the file of 
 from __future__ import annotations
 
 from ct_measure_plugin.physics import regions
+from ct_measure_plugin.physics.edge_mtf import EdgeMtf, edge_mtf
 from ct_measure_plugin.physics.noise_power import NoisePower, noise_power
 from ct_measure_plugin.physics.region_statistics import RegionStatistics, region_statistics
 from ct_measure_plugin.physics.results import (
@@ -30,6 +31,7 @@ __all__ = [
     "Acquisition",
     "Caution",
     "Curve",
+    "EdgeMtf",
     "HeaderWindow",
     "NoisePower",
     "NotMeasured",
@@ -40,6 +42,7 @@ __all__ = [
     "ResultGroup",
     "Source",
     "Volume",
+    "edge_mtf",
     "noise_power",
     "region_statistics",
     "regions",

@@ -1,0 +1,202 @@
+"""The edge MTF against kernels whose MTF is known, with and without noise."""
+
+from __future__ import annotations
+
+import numpy as np
+import pytest
+from truth_images import EDGE, GAUSS, HANN, KERNELS, check_edge_response, edge_image, noise
+
+from ct_measure_plugin.errors import ArgumentError
+from ct_measure_plugin.physics import edge_mtf
+from ct_measure_plugin.physics.results import NotMeasured, Quantity
+
+SPACING = (0.5, 0.5)
+
+
+def percent(found, kernel, level=0.5):
+    name = {0.5: "f50", 0.1: "f10"}[level]
+    return 100 * (getattr(found, name).value / kernel.level(level) - 1)
+
+
+def test_the_truth_images_agree_with_adaptive_quadrature():
+    assert check_edge_response() < 1e-8
+
+
+def test_the_gaussian_truth_is_its_closed_form():
+    """f50 = sqrt(ln 2 / 2) / (π σ) = 0.187391 / σ, f10 = 0.341541 / σ."""
+    assert GAUSS.level(0.5) == pytest.approx(0.187391 / 0.6, rel=1e-5)
+    assert GAUSS.level(0.1) == pytest.approx(0.341541 / 0.6, rel=1e-5)
+
+
+@pytest.mark.parametrize("method", ["fitted", "conventional"])
+@pytest.mark.parametrize("kernel", KERNELS, ids=lambda k: k.name)
+@pytest.mark.parametrize(
+    ("angle", "pixel"),
+    [(1.5, 0.5), (4, 0.3), (4, 0.5), (4, 0.7), (12, 0.5), (-20, 0.6), (31, 0.5), (43, 0.4)],
+)
+def test_without_noise_the_bias_is_below_half_a_percent(kernel, method, angle, pixel):
+    shape = (96, 96) if abs(angle) < 2 else (64, 64)
+    image = edge_image(kernel, angle=angle, spacing=(pixel, pixel), shape=shape, shift=0.13)
+    found = edge_mtf(image, spacing_mm=(pixel, pixel), method=method)
+    assert found, found
+    assert abs(percent(found, kernel)) < 0.5
+    assert abs(percent(found, kernel, 0.1)) < 0.5
+    assert found.angle.value == pytest.approx(abs(angle), abs=0.01)
+
+
+@pytest.mark.parametrize("method", ["fitted", "conventional"])
+def test_the_curve_is_right_beyond_the_pixels_nyquist_frequency(method):
+    """At 0.7 mm pixels Nyquist is 0.714 mm⁻¹; the edge-enhancing kernel reaches to 1."""
+    image = edge_image(EDGE, spacing=(0.7, 0.7))
+    found = edge_mtf(image, spacing_mm=(0.7, 0.7), method=method)
+    upto = found.mtf.x <= 1.2 * 0.5 / 0.7
+    truth = EDGE.mtf(found.mtf.x[upto])
+    np.testing.assert_allclose(found.mtf.y[upto], truth, atol=0.01)
+    assert "aliasing" in {c.code for c in found.cautions}
+    assert found.peak.value == pytest.approx(EDGE.mtf(np.linspace(0, 1, 1001)).max(), abs=0.01)
+    assert found.overshoot.value > 0.05
+
+
+def test_pixels_need_not_be_square():
+    image = edge_image(HANN, spacing=(0.6, 0.4), angle=7, shape=(48, 72))
+    found = edge_mtf(image, spacing_mm=(0.6, 0.4))
+    assert abs(percent(found, HANN)) < 0.5
+    assert found.angle.value == pytest.approx(7, abs=0.01)
+
+
+@pytest.mark.parametrize("method", ["fitted", "conventional"])
+def test_sign_and_side_of_the_contrast_do_not_matter(method):
+    rng = np.random.default_rng(4)
+    image = edge_image(GAUSS) + rng.normal(0, 3, (64, 64))
+    first = edge_mtf(image, spacing_mm=SPACING, method=method)
+    for other in (-image, image[:, ::-1], image[::-1], image.T, 40 - image[::-1, ::-1]):
+        found = edge_mtf(other, spacing_mm=SPACING, method=method)
+        assert found.f50.value == pytest.approx(first.f50.value, rel=1e-6)
+        assert found.f50.uncertainty == pytest.approx(first.f50.uncertainty, rel=1e-4)
+
+
+def test_the_found_line_is_where_the_edge_is():
+    image = edge_image(GAUSS, angle=5.0, shift=0.21)
+    found = edge_mtf(image, spacing_mm=SPACING)
+    assert found.position.value == pytest.approx(0.21, abs=1e-3)
+    # the normal (cos 5°, sin 5°) has y pointing down: 175° counter-clockwise on the screen
+    assert found.normal_direction.value == pytest.approx(175.0, abs=0.01)
+    middle = 63 / 2 * 0.5
+    for y, x in found.ends_mm:
+        distance = np.cos(np.radians(5)) * (x - middle) + np.sin(np.radians(5)) * (y - middle)
+        assert distance == pytest.approx(0.21, abs=1e-3)
+
+
+def test_the_binning_correction_is_not_forgotten():
+    """Bins of 0.25 mm without the corrections for bin and difference lower f50 by 3.4 %."""
+    from ct_measure_plugin.physics.edge_bins import bin_by_distance
+    from ct_measure_plugin.physics.edge_line import locate_edge
+    from ct_measure_plugin.physics.mtf_curve import conventional_mtf, level_frequency
+
+    image = edge_image(GAUSS, angle=3.0, shape=(128, 128))
+    line = locate_edge(image, SPACING)
+    bins = bin_by_distance(line.distance.ravel(), image.ravel(), 0.25, half=9.0)
+    middles, esf = bins.evenly(8.0)
+    f = np.linspace(0, 1, 241)
+    spread, _ = conventional_mtf(middles, esf, np.zeros((65, 65)), half=7.0, frequency=f)
+    bare = spread.mtf * np.sinc(2 * f * 0.25) * np.sinc(f * 0.25)
+    corrected = level_frequency(f, spread.mtf, None, 0.5)
+    without = level_frequency(f, bare, None, 0.5)
+    assert 100 * (corrected.value / GAUSS.level(0.5) - 1) == pytest.approx(0.0, abs=0.5)
+    assert 100 * (without.value / GAUSS.level(0.5) - 1) == pytest.approx(-3.4, abs=0.3)
+
+
+def trial(kernel, coloured, cnr, count, *, methods=("fitted", "conventional")):
+    """f50 and f10 with their uncertainties, shape (methods, count, 4)."""
+    rng = np.random.default_rng(12)
+    rows = {m: [] for m in methods}
+    for _ in range(count):
+        image = edge_image(kernel, shift=rng.uniform(-0.5, 0.5))
+        image = image + noise(rng, image.shape, SPACING, 100 / cnr, kernel if coloured else None)
+        for method in methods:
+            found = edge_mtf(image, spacing_mm=SPACING, method=method)
+            row = []
+            for name in ("f50", "f10"):
+                q = getattr(found, name) if found else None
+                row += [q.value, q.uncertainty] if isinstance(q, Quantity) else [np.nan, np.nan]
+            rows[method].append(row)
+    return [np.array(rows[m]) for m in methods]
+
+
+@pytest.mark.parametrize("coloured", [False, True], ids=["white", "coloured"])
+@pytest.mark.parametrize("kernel", KERNELS, ids=lambda k: k.name)
+def test_in_noise_the_fit_beats_the_conventional_route(kernel, coloured):
+    """CNR 20, 64 × 64 pixels, 4°. 60 boxes fix an RMS error to 9 % and a ratio of two correlated
+    ones to about 10 %; the figures of longer runs stand on the docs page."""
+    fitted, conventional = trial(kernel, coloured, 20, 60)
+    truth = kernel.level(0.5)
+    errors = [100 * (a[:, 0] / truth - 1) for a in (fitted, conventional)]
+    rms = [float(np.sqrt(np.nanmean(e**2))) for e in errors]
+    assert rms[0] < 0.85 * rms[1]
+    # bias within 1 %, plus three standard errors of this short run
+    assert abs(errors[0].mean()) < 1.0 + 3 * errors[0].std() / np.sqrt(60)
+    covered = np.abs(fitted[:, 0] - truth) < 1.96 * fitted[:, 1]
+    # of 60 intervals at 93 %, fewer than 50 hold the truth once in 300 runs
+    assert covered.sum() >= 50
+
+
+REFUSALS = {
+    "leans": lambda: edge_image(GAUSS, angle=0.4),
+    "leaves the box": lambda: edge_image(GAUSS, shift=14.5),
+    "curved": lambda: _curved(),
+    "clipped": lambda: np.minimum(np.rint(edge_image(GAUSS, contrast=1000) + _white(20)), 990),
+    "too low": lambda: edge_image(GAUSS) + _white(60),
+    "something else": lambda: edge_image(GAUSS) + _blob(),
+    "all pixels": lambda: np.full((64, 64), 7.0),
+    "samples across": lambda: edge_image(EDGE, angle=45.0, spacing=(0.8, 0.8)),
+}
+
+
+def _white(sd):
+    return np.random.default_rng(5).normal(0, sd, (64, 64))
+
+
+def _curved():
+    y, x = np.mgrid[:64, :64] * 0.5
+    from scipy.special import ndtr
+
+    return 100 * ndtr((20 - np.hypot(y - 13, x - 1.0)) / 0.6)
+
+
+def _blob():
+    y, x = np.mgrid[:64, :64]
+    return 60.0 * (np.hypot(y - 14, x - 12) < 5) + _white(2)
+
+
+@pytest.mark.parametrize("words", REFUSALS)
+def test_what_cannot_be_measured_is_refused_in_words(words):
+    spacing = (0.8, 0.8) if words == "samples across" else SPACING
+    found = edge_mtf(REFUSALS[words](), spacing_mm=spacing)
+    assert isinstance(found, NotMeasured)
+    assert words in found.reason
+    assert found.remedy
+
+
+def test_a_sloping_background_is_taken_out_and_said():
+    y, x = np.mgrid[:64, :64] * 0.5
+    image = edge_image(GAUSS) + 0.8 * (x - 16) + _white(1)
+    found = edge_mtf(image, spacing_mm=SPACING)
+    assert "background-gradient" in {c.code for c in found.cautions}
+    assert abs(percent(found, GAUSS)) < 1.0
+
+
+def test_a_short_plateau_is_said():
+    image = edge_image(GAUSS, shape=(64, 20))
+    found = edge_mtf(image, spacing_mm=SPACING)
+    assert "tail-truncation" in {c.code for c in found.cautions}
+
+
+def test_misuse_is_named():
+    with pytest.raises(ArgumentError, match="'method' must be"):
+        edge_mtf(edge_image(GAUSS), spacing_mm=SPACING, method="best")
+    with pytest.raises(ArgumentError, match="'spacing_mm' must be"):
+        edge_mtf(edge_image(GAUSS), spacing_mm=(0.5, 0.0))
+    with pytest.raises(ArgumentError, match="'image' must be 2-D"):
+        edge_mtf(np.zeros(9), spacing_mm=SPACING)
+    with pytest.raises(ArgumentError, match="finite"):
+        edge_mtf(np.full((32, 32), np.nan), spacing_mm=SPACING)

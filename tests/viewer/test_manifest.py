@@ -4,6 +4,9 @@ from __future__ import annotations
 
 import copy
 import importlib
+import json
+import subprocess
+import sys
 from pathlib import Path
 
 import pytest
@@ -141,3 +144,39 @@ def test_a_name_unlike_the_distribution_is_red(written):
     found = PluginManifest.from_distribution(NAME)
     assert found.name == NAME == written["name"]
     assert found.package_version == ct_measure_plugin.__version__
+
+
+FRESH = """
+import json, sys
+import napari, napari.plugins
+from npe2 import PluginManager
+manager = PluginManager.instance()
+manager.discover()
+assert "ct-measure-plugin" in manager
+{more}
+heavy = ("ct_measure_plugin", "pydicom", "scipy", "qtpy", "PySide6", "matplotlib", "pyqtgraph")
+print(json.dumps([name for name in heavy if name in sys.modules]))
+"""
+
+
+def loaded_after(more: str) -> list[str]:
+    """Return which heavy packages a fresh process has after napari found its plugins."""
+    program = FRESH.format(more=more)
+    done = subprocess.run(
+        [sys.executable, "-c", program], capture_output=True, text=True, check=True, timeout=60
+    )
+    return json.loads(done.stdout.splitlines()[-1])
+
+
+def test_napari_s_start_imports_nothing_of_ours():
+    assert loaded_after("") == []
+
+
+def test_asking_the_reader_imports_nothing_heavy():
+    """napari asks it about every file that anyone opens."""
+    asking = "from ct_measure_plugin.viewer.hooks import get_reader; get_reader(sys.executable)"
+    assert loaded_after(asking) == ["ct_measure_plugin"]
+
+
+def test_a_heavy_import_would_be_seen():
+    assert "pydicom" in loaded_after("import pydicom")

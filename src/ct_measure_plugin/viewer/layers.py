@@ -14,16 +14,16 @@ unevenly spaced series the world's z is that of an even stack and the frame's is
 
 from __future__ import annotations
 
-import math
 from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
 from ct_measure_plugin.errors import ArgumentError
-from ct_measure_plugin.physics.results import Caution
 from ct_measure_plugin.physics.volume import Source, Volume
 from ct_measure_plugin.physics.windowing import limits_of
+from ct_measure_plugin.viewer.layer_cautions import spacing_caution, tilt_caution, unit_caution
+from ct_measure_plugin.viewer.layer_geometry import geometry_of, world_in_mm, world_of_layer
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
@@ -53,9 +53,6 @@ KEY = "ct_measure_plugin"
 
 #: The soft-tissue window (common practice) shown where the header offers none.
 _PLAIN_WINDOW = (50.0, 400.0)
-
-#: Cosine above which two axes are no longer at right angles: 0.06 degrees, far above rounding.
-_SQUARE = 1e-3
 
 #: A stack that leans by more than this is said to; less is rounding in a stored affine.
 _LEANING_DEG = 0.1
@@ -219,7 +216,7 @@ def questions_for(layer: Image) -> tuple[str, ...]:
     """
     if _unchanged(layer) is not None:
         return ()
-    questions = () if _world_in_mm(layer) is not None else ("spacing",)
+    questions = () if world_in_mm(layer) is not None else ("spacing",)
     return questions if own_volume(layer) is not None else (*questions, "unit")
 
 
@@ -266,15 +263,15 @@ def placement_of(
         return Placement(unchanged, layer)
     asked = Asked() if asked is None else asked
     data, leading = _finest_data(layer, point)
-    spacing, origin, tilt, by_hand = _geometry(layer, asked)
+    spacing, origin, tilt, by_hand = geometry_of(layer, asked.spacing_mm)
     own = own_volume(layer)
     cautions = [*(own.cautions if own is not None else ())]
     if by_hand:
-        cautions.append(_spacing_caution(spacing))
+        cautions.append(spacing_caution(spacing))
     if tilt > _LEANING_DEG:
-        cautions.append(_tilt_caution(tilt))
+        cautions.append(tilt_caution(tilt))
     if own is None:
-        cautions.append(_unit_caution(asked.unit))
+        cautions.append(unit_caution(asked.unit))
     volume = Volume(
         data,
         spacing_mm=spacing,
@@ -320,7 +317,7 @@ def _unchanged(layer: Image) -> Volume | None:
     own = own_volume(layer)
     if own is None or layer.multiscale or layer.data is not own.hu:
         return None
-    matrix, shift, factors = _world(layer)
+    matrix, shift, factors = world_of_layer(layer)
     if factors is None:
         return None
     same = np.allclose(matrix * factors[:, None], np.diag(own.spacing_mm), rtol=1e-9, atol=1e-12)
@@ -338,96 +335,3 @@ def _carried_over(own: Volume, found: Volume) -> Volume:
         acquisition=own.acquisition,
         windows=own.windows,
     )
-
-
-def _world(layer: Image) -> tuple[Floats, Floats, Floats | None]:
-    """Return the last axes' data-to-world matrix and shift, and mm a world unit (None: pixels).
-
-    napari turns one point at a time, so the matrix is taken from one call an axis.
-    """
-    n = layer.ndim
-    zero = np.asarray(layer.data_to_world(np.zeros(n)), dtype=float)
-    columns = [np.asarray(layer.data_to_world(np.eye(n)[i]), dtype=float) - zero for i in range(n)]
-    last = slice(max(0, n - 3), n)
-    return np.stack(columns, axis=1)[last, last], zero[last], _world_in_mm(layer)
-
-
-def _world_in_mm(layer: Image) -> Floats | None:
-    """Return the millimetres of one world unit along the last axes, None if any is no length."""
-    units = layer.units[-3:]
-    if any("[length]" not in unit.dimensionality for unit in units):
-        return None
-    return np.array([float((1.0 * unit).to("mm").magnitude) for unit in units])
-
-
-def _geometry(
-    layer: Image, asked: Asked
-) -> tuple[tuple[float, float, float], tuple[float, float, float], float, bool]:
-    """Return spacing, origin, tilt and whether the spacing was entered by hand."""
-    matrix, shift, factors = _world(layer)
-    by_hand = factors is None
-    if factors is None and asked.spacing_mm is None:
-        raise ArgumentError(
-            "layer", "must be in a unit of length, or its pixel size be entered", layer.name
-        )
-    if factors is not None:
-        matrix, shift = matrix * factors[:, None], shift * factors
-    spacing, directions, tilt = _axes(matrix, layer.name)
-    origin = directions @ shift
-    if by_hand:
-        entered = np.asarray(asked.spacing_mm, dtype=float)[-len(spacing) :]
-        origin, spacing = origin * entered / spacing, entered
-    dz = asked.spacing_mm[0] if asked.spacing_mm is not None else 1.0
-    if len(spacing) == 2:
-        spacing, origin = np.array([dz, *spacing]), np.array([0.0, *origin])
-    z, y, x = (float(v) for v in spacing)
-    z_0, y_0, x_0 = (float(v) for v in origin)
-    return (z, y, x), (z_0, y_0, x_0), tilt, by_hand
-
-
-def _axes(matrix: Floats, name: str) -> tuple[Floats, Floats, float]:
-    """Return spacing, unit directions (rows) and stacking tilt of the columns of a matrix."""
-    lengths = np.linalg.norm(matrix, axis=0)
-    if not bool(np.all(lengths > 0)):
-        raise ArgumentError("layer", "must have a pixel size greater than 0 on each axis", name)
-    along = matrix / lengths
-    if abs(float(along[:, -2] @ along[:, -1])) > _SQUARE:
-        raise ArgumentError("layer", "must have rows and columns at right angles", name)
-    if len(lengths) == 2:
-        return lengths, along.T, 0.0
-    normal = np.cross(along[:, 1], along[:, 2])
-    rise = float(normal @ along[:, 0])
-    if abs(rise) < _SQUARE:
-        raise ArgumentError("layer", "must have slices that do not lie in one plane", name)
-    normal *= math.copysign(1.0, rise)
-    tilt = math.degrees(math.acos(min(1.0, abs(rise))))
-    spacing = np.array([lengths[0] * abs(rise), lengths[1], lengths[2]])
-    return spacing, np.stack([normal, along[:, 1], along[:, 2]]), tilt
-
-
-def _spacing_caution(spacing: tuple[float, float, float]) -> Caution:
-    dz, dy, dx = spacing
-    return Caution(
-        "spacing-assumed",
-        f"The layer is in pixels; {dz:g} × {dy:g} × {dx:g} mm (z, y, x) was entered by hand.",
-        "Check the pixel size against the scan's own data.",
-    )
-
-
-def _tilt_caution(tilt: float) -> Caution:
-    return Caution(
-        "gantry-tilt",
-        f"The layer's slices lean by {tilt:.1f}° against their stacking direction.",
-        "Measure in the plane only, or reformat without tilt.",
-    )
-
-
-def _unit_caution(unit: str) -> Caution:
-    if unit == "HU":
-        return Caution(
-            "hu-assumed",
-            "The layer does not say what its values are; HU were assumed.",
-            "Open the DICOM series itself, or enter the unit.",
-        )
-    said = f"in '{unit}'" if unit else "of no known unit"
-    return Caution("not-hu", f"The values were said to be {said}.", "Measure HU on a CT series.")

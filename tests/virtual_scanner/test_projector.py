@@ -91,7 +91,7 @@ def test_a_spectrum_attenuates_by_beers_law_at_every_energy():
 
 
 def test_sub_sampling_the_aperture_averages_transmission():
-    """At an edge the mean of e^{−p} exceeds e^{−mean p}: the finer signal is the larger (Jensen)."""
+    """At an edge the mean of e^{−p} exceeds e^{−mean p}: the finer signal is larger."""
     dense = TabulatedMaterial("dense", (1.0, 500.0), (5.0, 5.0))
     cuts = Phantom((Part(block((0.0, 0.0), (20.0, 20.0)), dense),)).cuts(FLAT, 0.0)
     shape = {"views": 2, "channels": 61, "pitch_mm": 0.7}
@@ -131,9 +131,9 @@ def test_projections_agree_with_an_independent_radon_transform():
     """scikit-image's radon of a rasterised object, differences explained.
 
     It rotates the image by bilinear interpolation and sums columns: it works on a raster, so its
-    edges are about a pixel soft. Each pixel here holds the disc's share of 64 points in it. Inside the
-    shadows the two agree within 0.6 % of the largest projection; at the edges, where the chord
-    has an infinite slope, within 3 %.
+    edges are about a pixel soft. Each pixel here holds the disc's share of 64 points in it.
+    Inside the shadows the two agree within 0.6 % of the largest projection; at the edges, where
+    the chord has an infinite slope, within 3 %.
     """
     pixels = 201
     fine = (np.arange(8 * pixels) + 0.5) / 8 - 0.5

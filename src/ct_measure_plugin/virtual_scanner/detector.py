@@ -121,7 +121,7 @@ def with_scatter(line_integral: FloatArray, detector: Detector, geometry: Geomet
     primary = np.exp(-line_integral)
     sigma = detector.scatter_sigma_mm / geometry.pitch_mm
     spread = gaussian_filter1d(line_integral * primary, sigma, axis=1, mode="constant")
-    return -np.log(primary + detector.scatter_ratio * spread)
+    return np.asarray(-np.log(primary + detector.scatter_ratio * spread))
 
 
 def _channel_index(name: str, channels: tuple[int, ...], count: int) -> NDArray[np.intp]:

@@ -9,15 +9,18 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from functools import cached_property
 from typing import TYPE_CHECKING
 
 import numpy as np
+from scipy.interpolate import CubicSpline
 from scipy.optimize import brentq
 from scipy.special import gammaln
 
 from ct_measure_plugin.errors import ArgumentError
 from ct_measure_plugin.virtual_scanner.detector import with_scatter
 from ct_measure_plugin.virtual_scanner.geometry import FanBeam
+from ct_measure_plugin.virtual_scanner.phantom import AIR
 from ct_measure_plugin.virtual_scanner.reconstruction import FINE
 from ct_measure_plugin.virtual_scanner.scanner import ideal_projection
 
@@ -33,6 +36,8 @@ __all__ = ["Truth"]
 
 #: Terms of the polynomial through the readings of water, for the cup.
 CUP_TERMS = 8
+#: Distances worked out at a time.
+MANY = 512
 
 
 @dataclass(frozen=True)
@@ -89,20 +94,32 @@ class Truth:
         Returns
         -------
         float
-            One energy: 0.2 HU plus 0.1 % of the contrast to water. A spectrum: also the change of
-            the thin piece's CT number over water paths from 0 to twice the calibration path,
-            and half the change due to the piece's own hardening. Infinite with scatter.
+            One energy: 0.2 HU plus 0.1 % of the contrast to water; with the pure ramp, whose
+            ripples reach from one piece to the next, 0.1 % of the largest contrast in the
+            phantom. A spectrum: also the change of
+            the thin piece's CT number over water paths from 1/4 to 5/4 of the calibration path,
+            and the change due to the piece's own hardening. Without water correction the scale
+            itself bends: also the largest CT number of water over those paths. Infinite with
+            scatter.
         """
         recipe, calibration = self.recipe, self.recipe.calibration
         if recipe.detector.scatter_ratio > 0:
             return math.inf
-        base = 0.2 + 1e-3 * abs(self.hu(material))
+        near = (material,) if recipe.kernel.shape != "ramp" else self._contrasts(material)
+        base = 0.2 + 1e-3 * max(abs(self.hu(other)) for other in near)
         if recipe.spectrum.is_mono:
             return base
-        paths = np.linspace(0.0, 2.0 * recipe.calibration_path_mm, 9)
+        paths = np.linspace(0.25, 1.25, 9) * recipe.calibration_path_mm
         numbers = [calibration.thin_insert_hu(material, float(path)) for path in paths]
         spread = max(abs(number - self.hu(material)) for number in numbers)
-        return base + spread + self._own_hardening(material, path_mm)
+        bend = 0.0
+        if recipe.correction == "none":
+            read = calibration.correct(calibration.reading(paths))
+            bend = float(np.max(np.abs(calibration.to_hu(read / paths))))
+        return base + spread + bend + self._own_hardening(material, path_mm)
+
+    def _contrasts(self, material: AnyMaterial) -> tuple[AnyMaterial, ...]:
+        return (material, AIR, *self.recipe.phantom.materials())
 
     def _own_hardening(self, material: AnyMaterial, path_mm: float) -> float:
         """Return the change of a piece's mean CT number from a thin one to one of `path_mm`."""
@@ -350,7 +367,7 @@ class Truth:
         Parameters
         ----------
         radius_mm : array_like
-            Distances.
+            Distances, no more than three times the radius every view sees.
 
         Notes
         -----
@@ -360,19 +377,37 @@ class Truth:
         the amplitude falls with the square root of the radius.
         """
         r = np.abs(np.asarray(radius_mm, dtype=float))
-        geometry = self.recipe.geometry
-        step = self._noise_reach() / 1500
-        f: FloatArray = np.asarray((np.arange(1500) + 0.5) * step, dtype=np.float64)
-        span = np.arange(0.0, 2.0 * geometry.radius_mm + float(np.max(r)), geometry.pitch_mm / 16)
-        waves: FloatArray = np.cos(2.0 * np.pi * np.outer(span, f))
-        wave = 2.0 * step * np.dot(waves, self._filter(f))
+        if r.size <= MANY:
+            return self._rings_at(r)
+        step = self.recipe.geometry.pitch_mm / 16  # eight times denser than its detail
+        grid = np.arange(float(r.min()), float(r.max()) + 4 * step, step)
+        parts = [self._rings_at(part) for part in np.array_split(grid, grid.size // MANY + 1)]
+        return np.asarray(CubicSpline(grid, np.concatenate(parts))(r))
+
+    def _rings_at(self, r: FloatArray) -> FloatArray:
         around = np.cos((np.arange(4000) + 0.5) * (np.pi / 4000))
+        geometry = self.recipe.geometry
+        span, wave = self._filter_wave
         total = np.zeros(r.shape)
         for channel, error in self.recipe.detector.gain_errors:
             place = (channel - 0.5 * (geometry.channels - 1)) * geometry.pitch_mm
             q = np.interp(np.abs(r[..., None] * around - place), span, wave)
             total += -math.log1p(error) * geometry.pitch_mm * np.pi * q.mean(axis=-1)
         return total * 1000.0 / (0.1 * self.recipe.calibration.mu_water)
+
+    @cached_property
+    def _filter_wave(self) -> tuple[FloatArray, FloatArray]:
+        """Return what one reading becomes along its view: distances in mm, and ∫ K cos 2πft df."""
+        geometry = self.recipe.geometry
+        step = self._noise_reach() / 1500
+        f = np.asarray((np.arange(1500) + 0.5) * step, dtype=float)
+        span = np.arange(0.0, 4.0 * geometry.radius_mm, geometry.pitch_mm / 16)
+        weights = 2.0 * step * self._filter(f)
+        parts = [
+            np.cos(2.0 * np.pi * np.outer(part, f)) @ weights
+            for part in np.array_split(span, span.size // MANY + 1)
+        ]
+        return span, np.concatenate(parts)
 
     # --- along z ----------------------------------------------------------------------------
     def slice_profile(self, z_mm: ArrayLike) -> FloatArray:

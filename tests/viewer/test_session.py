@@ -68,3 +68,42 @@ def test_answers_and_records_are_told(viewer_model):
     session.logbook = "book"
     assert heard == [("region_statistics", ("a",)), "record", "book"]
     assert session.answers == {"region_statistics": ("a",)}
+
+
+def test_a_placement_is_the_same_until_something_changes(viewer_model):
+    """Docks keep answers by Volume; another time step must be another Volume."""
+    deep = np.arange(2 * 3 * 4 * 5).reshape(2, 3, 4, 5)
+    layer = viewer_model.add_image(deep, units="mm", rgb=False)
+    session = Session.of(viewer_model)
+    first = session.placement(layer)
+    assert session.placement(layer) is first
+    viewer_model.dims.set_current_step(1, 2)
+    assert session.placement(layer) is first  # another slice of the same volume
+    viewer_model.dims.set_current_step(0, 1)
+    second = session.placement(layer)
+    assert second is not first
+    assert np.array_equal(second.volume.hu, deep[1])
+    for change in (
+        lambda: setattr(layer, "scale", (1, 2, 1, 1)),
+        lambda: setattr(layer, "data", deep + 1),
+        lambda: setattr(layer, "translate", (0, 5, 0, 0)),
+        lambda: session.answer(layer, Asked(unit="1/cm")),
+        lambda: setattr(layer, "name", "another"),
+    ):
+        before = session.placement(layer)
+        change()
+        assert session.placement(layer) is not before
+
+
+def test_a_placement_does_not_outlive_its_layer(viewer_model):
+    """Nor does one of a layer outside the viewer, whose going nobody tells."""
+    layer = viewer_model.add_image(np.zeros((3, 4, 5)), units="mm")
+    session = Session.of(viewer_model)
+    session.placement(layer)
+    gone = weakref.ref(layer)
+    viewer_model.layers.clear()
+    session.placement(layer)
+    del layer
+    viewer_model.add_image(np.zeros((3, 4, 5)))  # the viewer itself keeps the last active layer
+    gc.collect()
+    assert gone() is None

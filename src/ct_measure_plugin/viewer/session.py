@@ -54,9 +54,11 @@ class Session:
     def __init__(self, viewer: Any) -> None:
         self._viewer = ref(viewer)
         self._asked: WeakKeyDictionary[Any, Asked] = WeakKeyDictionary()
+        self._placements: dict[int, Placement] = {}
         self._answers: dict[str, tuple[Any, ...]] = {}
         self.records: list[Any] = []
         self._logbook: Any = None
+        viewer.layers.events.removed.connect(self._forget)
 
     @classmethod
     def of(cls, viewer: Any) -> Session:
@@ -101,6 +103,9 @@ class Session:
     def placement(self, layer: Any) -> Placement:
         """Return a layer's Volume and place, with what was entered about it.
 
+        The same object as before, and so the same Volume, as long as nothing about it changed;
+        another one as soon as anything did.
+
         Raises
         ------
         ArgumentError
@@ -108,7 +113,17 @@ class Session:
         """
         viewer = self.viewer
         point = None if viewer is None else viewer.dims.point
-        return placement_of(layer, self.asked(layer), point=point)
+        found = placement_of(layer, self.asked(layer), point=point)
+        known = self._placements.get(id(layer))
+        if known is not None and known.still_holds(found):
+            return known
+        if viewer is not None and layer in viewer.layers:  # whose removal is told, below
+            self._placements[id(layer)] = found
+        return found
+
+    def _forget(self, event: Any) -> None:
+        """Let go of a layer that was removed."""
+        self._placements.pop(id(event.value), None)
 
     # --- answers and records --------------------------------------------------------
 

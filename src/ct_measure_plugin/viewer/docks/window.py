@@ -81,7 +81,7 @@ class WindowDock(Dock):
         self.targets = QComboBox(self)
         self.targets.setAccessibleName("Layers to window")
         self.targets.addItems([SELECTED, ALL_CT])
-        self.targets.setToolTip("Which layers get the window, and follow it together.")
+        self.targets.setToolTip("The layers selected in the layer list, or all CT layers at once.")
         self.targets.currentIndexChanged.connect(self.kick)
         self.which = _wrapped("")
         self.which.setAccessibleName("Layers concerned")

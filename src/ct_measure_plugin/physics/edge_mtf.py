@@ -4,25 +4,21 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
-from typing import TYPE_CHECKING, Any, Literal, TypeAlias
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
 from ct_measure_plugin.errors import ArgumentError
-from ct_measure_plugin.physics.edge_bins import EdgeBins, bin_by_distance
+from ct_measure_plugin.physics.edge_bins import bin_by_distance
 from ct_measure_plugin.physics.edge_checks import EdgeFacts, edge_cautions, edge_refusal
 from ct_measure_plugin.physics.edge_line import EdgeLine, locate_edge
-from ct_measure_plugin.physics.edge_noise import NoiseSpectrum, bin_covariance, residual_spectrum
-from ct_measure_plugin.physics.esf_fit import EsfFit, fit_esf
+from ct_measure_plugin.physics.edge_noise import NoiseSpectrum, residual_spectrum
+from ct_measure_plugin.physics.esf_measure import EsfData, Method, jacobian_doubt, measure_esf
 from ct_measure_plugin.physics.mtf_curve import (
-    FREQUENCY_STEPS,
     MtfResult,
-    Spread,
     checked_image,
     checked_spacing,
-    conventional_mtf,
     curve_numbers,
-    width_at,
 )
 from ct_measure_plugin.physics.results import Curve, NotMeasured, Quantity
 
@@ -31,12 +27,7 @@ if TYPE_CHECKING:
 
     Floats = NDArray[np.float64]
 
-__all__ = ["EdgeMtf", "Method", "edge_mtf"]
-
-Method: TypeAlias = Literal["fitted", "conventional"]
-
-#: Variance added to every bin, relative to the squared step: rounding, and what no model resolves.
-TINY = 1e-12
+__all__ = ["EdgeMtf", "edge_mtf"]
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -151,8 +142,7 @@ def edge_mtf(
     if refusal is not None:
         return refusal
     spectrum = residual_spectrum(line.residual, steps)
-    measure = _fitted if method == "fitted" else _conventional
-    spread, shape = measure(facts, line, spectrum)
+    spread, shape = measure_esf(_data(facts, line, spectrum), method, unit)
     numbers, cautions = curve_numbers(
         spread, max(steps), slope_over=0.05 if method == "fitted" else 0.2
     )
@@ -163,9 +153,16 @@ def edge_mtf(
             "measure a stronger contrast, a longer edge, or more slices",
         )
     cautions = [*edge_cautions(facts), *cautions]
-    numbers |= shape | _line_numbers(line, facts, spectrum, unit)
-    fields: dict[str, Any] = numbers
-    return EdgeMtf(**fields, method=method, cautions=tuple(cautions))
+    fields: dict[str, Any] = numbers | _line_numbers(line, facts, spectrum, unit)
+    return EdgeMtf(
+        **fields,
+        width=shape.width,
+        overshoot=shape.overshoot,
+        esf=shape.esf,
+        lsf=shape.lsf,
+        method=method,
+        cautions=tuple(cautions),
+    )
 
 
 def _facts(values: Floats, steps: tuple[float, float], line: EdgeLine) -> EdgeFacts:
@@ -203,82 +200,26 @@ def _common_slope(line: EdgeLine) -> float:
     return float((left + right) / 2)
 
 
-def _fitted(
-    facts: EdgeFacts, line: EdgeLine, spectrum: NoiseSpectrum
-) -> tuple[Spread, dict[str, object]]:
-    sigma = line.sigma
-    pixel = max(facts.spacing_mm)
-    bins = bin_by_distance(
-        line.distance.ravel(),
-        facts.values.ravel(),
-        max(pixel / 4, sigma / 8),
-        half=min(float(np.abs(line.distance).max()), 40 * sigma),
-    )
-    covariance = bin_covariance(bins, spectrum, np.array([line.angle]), line.length)
-    covariance[np.diag_indices(len(covariance))] += TINY * facts.contrast**2
-    fit = fit_esf(bins, sigma, covariance)
-    frequency = np.linspace(0, _top(facts, sigma), FREQUENCY_STEPS)
-    mtf, doubt = fit.mtf(frequency)
-    d = np.linspace(-6 * facts.fwhm, 6 * facts.fwhm, 361)
-    return Spread(frequency, mtf, doubt), _fitted_shape(fit, d)
-
-
-def _fitted_shape(fit: EsfFit, d: Floats) -> dict[str, object]:
-    esf, lsf = fit.esf(d), fit.lsf(d) / fit.contrast
-    flat = esf - fit.gradient * d
-    return {
-        "esf": Curve(d, esf, None, "distance", "mm", "ESF", "HU"),
-        "lsf": Curve(d, lsf, None, "distance", "mm", "LSF", "mm⁻¹"),
-        "width": Quantity(width_at(d, lsf, 0.5), "mm"),
-        "overshoot": Quantity(max(0.0, float(flat.max() - fit.level) / fit.contrast - 0.5), ""),
-    }
-
-
-def _top(facts: EdgeFacts, scale: float) -> float:
-    """Return where the curve ends: at the kernel's own limit, or where the samples end."""
-    gap = max(facts.dense.largest_gap(3 * facts.fwhm), facts.dense.width)
-    return min(1.3 / scale, 0.5 / gap, 2.0 / max(facts.spacing_mm))
-
-
-def _conventional(
-    facts: EdgeFacts, line: EdgeLine, spectrum: NoiseSpectrum
-) -> tuple[Spread, dict[str, object]]:
-    width = facts.bin_width()
-    half = min(max(5 * facts.fwhm, 5.0), 0.95 * min(facts.reach))
-    bins = bin_by_distance(
-        line.distance.ravel(), facts.values.ravel(), width, half=half + 3 * width
-    )
-    middles, esf = bins.evenly(half + 2 * width)
-    full = EdgeBins(
-        np.rint(middles / width).astype(np.intp),
-        np.interp(middles, bins.distance, bins.count),
-        middles,
-        np.zeros_like(middles),
-        esf,
-        width,
-    )
-    covariance = bin_covariance(full, spectrum, np.array([line.angle]), line.length)
-    frequency = np.linspace(0, min(_top(facts, facts.fwhm / 2.355), 0.25 / width), FREQUENCY_STEPS)
-    spread, lsf = conventional_mtf(middles, esf, covariance, half=half, frequency=frequency)
-    edge = 0.6 * half
-    low, high = esf[middles < -edge].mean(), esf[middles > edge].mean()
-    step = float(high - low)
-    doubt = np.sqrt(np.diag(covariance))
-    return (
-        spread,
-        {
-            "esf": Curve(middles, esf, doubt, "distance", "mm", "ESF", "HU"),
-            "lsf": Curve(middles, lsf / step, None, "distance", "mm", "LSF", "mm⁻¹"),
-            "width": Quantity(width_at(middles, lsf / step, 0.5), "mm"),
-            "overshoot": Quantity(max(0.0, float((esf.max() - high) / step)), ""),
-        },
+def _data(facts: EdgeFacts, line: EdgeLine, spectrum: NoiseSpectrum) -> EsfData:
+    return EsfData(
+        distance=line.distance.ravel(),
+        value=facts.values.ravel(),
+        sigma=line.sigma,
+        reach=facts.reach,
+        bin_width=facts.bin_width(),
+        gap=facts.dense.largest_gap(3 * facts.fwhm),
+        contrast=facts.contrast,
+        pixel_mm=max(facts.spacing_mm),
+        spectrum=spectrum,
+        normals=np.array([line.angle]),
+        length=line.length,
     )
 
 
 def _line_numbers(
     line: EdgeLine, facts: EdgeFacts, spectrum: NoiseSpectrum, unit: str
 ) -> dict[str, object]:
-    u_offset, u_angle = _line_doubt(line, spectrum)
+    u_offset, u_angle = (float(u) for u in jacobian_doubt(line.jacobian, spectrum))
     screen = -math.degrees(line.angle)  # +y points down, angles count upwards
     ny, nx = facts.values.shape
     dy, dx = facts.spacing_mm
@@ -300,20 +241,3 @@ def _line_numbers(
         "contrast_to_noise": Quantity(contrast / noise if noise > 0 else 0.0, ""),
         "ends_mm": tuple((float(p[0]), float(p[1])) for p in ends),
     }
-
-
-def _line_doubt(line: EdgeLine, spectrum: NoiseSpectrum) -> tuple[float, float]:
-    """Return the standard uncertainties of offset (mm) and angle (radians).
-
-    The least-squares line is a weighted sum of the pixels; its variance is the sum of the noise
-    power times the squared transform of the weights.
-    """
-    flat = line.jacobian.reshape(2, -1)
-    weights = np.linalg.solve(flat @ flat.T, flat).reshape(line.jacobian.shape)
-    ny, nx = line.distance.shape
-    dy, dx = spectrum.spacing_mm
-    fy, fx = np.fft.fftfreq(ny, dy), np.fft.fftfreq(nx, dx)
-    power = spectrum.at(np.hypot(fy[:, None], fx[None, :])) / (dy * dx)
-    square = np.abs(np.fft.fft2(weights)) ** 2
-    variance = (square * power).sum(axis=(1, 2)) / (ny * nx)
-    return float(np.sqrt(variance[0])), float(np.sqrt(variance[1]))

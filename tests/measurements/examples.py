@@ -24,6 +24,8 @@ class Example:
     settings: dict[str, Any] = field(default_factory=dict)
     #: How each Quantity answers when 100 is added to every value: "moves" or "stays".
     moves_with_level: tuple[str, ...] = ()
+    #: Quantities that depend on where the scale has its zero (ratios to the mean, sums of squares).
+    rests_on_zero: tuple[str, ...] = ()
     #: Power of the pixel size that each Quantity scales with; others do not change.
     scales_with_spacing: dict[str, int] = field(default_factory=dict)
 
@@ -38,7 +40,14 @@ def region_statistics() -> Example:
     return Example(
         _noise(),
         (Disc((15.75, 15.75), 9.0, z_mm=2.0),),
-        moves_with_level=("mean", "minimum", "maximum", "median"),
+        moves_with_level=(
+            *("mean", "minimum", "maximum", "median", "mode"),
+            *("p10", "p25", "p75", "p90"),
+        ),
+        rests_on_zero=(
+            *("energy", "root_mean_square"),
+            *("coefficient_of_variation", "quartile_coefficient_of_dispersion"),
+        ),
         scales_with_spacing={"area": 2},
     )
 

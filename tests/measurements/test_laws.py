@@ -64,6 +64,8 @@ def test_a_shift_by_100_hu_moves_levels_only(example):
     plain = quantities_of(run(example))
     raised = quantities_of(run(example, replace(example.volume, hu=example.volume.hu + 100)))
     for name, quantity in plain.items():
+        if name in example.rests_on_zero:
+            continue
         expected = quantity.value + (100 if name in example.moves_with_level else 0)
         assert raised[name].value == pytest.approx(expected, abs=ROUNDING, rel=ROUNDING), name
         if quantity.uncertainty is not None:

@@ -20,10 +20,6 @@ if TYPE_CHECKING:
 
 __all__ = ["Gathered", "gather"]
 
-#: Share of a region's pixels at the end of the stored range from which its mean and spread are
-#: biased beyond use: 0.1 % (the clipped tail of a Gaussian then starts about 3 SD out).
-CLIPPED_SHARE = 1e-3
-
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Gathered:
@@ -49,9 +45,9 @@ class Gathered:
 
 
 def gather(volume: Volume, region: Region, *, rule: Rule = "area") -> Gathered | NotMeasured:
-    """Return the pixels of a region, with padding and the outside left out and cautioned.
+    """Return the pixels of a region; outside, padding and saturation left out and cautioned.
 
-    NotMeasured if the region misses the volume or holds only padding.
+    NotMeasured if the region misses the volume or nothing is left.
     """
     slices = slices_of(region, volume)
     positions = volume.positions_mm
@@ -85,11 +81,14 @@ def gather(volume: Volume, region: Region, *, rule: Rule = "area") -> Gathered |
             weights[i][padding] = 0.0
         if volume.representable_hu is not None:
             low, high = volume.representable_hu
-            clipped += int(np.count_nonzero(((plane <= low) | (plane >= high)) & (weights[i] > 0)))
+            saturated = ((plane <= low) | (plane >= high)) & (weights[i] > 0)
+            clipped += int(np.count_nonzero(saturated))
+            weights[i][saturated] = 0.0
     outside = max(c.outside for _, c in covers)
     cautions = (*volume.cautions, *_left_out(outside, padded, clipped, int((weights > 0).sum())))
     if not weights.any():
-        return NotMeasured("the region holds only padding", "move it onto the image", cautions)
+        only = "saturated pixels and padding" if clipped else "padding"
+        return NotMeasured(f"the region holds only {only}", "move it onto the image", cautions)
     if len(covers) == 1:
         values, weights = values[0], weights[0]
         spacing: tuple[float, ...] = volume.spacing_mm[1:]
@@ -124,12 +123,12 @@ def _left_out(outside: float, padded: int, clipped: int, kept: int) -> list[Caut
                 "Keep the region within the reconstructed circle.",
             )
         )
-    if kept and clipped > CLIPPED_SHARE * kept:
+    if clipped:
         found.append(
             Caution(
                 "clipped-values",
-                f"{clipped} of {kept} pixels stand at the end of the stored range; mean and SD are"
-                " biased.",
+                f"{clipped} of {clipped + kept} pixels stand at the end of the stored range and"
+                " were left out; mean and SD are biased.",
                 "Reconstruct with an extended CT-number range, or measure elsewhere.",
             )
         )

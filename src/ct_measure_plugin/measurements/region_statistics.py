@@ -33,6 +33,32 @@ class RegionStatisticsSettings(Settings):
         description="area: border pixels count by the exact fraction inside; center: a pixel"
         " counts whole if its centre lies inside",
     )
+    bin_width: float = Field(
+        5.0,
+        gt=0,
+        title="Histogram bin width",
+        description="width of the histogram's bins, on which mode, entropy and uniformity rest",
+    )
+    bin_edge: float = Field(
+        -0.5,
+        title="Histogram bin edge",
+        description="a value at which one bin ends and the next begins",
+    )
+    percentiles: tuple[float, ...] = Field(
+        (),
+        title="Percentiles",
+        description="further percentiles, 0 to 100",
+    )
+    ranges: tuple[tuple[float, float], ...] = Field(
+        (),
+        title="Ranges",
+        description="ranges of values (low, high) whose share of the region is wanted",
+    )
+    along_z: bool = Field(
+        True,
+        title="Curves along z",
+        description="mean and SD of every slice of a region on several slices",
+    )
 
 
 class MeasureRegionStatistics(Measurement):
@@ -71,7 +97,16 @@ class MeasureRegionStatistics(Measurement):
                 "draw it larger, or over more slices",
                 found.cautions,
             )
+        curves = wanted.along_z and len(found.slices) > 1
         result = region_statistics(
-            found.values, found.weights, spacing_mm=found.spacing_mm, unit=volume.unit
+            found.values,
+            found.weights,
+            spacing_mm=found.spacing_mm,
+            unit=volume.unit,
+            bin_width=wanted.bin_width,
+            bin_edge=wanted.bin_edge,
+            percentiles=wanted.percentiles,
+            ranges=wanted.ranges,
+            positions_mm=volume.positions_mm[found.slices] if curves else None,
         )
         return replace(result, cautions=(*found.cautions, *result.cautions))

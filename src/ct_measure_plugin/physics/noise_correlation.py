@@ -2,8 +2,8 @@
 
 The variance of a weighted mean is ``sum_lag C(lag) R(lag) / W**2``, with `C` the autocovariance of
 the noise, `R` the autocorrelation of the weights and `W` their sum: the same integral as
-``∬ S |W(f)|² df`` over the noise power spectrum `S`. Here `S` is judged from the region itself: every
-spectrum of a library is weighed by how well it explains the region's periodogram, and the
+``∬ S |W(f)|² df`` over the noise power spectrum `S`. Here `S` is judged from the region itself:
+every spectrum of a library is weighed by how well it explains the region's periodogram, and the
 variances that the spectra give are averaged with these weights. What the region cannot decide
 widens the standard error by the factor of Student's distribution.
 """
@@ -54,8 +54,8 @@ class MeanDoubt:
         ``W**2 / sum_lag rho(lag)**2 R(lag)``: twice the inverse squared relative uncertainty of
         the variance.
     reach : float
-        Distance to which the noise is correlated (its coefficient over 0.1 in size), in the unit of the spacing; 0
-        if the pixels are independent.
+        Distance to which the noise is correlated (its coefficient over 0.1 in size), in the unit of
+        the spacing; 0 if the pixels are independent.
     freedom : float
         Degrees of freedom of the variance of the mean.
     """

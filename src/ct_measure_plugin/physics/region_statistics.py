@@ -4,13 +4,15 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
 from ct_measure_plugin.errors import ArgumentError
+from ct_measure_plugin.physics.first_order import weighted_quantile
 from ct_measure_plugin.physics.noise_correlation import MeanDoubt, doubt_of_mean, independent_doubt
-from ct_measure_plugin.physics.results import Caution, NotMeasured, Quantity, Result
+from ct_measure_plugin.physics.region_numbers import Choices, numbers_of
+from ct_measure_plugin.physics.results import Caution, Curve, NotMeasured, Quantity, Result
 
 if TYPE_CHECKING:
     from numpy.typing import ArrayLike, NDArray
@@ -36,18 +38,39 @@ class RegionStatistics(Result):
     mean : Quantity
         Weighted mean; its uncertainty is the standard error of the mean, with the noise
         correlation of the region itself allowed for.
-    sd : Quantity
-        Sample standard deviation (n - 1; with weights V1 - V2/V1).
+    sd, population_sd : Quantity
+        Sample standard deviation (n - 1; with weights V1 - V2/V1), and the population one (n).
     n : Quantity
         Pixels (voxels) of which any part lies inside.
     area, volume : Quantity or None
         Area of a region on one slice in mm², volume of one on several slices in mm³.
-    minimum, maximum, median : Quantity
+    minimum, maximum, value_range : Quantity
         Of the pixels inside.
+    median, p10, p25, p75, p90, interquartile_range : Quantity
+        Quantiles and the distance of the quartiles.
     skewness, kurtosis : Quantity
         m3/m2^1.5 and m4/m2² - 3 with population moments; 0 where all values are equal.
+    mean_absolute_deviation, median_absolute_deviation : Quantity
+        Mean of abs(x - mean) and mean of abs(x - median).
+    robust_mean_absolute_deviation : Quantity
+        Mean of abs(x - mean) of the values from P10 to P90, about their own mean.
+    coefficient_of_variation, quartile_coefficient_of_dispersion : Quantity or None
+        population SD / mean, and (P75 - P25)/(P75 + P25); None where the denominator is within
+        its uncertainty of 0. Both depend on where the scale has its zero.
+    energy, root_mean_square : Quantity
+        Σ x², and the root of its mean.
+    mode, entropy, uniformity : Quantity
+        Of the histogram: its fullest bin, -Σ p log2 p in bits, Σ p².
+    share : Quantity or None
+        Share of the pixels in the first range of values asked for, in percent.
     effective_n : Quantity
         Independent samples that would give the same standard error of the mean.
+    histogram : Curve
+        Pixels by value.
+    percentiles, shares : Curve or None
+        The percentiles asked for; the share in each range asked for, by its number from 1.
+    slice_mean, slice_sd : Curve or None
+        Mean and sample SD of each slice against z.
     """
 
     mean: Quantity
@@ -60,7 +83,30 @@ class RegionStatistics(Result):
     median: Quantity
     skewness: Quantity
     kurtosis: Quantity
+    population_sd: Quantity
+    p10: Quantity
+    p25: Quantity
+    p75: Quantity
+    p90: Quantity
+    interquartile_range: Quantity
+    value_range: Quantity
+    mean_absolute_deviation: Quantity
+    robust_mean_absolute_deviation: Quantity
+    median_absolute_deviation: Quantity
+    coefficient_of_variation: Quantity | None = None
+    quartile_coefficient_of_dispersion: Quantity | None = None
+    energy: Quantity
+    root_mean_square: Quantity
+    mode: Quantity
+    entropy: Quantity
+    uniformity: Quantity
+    share: Quantity | None = None
     effective_n: Quantity
+    histogram: Curve
+    percentiles: Curve | None = None
+    shares: Curve | None = None
+    slice_mean: Curve | None = None
+    slice_sd: Curve | None = None
 
     @property
     def standard_error(self) -> Quantity:
@@ -74,6 +120,11 @@ def region_statistics(
     *,
     spacing_mm: tuple[float, ...],
     unit: str = "HU",
+    bin_width: float = 5.0,
+    bin_edge: float = -0.5,
+    percentiles: tuple[float, ...] = (),
+    ranges: tuple[tuple[float, float], ...] = (),
+    positions_mm: ArrayLike | None = None,
 ) -> RegionStatistics | NotMeasured:
     """Return mean, spread, extremes and shape of the values in a region.
 
@@ -88,6 +139,15 @@ def region_statistics(
         Step along each axis of the grid, (dy, dx) or (dz, dy, dx); for a flat list, of one pixel.
     unit : str
         Unit of the values.
+    bin_width, bin_edge : float
+        Bins of the histogram, and with it of mode, entropy and uniformity. The default edge of
+        -0.5 puts whole numbers in the middle of bins of odd width.
+    percentiles : tuple of float
+        Further percentiles, 0 to 100.
+    ranges : tuple of (float, float)
+        Ranges of values, both ends included, whose share is wanted.
+    positions_mm : array, shape (nz,), optional
+        z of each slice; given, the result holds the curves along z.
 
     Returns
     -------
@@ -97,15 +157,14 @@ def region_statistics(
     Raises
     ------
     ArgumentError
-        If the weights do not fit the values or lie outside 0 to 1.
+        If the weights do not fit the values or lie outside 0 to 1, or a choice is out of range.
 
     Notes
     -----
     Moments are population moments (divide by the sum of weights); `sd` is the sample standard
     deviation. Quantiles interpolate linearly, as numpy's default does, and with weights between
-    the middles of the weights. u(sd) = sd sqrt(2/ν + κ/n) / 2 with ν the independent samples the
-    variance sees; u(median) is half the distance between the quantiles one binomial standard
-    deviation either side. [1]_ [2]_
+    the middles of the weights. The uncertainties are given in
+    :mod:`ct_measure_plugin.physics.region_numbers`. [1]_ [2]_
 
     Examples
     --------
@@ -117,31 +176,21 @@ def region_statistics(
     References
     ----------
     .. [1] Image Biomarker Standardisation Initiative, reference manual (arXiv:1612.07003),
-       section 3.3: mean, variance, skewness, excess kurtosis.
+       sections 3.3 and 3.4.
     .. [2] JCGM 100:2008, 4.2: standard uncertainty of a mean.
     """
     data, cover = _checked(values, weights)
     steps = tuple(float(step) for step in spacing_mm)
     if not steps or not all(math.isfinite(s) and s > 0 for s in steps):
         raise ArgumentError("spacing_mm", "must hold lengths greater than 0", spacing_mm)
-    cautions = []
-    lost = int(np.count_nonzero((cover > 0) & ~np.isfinite(data)))
-    if lost:
-        cover = np.where(np.isfinite(data), cover, 0.0)
-        data = np.where(np.isfinite(data), data, 0.0)
-        cautions.append(
-            Caution(
-                "not-finite",
-                f"{lost} pixels of the region hold no finite value and were left out.",
-                "Look where they come from.",
-            )
-        )
-    inside = cover > 0
-    v, w = data[inside], cover[inside]
+    choices = Choices(unit, bin_width, bin_edge, tuple(percentiles), tuple(ranges))
+    data, cover, cautions = _finite(data, cover)
+    v, w = data[cover > 0], cover[cover > 0]
     if v.size < 2:
         return NotMeasured(
             f"the region holds {v.size} usable pixel{'s' * (v.size != 1)}; at least 2 are needed",
             "draw it larger",
+            tuple(cautions),
         )
     if data.ndim > 1 and len(steps) == data.ndim:
         doubt = doubt_of_mean(data, cover, steps)
@@ -151,24 +200,21 @@ def region_statistics(
             Caution("independence-assumed", "The pixels were taken as independent samples.")
         )
     cautions += _sample_cautions(v.size, doubt)
-    return _statistics(v, w, doubt, steps, unit, tuple(cautions))
-
-
-def weighted_quantile(values: Floats, weights: Floats, at: ArrayLike) -> Floats:
-    """Return quantiles of weighted values, shape of `at`.
-
-    Interpolates linearly between the middles of the sorted weights; with equal weights this is
-    numpy's default ("linear") method.
-
-    >>> weighted_quantile(np.array([3.0, 1.0, 2.0]), np.ones(3), [0.25, 0.5])
-    array([1.5, 2. ])
-    """
-    order = np.argsort(values, kind="stable")
-    v, w = values[order], weights[order]
-    middle = np.cumsum(w) - w / 2
-    place = (middle - middle[0]) / (middle[-1] - middle[0]) if len(v) > 1 else np.zeros(1)
-    found: Floats = np.interp(np.asarray(at, float), place, v)
-    return found
+    size = float(w.sum()) * math.prod(steps)
+    return RegionStatistics(
+        **numbers_of(v, w, doubt, choices),
+        **_along_z(data, cover, steps, positions_mm, unit),
+        area=Quantity(size, "mm²", 0.0) if len(steps) == 2 else None,
+        volume=Quantity(size, "mm³", 0.0) if len(steps) == 3 else None,
+        cautions=(
+            *cautions,
+            Caution(
+                "no-uncertainty",
+                "Minimum, maximum, range, mode and energy describe these pixels only; no"
+                " uncertainty is stated.",
+            ),
+        ),
+    )
 
 
 def _checked(values: ArrayLike, weights: ArrayLike | None) -> tuple[Floats, Floats]:
@@ -181,6 +227,20 @@ def _checked(values: ArrayLike, weights: ArrayLike | None) -> tuple[Floats, Floa
     if not bool(np.all((cover >= 0) & (cover <= 1 + 1e-12))):
         raise ArgumentError("weights", "must lie within 0 to 1", [cover.min(), cover.max()])
     return data, cover
+
+
+def _finite(data: Floats, cover: Floats) -> tuple[Floats, Floats, list[Caution]]:
+    """Leave out what is not finite, and say how many."""
+    finite = np.isfinite(data)
+    lost = int(np.count_nonzero((cover > 0) & ~finite))
+    if not lost:
+        return data, cover, []
+    caution = Caution(
+        "not-finite",
+        f"{lost} pixels of the region hold no finite value and were left out.",
+        "Look where they come from.",
+    )
+    return np.where(finite, data, 0.0), np.where(finite, cover, 0.0), [caution]
 
 
 def _sample_cautions(n: int, doubt: MeanDoubt) -> list[Caution]:
@@ -213,47 +273,31 @@ def _sample_cautions(n: int, doubt: MeanDoubt) -> list[Caution]:
     return found
 
 
-def _statistics(
-    v: Floats,
-    w: Floats,
-    doubt: MeanDoubt,
-    steps: tuple[float, ...],
-    unit: str,
-    cautions: tuple[Caution, ...],
-) -> RegionStatistics:
-    total, squares = float(w.sum()), float(np.sum(w * w))
-    mean = float(np.sum(w * v)) / total
-    if np.ptp(v) == 0:  # equal values: rounding must not invent a spread
-        mean, residual = float(v[0]), np.zeros_like(v)
-    else:
-        residual = v - mean
-    m2, m3, m4 = (float(np.sum(w * residual**k)) / total for k in (2, 3, 4))
-    sd = math.sqrt(m2 * total / (total - squares / total))
-    error = math.sqrt(doubt.variance_of_mean) if m2 else 0.0
-    skewness = m3 / m2**1.5 if m2 else 0.0
-    kurtosis = m4 / m2**2 - 3.0 if m2 else 0.0
-    nu = max(doubt.power_samples, 2.0)
-    effective = (sd / error) ** 2 if error else float(v.size)
-    step = math.sqrt(0.25 / min(effective, v.size))
-    quantiles = weighted_quantile(v, w, [max(0.5 - step, 0), 0.5, min(0.5 + step, 1)])
-    size = total * math.prod(steps)
-    return RegionStatistics(
-        mean=Quantity(mean, unit, error),
-        sd=Quantity(sd, unit, sd * math.sqrt(max(2.0 / nu + kurtosis / v.size, 0.0)) / 2),
-        n=Quantity(float(v.size), "px", 0.0),
-        area=Quantity(size, "mm²", 0.0) if len(steps) == 2 else None,
-        volume=Quantity(size, "mm³", 0.0) if len(steps) == 3 else None,
-        minimum=Quantity(float(v.min()), unit),
-        maximum=Quantity(float(v.max()), unit),
-        median=Quantity(float(quantiles[1]), unit, float(quantiles[2] - quantiles[0]) / 2),
-        skewness=Quantity(skewness, "", math.sqrt(6.0 / nu)),
-        kurtosis=Quantity(kurtosis, "", math.sqrt(24.0 / nu)),
-        effective_n=Quantity(effective, "", effective * math.sqrt(2.0 / nu)),
-        cautions=(
-            *cautions,
-            Caution(
-                "no-uncertainty",
-                "Minimum and maximum describe these pixels only; no uncertainty is stated.",
-            ),
-        ),
-    )
+def _along_z(
+    data: Floats, cover: Floats, steps: tuple[float, ...], positions: ArrayLike | None, unit: str
+) -> dict[str, Any]:
+    """Return the curves of a region on several slices."""
+    if positions is None or data.ndim != 3 or len(steps) != 3:
+        return {}
+    z = np.asarray(positions, float)
+    if z.shape != (len(data),):
+        raise ArgumentError("positions_mm", f"must hold {len(data)} positions", z.shape)
+    rows = []
+    for k, (plane, own) in enumerate(zip(data, cover, strict=True)):
+        inside = own > 0
+        if np.count_nonzero(inside) < 2:
+            continue
+        doubt = doubt_of_mean(plane, own, steps[1:])
+        total, squares = float(own.sum()), float(np.sum(own * own))
+        mean = float(np.sum(own * plane)) / total
+        spread = float(np.sum(own * np.where(inside, plane - mean, 0.0) ** 2))
+        sd = math.sqrt(spread / (total - squares / total))
+        error = math.sqrt(doubt.variance_of_mean)
+        rows.append((z[k], mean, error, sd, sd / math.sqrt(2 * max(doubt.power_samples, 2.0))))
+    if not rows:
+        return {}
+    at, mean_z, error_z, sd_z, sd_error_z = np.array(rows).T
+    return {
+        "slice_mean": Curve(at, mean_z, error_z, "z", "mm", "mean", unit),
+        "slice_sd": Curve(at, sd_z, sd_error_z, "z", "mm", "SD", unit),
+    }

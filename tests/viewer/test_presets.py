@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+from pathlib import Path
 
 import pytest
 
@@ -112,3 +113,13 @@ def test_a_preset_must_be_a_window():
 def test_the_file_lies_in_the_user_s_own_settings():
     assert presets_file().name == "window_presets.json"
     assert presets_file().parent.name == "ct-measure-plugin"
+
+
+def test_the_page_lists_the_presets_for_image_quality_as_they_are():
+    """The docs' table is read back, number for number."""
+    page = (Path(__file__).parents[2] / "docs/window.md").read_text(encoding="utf-8")
+    start = page.index("| image quality |")
+    lines = page[start : page.index("\n\n", start)].splitlines()[2:]
+    cells = [[cell.strip() for cell in line.strip("|").split("|")] for line in lines]
+    told = [(name, *(float(n.replace("−", "-")) for n in numbers)) for name, *numbers, _ in cells]
+    assert told == [(p.name, p.centre, p.width) for p in BUILT_IN if p.group == QUALITY]

@@ -1,8 +1,8 @@
 """Opening 300 slices of 512 × 512: this package against two plain ways, in the same run.
 
 Run it by ``python tests/benchmarks/series_reading.py``. It writes a series (about 160 MB) into a
-temporary folder, reads it several times by each way in turn and compares the shortest times (other work on
-the machine only ever adds), so that the figures are ratios of this machine at this hour:
+temporary folder, reads it several times by each way in turn and compares the shortest times
+(other work only ever adds to them), so that the figures are ratios of this machine at this hour:
 
 (a)  a loop of ``pydicom.dcmread(file).pixel_array`` with rescale to float32;
 (b)  SimpleITK's ImageSeriesReader on file names that are given to it in order, and

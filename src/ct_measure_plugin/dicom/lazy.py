@@ -52,10 +52,16 @@ class LazySlices:
         apply_whole(target, rescale_of(image))
         return target
 
-    def __getitem__(self, key: tuple[slice, slice, slice]) -> NDArray[Any]:
-        along, down, across = key
-        planes = [self.plane(k)[down, across] for k in range(*along.indices(self.shape[0]))]
-        return np.stack(planes)
+    def __getitem__(self, key: tuple[int | slice, ...]) -> NDArray[Any]:
+        """Return part of the series; dask may ask for slices of an axis or for one index of it."""
+        along, within = key[0], key[1:]
+        picked = range(self.shape[0])[along]
+        if isinstance(picked, int):
+            part: NDArray[Any] = self.plane(picked)[within]
+            return part
+        if not picked:
+            return np.empty((0, *self.shape[1:]), self.dtype)[(slice(None), *within)]
+        return np.stack([self.plane(k)[within] for k in picked])
 
 
 def lazy_array(images: Sequence[ImageFacts]) -> Any:

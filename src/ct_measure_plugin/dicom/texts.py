@@ -35,7 +35,7 @@ def digest_of(uid: str) -> str:
     Examples
     --------
     >>> digest_of("1.2.3")[:12]
-    'd5d90d4e1c40'
+    'c47f5b18b8a4'
     """
     return hashlib.sha256(uid.encode("utf-8", "replace")).hexdigest()
 

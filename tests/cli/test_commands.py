@@ -35,6 +35,33 @@ def test_series_lists_what_is_there(capsys, folder):
     assert json.loads(out)["series"][0]["slices"] == 4
 
 
+def test_series_of_one_kernel_are_told_apart_by_dose_and_folder(capsys, tmp_path):
+    """Two scans with the same kernel differ in what the listing says of them."""
+    for name, exposure in (("low", "20"), ("high", "80")):
+        write_series(
+            tmp_path / name,
+            noise((2, 32, 32)),
+            line(2),
+            Exposure=exposure,
+            SeriesInstanceUID=f"1.2.{exposure}",
+        )
+    _, out, _ = run(capsys, "series", tmp_path)
+    listed = [text for text in out.splitlines() if "2 slices" in text]
+    assert len(listed) == 2
+    assert any(text.endswith("20 mAs, in low") for text in listed)
+    assert any(text.endswith("80 mAs, in high") for text in listed)
+
+
+@pytest.mark.parametrize("way", ["file", "inside"])
+def test_a_series_given_by_a_file_is_placed_too(capsys, folder, way, monkeypatch):
+    target = sorted(folder.iterdir())[0]
+    if way == "inside":
+        monkeypatch.chdir(folder)
+        target = target.name
+    _, out, _ = run(capsys, "series", target)
+    assert out.splitlines()[0].endswith("in .")
+
+
 def test_measure_prints_the_number_that_python_gives(capsys, folder):
     code, out, _ = run(capsys, "measure", folder, "region_statistics", "--region", WATER, "--json")
     assert code == DONE

@@ -3,12 +3,14 @@
 from __future__ import annotations
 
 import json
+import os
 from typing import TYPE_CHECKING, Any
 
 from ct_measure_plugin.cli import DONE
 
 if TYPE_CHECKING:
     import argparse
+    from pathlib import Path
 
     from ct_measure_plugin.dicom import SeriesEntry
 
@@ -33,7 +35,7 @@ def run(arguments: argparse.Namespace) -> int:
         print(json.dumps({"series": series, "skipped": scan.reasons()}, indent=1))
         return DONE
     for i, entry in enumerate(scan.entries):
-        print(f"[{i}] {entry.label}")
+        print(f"[{i}] {entry.label}{_dose(entry)}, in {_below(entry.folder, arguments.folder)}")
         for caution in entry.cautions:
             print(f"      {caution.kind.level}: {caution}")
     if not scan.entries:
@@ -41,6 +43,20 @@ def run(arguments: argparse.Namespace) -> int:
     for reason, count in scan.reasons().items():
         print(f"skipped {count} file{'s' * (count != 1)}: {reason}")
     return DONE
+
+
+def _dose(entry: SeriesEntry) -> str:
+    """Return the tube load and dose index, if stated: a line that tells dose levels apart."""
+    named = ((entry.mas, "mAs"), (entry.ctdi_vol_mgy, "mGy CTDIvol"))
+    return "".join(
+        f", {low:g} {unit}" if low == high else f", {low:g} to {high:g} {unit}"
+        for (low, high), unit in ((span, unit) for span, unit in named if span is not None)
+    )
+
+
+def _below(folder: Path, top: str) -> str:
+    """Return a folder as seen from the one that was asked about."""
+    return os.path.relpath(folder, top if os.path.isdir(top) else os.path.dirname(top) or ".")
 
 
 def _facts(index: int, entry: SeriesEntry) -> dict[str, Any]:

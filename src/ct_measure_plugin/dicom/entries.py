@@ -2,9 +2,11 @@
 
 from __future__ import annotations
 
+import os
 from collections import Counter
 from dataclasses import dataclass, field
 from os import fspath
+from pathlib import Path
 from typing import TYPE_CHECKING
 
 from ct_measure_plugin.dicom.geometry import StackGeometry, stack_geometry
@@ -16,7 +18,6 @@ from ct_measure_plugin.physics.results import Caution
 
 if TYPE_CHECKING:
     from collections.abc import Iterable, Iterator
-    from pathlib import Path
 
     from ct_measure_plugin.dicom.grouping import Stack
     from ct_measure_plugin.physics.volume import HeaderWindow
@@ -113,6 +114,15 @@ class SeriesEntry:
         if self.kvp is not None:
             parts.append(f"{self.kvp:g} kV")
         return ", ".join(parts)
+
+    @property
+    def folder(self) -> Path:
+        """The folder that holds the files, or the nearest one that holds them all.
+
+        Its name may be anybody's: show it to the person at the screen, and nowhere else.
+        """
+        parents = {os.path.dirname(fspath(image.path)) for image in self._stack.images}
+        return Path(os.path.commonpath(parents))
 
     def places_of(self, file: Path) -> tuple[int, ...]:
         """Return the indices of the slices that come from a file; empty if none does."""

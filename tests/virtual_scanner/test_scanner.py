@@ -20,8 +20,10 @@ from ct_measure_plugin.virtual_scanner import (
     Recipe,
     SliceProfile,
     disc_rod,
+    scanner,
     simulate,
     simulate_slice,
+    tilted_wire,
 )
 
 RECIPE = Recipe(
@@ -118,6 +120,21 @@ def test_memory_spares_projections_that_are_the_same():
     finer = replace(RECIPE, geometry=replace(RECIPE.geometry, views=91))
     simulate(finer, memory=memory)
     assert len(memory) == 4
+
+
+def test_a_long_series_keeps_few_projections(monkeypatch):
+    """A leaning wire looks new in every slice; what is held does not grow with the series."""
+    sizes = []
+
+    def counted(recipe, index, **given):
+        sizes.append(len(given["memory"]))
+        return simulate_slice(recipe, index, **given)
+
+    monkeypatch.setattr(scanner, "simulate_slice", counted)
+    wire = Part(tilted_wire((0.0, 0.0, 0.0), 1.0, tilt_deg=10.0), WATER)
+    positions = tuple(float(z) for z in range(12))
+    simulate(replace(RECIPE, phantom=Phantom((wire,)), positions_mm=positions))
+    assert max(sizes) == scanner.KEPT
 
 
 def test_a_starved_scan_still_makes_a_picture():

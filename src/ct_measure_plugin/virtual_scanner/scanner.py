@@ -28,6 +28,8 @@ __all__ = ["Slice", "ideal_projection", "measured_projection", "simulate", "simu
 
 #: Range of stored values: int16.
 LOWEST_HU, HIGHEST_HU = -32768, 32767
+#: Projections kept between the slices of one series, where the caller keeps none.
+KEPT = 4
 
 
 class Slice(NamedTuple):
@@ -133,7 +135,7 @@ def simulate(
         Asked before each slice; True stops the work.
     memory : dict, optional
         Shared between calls, it saves the projections of scans that differ in noise or
-        reconstruction only.
+        reconstruction only; it grows by a projection for every slice that sees something new.
     workers : int
         Threads of the backprojection.
 
@@ -152,13 +154,15 @@ def simulate(
     Rounding adds a variance of 1/12 HU². The image frame is the scanner's: z, y, x about the
     isocentre.
     """
-    memory = {} if memory is None else memory
+    kept: Memory = {} if memory is None else memory
     count = len(recipe.positions_mm)
     hu = np.empty((count, recipe.grid.matrix, recipe.grid.matrix), np.int16)
     for index in range(count):
         if cancel is not None and cancel():
             raise Cancelled("the simulation was stopped")
-        found = simulate_slice(recipe, index, memory=memory, workers=workers)
+        found = simulate_slice(recipe, index, memory=kept, workers=workers)
+        if memory is None and len(kept) > KEPT:
+            kept.pop(next(iter(kept)))
         hu[index] = np.clip(np.rint(found.hu), LOWEST_HU, HIGHEST_HU)
         if progress is not None:
             progress(index + 1, count)

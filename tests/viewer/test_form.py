@@ -17,6 +17,8 @@ class Sample(Settings):
     width_mm: float = Field(2.5, gt=0)
     smooth: bool = False
     diameter_mm: float | None = Field(None, ge=0.01, le=3)
+    levels: tuple[float, ...] = ()
+    ranges: tuple[tuple[float, float], ...] = Field((), title="Ranges")
 
 
 @pytest.fixture
@@ -62,6 +64,19 @@ def test_what_is_not_valid_is_said_and_not_used(form):
     form._controls["width_mm"].value = 1.0
     assert form.problem == ""
     assert form.settings.width_mm == 1.0
+
+
+def test_several_numbers_and_ranges_are_written_in_a_line(form):
+    form._controls["levels"]._line.value = "0.3; 0.05 1e-2"
+    assert form.settings.levels == (0.3, 0.05, 0.01)
+    form._controls["ranges"]._line.value = "−10 to 10, 30 to 60"
+    assert form.settings.ranges == ((-10.0, 10.0), (30.0, 60.0))
+    form._controls["ranges"]._line.value = "30 to"
+    assert form.settings.ranges == ((-10.0, 10.0), (30.0, 60.0))
+    assert form.problem.startswith("Ranges: ")
+    form.show(Sample(levels=(0.25,), ranges=((0.0, 5.5),)))
+    assert form._controls["levels"]._line.value == "0.25"
+    assert form._controls["ranges"]._line.value == "0 to 5.5"
 
 
 def test_showing_settings_tells_once(form):

@@ -10,6 +10,8 @@ from magicgui.widgets import CheckBox, Container, create_widget
 from psygnal import Signal
 from pydantic import ValidationError
 
+from ct_measure_plugin.viewer.docks.number_lists import NumberList, holds_numbers, holds_ranges
+
 if TYPE_CHECKING:
     from pydantic.fields import FieldInfo
 
@@ -118,6 +120,10 @@ def _control(name: str, field: FieldInfo, value: Any) -> Any:
     label = field.title or name.replace("_", " ").capitalize()
     names = {"name": name, "label": label, "tooltip": field.description or ""}
     annotation, optional = _without_none(field.annotation)
+    if holds_numbers(annotation) or holds_ranges(annotation):
+        lines = NumberList(ranges=holds_ranges(annotation), **names)
+        lines.value = value
+        return lines
     options = {**_bounds(field), **_steps_of(annotation, field)}
     if not optional:
         control: Any = create_widget(

@@ -11,7 +11,7 @@ from typing import Any
 
 import numpy as np
 
-from ct_measure_plugin.physics.regions import Disc, Region
+from ct_measure_plugin.physics.regions import Box, Disc, Region
 from ct_measure_plugin.physics.volume import Volume
 
 __all__ = ["EXAMPLES", "Example"]
@@ -26,6 +26,8 @@ class Example:
     moves_with_level: tuple[str, ...] = ()
     #: Quantities that depend on where the scale has its zero (ratios to the mean, sums of squares).
     rests_on_zero: tuple[str, ...] = ()
+    #: Directions in the image: they turn with it, counter-clockwise, modulo 180°.
+    turns_with_image: tuple[str, ...] = ()
     #: Power of the pixel size that each Quantity scales with; others do not change.
     scales_with_spacing: dict[str, int] = field(default_factory=dict)
 
@@ -62,7 +64,22 @@ def noise_power() -> Example:
     )
 
 
+def edge_mtf() -> Example:
+    from truth_images import HANN, edge_image
+
+    noise = np.random.default_rng(7).normal(0, 12, (2, 56, 56))
+    values = np.rint(edge_image(HANN, shape=(56, 56), angle=5, contrast=900) + noise)
+    frequencies = ("f50", "f10", "f2", "nyquist")
+    return Example(
+        Volume(values.astype(np.int16), (2.0, 0.5, 0.5)),
+        (Box((13.75, 13.75), (24.0, 22.0)),),
+        turns_with_image=("normal_direction",),
+        scales_with_spacing=dict.fromkeys(frequencies, -1) | {"width": 1, "position": 1},
+    )
+
+
 EXAMPLES: dict[str, Callable[[], Example]] = {
     "region_statistics": region_statistics,
     "noise_power": noise_power,
+    "edge_mtf": edge_mtf,
 }

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from concurrent.futures import ThreadPoolExecutor
-from dataclasses import replace
+from dataclasses import fields, replace
 
 import numpy as np
 import pytest
@@ -12,7 +12,7 @@ from examples import EXAMPLES, Example
 from ct_measure_plugin.errors import CtMeasureError
 from ct_measure_plugin.measurements import NAMES, find, measure
 from ct_measure_plugin.measurements.base import Settings
-from ct_measure_plugin.physics.regions import Box, Disc, Ellipse, Polygon, Region
+from ct_measure_plugin.physics.regions import Box, Disc, Ellipse, Polygon, Region, Segment
 from ct_measure_plugin.physics.results import Result, quantities_of
 from ct_measure_plugin.physics.volume import Volume
 
@@ -84,6 +84,9 @@ def turned(region: Region, side_mm: float) -> Region:
         return replace(region, center_mm=point(region.center_mm))
     if isinstance(region, Ellipse | Box):
         return replace(region, center_mm=point(region.center_mm), angle_deg=region.angle_deg + 90)
+    if isinstance(region, Segment):
+        ends = {"start_mm": point(region.start_mm), "end_mm": point(region.end_mm)}
+        return replace(region, **ends)
     if isinstance(region, Polygon):
         return replace(region, vertices_mm=tuple(point(p) for p in region.vertices_mm))
     raise NotImplementedError(region.kind)
@@ -96,19 +99,29 @@ def test_a_quarter_turn_changes_nothing(example):
     regions = tuple(turned(region, side) for region in example.regions)
     after = quantities_of(run(example, replace(example.volume, hu=hu), regions))
     for name, quantity in plain.items():
-        assert after[name].value == pytest.approx(quantity.value, rel=1e-6, abs=1e-9), name
+        expected = quantity.value
+        if name in example.turns_with_image:
+            expected = (expected + 90) % 180
+        assert after[name].value == pytest.approx(expected, rel=1e-6, abs=1e-9), name
+
+
+def doubled(region: Region) -> Region:
+    """Stretch a region to twice its size about the origin."""
+    names = {"center_mm", "radius_mm", "size_mm", "start_mm", "end_mm", "width_mm"}
+    held = {f.name: getattr(region, f.name) for f in fields(region) if f.name in names}
+    assert held
+    return replace(region, **{name: _twice(value) for name, value in held.items()})
+
+
+def _twice(value):
+    return tuple(2 * v for v in value) if isinstance(value, tuple) else 2 * value
 
 
 def test_larger_pixels_scale_lengths_only(example):
     plain = quantities_of(run(example))
     dz, dy, dx = example.volume.spacing_mm
     volume = replace(example.volume, spacing_mm=(dz, 2 * dy, 2 * dx), slice_positions_mm=None)
-    regions = []
-    for region in example.regions:
-        assert isinstance(region, Disc)
-        center = (2 * region.center_mm[0], 2 * region.center_mm[1])
-        regions.append(replace(region, center_mm=center, radius_mm=2 * region.radius_mm))
-    after = quantities_of(run(example, volume, tuple(regions)))
+    after = quantities_of(run(example, volume, tuple(map(doubled, example.regions))))
     for name, quantity in plain.items():
         power = example.scales_with_spacing.get(name, 0)
         assert after[name].value == pytest.approx(quantity.value * 2.0**power, rel=1e-9), name

@@ -25,6 +25,7 @@ __all__ = ["NAMES", "find", "measure", "measure_each", "settings_for"]
 _CLASSES: dict[str, str] = {
     "region_statistics": "MeasureRegionStatistics",
     "noise_power": "MeasureNoisePower",
+    "edge_mtf": "MeasureEdgeMtf",
 }
 
 NAMES: tuple[str, ...] = tuple(_CLASSES)

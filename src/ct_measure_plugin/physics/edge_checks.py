@@ -18,7 +18,7 @@ if TYPE_CHECKING:
 
     Floats = NDArray[np.float64]
 
-__all__ = ["EdgeFacts", "edge_cautions", "edge_refusal", "other_objects"]
+__all__ = ["EdgeFacts", "clipped", "edge_cautions", "edge_refusal", "other_objects"]
 
 #: Least tilt from the pixel grid; 1.5° is asked for, and found to within its uncertainty.
 LEAST_TILT = 1.45
@@ -69,17 +69,25 @@ class EdgeFacts:
 
 
 def edge_refusal(
-    facts: EdgeFacts, method: str, limits: tuple[float, float] | None
+    facts: EdgeFacts,
+    method: str,
+    limits: tuple[float, float] | None,
+    stack: Floats | None = None,
 ) -> NotMeasured | None:
-    """Return why the edge cannot be measured, or None."""
-    for check in (_contrast, _clipped, _tilt, _plateaus, _straight, _alone, _sampling):
-        refusal = check(facts, method, limits)
+    """Return why the edge cannot be measured, or None; `stack` holds the slices not averaged."""
+    refusal = clipped(
+        facts.values if stack is None else stack, facts.line.distance, facts.fwhm, limits
+    )
+    if refusal is not None:
+        return refusal
+    for check in (_contrast, _tilt, _plateaus, _straight, _alone, _sampling):
+        refusal = check(facts, method)
         if refusal is not None:
             return refusal
     return None
 
 
-def _contrast(facts: EdgeFacts, method: str, _: object) -> NotMeasured | None:
+def _contrast(facts: EdgeFacts, method: str) -> NotMeasured | None:
     if not facts.contrast > 0:
         return NotMeasured("no edge was found in the box", "draw it across an edge")
     if facts.noise <= 0:
@@ -95,31 +103,34 @@ def _contrast(facts: EdgeFacts, method: str, _: object) -> NotMeasured | None:
     return None
 
 
-def _clipped(facts: EdgeFacts, _: str, limits: tuple[float, float] | None) -> NotMeasured | None:
-    v = facts.values
+def clipped(
+    pixels: Floats, distance: Floats, fwhm: float, limits: tuple[float, float] | None
+) -> NotMeasured | None:
+    """Return that pixels, shape (…, ny, nx), are clipped, or None; `distance` is the edge's."""
     if limits is not None:
-        count = int(np.count_nonzero((v <= limits[0]) | (v >= limits[1])))
-        if count > 1e-3 * v.size:
+        count = int(np.count_nonzero((pixels <= limits[0]) | (pixels >= limits[1])))
+        if count > 1e-3 * pixels.size:
             return NotMeasured(
                 f"{count} pixels stand at the end of the stored range and are clipped",
                 "reconstruct with an extended CT-number range",
             )
     # unknown limits: many equal extremes on a noisy plateau
-    d = facts.line.distance
-    sides = {"highest": (d > facts.fwhm, v.max()), "lowest": (d < -facts.fwhm, v.min())}
-    spreads = [float(v[side].std()) if side.any() else 0.0 for side, _ in sides.values()]
-    for name, (side, extreme) in sides.items():
-        share = float(np.mean(v[side] == extreme)) if side.any() else 0.0
-        # whole numbers of SD 3 or more put less than 2 % of a plateau on its extreme
-        if share > 0.1 and max(spreads) > 3.0:
-            return NotMeasured(
-                f"{100 * share:.0f} % of one plateau stand at the {name} value: it is clipped",
-                "reconstruct with an extended CT-number range",
-            )
+    sides = (pixels[..., distance > fwhm], pixels[..., distance < -fwhm])
+    extremes = {"highest": pixels.max(), "lowest": pixels.min()}
+    noisy = max(float(side.std()) if side.size else 0.0 for side in sides) > 3.0
+    for side in sides:
+        for name, extreme in extremes.items():
+            share = float(np.mean(side == extreme)) if side.size else 0.0
+            # whole numbers of SD 3 or more put less than 2 % of a plateau on its extreme
+            if share > 0.1 and noisy:
+                return NotMeasured(
+                    f"{100 * share:.0f} % of one plateau stand at the {name} value: it is clipped",
+                    "reconstruct with an extended CT-number range",
+                )
     return None
 
 
-def _tilt(facts: EdgeFacts, _: str, __: object) -> NotMeasured | None:
+def _tilt(facts: EdgeFacts, _: str) -> NotMeasured | None:
     if facts.tilt < LEAST_TILT:
         return NotMeasured(
             f"the edge leans {facts.tilt:.2g}° from the pixel grid; at least 1.5° is needed",
@@ -128,7 +139,7 @@ def _tilt(facts: EdgeFacts, _: str, __: object) -> NotMeasured | None:
     return None
 
 
-def _plateaus(facts: EdgeFacts, _: str, __: object) -> NotMeasured | None:
+def _plateaus(facts: EdgeFacts, _: str) -> NotMeasured | None:
     least = min(facts.reach)
     if least < SHORT_PLATEAU * facts.fwhm:
         return NotMeasured(
@@ -143,7 +154,7 @@ def _plateaus(facts: EdgeFacts, _: str, __: object) -> NotMeasured | None:
     return None
 
 
-def _straight(facts: EdgeFacts, _: str, __: object) -> NotMeasured | None:
+def _straight(facts: EdgeFacts, _: str) -> NotMeasured | None:
     bend, doubt = abs(facts.line.sagitta), facts.line.sagitta_doubt
     if bend > MOST_SAGITTA * facts.fwhm + 3 * doubt:
         return NotMeasured(
@@ -167,7 +178,7 @@ def other_objects(residual: Floats, contrast: float) -> float:
     return largest / contrast if largest > 8 * spread else 0.0
 
 
-def _alone(facts: EdgeFacts, _: str, __: object) -> NotMeasured | None:
+def _alone(facts: EdgeFacts, _: str) -> NotMeasured | None:
     share = other_objects(facts.line.residual, facts.contrast)
     if share > 0.1:
         return NotMeasured(
@@ -178,7 +189,7 @@ def _alone(facts: EdgeFacts, _: str, __: object) -> NotMeasured | None:
     return None
 
 
-def _sampling(facts: EdgeFacts, method: str, _: object) -> NotMeasured | None:
+def _sampling(facts: EdgeFacts, method: str) -> NotMeasured | None:
     gap = facts.dense.largest_gap(3 * facts.fwhm)
     share = 0.45 if method == "fitted" else 0.2
     if gap > share * facts.fwhm:

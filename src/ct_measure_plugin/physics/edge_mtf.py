@@ -13,11 +13,12 @@ from ct_measure_plugin.physics.edge_bins import bin_by_distance
 from ct_measure_plugin.physics.edge_checks import EdgeFacts, edge_cautions, edge_refusal
 from ct_measure_plugin.physics.edge_line import EdgeLine, locate_edge
 from ct_measure_plugin.physics.edge_noise import NoiseSpectrum, residual_spectrum
+from ct_measure_plugin.physics.edge_slices import check_slices
 from ct_measure_plugin.physics.esf_measure import EsfData, Method, jacobian_doubt, measure_esf
 from ct_measure_plugin.physics.mtf_curve import (
     MtfResult,
-    checked_image,
     checked_spacing,
+    checked_stack,
     curve_numbers,
 )
 from ct_measure_plugin.physics.results import Curve, NotMeasured, Quantity
@@ -79,14 +80,15 @@ def edge_mtf(
     method: Method = "fitted",
     unit: str = "HU",
     limits: tuple[float, float] | None = None,
+    levels: tuple[float, ...] = (),
 ) -> EdgeMtf | NotMeasured:
     """Return the MTF across the one straight edge in a box.
 
     Parameters
     ----------
-    image : array, shape (ny, nx)
+    image : array, shape (ny, nx) or (nz, ny, nx)
         The box: a straight edge between two even materials, leaning at least 1.5° from the rows
-        and columns. Average slices beforehand where the edge does not move.
+        and columns. Slices are averaged; the edge must not move from one to the next.
     spacing_mm : (float, float)
         dy, dx.
     method : {"fitted", "conventional"}
@@ -96,6 +98,8 @@ def edge_mtf(
         Unit of the values.
     limits : (float, float), optional
         Lowest and highest value the encoding can hold.
+    levels : tuple of float
+        Further levels of the MTF, between 0 and 1, whose frequencies are wanted.
 
     Returns
     -------
@@ -104,7 +108,8 @@ def edge_mtf(
     Raises
     ------
     ArgumentError
-        If the image is not 2-D and at least 16 pixels a side, or a spacing is not positive.
+        If the image has fewer than 16 pixels a side or holds no finite numbers, a spacing is not
+        positive, or a level not between 0 and 1.
 
     Notes
     -----
@@ -131,20 +136,24 @@ def edge_mtf(
     if method not in ("fitted", "conventional"):
         raise ArgumentError("method", "must be 'fitted' or 'conventional'", method)
     steps = checked_spacing(spacing_mm)
-    values = checked_image(image, 16)
+    stack = checked_stack(image, 16)
+    values = stack[0] if len(stack) == 1 else stack.mean(axis=0)
     if float(np.ptp(values)) == 0:
         return NotMeasured("all pixels of the box are equal", "draw it across an edge")
     line = locate_edge(values, steps)
     if isinstance(line, NotMeasured):
         return line
     facts = _facts(values, steps, line)
-    refusal = edge_refusal(facts, method, limits)
+    refusal = edge_refusal(facts, method, limits, stack)
     if refusal is not None:
         return refusal
+    moved = check_slices(stack, line) if len(stack) > 1 else []
+    if isinstance(moved, NotMeasured):
+        return moved
     spectrum = residual_spectrum(line.residual, steps)
     spread, shape = measure_esf(_data(facts, line, spectrum), method, unit)
     numbers, cautions = curve_numbers(
-        spread, max(steps), slope_over=0.05 if method == "fitted" else 0.2
+        spread, max(steps), levels=levels, slope_over=0.05 if method == "fitted" else 0.2
     )
     f50 = numbers["f50"]
     if isinstance(f50, Quantity) and f50.uncertainty and f50.uncertainty > 0.3 * f50.value:
@@ -152,7 +161,7 @@ def edge_mtf(
             f"noise leaves f50 uncertain by {100 * f50.uncertainty / f50.value:.0f} %",
             "measure a stronger contrast, a longer edge, or more slices",
         )
-    cautions = [*edge_cautions(facts), *cautions]
+    cautions = [*edge_cautions(facts), *moved, *cautions]
     fields: dict[str, Any] = numbers | _line_numbers(line, facts, spectrum, unit)
     return EdgeMtf(
         **fields,

@@ -21,8 +21,8 @@ __all__ = [
     "FREQUENCY_STEPS",
     "MtfResult",
     "Spread",
-    "checked_image",
     "checked_spacing",
+    "checked_stack",
     "conventional_mtf",
     "curve_numbers",
     "falls_through",
@@ -57,6 +57,9 @@ class MtfResult(Result):
         The MTF there.
     mtf : Curve
         The modulation transfer function with its standard uncertainty.
+    levels : Curve or None
+        Frequencies at which the MTF falls to further levels that were asked for; levels that it
+        does not reach, or that lie in the noise, are left out.
     """
 
     f50: Quantity | NotMeasured
@@ -66,6 +69,7 @@ class MtfResult(Result):
     nyquist: Quantity
     mtf_at_nyquist: Quantity | NotMeasured
     mtf: Curve
+    levels: Curve | None = None
 
     def at_level(self, level: float) -> Quantity | NotMeasured:
         """Return the frequency at which the MTF falls to any level, such as 0.2."""
@@ -90,11 +94,17 @@ def checked_spacing(spacing_mm: tuple[float, float]) -> tuple[float, float]:
     return steps[0], steps[1]
 
 
-def checked_image(image: object, least: int, *, name: str = "image") -> Floats:
-    """Return a finite 2-D image of at least `least` pixels a side, or raise ArgumentError."""
+def checked_stack(image: object, least: int, *, name: str = "image") -> Floats:
+    """Return finite slices, shape (nz, ny, nx), of at least `least` pixels a side.
+
+    A 2-D image becomes one slice. Anything else raises ArgumentError.
+    """
     values = np.asarray(image, dtype=float)
-    if values.ndim != 2 or min(values.shape) < least:
-        raise ArgumentError(name, f"must be 2-D, at least {least} by {least} pixels", values.shape)
+    values = values[None] if values.ndim == 2 else values
+    if values.ndim != 3 or len(values) == 0 or min(values.shape[1:]) < least:
+        raise ArgumentError(
+            name, f"must be 2-D or 3-D, at least {least} by {least} pixels", values.shape
+        )
     if not bool(np.isfinite(values).all()):
         raise ArgumentError(name, "must hold finite numbers only", "NaN or infinity")
     return values
@@ -234,7 +244,11 @@ def level_frequency(
 
 
 def curve_numbers(
-    spread: Spread, pixel_mm: float, *, slope_over: float = 0.05
+    spread: Spread,
+    pixel_mm: float,
+    *,
+    levels: tuple[float, ...] = (),
+    slope_over: float = 0.05,
 ) -> tuple[dict[str, object], list[Caution]]:
     """Return the fields of an :class:`MtfResult` and the cautions that follow from the curve."""
     f, m, u = spread.frequency, spread.mtf, spread.doubt
@@ -277,4 +291,24 @@ def curve_numbers(
                 )
             )
     found["mtf"] = Curve(f, m, u, "frequency", "mm⁻¹", "MTF", "")
+    found["levels"] = _levels(spread, levels, slope_over)
     return found, cautions
+
+
+def _levels(spread: Spread, levels: tuple[float, ...], slope_over: float) -> Curve | None:
+    if not levels:
+        return None
+    if not all(0 < level < 1 for level in levels):
+        raise ArgumentError("levels", "must lie between 0 and 1", levels)
+    found = [
+        (level, at.value, at.uncertainty or 0.0)
+        for level in sorted(levels)
+        if isinstance(
+            at := level_frequency(
+                spread.frequency, spread.mtf, spread.doubt, level, slope_over=slope_over
+            ),
+            Quantity,
+        )
+    ]
+    level, at, doubt = np.array(found, dtype=float).reshape(-1, 3).T
+    return Curve(level, at, doubt, "MTF", "", "frequency", "mm⁻¹")

@@ -1,0 +1,78 @@
+"""The MTF across the straight edge in each box."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+from typing import TYPE_CHECKING, ClassVar, Literal, cast
+
+from pydantic import Field
+
+from ct_measure_plugin.measurements.base import Measurement, RegionNeed, Settings
+from ct_measure_plugin.measurements.boxes import cut_box
+from ct_measure_plugin.physics.edge_mtf import EdgeMtf, edge_mtf
+from ct_measure_plugin.physics.results import NotMeasured, Result
+
+if TYPE_CHECKING:
+    from collections.abc import Sequence
+
+    from ct_measure_plugin.physics.regions import Region
+    from ct_measure_plugin.physics.volume import Volume
+
+__all__ = ["EdgeMtfSettings", "MeasureEdgeMtf"]
+
+#: Fewest pixels a side that hold an edge and two plateaus.
+LEAST_PIXELS = 16
+
+
+class EdgeMtfSettings(Settings):
+    """Settings of the edge MTF."""
+
+    method: Literal["fitted", "conventional"] = Field(
+        "fitted",
+        description="fitted: the edge spread function is composed of flexible shapes, as smooth as"
+        " the noise asks; conventional: bin, differentiate, window, transform",
+    )
+    levels: tuple[float, ...] = Field(
+        (),
+        title="Further levels",
+        description="levels of the MTF between 0 and 1, besides 50, 10 and 2 %, whose frequencies"
+        " are wanted",
+    )
+
+
+class MeasureEdgeMtf(Measurement):
+    """MTF, edge and line spread function across a straight, slanted edge."""
+
+    name: ClassVar[str] = "edge_mtf"
+    title: ClassVar[str] = "MTF of a straight edge"
+    summary: ClassVar[str] = "Resolution across a straight, slightly slanted edge in a box."
+    settings_type: ClassVar[type[Settings]] = EdgeMtfSettings
+    result_type: ClassVar[type[Result]] = EdgeMtf
+    regions: ClassVar[RegionNeed] = RegionNeed(("box",))
+    columns: ClassVar[tuple[str, ...]] = ("f50", "f10", "angle", "width", "contrast_to_noise")
+
+    def measure(
+        self, volume: Volume, regions: Sequence[Region], settings: Settings
+    ) -> EdgeMtf | NotMeasured:
+        """Measure the edge in one box; the box's slices are averaged."""
+        wanted = cast("EdgeMtfSettings", settings)
+        box = cut_box(volume, regions[0], least=LEAST_PIXELS)
+        if isinstance(box, NotMeasured):
+            return box
+        found = edge_mtf(
+            box.values,
+            spacing_mm=volume.spacing_mm[1:],
+            method=wanted.method,
+            unit=volume.unit,
+            limits=volume.representable_hu,
+            levels=wanted.levels,
+        )
+        if isinstance(found, NotMeasured):
+            return replace(found, cautions=(*box.cautions, *found.cautions))
+        (y0, x0), (y1, x1) = found.ends_mm
+        oy, ox = box.origin_mm
+        return replace(
+            found,
+            ends_mm=((y0 + oy, x0 + ox), (y1 + oy, x1 + ox)),
+            cautions=(*box.cautions, *found.cautions),
+        )

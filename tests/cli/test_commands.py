@@ -12,6 +12,7 @@ from series_writer import line, noise, save, write_series
 
 import ct_measure_plugin as ctm
 from ct_measure_plugin.cli import BAD_INPUT, DONE, NOT_MEASURABLE, TOLERANCE_FAILED, main
+from ct_measure_plugin.measurements import find
 
 WATER = "disc center=6,6 radius=4 slice=1 name=water"
 
@@ -196,6 +197,53 @@ def test_two_series_ask_which_one(capsys, tmp_path):
         capsys, "measure", tmp_path, "region_statistics", "--region", words, "--index", 1
     )
     assert (code, err) == (DONE, "")
+
+
+@pytest.mark.parametrize(
+    ("words", "as_python"),
+    [
+        (["percentiles=5,95"], {"percentiles": (5, 95)}),
+        (["percentiles=5"], {"percentiles": (5,)}),
+        (["percentiles=[5, 95]"], {"percentiles": (5, 95)}),
+        (["ranges=-100:0,0:100"], {"ranges": ((-100, 0), (0, 100))}),
+        (["along_z=no", "bin_width=2.5"], {"along_z": False, "bin_width": 2.5}),
+    ],
+    ids=["list", "one", "json", "pairs", "flag"],
+)
+def test_settings_in_words_mean_what_python_says(capsys, folder, words, as_python):
+    given = [part for word in words for part in ("--set", word)]
+    code, out, err = run(
+        capsys, "measure", folder, "region_statistics", "--region", WATER, "--json", *given
+    )
+    assert (code, err) == (DONE, "")
+    [record] = json.loads(out)
+    kind = find("region_statistics").settings_type
+    assert record["settings"] == kind(**as_python).model_dump(mode="json")
+
+
+def test_asked_percentiles_and_shares_are_printed(capsys, folder):
+    code, out, _ = run(
+        capsys, "measure", folder, "region_statistics", "--region", WATER,
+        "--set", "percentiles=5,95", "--set", "ranges=-100:100",
+    )  # fmt: skip
+    assert code == DONE
+    [line] = [text for text in out.splitlines() if text.startswith("  Percentiles")]
+    assert "5 %: " in line
+    assert "95 %: " in line
+    assert any(text.startswith("  Shares") for text in out.splitlines())
+
+
+def test_every_measurement_and_setting_is_listed(capsys):
+    from ct_measure_plugin.measurements import NAMES
+
+    with pytest.raises(SystemExit) as left:
+        main(["measure", "--measurements"])
+    assert left.value.code == 0
+    out = capsys.readouterr().out
+    for name in NAMES:
+        assert f"{name}: {find(name).summary}" in out
+        for setting in find(name).settings_type.model_fields:
+            assert f"    {setting}=" in out
 
 
 def test_the_installed_command_answers():

@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING
 
 from ct_measure_plugin.cli.outputs import add_output_options, deliver
 from ct_measure_plugin.cli.region_words import HELP, region_from_words
+from ct_measure_plugin.cli.setting_words import SETTING_HELP, ListMeasurements, setting_from_words
 from ct_measure_plugin.errors import ArgumentError, SeriesChoiceError
 
 if TYPE_CHECKING:
@@ -26,8 +27,14 @@ def add_parser(commands: argparse._SubParsersAction[argparse.ArgumentParser]) ->
         "--index", type=int, help="which series, as `ct-measure series` counts them"
     )
     parser.add_argument("--region", action="append", default=[], metavar="WORDS", help=HELP)
-    parser.add_argument("--set", action="append", default=[], metavar="NAME=VALUE",
-                        help="a setting of the measurement")  # fmt: skip
+    parser.add_argument(
+        "--set", action="append", default=[], metavar="NAME=VALUE", help=SETTING_HELP
+    )
+    parser.add_argument(
+        "--measurements",
+        action=ListMeasurements,
+        help="list every measurement with its settings, and stop",
+    )
     parser.add_argument("--plan", metavar="FILE", help="a YAML or JSON plan instead of the above")
     add_output_options(parser)
     parser.set_defaults(run=run)
@@ -58,15 +65,11 @@ def _volume(arguments: argparse.Namespace) -> Volume:
 
 
 def _plan(arguments: argparse.Namespace, volume: Volume) -> Plan:
-    from ct_measure_plugin.measurements.catalogue import settings_for
+    from ct_measure_plugin.measurements.catalogue import find, settings_for
     from ct_measure_plugin.records import Plan, PlanStep, region_to_dict
 
-    given: dict[str, Any] = {}
-    for pair in arguments.set:
-        name, equals, value = pair.partition("=")
-        if not equals:
-            raise ArgumentError("set", "must be NAME=VALUE", pair)
-        given[name] = value
+    kind = find(arguments.measurement).settings_type
+    given = dict(setting_from_words(words, kind) for words in arguments.set)
     settings = settings_for(arguments.measurement, given)
     regions = [region_from_words(words, volume) for words in arguments.region]
     step = PlanStep(

@@ -12,9 +12,13 @@ if TYPE_CHECKING:
     import argparse
     from collections.abc import Sequence
 
+    from ct_measure_plugin.physics.results import Curve
     from ct_measure_plugin.records import Plan, Record
 
 __all__ = ["add_output_options", "deliver", "print_records"]
+
+#: Up to this many samples a curve is a list to be read.
+SHORT_CURVE = 10
 
 
 def add_output_options(parser: argparse.ArgumentParser) -> None:
@@ -58,7 +62,12 @@ def deliver(records: Sequence[Record], arguments: argparse.Namespace, plan: Plan
 def print_records(records: Sequence[Record]) -> None:
     """Print each record in words, its refusals and warnings with it."""
     from ct_measure_plugin.measurements import find
-    from ct_measure_plugin.physics.results import NotMeasured, label_of, quantities_of
+    from ct_measure_plugin.physics.results import (
+        NotMeasured,
+        curves_of,
+        label_of,
+        quantities_of,
+    )
 
     for record in records:
         print(f"{record.title}: {record.region_names}")
@@ -69,10 +78,21 @@ def print_records(records: Sequence[Record]) -> None:
             found = quantities_of(answer)
             order = [name for name in find(record.measurement).columns if name in found]
             order += [name for name in found if name not in order]
+            width = max(len(label_of(name)) for name in order) if order else 0
             for name in order:
-                print(f"  {label_of(name):<16} {found[name]}")
+                print(f"  {label_of(name):<{width}}  {found[name]}")
+            for name, curve in curves_of(answer).items():
+                _print_short_curve(label_of(name), curve)
         for caution in answer.cautions:
             print(f"  {caution.kind.level}: {caution}")
+
+
+def _print_short_curve(label: str, curve: Curve) -> None:
+    """Print a curve that is rather a list, such as percentiles; long ones belong in the files."""
+    if len(curve.x) <= SHORT_CURVE:
+        unit = f" {curve.x_unit}".rstrip()
+        rows = ", ".join(f"{x:g}{unit}: {y}" for x, y in curve.samples())
+        print(f"  {label} ({curve.x_name or 'number'}): {rows}")
 
 
 def _code(records: Sequence[Record], plan: Plan | None, *, quiet: bool) -> int:

@@ -122,6 +122,26 @@ class Curve:
                 len(self.y_uncertainty),
             )
 
+    def samples(self) -> tuple[tuple[float, Quantity], ...]:
+        """Return the samples one by one, each an abscissa and a Quantity.
+
+        Examples
+        --------
+        >>> import numpy as np
+        >>> curve = Curve(np.array([5.0, 95.0]), np.array([-12.0, 11.0]), y_unit="HU")
+        >>> for x, y in curve.samples():
+        ...     print(x, y)
+        5.0 -12 HU
+        95.0 11 HU
+        """
+        doubts: list[float | None] = [None] * len(self.x)
+        if self.y_uncertainty is not None:
+            doubts = [float(u) for u in self.y_uncertainty]
+        return tuple(
+            (float(x), Quantity(float(y), self.y_unit, u))
+            for x, y, u in zip(self.x, self.y, doubts, strict=True)
+        )
+
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Picture:

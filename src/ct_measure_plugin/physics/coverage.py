@@ -26,6 +26,8 @@ from ct_measure_plugin.physics.regions import (
 )
 
 if TYPE_CHECKING:
+    from collections.abc import Iterable
+
     from numpy.typing import NDArray
 
     from ct_measure_plugin.physics.volume import Volume
@@ -159,7 +161,7 @@ class _Grid:
     def pixel_area(self) -> float:
         return self.spacing_mm[0] * self.spacing_mm[1]
 
-    def crop(self, low: Floats, high: Floats) -> tuple[slice, slice]:
+    def crop(self, low: Iterable[float], high: Iterable[float]) -> tuple[slice, slice]:
         """Return the rows and columns of pixels that touch an index-space box, within the image."""
         spans = []
         for lo, hi, n in zip(low, high, self.shape, strict=True):
@@ -189,45 +191,42 @@ def _as_box(segment: Segment) -> Box:
 
 
 def _ellipse(region: Ellipse, grid: _Grid, rule: Rule) -> Coverage:
-    along, across = (
-        np.array(direction(region.angle_deg)),
-        np.array(direction(region.angle_deg + 90)),
+    (along_y, along_x), (across_y, across_x) = (
+        direction(region.angle_deg),
+        direction(region.angle_deg + 90),
     )
-    b, a = region.radii_mm
-    half_mm = np.hypot(a * along, b * across)
-    center = grid.index(np.asarray(region.center_mm, float))
-    half = half_mm / np.asarray(grid.spacing_mm)
-    rows, columns = grid.crop(center - half, center + half)
-    y = (np.arange(rows.start, rows.stop) - center[0]) * grid.spacing_mm[0]
-    x = (np.arange(columns.start, columns.stop) - center[1]) * grid.spacing_mm[1]
-    # the affine map that turns the ellipse into the unit disc
-    to_unit = np.array([along / a, across / b])  # rows: unit-x, unit-y of a (y, x) in mm
-    u = to_unit[0, 0] * y[:, None] + to_unit[0, 1] * x[None, :]
-    v = to_unit[1, 0] * y[:, None] + to_unit[1, 1] * x[None, :]
-    radius = np.hypot(u, v)
+    (b, a), (dy, dx) = region.radii_mm, grid.spacing_mm
+    cy, cx = (
+        (c - o) / d for c, o, d in zip(region.center_mm, grid.origin_mm, (dy, dx), strict=True)
+    )
+    half_y = math.hypot(a * along_y, b * across_y) / dy
+    half_x = math.hypot(a * along_x, b * across_x) / dx
+    rows, columns = grid.crop((cy - half_y, cx - half_x), (cy + half_y, cx + half_x))
+    y = (np.arange(rows.start, rows.stop) - cy)[:, None]
+    x = (np.arange(columns.start, columns.stop) - cx)[None, :]
+    # one pixel down and one right, as the affine map that makes the ellipse the unit disc has them
+    down = along_y * dy / a, across_y * dy / b
+    right = along_x * dx / a, across_x * dx / b
+    u, v = down[0] * y + right[0] * x, down[1] * y + right[1] * x
+    square = u * u + v * v
     if rule == "center":
-        weights = (radius <= 1.0 + 1e-12).astype(float)
+        weights = (square <= 1.0 + 2e-12).astype(float)
         return Coverage(weights, rows, columns, _center_outside(region.area_mm2, grid, weights))
-    step_y, step_x = to_unit[:, 0] * grid.spacing_mm[0], to_unit[:, 1] * grid.spacing_mm[1]
-    reach = (math.hypot(*step_y) + math.hypot(*step_x)) / 2  # no corner is farther from its centre
-    weights = (radius < 1.0).astype(float)
-    border = np.abs(radius - 1.0) <= reach
-    corners = [
-        np.stack(
-            [
-                u[border] + (i * step_y[0] + j * step_x[0]) / 2,
-                v[border] + (i * step_y[1] + j * step_x[1]) / 2,
-            ]
-        )
-        for i, j in ((-1, -1), (-1, 1), (1, 1), (1, -1))
-    ]
-    inside = sum(
-        (_edge_in_disc(corners[k], corners[(k + 1) % 4]) for k in range(4)),
-        start=np.zeros(int(border.sum())),
-    )
-    full = abs(step_y[0] * step_x[1] - step_y[1] * step_x[0])
-    weights[border] = np.clip(np.abs(inside) / full, 0.0, 1.0)
+    reach = (math.hypot(*down) + math.hypot(*right)) / 2  # no corner is farther from its centre
+    weights = (square < 1.0).astype(float)
+    border = (square <= (1.0 + reach) ** 2) & (square >= max(1.0 - reach, 0.0) ** 2)
+    # corners in order around the pixel, last as first: four edges, each from one to the next
+    corner_u = u[border] + (_HALF_DOWN * down[0] + _HALF_RIGHT * right[0])
+    corner_v = v[border] + (_HALF_DOWN * down[1] + _HALF_RIGHT * right[1])
+    inside = np.abs(_edges_in_disc(corner_u, corner_v).sum(axis=0))
+    full = abs(down[0] * right[1] - down[1] * right[0])
+    weights[border] = np.minimum(inside / full, 1.0)
     return Coverage(weights, rows, columns, _outside(weights, region.area_mm2, grid))
+
+
+#: Half pixels down and right from a pixel's centre to its corners, in order, last as first.
+_HALF_DOWN = 0.5 * np.array([-1.0, -1.0, 1.0, 1.0, -1.0])[:, None]
+_HALF_RIGHT = 0.5 * np.array([-1.0, 1.0, 1.0, -1.0, -1.0])[:, None]
 
 
 def _center_outside(area_mm2: float, grid: _Grid, weights: Floats) -> float:
@@ -238,31 +237,25 @@ def _center_outside(area_mm2: float, grid: _Grid, weights: Floats) -> float:
     return 0.0 if share < rounding else min(share, 1.0)
 
 
-def _edge_in_disc(p: Floats, q: Floats) -> Floats:
-    """Return the signed area that edge p→q and the origin enclose within the unit disc.
+def _edges_in_disc(u: Floats, v: Floats) -> Floats:
+    """Return the signed area that each edge and the origin enclose within the unit disc.
 
+    `u` and `v` hold corners, shape (edges + 1, n); edge k runs from corner k to corner k + 1.
     Summed over a polygon's edges this is the area of polygon ∩ disc: the part of an edge inside
     the disc counts as a triangle, the parts outside as circular sectors.
     """
-    d = q - p
-    dd = np.sum(d * d, axis=0)
-    pd = np.sum(p * d, axis=0)
-    pp = np.sum(p * p, axis=0)
-    root = np.sqrt(np.maximum(pd * pd - dd * (pp - 1.0), 0.0))
-    t1 = np.clip((-pd - root) / dd, 0.0, 1.0)
-    t2 = np.clip((-pd + root) / dd, 0.0, 1.0)
-    enter, leave = p + t1 * d, p + t2 * d
-    return 0.5 * (_cross(enter, leave) + _sector(p, enter) + _sector(leave, q))
-
-
-def _cross(a: Floats, b: Floats) -> Floats:
-    out: Floats = a[0] * b[1] - a[1] * b[0]
-    return out
-
-
-def _sector(a: Floats, b: Floats) -> Floats:
-    out: Floats = np.arctan2(_cross(a, b), np.sum(a * b, axis=0))
-    return out
+    pu, pv, qu, qv = u[:-1], v[:-1], u[1:], v[1:]
+    du, dv = qu - pu, qv - pv
+    dd = du * du + dv * dv
+    pd = pu * du + pv * dv
+    root = np.sqrt(np.maximum(pd * pd - dd * (pu * pu + pv * pv - 1.0), 0.0))
+    t1 = np.minimum(np.maximum((-pd - root) / dd, 0.0), 1.0)
+    t2 = np.minimum(np.maximum((-pd + root) / dd, 0.0), 1.0)
+    au, av, bu, bv = pu + t1 * du, pv + t1 * dv, pu + t2 * du, pv + t2 * dv
+    area: Floats = au * bv - av * bu
+    area += np.arctan2(pu * av - pv * au, pu * au + pv * av)
+    area += np.arctan2(bu * qv - bv * qu, bu * qu + bv * qv)
+    return 0.5 * area
 
 
 # --- polygons ------------------------------------------------------------------------------------

@@ -11,7 +11,7 @@ from examples import EXAMPLES, Example
 
 from ct_measure_plugin.errors import CtMeasureError
 from ct_measure_plugin.measurements import NAMES, find, measure
-from ct_measure_plugin.measurements.base import Settings
+from ct_measure_plugin.measurements.base import Measurement, Settings
 from ct_measure_plugin.physics.regions import Box, Disc, Ellipse, Polygon, Region, Segment
 from ct_measure_plugin.physics.results import Result, quantities_of
 from ct_measure_plugin.physics.volume import Volume
@@ -72,6 +72,35 @@ def test_a_shift_by_100_hu_moves_levels_only(example):
             assert raised[name].uncertainty == pytest.approx(
                 quantity.uncertainty, abs=ROUNDING, rel=1e-6
             ), name
+
+
+def test_marks_are_regions_on_the_image(example):
+    """What a dock draws over the image lies on it, in the frame of the regions asked for."""
+    name, volume = NAME[id(example)], example.volume
+    settings = find(name).settings_type(**example.settings)
+    parts = [example.regions] if find(name).regions.together else [(r,) for r in example.regions]
+    marks = []
+    for regions in parts:
+        answer = find(name).measure(volume, regions, settings)
+        marks += find(name).marks(volume, regions, settings, answer)
+    low = np.asarray(volume.origin_mm[1:]) - np.asarray(volume.spacing_mm[1:]) / 2
+    high = low + np.asarray(volume.shape[1:]) * np.asarray(volume.spacing_mm[1:])
+    for mark in marks:
+        points = np.asarray(outline_of(mark))
+        assert (points >= low - ROUNDING).all()
+        assert (points <= high + ROUNDING).all()
+    assert bool(marks) == (type(find(name)).marks is not Measurement.marks)
+
+
+def outline_of(region: Region) -> list[tuple[float, float]]:
+    """Return points on a region's outline."""
+    if isinstance(region, Segment):
+        return [region.start_mm, region.end_mm]
+    if isinstance(region, Disc):
+        (y, x), r = region.center_mm, region.radius_mm
+        return [(y - r, x), (y + r, x), (y, x - r), (y, x + r)]
+    assert isinstance(region, (Box, Polygon)), region.kind
+    return list(region.vertices_mm)
 
 
 def turned(region: Region, side_mm: float) -> Region:

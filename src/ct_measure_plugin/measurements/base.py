@@ -90,6 +90,20 @@ class Measurement(ABC):
     ) -> Result | NotMeasured:
         """Measure the regions on the volume: one region, or all where `regions.together` is set."""
 
+    def marks(
+        self,
+        volume: Volume,  # noqa: ARG002 - overridden where there is something to draw
+        regions: Sequence[Region],  # noqa: ARG002
+        settings: Settings,  # noqa: ARG002
+        answer: Result | NotMeasured,  # noqa: ARG002
+    ) -> tuple[Region, ...]:
+        """Return what was found, or where was looked, as regions to draw over the image.
+
+        In the image frame, like the regions asked for: the edge that was found, a fitted circle,
+        the patches. Nothing by default.
+        """
+        return ()
+
     def check_regions(self, regions: Sequence[Region]) -> None:
         """Raise RegionError if the regions are not what this measurement takes."""
         if len(regions) < self.regions.at_least:

@@ -10,6 +10,7 @@ from pydantic import Field
 from ct_measure_plugin.measurements.base import Measurement, RegionNeed, Settings
 from ct_measure_plugin.measurements.boxes import cut_box
 from ct_measure_plugin.physics.edge_mtf import EdgeMtf, edge_mtf
+from ct_measure_plugin.physics.regions import Segment
 from ct_measure_plugin.physics.results import NotMeasured, Result
 
 if TYPE_CHECKING:
@@ -76,3 +77,15 @@ class MeasureEdgeMtf(Measurement):
             ends_mm=((y0 + oy, x0 + ox), (y1 + oy, x1 + ox)),
             cautions=(*box.cautions, *found.cautions),
         )
+
+    def marks(
+        self,
+        volume: Volume,  # noqa: ARG002 - the found edge says all
+        regions: Sequence[Region],
+        settings: Settings,  # noqa: ARG002
+        answer: Result | NotMeasured,
+    ) -> tuple[Region, ...]:
+        """Return the edge that was found, as a segment over the box's slices."""
+        if not isinstance(answer, EdgeMtf):
+            return ()
+        return (Segment(*answer.ends_mm, z_mm=regions[0].z_mm, name=regions[0].name),)

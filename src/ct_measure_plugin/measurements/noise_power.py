@@ -12,6 +12,7 @@ from ct_measure_plugin.measurements.base import AREAS, Measurement, RegionNeed, 
 from ct_measure_plugin.physics.coverage import plane_coverage, slices_of
 from ct_measure_plugin.physics.noise_power import NoisePower, noise_power
 from ct_measure_plugin.physics.patch_layout import lay_patches
+from ct_measure_plugin.physics.regions import Box
 from ct_measure_plugin.physics.results import NotMeasured, Result
 
 if TYPE_CHECKING:
@@ -178,7 +179,7 @@ class MeasureNoisePower(Measurement):
     ) -> NoisePower | NotMeasured:
         """Measure the patches of all regions as one set."""
         wanted = cast("NoisePowerSettings", settings)
-        if refusal := _unfit(volume, wanted):
+        if (refusal := _unfit(volume, wanted)) is not None:
             return refusal
         places = patch_places(volume, regions, wanted)
         if not len(places.corners):
@@ -201,6 +202,31 @@ class MeasureNoisePower(Measurement):
             unit=volume.unit,
         )
         return replace(found, cautions=(*volume.cautions, *found.cautions))
+
+    def marks(
+        self,
+        volume: Volume,
+        regions: Sequence[Region],
+        settings: Settings,
+        answer: Result | NotMeasured,  # noqa: ARG002 - patches are laid before they are measured
+    ) -> tuple[Region, ...]:
+        """Return the patches as boxes, each on its slice or over its depth."""
+        places = patch_places(volume, regions, cast("NoisePowerSettings", settings))
+        return tuple(_outline(volume, places, corner) for corner in places.corners.tolist())
+
+
+def _outline(volume: Volume, places: PatchPlaces, corner: list[int]) -> Box:
+    """Return the square that a patch's pixels cover."""
+    k, row, column = corner
+    _, dy, dx = volume.spacing_mm
+    _, y, x = volume.origin_mm
+    half = (places.side - 1) / 2
+    z = volume.positions_mm[k : k + places.depth]
+    return Box(
+        (y + (row + half) * dy, x + (column + half) * dx),
+        (places.side * dy, places.side * dx),
+        z_mm=float(z[0]) if len(z) == 1 else (float(z[0]), float(z[-1])),
+    )
 
 
 def _unfit(volume: Volume, settings: NoisePowerSettings) -> NotMeasured | None:

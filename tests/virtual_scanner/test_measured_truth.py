@@ -1,0 +1,156 @@
+"""From simulated DICOM to measured numbers: what is measured agrees with what was put in.
+
+The shipped samples go through the same doors as a user's series: the reader, the demo's plan, the
+measurements. Series are fixed, so nothing here is drawn anew; where many numbers are compared,
+the distribution of their standardised errors is held as well, so that neither a bias nor an
+uncertainty that is too large or too small can hide.
+"""
+
+from __future__ import annotations
+
+from dataclasses import replace
+from functools import cache
+
+import numpy as np
+import pytest
+
+import ct_measure_plugin as ctm
+from ct_measure_plugin.physics.attenuation import material
+from ct_measure_plugin.physics.results import quantities_of
+from ct_measure_plugin.records import load_plan
+from ct_measure_plugin.run import run_plan
+from ct_measure_plugin.virtual_scanner import (
+    WATER,
+    Detector,
+    Grid,
+    Kernel,
+    ParallelBeam,
+    Part,
+    Phantom,
+    Recipe,
+    Truth,
+    disc_rod,
+    samples,
+    simulate,
+)
+from ct_measure_plugin.virtual_scanner import bench_phantom as bench
+
+
+@cache
+def _series(name):
+    return ctm.read_series(samples.folder(name))
+
+
+@cache
+def _truth(name):
+    return Truth(samples.sample(name).recipe)
+
+
+def _spectrum_numbers(truth):
+    """Return peak, mean and half-power frequencies of the radial NPS in theory."""
+    f = np.linspace(0.0, 1.0, 4001)
+    power = truth.nps(f)
+    peak = int(power.argmax())
+    return {
+        "peak_frequency": f[peak],
+        "mean_frequency": np.sum(f * power) / np.sum(power),
+        "half_power_low": np.interp(0.5, power[: peak + 1] / power[peak], f[: peak + 1]),
+        "half_power_high": np.interp(0.5, power[peak:][::-1] / power[peak], f[peak:][::-1]),
+    }
+
+
+def _promised(record, truth):
+    """Return the true values of a record of the demo, by quantity."""
+    where = [region["name"] for region in record.regions]
+    if record.measurement == "noise_power":
+        return _spectrum_numbers(truth) | {"sd": truth.noise_sd()}
+    if where == ["PTFE rod"]:
+        return {"mean": truth.hu(material("PTFE"))}
+    at_mm = (-42.0, 0.0) if "edge" in where[0] else (0.0, 0.0)
+    return {"mean": 0.0, "sd": truth.noise_sd(at_mm)}
+
+
+def test_the_demo_measures_what_is_true():
+    """Every number with a known answer, within 3 standard uncertainties.
+
+    Added to them: for CT numbers the bound of the truth; for the noise 3 %, the bound of the
+    truth at one place, since the regions reach to where there is less of it.
+    """
+    truth = _truth("standard")
+    records = run_plan(load_plan(samples.folder() / "demo_plan.yaml"), _series("standard"))
+    compared = set()
+    for record in records:
+        answer = record.answer()
+        assert answer, answer
+        found = dict(quantities_of(answer))
+        for name, value in _promised(record, truth).items():
+            slack = {"mean": truth.hu_bound(material("PTFE")), "sd": 0.03 * value}.get(name, 0.0)
+            off = abs(found[name].value - value)
+            assert off < 3.0 * found[name].uncertainty + slack, (record.regions, name)
+            compared.add((record.measurement, name))
+    assert len(compared) >= 7
+
+
+def _standardised(name, inserts, section, share):
+    """Return error over stated uncertainty of every insert in every slice wholly in its section."""
+    volume, truth = _series(name), _truth(name)
+    found = []
+    for insert in inserts:
+        for z_mm in bench.slice_centres(section):
+            region = ctm.regions.Disc(insert.centre_mm, share * insert.size_mm / 2, z_mm=z_mm)
+            mean = ctm.measure("region_statistics", volume, region).mean
+            slack = truth.hu_bound(insert.material)
+            off = mean.value - truth.hu(insert.material)
+            assert abs(off) < 4.0 * mean.uncertainty + slack, (name, insert, z_mm)
+            found.append(off / mean.uncertainty)
+    return np.array(found)
+
+
+def test_rods_and_faint_discs_read_their_ct_numbers_within_their_uncertainty():
+    """8 rods and 4 discs in 3 slices of 4 series; the bound of the truth is part of the error.
+
+    Small regions state a wide uncertainty on purpose (their own noise cannot show how far its
+    spectrum falls towards 0), so the errors spread less than 1; below 0.4 it would be useless.
+    """
+    large = [disc for disc in bench.faint_discs() if disc.size_mm >= 8.0]
+    errors = []
+    for name in ("standard", "repeat", "sharp", "low-dose"):
+        errors.append(_standardised(name, bench.material_rods(), "rods", 0.66))
+        errors.append(_standardised(name, large, "faint", 0.8))
+    errors = np.concatenate(errors)
+    assert errors.size == 4 * 12 * 3
+    assert 0.4 < np.sqrt(np.mean(errors**2)) < 1.1
+    assert abs(errors.mean()) < 0.25
+
+
+def test_noise_power_of_a_fresh_scan_is_the_truth_within_its_uncertainty():
+    """4 scans of 12 slices; each ring's χ² with the degrees of freedom that are stated for it.
+
+    Standardised errors of 26 rings: neighbours are correlated by the window, so their mean square
+    over one scan scatters by about ±0.4 and its root over four by ±0.1. Theory holds for the
+    centre: the fall of the noise over the patch, 0.7 % of its variance, is worked in.
+    """
+    recipe = Recipe(
+        phantom=Phantom((Part(disc_rod((0.0, 0.0), 58.0), WATER),)),
+        geometry=ParallelBeam(views=240, channels=240, pitch_mm=0.5),
+        detector=Detector(quanta_per_mm2=3e5),
+        kernel=Kernel("hann", 1.0),
+        grid=Grid(matrix=72, fov_mm=36.0),
+        positions_mm=tuple(float(k) for k in range(12)),
+        calibration_path_mm=116.0,
+    )
+    truth, memory, errors, levels = Truth(recipe), {}, [], []
+    for seed in range(4):
+        volume = simulate(replace(recipe, seed=seed), memory=memory)
+        found = ctm.measure("noise_power", volume, ctm.regions.Disc((0.0, 0.0), 25.0))
+        f = found.radial.x
+        used = (f >= found.lowest_frequency.value) & (f < 0.9)
+        promised = 0.993 * truth.nps(f[used])
+        spread = np.sqrt(2.0 / found.degrees_of_freedom.y[used])
+        errors.append((found.radial.y[used] / promised - 1.0) / spread)
+        levels.append((found.sd.value / truth.noise_sd() - 0.9965) / found.sd.uncertainty)
+    errors = np.array(errors)
+    assert np.sqrt(np.mean(errors**2)) == pytest.approx(1.0, abs=0.25)
+    assert abs(errors.mean()) < 0.3
+    assert np.abs(errors).max() < 4.5
+    assert np.sqrt(np.mean(np.square(levels))) < 2.15  # χ² of 4, one in a thousand

@@ -127,7 +127,7 @@ def measure(
     >>> volume = ctm.Volume(np.full((3, 64, 64), 12, np.int16), spacing_mm=(2.0, 0.5, 0.5))
     >>> found = ctm.measure("region_statistics", volume, ctm.regions.Disc((16, 16), 8, z_mm=2.0))
     >>> str(found.mean), str(found.area)
-    ('12 HU', '201.06 mm²')
+    ('12.00 ± 0.29 HU', '201.06 mm²')
     """
     answers = measure_each(name, volume, regions, settings=settings_for(name, settings))
     return answers[0] if len(answers) == 1 else ResultGroup(parts=answers)

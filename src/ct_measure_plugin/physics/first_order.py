@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
@@ -81,11 +81,19 @@ def moments(values: Floats, weights: Floats) -> Moments:
     return Moments(mean, m2, m3, m4, total, squares)
 
 
+def _sort_key(values: Floats) -> NDArray[Any]:
+    """Return whole CT numbers as short integers, which sort in a fraction of the time."""
+    if abs(float(values[0])) > 32767 or float(np.abs(values).max()) > 32767:
+        return values
+    short = values.astype(np.int16)
+    return short if bool((short == values).all()) else values
+
+
 class Sorted:
     """Values in order, so that any quantile is one interpolation."""
 
     def __init__(self, values: Floats, weights: Floats) -> None:
-        order = np.argsort(values, kind="stable")
+        order = np.argsort(_sort_key(values), kind="stable")
         self.values, self.weights = values[order], weights[order]
         middle = np.cumsum(self.weights) - self.weights / 2
         span = middle[-1] - middle[0]

@@ -8,7 +8,10 @@ those that would give u, s the SD and m_k the central moments:
   standard deviation either side. The interquartile range adds both quartiles', correlated by 1/3.
 - A mean absolute deviation: the SD of the absolute deviations over sqrt(ν).
 - Root mean square: from the mean of x², whose variance is 4 m² u² + (m4 - m2²)/ν + 4 m m3/ν.
-- A share p: sqrt(p(1 - p)/ν); entropy and uniformity: the SD of log2 p, and of 2p, over sqrt(ν).
+- A share p, and a bin of the histogram: with k = pν of ν samples, the SD of the posterior under a
+  uniform prior, sqrt(p'(1 - p')/(ν + 3)) with p' = (k + 1)/(ν + 2), which is sqrt(p(1 - p)/ν) for
+  many and not 0 for none. Entropy and uniformity: the SD of log2 p, and of 2p, over sqrt(ν).
+- Values stored in steps add what :mod:`ct_measure_plugin.physics.quantisation` says, in quadrature.
 """
 
 from __future__ import annotations
@@ -21,6 +24,11 @@ import numpy as np
 
 from ct_measure_plugin.errors import ArgumentError
 from ct_measure_plugin.physics.first_order import Histogram, Moments, Sorted, histogram, moments
+from ct_measure_plugin.physics.quantisation import (
+    rounding_of_mean,
+    rounding_of_spread,
+    single_value,
+)
 from ct_measure_plugin.physics.results import Curve, Quantity
 
 if TYPE_CHECKING:
@@ -30,7 +38,7 @@ if TYPE_CHECKING:
 
     Floats = NDArray[np.float64]
 
-__all__ = ["Choices", "numbers_of"]
+__all__ = ["Choices", "mean_and_sd", "numbers_of"]
 
 
 @dataclass(frozen=True, slots=True)
@@ -42,6 +50,7 @@ class Choices:
     bin_edge: float
     percentiles: tuple[float, ...]
     ranges: tuple[tuple[float, float], ...]
+    resolution: float = 0.0
 
     def __post_init__(self) -> None:
         if not all(0 <= p <= 100 for p in self.percentiles):
@@ -49,31 +58,63 @@ class Choices:
         for low, high in self.ranges:
             if not low <= high:
                 raise ArgumentError("ranges", "must be given as (low, high)", (low, high))
+        if not (math.isfinite(self.resolution) and self.resolution >= 0):
+            raise ArgumentError("resolution", "must be 0 or greater", self.resolution)
 
 
 @dataclass(frozen=True, slots=True)
 class _Samples:
-    """How much is independent: standard error, samples of the variance and of the mean."""
+    """How much is independent: doubt of the mean, samples of the variance and of the mean."""
 
     error: float
     nu: float
     effective: float
     pixels: float
 
+    def of_share(self, share: Floats) -> Floats:
+        """Return the doubt of shares."""
+        middle = (share * self.nu + 1) / (self.nu + 2)
+        found: Floats = np.sqrt(middle * (1 - middle) / (self.nu + 3))
+        return found
+
+
+def mean_and_sd(
+    found: Moments, pixels: int, doubt: MeanDoubt, step: float
+) -> tuple[float, float, float, float]:
+    """Return the mean, its uncertainty, the sample SD and its uncertainty."""
+    sd = found.sample_sd
+    error = math.sqrt(doubt.variance_of_mean) if found.m2 else 0.0
+    relative = _relative_doubt(found, pixels, doubt)
+    return (
+        found.mean,
+        math.hypot(error, rounding_of_mean(sd, step)),
+        sd,
+        math.hypot(sd * relative, rounding_of_spread(sd, step)),
+    )
+
+
+def _relative_doubt(found: Moments, pixels: int, doubt: MeanDoubt) -> float:
+    """Return the relative uncertainty of an SD."""
+    nu = max(doubt.power_samples, 2.0)
+    return math.sqrt(max(2.0 / nu + found.kurtosis / pixels, 0.0)) / 2
+
 
 def numbers_of(v: Floats, w: Floats, doubt: MeanDoubt, choices: Choices) -> dict[str, Any]:
     """Return every Quantity and Curve of a region but those of its grid, by field name."""
     found = moments(v, w)
-    sd, unit = found.sample_sd, choices.unit
-    error = math.sqrt(doubt.variance_of_mean) if found.m2 else 0.0
-    effective = (sd / error) ** 2 if error else float(v.size)
+    unit, step = choices.unit, choices.resolution
+    mean, error, sd, u_sd = mean_and_sd(found, v.size, doubt, step)
+    standard = math.sqrt(doubt.variance_of_mean) if found.m2 else 0.0
+    effective = (sd / standard) ** 2 if standard else float(v.size)
     samples = _Samples(error, max(doubt.power_samples, 2.0), effective, float(v.size))
-    relative = math.sqrt(max(2.0 / samples.nu + found.kurtosis / v.size, 0.0)) / 2
     population = math.sqrt(found.m2)
+    u_population = math.hypot(
+        population * _relative_doubt(found, v.size, doubt), rounding_of_spread(population, step)
+    )
     return {
-        "mean": Quantity(found.mean, unit, error),
-        "sd": Quantity(sd, unit, sd * relative),
-        "population_sd": Quantity(population, unit, population * relative),
+        "mean": Quantity(mean, unit, error),
+        "sd": Quantity(sd, unit, u_sd),
+        "population_sd": Quantity(population, unit, u_population),
         "n": Quantity(float(v.size), "px", 0.0),
         "minimum": Quantity(float(v.min()), unit),
         "maximum": Quantity(float(v.max()), unit),
@@ -82,7 +123,7 @@ def numbers_of(v: Floats, w: Floats, doubt: MeanDoubt, choices: Choices) -> dict
         "kurtosis": Quantity(found.kurtosis, "", math.sqrt(24.0 / samples.nu)),
         "effective_n": Quantity(effective, "", effective * math.sqrt(2.0 / samples.nu)),
         **_order(Sorted(v, w), found, samples, choices),
-        **_levels(found, population * relative, samples, unit),
+        **_levels(found, u_population, samples, unit),
         **_histogram(v, w, samples, choices),
         **_shares(v, w, samples, choices),
     }
@@ -95,30 +136,34 @@ def _order(values: Sorted, found: Moments, samples: _Samples, choices: Choices) 
     at = np.array([0.5, 0.1, 0.25, 0.75, 0.9, *(p / 100 for p in extra)])
     step = np.sqrt(at * (1 - at) / min(samples.effective, samples.pixels))
     value, low, high = values.quantile(np.stack([at, at - step, at + step]))
-    doubt = (high - low) / 2
+    rank = (high - low) / 2
+    single = single_value(choices.resolution)
+    doubt = np.hypot(rank, single)
     names = ("median", "p10", "p25", "p75", "p90")
     quantities: dict[str, Any] = {
         name: Quantity(float(value[i]), unit, float(doubt[i])) for i, name in enumerate(names)
     }
-    (median, p10, p25, p75, p90), (_, _, u25, u75, _) = value[:5].tolist(), doubt[:5].tolist()
-    u_distance = math.sqrt(max(u25**2 + u75**2 - 2 / 3 * u25 * u75, 0.0))
+    (median, p10, p25, p75, p90), (_, _, u25, u75, _) = value[:5].tolist(), rank[:5].tolist()
+    u_distance = math.sqrt(max(u25**2 + u75**2 - 2 / 3 * u25 * u75, 0.0) + 2 * single**2)
     mad, about_median = values.deviation(found.mean), values.deviation(median)
     square = found.m2 + (found.mean - median) ** 2
     robust, robust_spread, kept = values.robust_deviation(p10, p90)
 
     def deviation(mean: float, variance: float, share: float = 1.0) -> Quantity:
-        return Quantity(mean, unit, math.sqrt(max(variance, 0.0) / (samples.nu * share)))
+        error = math.sqrt(max(variance, 0.0) / (samples.nu * share))
+        return Quantity(mean, unit, math.hypot(error, rounding_of_spread(mean, choices.resolution)))
 
     quantities["interquartile_range"] = Quantity(p75 - p25, unit, u_distance)
     quantities["mean_absolute_deviation"] = deviation(mad, found.m2 - mad**2)
     quantities["median_absolute_deviation"] = deviation(about_median, square - about_median**2)
     quantities["robust_mean_absolute_deviation"] = deviation(robust, robust_spread, kept)
     total = p75 + p25
-    u_total = math.sqrt(u25**2 + u75**2 + 2 / 3 * u25 * u75)
+    u_total = math.sqrt(u25**2 + u75**2 + 2 / 3 * u25 * u75 + 2 * single**2)
     if abs(total) > u_total:
         ratio = (p75 - p25) / total
         a, b = p75 * u25, p25 * u75
-        u_ratio = 2 * math.sqrt(max(a * a + b * b - 2 / 3 * a * b, 0.0)) / total**2
+        rounding = single**2 * (p75**2 + p25**2)
+        u_ratio = 2 * math.sqrt(max(a * a + b * b - 2 / 3 * a * b, 0.0) + rounding) / total**2
         quantities["quartile_coefficient_of_dispersion"] = Quantity(ratio, "", u_ratio)
     if extra:
         quantities["percentiles"] = Curve(
@@ -159,7 +204,7 @@ def _histogram(v: Floats, w: Floats, samples: _Samples, choices: Choices) -> dic
         "histogram": Curve(
             bins.centers,
             bins.counts,
-            total * np.sqrt(share * (1 - share) / samples.nu),
+            total * samples.of_share(share),
             "value",
             choices.unit,
             "pixels",
@@ -175,7 +220,7 @@ def _shares(v: Floats, w: Floats, samples: _Samples, choices: Choices) -> dict[s
     share = np.array(
         [float(np.sum(w[(v >= low) & (v <= high)])) / total for low, high in choices.ranges]
     )
-    doubt = np.sqrt(share * (1 - share) / samples.nu)
+    doubt = samples.of_share(share)
     return {
         "share": Quantity(100 * float(share[0]), "%", 100 * float(doubt[0])),
         "shares": Curve(

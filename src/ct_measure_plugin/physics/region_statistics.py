@@ -9,9 +9,10 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from ct_measure_plugin.errors import ArgumentError
-from ct_measure_plugin.physics.first_order import weighted_quantile
+from ct_measure_plugin.physics.first_order import moments, weighted_quantile
 from ct_measure_plugin.physics.noise_correlation import MeanDoubt, doubt_of_mean, independent_doubt
-from ct_measure_plugin.physics.region_numbers import Choices, numbers_of
+from ct_measure_plugin.physics.quantisation import resolution_of
+from ct_measure_plugin.physics.region_numbers import Choices, mean_and_sd, numbers_of
 from ct_measure_plugin.physics.results import Caution, Curve, NotMeasured, Quantity, Result
 
 if TYPE_CHECKING:
@@ -114,7 +115,7 @@ class RegionStatistics(Result):
         return Quantity(self.mean.uncertainty or 0.0, self.mean.unit)
 
 
-def region_statistics(
+def region_statistics(  # noqa: PLR0913 - choices, each with its default and given by name
     values: ArrayLike,
     weights: ArrayLike | None = None,
     *,
@@ -125,6 +126,7 @@ def region_statistics(
     percentiles: tuple[float, ...] = (),
     ranges: tuple[tuple[float, float], ...] = (),
     positions_mm: ArrayLike | None = None,
+    resolution: float | None = None,
 ) -> RegionStatistics | NotMeasured:
     """Return mean, spread, extremes and shape of the values in a region.
 
@@ -148,6 +150,9 @@ def region_statistics(
         Ranges of values, both ends included, whose share is wanted.
     positions_mm : array, shape (nz,), optional
         z of each slice; given, the result holds the curves along z.
+    resolution : float, optional
+        Step in which the values are stored, 0 for values that were not rounded. Default 1 if all
+        are whole numbers, else 0.
 
     Returns
     -------
@@ -183,7 +188,6 @@ def region_statistics(
     steps = tuple(float(step) for step in spacing_mm)
     if not steps or not all(math.isfinite(s) and s > 0 for s in steps):
         raise ArgumentError("spacing_mm", "must hold lengths greater than 0", spacing_mm)
-    choices = Choices(unit, bin_width, bin_edge, tuple(percentiles), tuple(ranges))
     data, cover, cautions = _finite(data, cover)
     v, w = data[cover > 0], cover[cover > 0]
     if v.size < 2:
@@ -192,6 +196,8 @@ def region_statistics(
             "draw it larger",
             tuple(cautions),
         )
+    step = resolution_of(v) if resolution is None else float(resolution)
+    choices = Choices(unit, bin_width, bin_edge, tuple(percentiles), tuple(ranges), step)
     if data.ndim > 1 and len(steps) == data.ndim:
         doubt = doubt_of_mean(data, cover, steps)
     else:
@@ -203,7 +209,7 @@ def region_statistics(
     size = float(w.sum()) * math.prod(steps)
     return RegionStatistics(
         **numbers_of(v, w, doubt, choices),
-        **_along_z(data, cover, steps, positions_mm, unit),
+        **_along_z(data, cover, steps, positions_mm, choices),
         area=Quantity(size, "mm²", 0.0) if len(steps) == 2 else None,
         volume=Quantity(size, "mm³", 0.0) if len(steps) == 3 else None,
         cautions=(
@@ -274,7 +280,11 @@ def _sample_cautions(n: int, doubt: MeanDoubt) -> list[Caution]:
 
 
 def _along_z(
-    data: Floats, cover: Floats, steps: tuple[float, ...], positions: ArrayLike | None, unit: str
+    data: Floats,
+    cover: Floats,
+    steps: tuple[float, ...],
+    positions: ArrayLike | None,
+    choices: Choices,
 ) -> dict[str, Any]:
     """Return the curves of a region on several slices."""
     if positions is None or data.ndim != 3 or len(steps) != 3:
@@ -288,16 +298,13 @@ def _along_z(
         if np.count_nonzero(inside) < 2:
             continue
         doubt = doubt_of_mean(plane, own, steps[1:])
-        total, squares = float(own.sum()), float(np.sum(own * own))
-        mean = float(np.sum(own * plane)) / total
-        spread = float(np.sum(own * np.where(inside, plane - mean, 0.0) ** 2))
-        sd = math.sqrt(spread / (total - squares / total))
-        error = math.sqrt(doubt.variance_of_mean)
-        rows.append((z[k], mean, error, sd, sd / math.sqrt(2 * max(doubt.power_samples, 2.0))))
+        found = moments(plane[inside], own[inside])
+        pixels = int(np.count_nonzero(inside))
+        rows.append((z[k], *mean_and_sd(found, pixels, doubt, choices.resolution)))
     if not rows:
         return {}
     at, mean_z, error_z, sd_z, sd_error_z = np.array(rows).T
     return {
-        "slice_mean": Curve(at, mean_z, error_z, "z", "mm", "mean", unit),
-        "slice_sd": Curve(at, sd_z, sd_error_z, "z", "mm", "SD", unit),
+        "slice_mean": Curve(at, mean_z, error_z, "z", "mm", "mean", choices.unit),
+        "slice_sd": Curve(at, sd_z, sd_error_z, "z", "mm", "SD", choices.unit),
     }

@@ -187,7 +187,7 @@ def noise_power(
     for scan in (data, *map(np.asarray, repeats)):
         if len(scan) == 0:
             break
-        if fault := faults.bad_values(scan):
+        if (fault := faults.bad_values(scan)) is not None:
             return fault
     taken = subtracted(data, place, repeats, detrend)
     if isinstance(taken, NotMeasured):
@@ -269,10 +269,10 @@ class _Task:
     def result(self) -> NoisePower | NotMeasured:
         found, residuals = self._spectra()
         samples = self._samples(found)
-        if (fault := faults.structure(found, samples)) and self.degree >= 0:
+        if self.degree >= 0 and (fault := faults.structure(found, samples)) is not None:
             return fault
         independence = self._independence(found, residuals, samples)
-        if self.deep and (fault := few_slices(found.power, self.shape[0])):
+        if self.deep and (fault := few_slices(found.power, self.shape[0])) is not None:
             return fault
         return self._assembled(found, independence, samples)
 

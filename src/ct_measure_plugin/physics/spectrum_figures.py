@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from ct_measure_plugin.physics.results import Quantity
+from ct_measure_plugin.physics.spectrum_low import continued
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -21,8 +22,8 @@ __all__ = ["SpectrumFigures", "mean_frequency", "peak_frequency", "spectrum_figu
 #: The peak's polynomial is fitted where the curve exceeds this share of its largest value.
 PEAK_SHARE = 0.7
 
-#: Curves drawn to carry the bins' uncertainty through; they fix a standard deviation to 4 %.
-DRAWS = 300
+#: Curves drawn to carry the bins' uncertainty through; they fix a standard deviation to 6 %.
+DRAWS = 150
 SEED = 20
 
 
@@ -69,8 +70,9 @@ def spectrum_figures(x: Floats, y: Floats, usable: Flags, scatter: Floats) -> Sp
     root = vectors * np.sqrt(np.clip(values, 0.0, None))
     rng = np.random.default_rng(SEED)
     noise = rng.standard_normal((DRAWS, len(x))) @ root.T
-    drawn = [_figures(x, np.maximum(y * (1.0 + e), 0.0), usable) for e in noise]
-    found = _figures(x, y, usable)
+    doubt = np.sqrt(np.diag(scatter))
+    drawn = [_figures(x, np.maximum(y * (1.0 + e), 0.0), usable, doubt) for e in noise]
+    found = _figures(x, y, usable, doubt)
     doubts = [np.array([d[i] for d in drawn]) for i in range(4)]
     low, high = (_half(found[i], doubts[i]) for i in (2, 3))
     first, last = x[usable][[0, -1]]
@@ -91,11 +93,13 @@ def _half(value: float, drawn: Floats) -> Quantity | None:
     return Quantity(value, "mm⁻¹", float(kept.std()))
 
 
-def _figures(x: Floats, y: Floats, usable: Flags) -> tuple[float, float, float, float]:
+def _figures(
+    x: Floats, y: Floats, usable: Flags, doubt: Floats
+) -> tuple[float, float, float, float]:
     xs, ys = x[usable], y[usable]
     peak, height = peak_frequency(xs, ys)
     low, high = _half_power(xs, ys, peak, height / 2)
-    return peak, mean_frequency(xs, ys), low, high
+    return peak, mean_frequency(xs, ys, doubt[usable]), low, high
 
 
 def peak_frequency(x: Floats, y: Floats) -> tuple[float, float]:
@@ -138,11 +142,11 @@ def _parabola(x: Floats, y: Floats, k: int) -> tuple[float, float]:
     return float(x[k]) + shift, float(np.polynomial.polynomial.polyval(shift, fit))
 
 
-def mean_frequency(x: Floats, y: Floats) -> float:
+def mean_frequency(x: Floats, y: Floats, doubt: Floats | None = None) -> float:
     """Return ∫ f S df / ∫ S df over a radial curve, from 0 to its last ring's outer edge.
 
-    Below its first frequency the curve is continued by the straight line through its first two
-    samples, at least 0: flat for white noise, towards 0 for noise that falls off there.
+    Below its first frequency the curve is continued as :func:`.spectrum_low.continuation` says,
+    with the relative uncertainty `doubt` of each sample.
 
     Examples
     --------
@@ -153,8 +157,8 @@ def mean_frequency(x: Floats, y: Floats) -> float:
     step = float(x[1] - x[0]) if len(x) > 1 else float(x[0])
     missing = max(math.ceil(float(x[0]) / step - 0.5), 0)
     below = float(x[0]) - step * np.arange(missing, 0, -1)
-    slope = (y[1] - y[0]) / step if len(x) > 1 else 0.0
-    filled = np.maximum(y[0] + slope * (below - x[0]), 0.0)
+    known = np.full(len(x), 0.01) if doubt is None else doubt
+    filled = continued(x, y, known, np.maximum(below, 0.0))
     frequency, power = np.concatenate([below, x]), np.concatenate([filled, y])
     edges = np.concatenate([[0.0], (frequency[1:] + frequency[:-1]) / 2, [x[-1] + step / 2]])
     middle, width = (edges[1:] + edges[:-1]) / 2, np.diff(edges)

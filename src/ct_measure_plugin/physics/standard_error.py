@@ -6,12 +6,13 @@ import math
 from typing import TYPE_CHECKING
 
 import numpy as np
-from scipy import fft
+from scipy import fft, ndimage
 
 from ct_measure_plugin.errors import ArgumentError
 from ct_measure_plugin.physics.coverage import Coverage
-from ct_measure_plugin.physics.radial import frequencies, rings
+from ct_measure_plugin.physics.radial import rings
 from ct_measure_plugin.physics.results import Quantity
+from ct_measure_plugin.physics.spectrum_low import RINGS, continuation
 
 if TYPE_CHECKING:
     from numpy.typing import ArrayLike, NDArray
@@ -21,6 +22,9 @@ if TYPE_CHECKING:
     Floats = NDArray[np.float64]
 
 __all__ = ["standard_error_from_nps"]
+
+#: Frequencies within the reciprocal of the region's extent, so that a sum over them is an integral.
+FINENESS = 4
 
 
 def standard_error_from_nps(coverage: Coverage | ArrayLike, noise: NoisePower) -> Quantity:
@@ -45,9 +49,8 @@ def standard_error_from_nps(coverage: Coverage | ArrayLike, noise: NoisePower) -
 
     Notes
     -----
-    Var(mean) = ∬ S(f) |W(f)|² df with W the transform of the weights over their sum [1]_, computed
-    as the sum of autocovariance times the weights' autocorrelation. Below the lowest usable
-    frequency S is continued by the straight line through the first two usable rings.
+    Var(mean) = ∬ S(f) |W(f)|² df with W the transform of the weights over their sum [1]_. Below the
+    lowest usable frequency S is continued as :func:`.spectrum_low.continuation` says.
 
     Examples
     --------
@@ -69,52 +72,63 @@ def standard_error_from_nps(coverage: Coverage | ArrayLike, noise: NoisePower) -
         raise ArgumentError("coverage", "must hold the weights of one slice", weights.shape)
     if noise.axial is not None:
         raise ArgumentError("noise", "must come from patches on one slice", "deep patches")
-    shape = noise.spectrum.values.shape
-    ny, nx = int(shape[0]), int(shape[1])
-    steps = noise.spectrum.spacing
-    spacing = 1.0 / (ny * steps[0]), 1.0 / (nx * steps[1])
-    power, share = _completed(noise, (ny, nx), spacing)
-    pairs = _pairs(weights, (ny, nx))
-    response = fft.fft2(pairs).real  # |W|² ΣW², smoothed to the spectrum's own resolution
-    scale = steps[0] * steps[1] / float(weights.sum()) ** 2
-    variance = max(float(np.sum(power * response)) * scale, 0.0)
-    doubt = float(np.sum(power * np.abs(response) * share)) * scale
-    error = math.sqrt(variance)
-    return Quantity(error, noise.sd.unit, doubt / (2 * error) if error > 0 else 0.0)
-
-
-def _completed(
-    noise: NoisePower, shape: tuple[int, int], spacing: tuple[float, float]
-) -> tuple[Floats, Floats]:
-    """Return the spectrum with its lost bins filled, and each bin's relative uncertainty."""
-    power = fft.ifftshift(noise.spectrum.values).copy()
-    fy, fx = frequencies(shape, spacing)
-    radius = np.hypot(fy[:, None], fx[None, :])
-    x, y = noise.radial.x, noise.radial.y
-    usable = x >= noise.lowest_frequency.value - 1e-12
-    relative = np.zeros(len(y))
+    usable = noise.radial.x >= noise.lowest_frequency.value - 1e-12
+    x, y = noise.radial.x[usable], noise.radial.y[usable]
+    share = np.zeros(len(y))
     if noise.radial.y_uncertainty is not None:
-        relative = noise.radial.y_uncertainty / np.where(y > 0, y, 1.0)
-    xs, ys = x[usable], y[usable]
-    slope = (ys[1] - ys[0]) / (xs[1] - xs[0]) if len(xs) > 1 else 0.0
-    lost = radius < xs[0] - 0.5 * max(1.0 / (n * d) for n, d in zip(shape, spacing, strict=True))
-    power[lost] = np.maximum(ys[0] + slope * (radius[lost] - xs[0]), 0.0)
-    # the window's smear is divided out of the two-dimensional spectrum as it is out of the rings
-    groups = rings(shape, spacing)
+        share = noise.radial.y_uncertainty[usable] / np.where(y > 0, y, 1.0)
+    power, radius, response = _on_a_fine_grid(weights, noise)
+    lost = radius < noise.lowest_frequency.value - 0.5 * max(noise.spectrum.spacing)
+    high = power * response
+    variance = float(np.sum(high, where=~lost))
+    spread = float(np.sum(high * np.interp(radius, x, share), where=~lost))
+    low, low_spread = _low(x, y, share, radius[lost], response[lost])
+    error = math.sqrt(max(variance + low, 0.0))
+    spread = math.hypot(spread, low_spread)
+    return Quantity(error, noise.sd.unit, spread / (2 * error) if error > 0 else 0.0)
+
+
+def _on_a_fine_grid(weights: Floats, noise: NoisePower) -> tuple[Floats, Floats, Floats]:
+    """Return the spectrum, |f| and |W|² df over a half plane of finely spaced frequencies."""
+    values, steps = noise.spectrum.values, noise.spectrum.spacing
+    spacing = [1.0 / (n * s) for n, s in zip(values.shape, steps, strict=True)]
+    ny, nx = (
+        fft.next_fast_len(max(FINENESS * w, n), real=True)
+        for w, n in zip(weights.shape, values.shape, strict=True)
+    )
+    fy, fx = fft.fftfreq(ny, spacing[0])[:, None], fft.rfftfreq(nx, spacing[1])[None, :]
+    response = np.abs(fft.rfft2(weights, (ny, nx))) ** 2
+    response /= ny * spacing[0] * nx * spacing[1] * float(weights.sum()) ** 2
+    response[:, 1 : (nx + 1) // 2] *= 2.0  # the other half plane is the same
+    power = _without_smear(noise)
+    place = np.broadcast_arrays(fy / steps[0], fx / steps[1])
+    fine = ndimage.map_coordinates(power, np.stack(place), order=1, mode="grid-wrap")
+    return fine, np.hypot(fy, fx), response
+
+
+def _without_smear(noise: NoisePower) -> Floats:
+    """Return the spectrum, frequency 0 first, with its smear divided out."""
+    power: Floats = fft.ifftshift(noise.spectrum.values).copy()
+    shape = (power.shape[0], power.shape[1])
+    steps = noise.spectrum.spacing
+    groups = rings(shape, (1.0 / (shape[0] * steps[0]), 1.0 / (shape[1] * steps[1])))
     if len(groups.bins) == len(noise.smear.y):
-        ring = (groups.labels >= 0) & ~lost
+        ring = groups.labels >= 0
         power[ring] /= 1.0 + noise.smear.y[groups.labels[ring]]
-    share = np.interp(radius, xs, relative[usable])
-    return power, share
+    return power
 
 
-def _pairs(weights: Floats, shape: tuple[int, int]) -> Floats:
-    """Return the weights' autocorrelation at the lags a patch holds, in the transform's order."""
-    size = [
-        fft.next_fast_len(w + max(w, n), real=True)
-        for w, n in zip(weights.shape, shape, strict=True)
-    ]
-    auto = fft.irfft2(np.abs(fft.rfft2(weights, size)) ** 2, size)
-    lags = [np.rint(fft.fftfreq(n, 1.0 / n)).astype(int) for n in shape]
-    found: Floats = auto[np.ix_(*lags)]
-    return found
+def _low(x: Floats, y: Floats, share: Floats, below: Floats, gain: Floats) -> tuple[float, float]:
+    """Return the variance from the lost frequencies and its uncertainty.
+
+    That of the rings is carried through ring by ring; that of the form is the scatter of the
+    forms about their mean.
+    """
+    forms = continuation(x, y, share)
+    each = forms.each(below) @ gain
+    found = float(forms.weights @ each)
+    spread = float(forms.weights @ (each - found) ** 2)
+    for k in range(min(len(y), RINGS)):
+        moved = y * (1.0 + share * (np.arange(len(y)) == k))
+        spread += (float(continuation(x, moved, share).mean(below) @ gain) - found) ** 2
+    return found, math.sqrt(spread)

@@ -83,7 +83,6 @@ def test_a_polygon_keeps_its_corners(scene):
     ("corners", "kind", "problem"),
     [
         (on_slice(1, [(5, 5), (25, 25), (25, 5), (5, 25)]), "polygon", "must not cross itself"),
-        (on_slice(1, [(5, 5), (25, 25)]), "line", "a line has no area"),
         (on_slice(1, [(5, 5), (25, 25), (5, 30)]), "path", "a path has no area"),
         ([[1, 5, 5], [2, 5, 25], [1, 30, 15]], "polygon", "lie on different slices"),
         (on_slice(9, [(5, 5), (5, 25), (30, 15)]), "polygon", "above or below the volume"),

@@ -29,6 +29,8 @@ class Drawn:
         The class it was given: what it shows.
     code : str
         The class as a code, "scheme:value".
+    values : (float, float) or None
+        The range of values that counts within the region; None if every value does.
     """
 
     index: int
@@ -37,3 +39,4 @@ class Drawn:
     problem: str = ""
     group: str = ""
     code: str = ""
+    values: tuple[float, float] | None = None

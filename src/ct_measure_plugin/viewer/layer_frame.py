@@ -73,6 +73,13 @@ class LayerFrame:
         return self.corners(found)
 
     @property
+    def stretch(self) -> float:
+        """How long one unit of the layer is in the image's plane, mm."""
+        matrix, _ = self._there
+        in_plane = matrix[1:, -2:] * self._step[:, None]
+        return float(np.sqrt(abs(np.linalg.det(in_plane))))
+
+    @property
     def _step(self) -> Floats:
         return np.asarray(self.placement.volume.spacing_mm[1:])
 

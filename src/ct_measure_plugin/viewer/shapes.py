@@ -1,69 +1,49 @@
 """Shapes layers and regions: what is drawn in the viewer, as millimetres in a Volume's frame.
 
 A shape on a flat Shapes layer lies on every slice and is measured on the one shown; a shape on a
-deep layer lies on its own slice. A shape that cannot be a region (a line, a polygon that crosses
-itself) is kept with the reason, so that its row in a table can say it.
+deep layer lies on its own slice, or over the slices that its features say. A line or a path is the
+strip that its edge covers, as wide as it is drawn. A shape that cannot be a region (a polygon that
+crosses itself) is kept with the reason, so that its row in a table can say it.
 """
 
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
 from ct_measure_plugin.errors import CtMeasureError
 from ct_measure_plugin.physics.regions import Box, Disc, Ellipse, Polygon, Region, Segment
+from ct_measure_plugin.viewer.drawn import Drawn
+from ct_measure_plugin.viewer.layer_frame import LayerFrame
+from ct_measure_plugin.viewer.region_features import NAME, Tags, set_column, tags_on
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
 
     from numpy.typing import NDArray
 
+    from ct_measure_plugin.physics.volume import Volume
     from ct_measure_plugin.viewer.layers import Placement
 
     Floats = NDArray[np.float64]
 
 __all__ = [
-    "NAME",
     "Drawn",
     "drawn_on",
+    "extent_of",
     "names_on",
     "new_regions_layer",
+    "range_of",
     "rename",
     "repair",
     "shape_of",
 ]
 
-#: The column of a layer's features that holds what people call a shape.
-NAME = "name"
-
 #: Relative difference up to which two half axes are one radius, and a cosine is a right angle:
 #: napari stores corners as float32, whose rounding is 6e-8 of a coordinate.
 _ROUNDING = 1e-5
-
-
-@dataclass(frozen=True, slots=True)
-class Drawn:
-    """One shape.
-
-    Attributes
-    ----------
-    index : int
-        Its place on the layer, now; it shifts when another is deleted.
-    name : str
-        What people call it.
-    region : Region or None
-        Where it lies, mm; None if it cannot be a region.
-    problem : str
-        Why not.
-    """
-
-    index: int
-    name: str
-    region: Region | None
-    problem: str = ""
 
 
 def drawn_on(layer: Any, placement: Placement, point: Sequence[float]) -> tuple[Drawn, ...]:
@@ -80,33 +60,26 @@ def drawn_on(layer: Any, placement: Placement, point: Sequence[float]) -> tuple[
     """
     if not layer.nshapes:
         return ()
-    to_index = _to_index(layer, placement, point)
-    names = names_on(layer)
+    frame = LayerFrame(layer, placement, point)
+    tags = tags_on(layer)
+    kinds, widths = [str(kind) for kind in layer.shape_type], layer.edge_width
+    stretch = frame.stretch
     return tuple(
-        _drawn(i, names[i], str(kind), to_index(np.asarray(corners, dtype=float)), placement)
-        for i, (kind, corners) in enumerate(zip(layer.shape_type, layer.data, strict=True))
+        _drawn(
+            i, _Outline(kinds[i], frame.voxels(corners), widths[i] * stretch), tags[i], placement
+        )
+        for i, corners in enumerate(layer.data)
     )
 
 
 def names_on(layer: Any) -> list[str]:
     """Return what people call the shapes: the feature `name`, else "region 1" and so on."""
-    known = list(layer.features[NAME]) if NAME in layer.features else []
-    found = []
-    for i in range(layer.nshapes):
-        given = known[i] if i < len(known) else ""
-        text = given.strip() if isinstance(given, str) else ""
-        found.append(text or f"region {i + 1}")
-    return found
+    return [_name(i, tags) for i, tags in enumerate(tags_on(layer))]
 
 
 def rename(layer: Any, index: int, name: str) -> None:
     """Give a shape a name; other columns of the features stay as they are."""
-    features = layer.features.copy()
-    known = list(features[NAME]) if NAME in features else [""] * layer.nshapes
-    known += [""] * (layer.nshapes - len(known))
-    known[index] = name.strip()
-    features[NAME] = known[: len(features)] if len(features) else known
-    layer.features = features
+    set_column(layer, NAME, {index: name.strip()})
 
 
 def repair(layer: Any) -> bool:
@@ -163,60 +136,75 @@ def shape_of(region: Region) -> tuple[Floats, str]:
     raise ValueError(region.kind)
 
 
-def _to_index(layer: Any, placement: Placement, point: Sequence[float]) -> Any:
-    """Return a function from a shape's corners to voxel coordinates (slice, row, column).
+def extent_of(tags: Tags, z_mm: float, volume: Volume) -> float | tuple[float, float] | None:
+    """Return the slices that a region reaches over: its own, a range, or None for all.
 
-    The way leads through the world and is affine, so it is taken from one call an axis; napari
-    turns only one point at a time.
+    An infinite end means as far as the volume goes.
     """
-    n = layer.ndim
-    stand = np.asarray(point, dtype=float)
-
-    def through(data: Floats) -> Floats:
-        world = np.asarray(layer.data_to_world(data), dtype=float)
-        full = np.concatenate([stand[: max(0, len(stand) - n)], world]) if len(stand) > n else world
-        depth = placement.layer.ndim
-        return np.asarray(placement.index_of(tuple(full[-depth:])))
-
-    zero = through(np.zeros(n))
-    matrix = np.stack([through(np.eye(n)[i]) - zero for i in range(n)], axis=1)
-
-    def to_index(corners: Floats) -> Floats:
-        return np.asarray(corners @ matrix.T + zero)
-
-    return to_index
+    low, high = tags.z_mm
+    if math.isnan(low) and math.isnan(high):
+        return z_mm
+    if low == -math.inf and high == math.inf:
+        return None
+    low = z_mm if math.isnan(low) else max(low, float(volume.positions_mm[0]))
+    high = z_mm if math.isnan(high) else min(high, float(volume.positions_mm[-1]))
+    return (low, high) if low <= high else (high, low)
 
 
-def _drawn(index: int, name: str, kind: str, corners: Floats, placement: Placement) -> Drawn:
-    volume = placement.volume
-    slices = np.rint(corners[:, 0]).astype(int)
-    if len(set(slices.tolist())) > 1:
-        return Drawn(index, name, None, "its corners lie on different slices")
-    if not 0 <= slices[0] < volume.shape[0]:
-        return Drawn(index, name, None, "it lies above or below the volume")
-    z = float(volume.positions_mm[slices[0]])
-    step, origin = np.asarray(volume.spacing_mm[1:]), np.asarray(volume.origin_mm[1:])
-    flat = corners[:, 1:] * step + origin
+def range_of(values: tuple[float, float]) -> tuple[float, float] | None:
+    """Return the range of values that counts, None if every value does; an open end is infinite."""
+    low, high = values
+    if math.isnan(low) and math.isnan(high):
+        return None
+    return -math.inf if math.isnan(low) else low, math.inf if math.isnan(high) else high
+
+
+def _name(index: int, tags: Tags) -> str:
+    return tags.name or f"region {index + 1}"
+
+
+class _Outline:
+    """A shape as it lies in the image's voxels, with the width of its edge in mm."""
+
+    __slots__ = ("kind", "voxels", "width")
+
+    def __init__(self, kind: str, voxels: Floats, width: float) -> None:
+        self.kind, self.voxels, self.width = kind, voxels, width
+
+
+def _drawn(index: int, outline: _Outline, tags: Tags, placement: Placement) -> Drawn:
     try:
-        return Drawn(index, name, _region(kind, flat, z, name))
-    except CtMeasureError as error:
-        return Drawn(index, name, None, str(error))
-    except _NoAreaError as error:
-        return Drawn(index, name, None, str(error))
+        region, problem = _region(outline, tags, placement.volume, _name(index, tags)), ""
+    except (CtMeasureError, _NoRegionError) as error:
+        region, problem = None, str(error)
+    return Drawn(
+        index, _name(index, tags), region, problem, tags.group, tags.code, range_of(tags.values)
+    )
 
 
-class _NoAreaError(Exception):
-    """A shape without an inside."""
+class _NoRegionError(Exception):
+    """A shape that is no region."""
 
 
-def _region(kind: str, corners: Floats, z_mm: float, name: str) -> Region:
-    if kind in ("line", "path"):
-        raise _NoAreaError(f"a {kind} has no area; draw an ellipse, a rectangle or a polygon")
-    if kind == "ellipse":
-        return _ellipse(corners, z_mm, name)
-    if kind == "rectangle":
-        return _rectangle(corners, z_mm, name)
-    return Polygon(tuple(_pair(corner) for corner in corners), z_mm=z_mm, name=name)
+def _region(outline: _Outline, tags: Tags, volume: Volume, name: str) -> Region:
+    slices = np.rint(outline.voxels[:, 0]).astype(int)
+    if len(set(slices.tolist())) > 1:
+        raise _NoRegionError("its corners lie on different slices")
+    if not 0 <= slices[0] < volume.shape[0]:
+        raise _NoRegionError("it lies above or below the volume")
+    z = extent_of(tags, float(volume.positions_mm[slices[0]]), volume)
+    step, origin = np.asarray(volume.spacing_mm[1:]), np.asarray(volume.origin_mm[1:])
+    corners = outline.voxels[:, 1:] * step + origin
+    if outline.kind == "line":
+        ends = _pair(corners[0]), _pair(corners[1])
+        return Segment(*ends, float(outline.width), z_mm=z, name=name)
+    if outline.kind == "path":
+        raise _NoRegionError("a path has no area; draw a line, whose width counts, or a polygon")
+    if outline.kind == "ellipse":
+        return _ellipse(corners, z, name)
+    if outline.kind == "rectangle":
+        return _rectangle(corners, z, name)
+    return Polygon(tuple(_pair(corner) for corner in corners), z_mm=z, name=name)
 
 
 def _pair(corner: Floats) -> tuple[float, float]:
@@ -228,7 +216,7 @@ def _halves(corners: Floats) -> tuple[tuple[float, float], Floats, Floats]:
     return _pair(corners.mean(axis=0)), (corners[1] - corners[0]) / 2, (corners[3] - corners[0]) / 2
 
 
-def _ellipse(corners: Floats, z_mm: float, name: str) -> Region:
+def _ellipse(corners: Floats, z: Any, name: str) -> Region:
     """Return the ellipse that touches a parallelogram's sides in their middles.
 
     The half sides are conjugate half diameters; the singular values of their matrix are the half
@@ -237,23 +225,23 @@ def _ellipse(corners: Floats, z_mm: float, name: str) -> Region:
     center, u, v = _halves(corners)
     directions, radii, _ = np.linalg.svd(np.stack([u, v], axis=1))
     if radii[1] <= 0:
-        raise _NoAreaError("it has no area")
+        raise _NoRegionError("it has no area")
     if radii[0] - radii[1] <= _ROUNDING * radii[0]:
-        return Disc(center, float(radii.mean()), z_mm=z_mm, name=name)
+        return Disc(center, float(radii.mean()), z_mm=z, name=name)
     y, x = directions[:, 0]
     angle = math.degrees(math.atan2(-y, x)) % 180.0
-    return Ellipse(center, (float(radii[1]), float(radii[0])), angle, z_mm=z_mm, name=name)
+    return Ellipse(center, (float(radii[1]), float(radii[0])), angle, z_mm=z, name=name)
 
 
-def _rectangle(corners: Floats, z_mm: float, name: str) -> Region:
+def _rectangle(corners: Floats, z: Any, name: str) -> Region:
     center, u, v = _halves(corners)
     long_u, long_v = float(np.linalg.norm(u)), float(np.linalg.norm(v))
     if min(long_u, long_v) <= 0:
-        raise _NoAreaError("it has no area")
+        raise _NoRegionError("it has no area")
     if abs(float(u @ v)) > _ROUNDING * long_u * long_v:
-        return Polygon(tuple(_pair(corner) for corner in corners), z_mm=z_mm, name=name)
+        return Polygon(tuple(_pair(corner) for corner in corners), z_mm=z, name=name)
     width, height = (u, v) if abs(u[1]) >= abs(v[1]) else (v, u)
     angle = math.degrees(math.atan2(-width[0], width[1]))
     angle = (angle + 90.0) % 180.0 - 90.0
     size = 2 * float(np.linalg.norm(height)), 2 * float(np.linalg.norm(width))
-    return Box(center, size, angle, z_mm=z_mm, name=name)
+    return Box(center, size, angle, z_mm=z, name=name)

@@ -6,7 +6,7 @@ import numpy as np
 import pytest
 import series_writer as sw
 
-from ct_measure_plugin.dicom import read_series
+from ct_measure_plugin.dicom import read_series, scan_folder
 
 STORED = sw.noise((4, 8, 8))
 
@@ -129,6 +129,19 @@ def test_half_a_rescale_is_completed_and_said(tmp_path, lost):
     assert volume.is_hu
     assert codes(volume) == {"hu-assumed"}
     assert np.array_equal(volume.hu[0], STORED[0] - 1024)
+
+
+@pytest.mark.parametrize(
+    "odd",
+    [{"RescaleSlope": "1e308"}, {"RescaleSlope": "-1e-30"}, {"RescaleIntercept": "1e300"}],
+    ids=str,
+)
+def test_an_impossible_rescale_is_refused(tmp_path, odd):
+    """Its CT numbers would be infinite, or all one."""
+    sw.save(sw.ct_slice(STORED[0], **odd), tmp_path / "one")
+    (skipped,) = scan_folder(tmp_path).skipped
+    assert skipped.reason == "the rescale slope or intercept is impossible"
+    assert skipped.damaged
 
 
 def test_acquisition_facts_come_slice_by_slice(tmp_path):

@@ -15,6 +15,7 @@ from ct_measure_plugin.dicom import tags
 from ct_measure_plugin.dicom.elements import UNDEFINED, Elements
 from ct_measure_plugin.dicom.frames import frame_items
 from ct_measure_plugin.dicom.header import Header, UnreadableFileError
+from ct_measure_plugin.dicom.layout import PixelLayout, layout_of
 from ct_measure_plugin.dicom.syntaxes import SYNTAXES
 from ct_measure_plugin.dicom.texts import digest_of, plain_word, shown_text
 from ct_measure_plugin.dicom.windows import windows_of
@@ -23,53 +24,19 @@ from ct_measure_plugin.physics.volume import Acquisition
 if TYPE_CHECKING:
     from ct_measure_plugin.physics.volume import HeaderWindow
 
-__all__ = ["ImageFacts", "PixelLayout", "images_of"]
+__all__ = ["ImageFacts", "images_of"]
 
 CT_IMAGE: Final = "1.2.840.10008.5.1.4.1.1.2"
 ENHANCED_CT: Final = "1.2.840.10008.5.1.4.1.1.2.1"
 CONVERTED_CT: Final = "1.2.840.10008.5.1.4.1.1.2.2"
 _CT_CLASSES: Final = frozenset({CT_IMAGE, ENHANCED_CT, CONVERTED_CT})
-#: the largest plane this room decodes: 8192 × 8192; real CT planes end at 4096 × 4096
-MAX_PLANE_PIXELS: Final = 1 << 26
 #: more frames than any detector and table give; a larger claim is a damaged number
 MAX_FRAMES: Final = 1 << 16
-
-
-@dataclass(frozen=True, slots=True)
-class PixelLayout:
-    """How a pixel is stored (PS3.5, 8.1).
-
-    Attributes
-    ----------
-    rows, columns : int
-        Size of the plane.
-    allocated, stored, high_bit : int
-        Bits of a cell, bits in use, and the position of the highest of these.
-    signed : bool
-        Two's complement or unsigned.
-    big : bool
-        Most significant byte first.
-    """
-
-    rows: int
-    columns: int
-    allocated: int
-    stored: int
-    high_bit: int
-    signed: bool
-    big: bool = False
-
-    @property
-    def plane_bytes(self) -> int:
-        """Bytes of one uncompressed plane."""
-        return self.rows * self.columns * self.allocated // 8
-
-    @property
-    def limits(self) -> tuple[int, int]:
-        """Lowest and highest value that can be stored."""
-        if self.signed:
-            return -(1 << (self.stored - 1)), (1 << (self.stored - 1)) - 1
-        return 0, (1 << self.stored) - 1
+#: CT slopes lie between 0.01 and 16; what is beyond these is a damaged number. With 32 bit cells
+#: the largest CT number they allow is 4e15, far inside single precision
+SMALLEST_SLOPE: Final = 1e-9
+LARGEST_SLOPE: Final = 1e6
+LARGEST_INTERCEPT: Final = 1e9
 
 
 @dataclass(slots=True, kw_only=True, eq=False)
@@ -133,7 +100,7 @@ def images_of(header: Header, path: str) -> list[ImageFacts]:
 
 def _images_of(header: Header, path: str, uid: str) -> list[ImageFacts]:
     elements = header.elements
-    layout = _layout_of(elements)
+    layout = layout_of(elements)
     count = elements.whole(tags.FRAMES)
     count = 1 if count is None else count
     offset, length = _pixels_of(header, layout, count)
@@ -192,41 +159,6 @@ def _class_name(uid: str) -> str:
     return entry[0] if entry else "an object of another kind"
 
 
-def _layout_of(elements: Elements) -> PixelLayout:
-    whole = elements.whole
-    if tags.FLOAT_PIXELS in elements or tags.DOUBLE_PIXELS in elements:
-        raise UnreadableFileError("floating-point pixels: not a CT image", stray=True)
-    if tags.PIXELS not in elements:
-        raise UnreadableFileError("no pixel data")
-    rows, columns = whole(tags.ROWS), whole(tags.COLUMNS)
-    if not rows or not columns or rows < 0 or columns < 0:
-        raise UnreadableFileError("rows or columns are missing")
-    if rows * columns > MAX_PLANE_PIXELS:
-        raise UnreadableFileError(f"{rows} × {columns} pixels are more than a CT image can have")
-    samples = whole(tags.SAMPLES)
-    if samples not in (None, 1) or elements.text(tags.PHOTOMETRIC) not in (
-        "",
-        "MONOCHROME1",
-        "MONOCHROME2",
-    ):
-        raise UnreadableFileError("a colour picture, not a CT image", stray=True)
-    allocated = whole(tags.BITS_ALLOCATED)
-    stored = whole(tags.BITS_STORED) or allocated
-    if allocated not in (8, 16, 32) or stored is None or not 1 <= stored <= allocated:
-        raise UnreadableFileError("bits allocated and stored are missing or impossible")
-    high = whole(tags.HIGH_BIT)
-    if high is None or not stored - 1 <= high < allocated:
-        high = stored - 1
-    signed = whole(tags.PIXEL_SIGN) == 1
-    return _layout(rows, columns, allocated, stored, high, signed, elements.encoding.big)
-
-
-@lru_cache(maxsize=256)
-def _layout(*values: int) -> PixelLayout:
-    rows, columns, allocated, stored, high, signed, big = values
-    return PixelLayout(rows, columns, allocated, stored, high, bool(signed), bool(big))
-
-
 def _pixels_of(header: Header, layout: PixelLayout, count: int) -> tuple[int, int]:
     """Return offset and length of the pixel data after checking them against the file."""
     syntax = SYNTAXES.get(header.syntax_uid)
@@ -270,7 +202,7 @@ def _is_simulated(elements: Elements) -> bool:
 def _own_facts(own: Elements, whole: Elements, layout: PixelLayout) -> dict[str, object]:
     """Return the facts that may differ from frame to frame."""
     spacing, from_diameter = _spacing_of(own, layout)
-    slope, intercept = own.number(tags.SLOPE), own.number(tags.INTERCEPT)
+    slope, intercept = _rescale_of(own)
     padding, mistyped = _padding_of(own if tags.PADDING in own else whole, layout)
     kind = own.text(tags.IMAGE_TYPE) or own.text(tags.FRAME_TYPE)
     return {
@@ -279,7 +211,7 @@ def _own_facts(own: Elements, whole: Elements, layout: PixelLayout) -> dict[str,
         "orientation": own.vector(tags.ORIENTATION, 6),
         "pixel_spacing": spacing,
         "spacing_from_diameter": from_diameter,
-        "slope": slope if slope else None,
+        "slope": slope,
         "intercept": intercept,
         "rescale_type": own.text(tags.RESCALE_TYPE),
         "padding": padding,
@@ -288,6 +220,15 @@ def _own_facts(own: Elements, whole: Elements, layout: PixelLayout) -> dict[str,
         "windows": windows_of(own, whole),
         "moments": _moments_of(own),
     }
+
+
+def _rescale_of(own: Elements) -> tuple[float | None, float | None]:
+    """Return slope and intercept, None for what is missing; a slope of 0 is as good as none."""
+    slope, intercept = own.number(tags.SLOPE) or None, own.number(tags.INTERCEPT)
+    odd = slope is not None and not SMALLEST_SLOPE <= abs(slope) <= LARGEST_SLOPE
+    if odd or (intercept is not None and abs(intercept) > LARGEST_INTERCEPT):
+        raise UnreadableFileError("the rescale slope or intercept is impossible")
+    return slope, intercept
 
 
 def _spacing_of(own: Elements, layout: PixelLayout) -> tuple[tuple[float, float] | None, bool]:

@@ -14,7 +14,8 @@ from ct_measure_plugin.errors import SeriesError
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
-    from ct_measure_plugin.dicom.facts import ImageFacts, PixelLayout
+    from ct_measure_plugin.dicom.facts import ImageFacts
+    from ct_measure_plugin.dicom.layout import PixelLayout
 
 __all__ = ["stored_into", "stored_plane"]
 

@@ -10,7 +10,7 @@ import pytest
 from examples import EXAMPLES, Example
 
 from ct_measure_plugin.errors import CtMeasureError
-from ct_measure_plugin.measurements import NAMES, find, measure
+from ct_measure_plugin.measurements import NAMES, find, glance_each, measure
 from ct_measure_plugin.measurements.base import Measurement, Settings
 from ct_measure_plugin.physics.regions import Box, Disc, Ellipse, Polygon, Region, Segment
 from ct_measure_plugin.physics.results import Result, quantities_of
@@ -51,6 +51,20 @@ def test_the_input_is_untouched(example):
 def test_the_same_question_has_the_same_answer(example):
     first, second = quantities_of(run(example)), quantities_of(run(example))
     assert first == second
+
+
+def test_a_glance_shows_the_same_numbers(example):
+    """While a region moves, uncertainties may be missing; a number may not differ by a bit."""
+    full = quantities_of(run(example))
+    settings = find(NAME[id(example)]).settings_type(**example.settings)
+    [seen] = glance_each(NAME[id(example)], example.volume, example.regions, settings=settings)
+    found = quantities_of(seen)
+    assert found
+    for name, quantity in found.items():
+        assert quantity.value == full[name].value, name
+        assert quantity.uncertainty in (None, full[name].uncertainty), name
+    if any(q.uncertainty is None and full[n].uncertainty is not None for n, q in found.items()):
+        assert any(caution.code == "no-uncertainty" for caution in seen.cautions)
 
 
 def test_threads_do_not_disturb_each_other(example):

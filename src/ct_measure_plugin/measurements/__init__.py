@@ -11,6 +11,21 @@ Adding one: a physics file, a file here, a docs page, and a line in ``catalogue.
 from __future__ import annotations
 
 from ct_measure_plugin.measurements.base import Measurement, RegionNeed, Settings
-from ct_measure_plugin.measurements.catalogue import NAMES, find, measure, measure_each
+from ct_measure_plugin.measurements.catalogue import (
+    NAMES,
+    find,
+    glance_each,
+    measure,
+    measure_each,
+)
 
-__all__ = ["NAMES", "Measurement", "RegionNeed", "Settings", "find", "measure", "measure_each"]
+__all__ = [
+    "NAMES",
+    "Measurement",
+    "RegionNeed",
+    "Settings",
+    "find",
+    "glance_each",
+    "measure",
+    "measure_each",
+]

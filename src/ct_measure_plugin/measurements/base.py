@@ -104,6 +104,16 @@ class Measurement(ABC):
         """
         return ()
 
+    def glance(
+        self, volume: Volume, regions: Sequence[Region], settings: Settings
+    ) -> Result | NotMeasured:
+        """Measure what can be told while a region moves: the same numbers, perhaps fewer of them.
+
+        A measurement that is slow beside the screen's 30 pictures a second overrides this with a
+        part of its answer that leaves out uncertainties and says so; the others measure in full.
+        """
+        return self.measure(volume, regions, settings)
+
     def check_regions(self, regions: Sequence[Region]) -> None:
         """Raise RegionError if the regions are not what this measurement takes."""
         if len(regions) < self.regions.at_least:

@@ -19,7 +19,7 @@ if TYPE_CHECKING:
     from ct_measure_plugin.physics.results import NotMeasured, Result
     from ct_measure_plugin.physics.volume import Volume
 
-__all__ = ["NAMES", "find", "measure", "measure_each", "settings_for"]
+__all__ = ["NAMES", "find", "glance_each", "measure", "measure_each", "settings_for"]
 
 #: Public name -> class, in the file of that name. Adding a measurement adds a line.
 _CLASSES: dict[str, str] = {
@@ -82,13 +82,40 @@ def measure_each(
 
     Always a tuple, whatever the number of regions.
     """
+    return _each(name, volume, regions, settings, moving=False)
+
+
+def glance_each(
+    name: str,
+    volume: Volume,
+    regions: Region | Sequence[Region] = (),
+    *,
+    settings: Settings | None = None,
+) -> tuple[Result | NotMeasured, ...]:
+    """Return what :func:`measure_each` does, for regions that are still moving.
+
+    The numbers are the same to the last bit; where they take long, uncertainties and the dearer
+    numbers are left out until the regions rest and :func:`measure_each` is asked.
+    """
+    return _each(name, volume, regions, settings, moving=True)
+
+
+def _each(
+    name: str,
+    volume: Volume,
+    regions: Region | Sequence[Region],
+    settings: Settings | None,
+    *,
+    moving: bool,
+) -> tuple[Result | NotMeasured, ...]:
     measurement = find(name)
     settings = measurement.settings_type() if settings is None else settings
+    ask = measurement.glance if moving else measurement.measure
     group = (regions,) if isinstance(regions, Region) else tuple(regions)
     measurement.check_regions(group)
     if measurement.regions.together or not group:
-        return (measurement.measure(volume, group, settings),)
-    return tuple(measurement.measure(volume, (region,), settings) for region in group)
+        return (ask(volume, group, settings),)
+    return tuple(ask(volume, (region,), settings) for region in group)
 
 
 def measure(

@@ -5,10 +5,12 @@ from __future__ import annotations
 from dataclasses import replace
 from typing import TYPE_CHECKING, ClassVar, Literal, cast
 
+import numpy as np
 from pydantic import Field
 
 from ct_measure_plugin.measurements.base import AREAS, Measurement, RegionNeed, Settings
-from ct_measure_plugin.measurements.gather import gather
+from ct_measure_plugin.measurements.gather import Gathered, gather
+from ct_measure_plugin.physics.region_glance import RegionGlance, region_glance
 from ct_measure_plugin.physics.region_statistics import RegionStatistics, region_statistics
 from ct_measure_plugin.physics.results import NotMeasured, Result
 
@@ -86,17 +88,9 @@ class MeasureRegionStatistics(Measurement):
     ) -> RegionStatistics | NotMeasured:
         """Measure one region."""
         wanted = cast("RegionStatisticsSettings", settings)
-        found = gather(volume, regions[0], rule=wanted.coverage)
+        found = self._pixels(volume, regions[0], wanted)
         if isinstance(found, NotMeasured):
             return found
-        count = int((found.weights > 0).sum())
-        if count < TOO_FEW_PIXELS:
-            return NotMeasured(
-                f"the region holds {count} pixel{'s' * (count != 1)};"
-                f" at least {TOO_FEW_PIXELS} are needed",
-                "draw it larger, or over more slices",
-                found.cautions,
-            )
         curves = wanted.along_z and len(found.slices) > 1
         result = region_statistics(
             found.values,
@@ -110,3 +104,31 @@ class MeasureRegionStatistics(Measurement):
             positions_mm=volume.positions_mm[found.slices] if curves else None,
         )
         return replace(result, cautions=(*found.cautions, *result.cautions))
+
+    def glance(
+        self, volume: Volume, regions: Sequence[Region], settings: Settings
+    ) -> RegionGlance | NotMeasured:
+        """Return one region's numbers without their uncertainties."""
+        found = self._pixels(volume, regions[0], cast("RegionStatisticsSettings", settings))
+        if isinstance(found, NotMeasured):
+            return found
+        result = region_glance(
+            found.values, found.weights, spacing_mm=found.spacing_mm, unit=volume.unit
+        )
+        return replace(result, cautions=(*found.cautions, *result.cautions))
+
+    def _pixels(
+        self, volume: Volume, region: Region, wanted: RegionStatisticsSettings
+    ) -> Gathered | NotMeasured:
+        found = gather(volume, region, rule=wanted.coverage)
+        if isinstance(found, NotMeasured):
+            return found
+        count = int(np.count_nonzero(found.weights))
+        if count < TOO_FEW_PIXELS:
+            return NotMeasured(
+                f"the region holds {count} pixel{'s' * (count != 1)};"
+                f" at least {TOO_FEW_PIXELS} are needed",
+                "draw it larger, or over more slices",
+                found.cautions,
+            )
+        return found

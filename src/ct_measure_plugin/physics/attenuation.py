@@ -211,6 +211,8 @@ class Material:
         Density, greater than 0.
     note : str
         Where composition and density come from, or what limits them.
+    density_uncertainty_g_cm3 : float
+        Standard uncertainty of the density, not negative.
 
     Examples
     --------
@@ -223,10 +225,15 @@ class Material:
     composition: str | tuple[tuple[str, float], ...]
     density_g_cm3: float
     note: str = field(default="", repr=False)
+    density_uncertainty_g_cm3: float = field(default=0.0, repr=False)
 
     def __post_init__(self) -> None:
         if not 0 < self.density_g_cm3 < math.inf:
             raise ArgumentError("density_g_cm3", "must be greater than 0", self.density_g_cm3)
+        if not 0 <= self.density_uncertainty_g_cm3 < math.inf:
+            raise ArgumentError(
+                "density_uncertainty_g_cm3", "must not be negative", self.density_uncertainty_g_cm3
+            )
 
     def mu(self, energy_kev: ArrayLike) -> FloatArray:
         """Return μ in cm⁻¹ at energies in keV."""
@@ -253,23 +260,25 @@ _BONE = (
 )
 _AIR = (("C", 0.000124), ("N", 0.755268), ("O", 0.231781), ("Ar", 0.012827))
 
+#: The densities' standard uncertainties are this project's choice for a piece whose maker's value
+#: is not known: 1 % or less for plastics, more where fillers or pressing change the density.
 _KNOWN = (
-    Material("air", _AIR, 0.001205, "dry, near sea level; NIST/Geant4 material list"),
-    Material("water", "H2O", 1.0, "the reference; 0.9982 g/cm³ at 20 °C reads -1.8 HU"),
-    Material("polymethylpentene", "C6H12", 0.83, _TYPICAL),
-    Material("polypropylene", "C3H6", 0.90, _LIBRARY),
-    Material("LDPE", "C2H4", 0.92, _TYPICAL),
-    Material("polystyrene", "C8H8", 1.06, _LIBRARY),
-    Material("nylon-6", "C6H11NO", 1.14, _LIBRARY),
-    Material("polycarbonate", "C16H14O3", 1.20, _LIBRARY),
-    Material("PMMA", "C5H8O2", 1.19, _LIBRARY),
-    Material("PET", "C10H8O4", 1.38, _TYPICAL),
-    Material("POM", "CH2O", 1.42, _TYPICAL),
-    Material("PTFE", "C2F4", 2.16, _TYPICAL),
-    Material("rigid PVC", "C2H3Cl", 1.38, _TYPICAL + "; fillers change it"),
-    Material("aluminium", "Al", 2.699, _LIBRARY),
-    Material("copper", "Cu", 8.96, _LIBRARY),
-    Material("cortical bone", _BONE, 1.92, "ICRU 44 composition, from memory"),
+    Material("air", _AIR, 0.001205, "dry, near sea level; NIST/Geant4 material list", 0.00004),
+    Material("water", "H2O", 1.0, "the reference; 0.9982 g/cm³ at 20 °C reads -1.8 HU", 0.001),
+    Material("polymethylpentene", "C6H12", 0.83, _TYPICAL, 0.01),
+    Material("polypropylene", "C3H6", 0.90, _LIBRARY, 0.01),
+    Material("LDPE", "C2H4", 0.92, _TYPICAL, 0.01),
+    Material("polystyrene", "C8H8", 1.06, _LIBRARY, 0.01),
+    Material("nylon-6", "C6H11NO", 1.14, _LIBRARY, 0.01),
+    Material("polycarbonate", "C16H14O3", 1.20, _LIBRARY, 0.01),
+    Material("PMMA", "C5H8O2", 1.19, _LIBRARY, 0.01),
+    Material("PET", "C10H8O4", 1.38, _TYPICAL, 0.01),
+    Material("POM", "CH2O", 1.42, _TYPICAL, 0.01),
+    Material("PTFE", "C2F4", 2.16, _TYPICAL, 0.02),
+    Material("rigid PVC", "C2H3Cl", 1.38, _TYPICAL + "; fillers change it", 0.03),
+    Material("aluminium", "Al", 2.699, _LIBRARY, 0.01),
+    Material("copper", "Cu", 8.96, _LIBRARY, 0.03),
+    Material("cortical bone", _BONE, 1.92, "ICRU 44 composition, from memory", 0.03),
 )
 
 #: Materials by name. Densities are defaults: they dominate the error of an expected CT number

@@ -103,4 +103,9 @@ KINDS: dict[str, CautionKind] = {
     "rod-reads-as-another": _warning("A rod reads as another material"),
     "one-energy-fails": _warning("No single energy describes the rods"),
     "one-rod-decides": _note("One rod decides the line"),
+    "scale-off": _warning("The HU scale is off"),
+    "rod-left-out": _warning("A rod was left out"),
+    "rod-uneven": _warning("A rod's CT number changes from its middle to its border"),
+    "beam-disagrees": _warning("Rods and beam quality disagree about the energy"),
+    "mu-scale": _note("Attenuation converted from HU at one energy"),
 }

@@ -8,79 +8,42 @@ scanner behave as?).
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass, field
-from typing import TYPE_CHECKING
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
+from ct_measure_plugin.errors import ArgumentError
 from ct_measure_plugin.physics.attenuation import MATERIALS, Material
 from ct_measure_plugin.physics.results import Caution, Curve, NotMeasured, Quantity, Result
+from ct_measure_plugin.physics.rod_advice import VAGUEST_ENERGY_KEV, refusal_of, too_vague
 from ct_measure_plugin.physics.rod_fit import (
     ENERGIES_KEV,
     LineFit,
     Rods,
+    ScaleFit,
+    best_correlation,
     best_line,
     best_scale,
-    mu_at,
-    mu_of,
-    steepness,
-    water_mu,
+    energy_interval,
 )
+from ct_measure_plugin.physics.rod_readings import Readings, RodReading, readings_of
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
 
-    from numpy.typing import ArrayLike, NDArray
-
-    FloatArray = NDArray[np.float64]
+    from numpy.typing import ArrayLike
 
 __all__ = ["CtNumberLine", "RodReading", "ct_number_line"]
-
-#: Fewer materials leave no residual to judge the line and the energy by.
-FEWEST_MATERIALS = 4
-
-#: A narrower span of CT numbers cannot fix a slope (methods of the trade; no standard).
-NARROWEST_SPAN_HU = 500.0
-
-#: An energy less certain than this says nothing about a beam.
-VAGUEST_ENERGY_KEV = 10.0
-
-#: Residual, in standard uncertainties, beyond which a rod is named. With ten rods drawn from a
-#: normal distribution one in 1,600 lines would name one by chance.
-OUTLIER_SIGMA = 4.0
 
 #: Leverage beyond which one rod decides the line nearly alone.
 DECIDING_LEVERAGE = 0.7
 
-#: Probability of the misfit below which one energy is said not to describe the rods.
+#: Probability of chi-squared below which a model is said not to describe the rods.
 MISFIT_PROBABILITY = 0.01
 
-
-@dataclass(frozen=True, slots=True)
-class RodReading:
-    """One rod: what it should be, what it read, and what the line leaves.
-
-    Attributes
-    ----------
-    name : str
-        The material it was entered as.
-    read, expected, residual : Quantity
-        CT number measured; on the line at the effective energy; their difference. HU.
-    mu : Quantity
-        Attenuation at the effective energy, cm⁻¹, with the density's uncertainty.
-    sigma : float
-        The residual in units of its own standard uncertainty.
-    reads_as : str
-        For an outlier, the material whose CT number it has; else "".
-    """
-
-    name: str
-    read: Quantity
-    expected: Quantity
-    residual: Quantity
-    mu: Quantity
-    sigma: float
-    reads_as: str = ""
+#: Points of the drawn line.
+_LINE_POINTS = 101
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -90,37 +53,70 @@ class CtNumberLine(Result):
     Attributes
     ----------
     effective_energy : Quantity
-        Energy of the best straight line with slope and intercept free, keV.
-    scale_energy : Quantity
+        Energy of the best straight line, rods weighted by their uncertainty, keV.
+    energy_low, energy_high : Quantity or None
+        Ends of the 95 % interval of the effective energy, keV; it is not symmetric where the energy
+        is uncertain, because μ changes less at higher energies. None for an end beyond 30 or
+        140 keV.
+    correlation_energy : Quantity or None
+        Energy of the largest correlation of CT number and μ, every rod counting alike, keV.
+    scale_energy : Quantity or None
         Energy at which the rods agree best with the definition of the HU scale, nothing else free,
-        keV. Where the two differ, the scale itself is off.
+        keV. Where it differs from the effective energy, the scale itself is off.
+    beam_energy : Quantity or None
+        Effective energy from the beam's quality (tube voltage with half-value layer or
+        filtration), where that was given, keV.
     slope : Quantity
         HU per cm⁻¹; 1000/μ_w by definition.
     intercept : Quantity
         CT number at μ = 0, HU; -1000 by definition.
+    contrast_scale : Quantity
+        μ per HU, cm⁻¹/HU: the inverse of the slope.
     scale_factor : Quantity
         slope · μ_w / 1000: 1 where the scale is right.
+    water_equivalent_factor : Quantity
+        The μ that reads 0 HU, over μ_w: 1 where the scale is right.
     water_offset : Quantity
         CT number of water on the line, HU; 0 where the scale is right.
     largest_residual : Quantity
         The largest distance of a rod from the line, HU.
-    line, residuals, energy_curve : Curve
-        CT number against μ; residual against μ; misfit (chi-squared) against energy.
+    correlation : Quantity or None
+        Pearson's r of CT number and μ at the correlation energy.
+    reduced_chi_squared : Quantity
+        Chi-squared of the line over its degrees of freedom; 1 is expected.
+    points : Curve
+        CT number read against μ at the effective energy.
+    line : Curve
+        The fitted line at that energy, with its standard uncertainty.
+    residuals : Curve
+        Distance from the line against μ.
+    energy_curve, correlation_curve : Curve
+        Chi-squared of the best line, and the correlation, at every energy.
     rods : tuple of RodReading
         One a rod, in the order given.
     """
 
     effective_energy: Quantity
-    scale_energy: Quantity
+    energy_low: Quantity | None
+    energy_high: Quantity | None
+    correlation_energy: Quantity | None
+    scale_energy: Quantity | None
+    beam_energy: Quantity | None = None
     slope: Quantity
     intercept: Quantity
+    contrast_scale: Quantity
     scale_factor: Quantity
+    water_equivalent_factor: Quantity
     water_offset: Quantity
     largest_residual: Quantity
+    correlation: Quantity | None
+    reduced_chi_squared: Quantity
+    points: Curve
     line: Curve
     residuals: Curve
     energy_curve: Curve
-    rods: tuple[RodReading, ...] = field(default=())
+    correlation_curve: Curve | None
+    rods: tuple[RodReading, ...] = ()
 
 
 def ct_number_line(
@@ -128,7 +124,10 @@ def ct_number_line(
     materials: Sequence[Material],
     *,
     hu_uncertainty: ArrayLike,
-    density_uncertainty_g_cm3: ArrayLike = 0.0,
+    density_uncertainty_g_cm3: ArrayLike | None = None,
+    names: Sequence[str] | None = None,
+    library: Sequence[Material] | None = None,
+    water: Material | None = None,
 ) -> CtNumberLine | NotMeasured:
     """Fit CT numbers of known materials against their attenuation, and find the energy.
 
@@ -140,8 +139,14 @@ def ct_number_line(
         Composition and density of each.
     hu_uncertainty : array, shape (n,) or float
         Standard uncertainty of each CT number, HU, greater than 0.
-    density_uncertainty_g_cm3 : array, shape (n,) or float
-        Standard uncertainty of each density.
+    density_uncertainty_g_cm3 : array, shape (n,) or float, optional
+        Standard uncertainty of each density; by default the materials' own.
+    names : sequence of str, optional
+        What the rods are called; by default by their material.
+    library : sequence of Material, optional
+        Materials that an outlier is compared with and that may be recommended.
+    water : Material, optional
+        What the scale takes for water; by default of density 1 g/cm³.
 
     Returns
     -------
@@ -149,11 +154,17 @@ def ct_number_line(
         NotMeasured for fewer than four different materials, a span under 500 HU, or rods that do
         not fix an energy; the remedy names the material that would help most.
 
+    Raises
+    ------
+    ArgumentError
+        If the numbers of rods disagree or an uncertainty is out of range.
+
     Notes
     -----
     For every energy the line ``H = a + b μ(E)`` is fitted with weights ``1/u²``, ``u² = u_H² +
-    (b μ/ρ u_ρ)²``; the energy of least chi-squared is refined on a parabola, and its uncertainty is
-    that of the joint least-squares problem in a, b and E [1]_, [2]_.
+    (b μ/ρ u_ρ)²``; the energy of least chi-squared is refined, and its uncertainty is that of the
+    joint least-squares problem in a, b and E [1]_, [2]_. Where chi-squared is too large for chance
+    (1 %), all uncertainties are multiplied by the root of chi-squared per degree of freedom.
 
     References
     ----------
@@ -163,139 +174,64 @@ def ct_number_line(
 
     Examples
     --------
-    >>> names = ("air", "LDPE", "polystyrene", "PMMA", "POM", "PTFE")
-    >>> rods = [MATERIALS[name] for name in names]
+    >>> rods = [MATERIALS[name] for name in ("air", "LDPE", "polystyrene", "PMMA", "POM", "PTFE")]
     >>> found = ct_number_line([rod.hu(70.0) for rod in rods], rods, hu_uncertainty=1.0)
     >>> round(found.effective_energy.value, 2), round(found.scale_factor.value, 4)
     (70.0, 1.0)
     """
-    rods = Rods.checked(hu, materials, hu_uncertainty, density_uncertainty_g_cm3)
-    refusal = _refusal(rods)
+    listed = tuple(MATERIALS.values()) if library is None else tuple(library)
+    rods = Rods.checked(hu, materials, hu_uncertainty, density_uncertainty_g_cm3, water)
+    called = [m.name for m in rods.materials] if names is None else list(names)
+    if len(called) != len(rods.hu):
+        raise ArgumentError("names", f"must name {len(rods.hu)} rods", len(called))
+    refusal = refusal_of(rods, listed)
     if refusal is not None:
         return refusal
     fit = best_line(rods)
+    if fit is None or fit.u_energy > VAGUEST_ENERGY_KEV:
+        return too_vague(rods, listed, None if fit is None else fit.u_energy)
+    readings = readings_of(rods, fit, called, listed)
     scale = best_scale(rods)
-    if fit is None or scale is None or fit.u_energy > VAGUEST_ENERGY_KEV:
-        how = "" if fit is None else f" (uncertainty {fit.u_energy:.0f} keV)"
-        return NotMeasured(
-            f"these materials do not fix an effective energy{how}",
-            f"add a rod of {_most_helpful(rods)}",
-        )
-    return _result(rods, fit, scale)
+    cautions = _cautions(rods, fit, scale, readings)
+    return _result(rods, fit, scale, readings.rods, cautions)
 
 
-def _refusal(rods: Rods) -> NotMeasured | None:
-    distinct = len({m.composition for m in rods.materials})
-    if distinct < FEWEST_MATERIALS:
-        return NotMeasured(
-            f"{distinct} different materials were given; at least {FEWEST_MATERIALS} are needed",
-            "measure more rods, for example water, LDPE, PMMA and PTFE",
-        )
-    span = float(np.ptp(rods.hu))
-    if span < NARROWEST_SPAN_HU:
-        return NotMeasured(
-            f"the rods span {span:.0f} HU; at least {NARROWEST_SPAN_HU:.0f} are needed",
-            "add air and a dense plastic such as PTFE",
-        )
-    return None
-
-
-def _most_helpful(rods: Rods) -> str:
-    """Return the library's material that would fix the energy best, by the fit's covariance."""
-    have = {m.composition for m in rods.materials}
-    energy = 70.0
-    slope = 1000.0 / float(water_mu(energy))
-    best, least = "PTFE", math.inf
-    for candidate in MATERIALS.values():
-        if candidate.composition in have or candidate.name == "copper":
-            continue
-        mu, steep = mu_at(
-            Rods(rods.hu, rods.u_hu, rods.u_rho, (*rods.materials, candidate), rods.table), energy
-        )
-        doubt = np.append(rods.u_hu, float(np.median(rods.u_hu)))
-        jacobian = np.stack([np.ones_like(mu), mu, slope * steep], axis=1) / doubt[:, None]
-        normal = jacobian.T @ jacobian
-        spread = float(np.linalg.pinv(normal)[2, 2])
-        if spread < least:
-            best, least = candidate.name, spread
-    return best
-
-
-def _reads_as(value: float, line: FloatArray, energy: float, entered: Material) -> str:
-    """Return the library's material whose CT number on this line lies nearest to a reading."""
-    candidates = [m for m in MATERIALS.values() if m.composition != entered.composition]
-    distance = [abs(line[0] + line[1] * float(mu_of(m, energy)) - value) for m in candidates]
-    nearest = candidates[int(np.argmin(distance))]
-    return f"{nearest.density_g_cm3:g} g/cm³ {nearest.name}"
-
-
-def _readings(rods: Rods, fit: LineFit) -> tuple[RodReading, ...]:
-    residual = rods.hu - fit.parameters[0] - fit.parameters[1] * fit.mu
-    found = []
-    for k, entered in enumerate(rods.materials):
-        sigma, reads_as = float(residual[k] / fit.sigma[k]), ""
-        alone = best_line(rods.without(k)) if len(rods.hu) > FEWEST_MATERIALS else None
-        if alone is not None:
-            mu, steep = float(mu_of(entered, alone.energy)), steepness(entered, alone.energy)
-            own = rods.sigma(fit.mu, float(alone.parameters[1]))[k]
-            row = np.array([1.0, mu, float(alone.parameters[1]) * steep])
-            spread = math.sqrt(own**2 + float(row @ alone.covariance @ row))
-            sigma = float(rods.hu[k] - alone.parameters[0] - alone.parameters[1] * mu) / spread
-            if abs(sigma) > OUTLIER_SIGMA:
-                reads_as = _reads_as(rods.hu[k], alone.parameters, alone.energy, entered)
-        expected = float(rods.hu[k] - residual[k])
-        density_part = fit.mu[k] / entered.density_g_cm3 * rods.u_rho[k]
-        found.append(
-            RodReading(
-                entered.name,
-                Quantity(float(rods.hu[k]), "HU", float(rods.u_hu[k])),
-                Quantity(expected, "HU", float(fit.parameters[1] * density_part)),
-                Quantity(float(residual[k]), "HU", float(fit.sigma[k])),
-                Quantity(float(fit.mu[k]), "cm⁻¹", float(density_part)),
-                sigma,
-                reads_as,
-            )
-        )
-    return _only_the_worst(found)
-
-
-def _only_the_worst(found: list[RodReading]) -> tuple[RodReading, ...]:
-    """Name only the rod farthest out: one wrong rod pulls the line and drags others with it."""
-    worst = max(range(len(found)), key=lambda k: abs(found[k].sigma))
-    return tuple(
-        rod
-        if k == worst
-        else RodReading(rod.name, rod.read, rod.expected, rod.residual, rod.mu, rod.sigma)
-        for k, rod in enumerate(found)
-    )
-
-
-def _cautions(rods: Rods, fit: LineFit, readings: tuple[RodReading, ...]) -> tuple[Caution, ...]:
+def _surplus(least: float, degrees: int) -> float:
+    """Return by what uncertainties must grow: 1 unless chi-squared is too large for chance."""
     from scipy import stats
 
-    found = []
-    for number, rod in enumerate(readings, start=1):
-        if rod.reads_as:
-            found.append(
-                Caution(
-                    "rod-reads-as-another",
-                    f"Rod {number} reads as {rod.reads_as}, entered as {rod.name}"
-                    f" ({rod.sigma:+.0f} standard uncertainties from the others' line).",
-                    "Check which rod it is, and its density.",
-                )
-            )
+    if degrees < 1 or stats.chi2.sf(least, degrees) >= MISFIT_PROBABILITY:
+        return 1.0
+    return math.sqrt(least / degrees)
+
+
+def _cautions(
+    rods: Rods, fit: LineFit, scale: ScaleFit | None, readings: Readings
+) -> tuple[Caution, ...]:
+    found = [
+        _outlier(number, rod, readings.without)
+        for number, rod in enumerate(readings.rods, 1)
+        if rod.reads_as
+    ]
     degrees = len(rods.hu) - 3
-    least = float(
-        np.sum(((rods.hu - fit.parameters[0] - fit.parameters[1] * fit.mu) / fit.sigma) ** 2)
+    others_agree = readings.without is not None and (
+        _surplus(readings.without.least, degrees - 1) == 1
     )
-    if degrees > 0 and stats.chi2.sf(least, degrees) < MISFIT_PROBABILITY:
+    if _surplus(fit.least, degrees) > 1 and not others_agree:
+        found.append(_misfit(fit, degrees))
+    if scale is None or _surplus(scale.least - fit.least, 2) > 1:
         found.append(
             Caution(
-                "one-energy-fails",
-                f"No single energy describes the rods: chi-squared {least:.0f} for {degrees}"
-                " degrees of freedom.",
-                "Leave out materials of high atomic number, or check densities: a beam of many"
-                " energies hardens on its way through dense rods.",
+                "scale-off",
+                "The rods do not lie on the line that defines the HU scale"
+                + (
+                    "."
+                    if scale is None
+                    else f": chi-squared is larger by {scale.least - fit.least:.0f} with slope and"
+                    " intercept held than with both free."
+                ),
+                "See the scale factor and the CT number of water on the line; calibrate the"
+                " scanner on water, and check densities.",
             )
         )
     k = int(np.argmax(fit.leverage))
@@ -303,7 +239,7 @@ def _cautions(rods: Rods, fit: LineFit, readings: tuple[RodReading, ...]) -> tup
         found.append(
             Caution(
                 "one-rod-decides",
-                f"The {rods.materials[k].name} rod decides the line nearly alone (leverage"
+                f"The {readings.rods[k].name} rod decides the line nearly alone (leverage"
                 f" {fit.leverage[k]:.2f}).",
                 "Judge by the residuals, not by a correlation coefficient.",
             )
@@ -311,32 +247,116 @@ def _cautions(rods: Rods, fit: LineFit, readings: tuple[RodReading, ...]) -> tup
     return tuple(found)
 
 
-def _result(rods: Rods, fit: LineFit, scale: tuple[float, float]) -> CtNumberLine:
-    intercept, slope = (float(value) for value in fit.parameters)
-    water = float(water_mu(fit.energy))
-    steep = steepness(MATERIALS["water"], fit.energy)
-    rows = {
-        "scale": np.array([0.0, water, slope * steep]) / 1000.0,
-        "offset": np.array([1.0, water, slope * steep]),
-    }
-    u = {key: math.sqrt(float(row @ fit.covariance @ row)) for key, row in rows.items()}
-    readings = _readings(rods, fit)
-    residual = rods.hu - intercept - slope * fit.mu
-    order = np.argsort(fit.mu)
+def _misfit(fit: LineFit, degrees: int) -> Caution:
+    return Caution(
+        "one-energy-fails",
+        f"No single energy describes the rods: chi-squared {fit.least:.0f} for {degrees} degree"
+        f"{'s' * (degrees != 1)} of freedom. All uncertainties were multiplied by"
+        f" {_surplus(fit.least, degrees):.1f}.",
+        "Leave out materials of high atomic number, or check densities: a beam of many energies"
+        " hardens on its way through dense rods.",
+    )
+
+
+def _outlier(number: int, rod: RodReading, without: LineFit | None) -> Caution:
+    energy = ""
+    if without is not None:
+        energy = " Without it the energy is " + str(
+            Quantity(without.energy, "keV", without.u_energy)
+        )
+    return Caution(
+        "rod-reads-as-another",
+        f"Rod {number} reads as {rod.reads_as}, entered as {rod.material}"
+        f" ({rod.sigma:+.0f} standard uncertainties from the others' line; as {rod.material} its"
+        f" density would be {rod.density_read.value:.3f} g/cm³).{energy}" + "." * bool(energy),
+        "Check which rod it is, and its density.",
+    )
+
+
+def _result(
+    rods: Rods,
+    fit: LineFit,
+    scale: ScaleFit | None,
+    readings: tuple[RodReading, ...],
+    cautions: tuple[Caution, ...],
+) -> CtNumberLine:
+    degrees = len(rods.hu) - 3
+    surplus = _surplus(fit.least, degrees)
+    fit = fit.widened(surplus)
+    low, high = energy_interval(fit, surplus)
+    residual = rods.hu - fit.at(fit.mu)
+    order = np.argsort(fit.mu, kind="stable")
+    mu, sigma = fit.mu[order], fit.sigma[order]
     worst = int(np.argmax(np.abs(residual)))
+    along = np.linspace(min(0.0, mu[0]), mu[-1], _LINE_POINTS)
+    rows = np.stack([np.ones_like(along), along], axis=1)
+    band = np.sqrt(np.einsum("ij,jk,ik->i", rows, fit.at_energy, rows))
+    axis = ("μ", "cm⁻¹")
+    scale_energy = None
+    if scale is not None:
+        wider = _surplus(scale.least, len(rods.hu) - 1)
+        scale_energy = Quantity(scale.energy, "keV", scale.u_energy * wider)
     return CtNumberLine(
         effective_energy=Quantity(fit.energy, "keV", fit.u_energy),
-        scale_energy=Quantity(scale[0], "keV", scale[1]),
-        slope=Quantity(slope, "HU cm", math.sqrt(fit.covariance[1, 1])),
-        intercept=Quantity(intercept, "HU", math.sqrt(fit.covariance[0, 0])),
-        scale_factor=Quantity(slope * water / 1000.0, "", u["scale"]),
-        water_offset=Quantity(intercept + slope * water, "HU", u["offset"]),
+        energy_low=None if low is None else Quantity(low, "keV", 0.0),
+        energy_high=None if high is None else Quantity(high, "keV", 0.0),
+        scale_energy=scale_energy,
+        **_line_numbers(rods, fit),
         largest_residual=Quantity(abs(float(residual[worst])), "HU", float(fit.sigma[worst])),
-        line=Curve(fit.mu[order], rods.hu[order], fit.sigma[order], "μ", "cm⁻¹", "CT number", "HU"),
-        residuals=Curve(
-            fit.mu[order], residual[order], fit.sigma[order], "μ", "cm⁻¹", "Residual", "HU"
-        ),
+        reduced_chi_squared=Quantity(fit.least / degrees, "", math.sqrt(2.0 / degrees)),
+        points=Curve(mu, rods.hu[order], sigma, *axis, "CT number", "HU"),
+        line=Curve(along, fit.at(along), band, *axis, "CT number", "HU"),
+        residuals=Curve(mu, residual[order], sigma, *axis, "Residual", "HU"),
         energy_curve=Curve(ENERGIES_KEV, fit.chi2, None, "Energy", "keV", "Chi-squared", ""),
+        **_correlation(rods),
         rods=readings,
-        cautions=_cautions(rods, fit, readings),
+        cautions=cautions,
     )
+
+
+def _line_numbers(rods: Rods, fit: LineFit) -> dict[str, Any]:
+    """Return slope and intercept and what follows from them, each with its uncertainty."""
+    intercept, slope = (float(value) for value in fit.parameters)
+    water = rods.water_mu(fit.energy)
+    steep = (rods.water_mu(fit.energy + 0.25) - rods.water_mu(fit.energy - 0.25)) / 0.5
+
+    def doubt(*row: float) -> float:
+        vector = np.array(row)
+        return math.sqrt(float(vector @ fit.covariance @ vector))
+
+    zero = -intercept / slope
+    return {
+        "slope": Quantity(slope, "HU cm", doubt(0, 1, 0)),
+        "intercept": Quantity(intercept, "HU", doubt(1, 0, 0)),
+        "contrast_scale": Quantity(1.0 / slope, "cm⁻¹/HU", doubt(0, 1.0 / slope**2, 0)),
+        "scale_factor": Quantity(
+            slope * water / 1000.0, "", doubt(0, water / 1000.0, slope * steep / 1000.0)
+        ),
+        "water_equivalent_factor": Quantity(
+            zero / water,
+            "",
+            doubt(-1.0 / (slope * water), -zero / (slope * water), -zero * steep / water**2),
+        ),
+        "water_offset": Quantity(intercept + slope * water, "HU", doubt(1.0, water, slope * steep)),
+    }
+
+
+def _correlation(rods: Rods) -> dict[str, Any]:
+    """Return the energy of best correlation, r there, and r over energy."""
+    found = best_correlation(rods)
+    if found is None:
+        return dict.fromkeys(("correlation_energy", "correlation", "correlation_curve"))
+    energy, r, curve = found
+    mu = rods.mu(energy)
+    design = np.stack([np.ones_like(mu), mu], axis=1)
+    line, *_ = np.linalg.lstsq(design, rods.hu, rcond=None)
+    residual, sigma = rods.hu - design @ line, rods.sigma(mu, float(line[1]))
+    total = float(np.sum((rods.hu - rods.hu.mean()) ** 2))
+    doubt = math.sqrt(float(np.sum((residual * sigma) ** 2 + sigma**4 / 2))) / total
+    three = np.column_stack([design, line[1] * rods.steepness(energy)])
+    u_energy = float(np.linalg.norm(np.linalg.pinv(three)[2] * sigma))
+    return {
+        "correlation_energy": Quantity(energy, "keV", u_energy),
+        "correlation": Quantity(r, "", doubt),
+        "correlation_curve": Curve(ENERGIES_KEV, curve, None, "Energy", "keV", "r", ""),
+    }

@@ -17,12 +17,10 @@ if TYPE_CHECKING:
 
 __all__ = ["add_output_options", "deliver", "print_records"]
 
-#: Up to this many samples a curve is a list to be read.
-SHORT_CURVE = 10
-
 
 def add_output_options(parser: argparse.ArgumentParser) -> None:
     """Add the options that say where records go."""
+    parser.add_argument("--all", action="store_true", help="print every number, not the chief ones")
     parser.add_argument("--json", action="store_true", help="print the records as JSON")
     parser.add_argument("--csv", metavar="FILE", help="write a table, one row a quantity")
     parser.add_argument("--save", metavar="FILE", help="write the records as JSON")
@@ -55,12 +53,15 @@ def deliver(records: Sequence[Record], arguments: argparse.Namespace, plan: Plan
         data = [record.model_dump(mode="json", exclude={"preview"}) for record in records]
         print(json.dumps(data, indent=1, ensure_ascii=False))
     else:
-        print_records(records)
+        print_records(records, everything=arguments.all)
     return _code(records, plan, quiet=arguments.json)
 
 
-def print_records(records: Sequence[Record]) -> None:
-    """Print each record in words, its refusals and warnings with it."""
+def print_records(records: Sequence[Record], *, everything: bool = False) -> None:
+    """Print each record in words, its refusals and warnings with it.
+
+    Every number, or those worth a column in a narrow table.
+    """
     from ct_measure_plugin.measurements import find
     from ct_measure_plugin.physics.results import (
         NotMeasured,
@@ -76,23 +77,27 @@ def print_records(records: Sequence[Record]) -> None:
             print(f"  {answer}")
         else:
             found = quantities_of(answer)
-            order = [name for name in find(record.measurement).columns if name in found]
-            order += [name for name in found if name not in order]
+            measurement = find(record.measurement)
+            order = [name for name in measurement.columns if name in found]
+            rest = [name for name in found if name not in order]
+            order += rest if everything else []
             width = max(len(label_of(name)) for name in order) if order else 0
             for name in order:
                 print(f"  {label_of(name):<{width}}  {found[name]}")
             for name, curve in curves_of(answer).items():
-                _print_short_curve(label_of(name), curve)
+                if name in measurement.lists:
+                    _print_list(label_of(name), curve)
+            if rest and not everything:
+                print(f"  and {len(rest)} more, in the files and with --all")
         for caution in answer.cautions:
             print(f"  {caution.kind.level}: {caution}")
 
 
-def _print_short_curve(label: str, curve: Curve) -> None:
-    """Print a curve that is rather a list, such as percentiles; long ones belong in the files."""
-    if len(curve.x) <= SHORT_CURVE:
-        unit = f" {curve.x_unit}".rstrip()
-        rows = ", ".join(f"{x:g}{unit}: {y}" for x, y in curve.samples())
-        print(f"  {label} ({curve.x_name or 'number'}): {rows}")
+def _print_list(label: str, curve: Curve) -> None:
+    """Print a curve that is rather a list of numbers, such as percentiles."""
+    unit = f" {curve.x_unit}".rstrip()
+    rows = ", ".join(f"{x:g}{unit}: {y}" for x, y in curve.samples())
+    print(f"  {label} ({curve.x_name or 'number'}): {rows}")
 
 
 def _code(records: Sequence[Record], plan: Plan | None, *, quiet: bool) -> int:

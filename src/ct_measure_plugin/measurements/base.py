@@ -73,7 +73,9 @@ class Measurement(ABC):
     regions : RegionNeed
         The regions it takes.
     columns : tuple of str
-        Result fields worth a column in a narrow table, in order.
+        Quantities worth a column in a narrow table, in order.
+    lists : tuple of str
+        Curves that are lists of a few asked-for numbers, to be read beside the columns.
     """
 
     name: ClassVar[str]
@@ -83,6 +85,7 @@ class Measurement(ABC):
     result_type: ClassVar[type[Result]]
     regions: ClassVar[RegionNeed]
     columns: ClassVar[tuple[str, ...]]
+    lists: ClassVar[tuple[str, ...]] = ()
 
     @abstractmethod
     def measure(

@@ -82,6 +82,7 @@ class MeasureRegionStatistics(Measurement):
         "maximum",
         "median",
     )
+    lists: ClassVar[tuple[str, ...]] = ("percentiles", "shares")
 
     def measure(
         self, volume: Volume, regions: Sequence[Region], settings: Settings

@@ -14,7 +14,13 @@ from ct_measure_plugin.physics.edge_checks import EdgeFacts, edge_cautions, edge
 from ct_measure_plugin.physics.edge_line import EdgeLine, locate_edge
 from ct_measure_plugin.physics.edge_noise import NoiseSpectrum, residual_spectrum
 from ct_measure_plugin.physics.edge_slices import check_slices
-from ct_measure_plugin.physics.esf_measure import EsfData, Method, jacobian_doubt, measure_esf
+from ct_measure_plugin.physics.esf_measure import (
+    EsfData,
+    Method,
+    jacobian_doubt,
+    measure_esf,
+    noise_numbers,
+)
 from ct_measure_plugin.physics.mtf_curve import (
     MtfResult,
     checked_spacing,
@@ -64,7 +70,7 @@ class EdgeMtf(MtfResult):
     position: Quantity
     contrast: Quantity
     noise: Quantity
-    contrast_to_noise: Quantity
+    contrast_to_noise: Quantity | NotMeasured
     width: Quantity
     overshoot: Quantity
     esf: Curve
@@ -162,7 +168,8 @@ def edge_mtf(
             "measure a stronger contrast, a longer edge, or more slices",
         )
     cautions = [*edge_cautions(facts), *moved, *cautions]
-    fields: dict[str, Any] = numbers | _line_numbers(line, facts, spectrum, unit)
+    fields: dict[str, Any] = numbers | _line_numbers(line, facts, spectrum)
+    fields |= noise_numbers(facts.noise, spectrum.independent(values.shape), shape.contrast)
     return EdgeMtf(
         **fields,
         width=shape.width,
@@ -225,9 +232,7 @@ def _data(facts: EdgeFacts, line: EdgeLine, spectrum: NoiseSpectrum) -> EsfData:
     )
 
 
-def _line_numbers(
-    line: EdgeLine, facts: EdgeFacts, spectrum: NoiseSpectrum, unit: str
-) -> dict[str, object]:
+def _line_numbers(line: EdgeLine, facts: EdgeFacts, spectrum: NoiseSpectrum) -> dict[str, object]:
     u_offset, u_angle = (float(u) for u in jacobian_doubt(line.jacobian, spectrum))
     screen = -math.degrees(line.angle)  # +y points down, angles count upwards
     ny, nx = facts.values.shape
@@ -238,15 +243,9 @@ def _line_numbers(
     foot = middle + line.offset * normal
     near = np.abs(line.distance) <= 2 * line.sigma
     ends = [foot + float(t) * along for t in (line.along[near].min(), line.along[near].max())]
-    noise = facts.noise
-    nu = max(facts.values.size - 10.0, 1.0)
-    contrast = abs(facts.contrast)
     return {
         "angle": Quantity(facts.tilt, "°", math.degrees(u_angle)),
         "normal_direction": Quantity(screen % 180.0, "°", math.degrees(u_angle)),
         "position": Quantity(line.offset, "mm", u_offset),
-        "noise": Quantity(noise, unit, noise / math.sqrt(2 * nu)),
-        "contrast": Quantity(contrast, unit),
-        "contrast_to_noise": Quantity(contrast / noise if noise > 0 else 0.0, ""),
         "ends_mm": tuple((float(p[0]), float(p[1])) for p in ends),
     }

@@ -51,6 +51,17 @@ class NoiseSpectrum:
         found: Floats = np.interp(frequency, self.frequency, self.power)
         return found
 
+    def independent(self, shape: tuple[int, ...]) -> float:
+        """Return how many independent pixels tell the SD of an image of a shape as well.
+
+        ``ν = (∬S)² A / ∬S²`` (Wagner 1979), summed over the frequencies of the pixel grid.
+        """
+        ny, nx = shape[-2:]
+        dy, dx = self.spacing_mm
+        fy, fx = fft.fftfreq(ny, dy), fft.fftfreq(nx, dx)
+        power = self.at(np.hypot(fy[:, None], fx[None, :]))
+        return ny * nx * float(power.mean()) ** 2 / float(np.mean(power**2))
+
     def along(self, frequency: Floats, normals: Floats, blur: float) -> Floats:
         """Return the power along edge normals, averaged over them, folded by the pixel grid.
 

@@ -66,6 +66,38 @@ class EsfFit:
     gradient: float
     _mix: Floats
     _parts: tuple[_Part, ...]
+    _nuisance: _Nuisance
+
+    @property
+    def mix(self) -> Floats:
+        """Weights of the dictionary's compressed functions, shape (r,)."""
+        return self._mix
+
+    def doubt(self, rows: Floats, free: Floats | None = None) -> Floats:
+        """Return the standard uncertainty of linear functions of the fit, shape (k,).
+
+        Parameters
+        ----------
+        rows : ndarray, shape (k, r)
+            Each function in terms of the compressed functions' weights.
+        free : ndarray, shape (k, 3), optional
+            In terms of level at d = 0, shift (as the height of a bump) and slope per mm too.
+        """
+        nuisance = self._nuisance
+        total = np.zeros(len(rows))
+        effective = rows
+        if free is not None:
+            across = free[:, : len(nuisance.inverse)] * nuisance.unit @ nuisance.inverse
+            total += np.sum(across**2, axis=1)
+            effective = rows - across @ nuisance.coupling
+        columns = dictionary().columns
+        mean = effective @ self._mix
+        for part in self._parts:
+            jacobian = effective @ columns[:, part.member, :]
+            spread = np.sum((jacobian @ part.covariance) * jacobian, axis=1)
+            total += part.weight * (spread + (jacobian @ part.coefficients - mean) ** 2)
+        found: Floats = np.sqrt(total)
+        return found
 
     def esf(self, d: Floats) -> Floats:
         """Return the fitted edge spread function at distances d in mm."""
@@ -112,6 +144,19 @@ class _Part:
     covariance: Floats
 
 
+@dataclass(frozen=True, slots=True, eq=False)
+class _Nuisance:
+    """How level, shift and slope follow from the data once the shapes are known.
+
+    ``free = inverse @ (data - coupling @ mix)`` with whitened data of unit variance; `unit`
+    turns the ramp's height at the farthest bin into a slope per mm.
+    """
+
+    inverse: Floats
+    coupling: Floats
+    unit: Floats
+
+
 def fit_esf(bins: EdgeBins, scale: float, covariance: Floats) -> EsfFit:
     """Return the averaged fit of binned edge data.
 
@@ -144,7 +189,8 @@ def fit_esf(bins: EdgeBins, scale: float, covariance: Floats) -> EsfFit:
     level = _solved(shapes, np.delete(white, 2, axis=1), 2)
     best = _solved(shapes, white, 3) if _slope_gain(level, white) > SLOPE_STANDS_OUT else level
     contrast = float(sum(p.weight * p.coefficients[0] for p in best.parts))
-    slope = float(best.free[2] / np.abs(bins.distance).max()) if len(best.free) > 2 else 0.0
+    reach = float(np.abs(bins.distance).max())
+    slope = float(best.free[2]) / reach if len(best.free) > 2 else 0.0
     height = contrast / (math.sqrt(2 * math.pi) * scale)
     return EsfFit(
         scale,
@@ -155,6 +201,7 @@ def fit_esf(bins: EdgeBins, scale: float, covariance: Floats) -> EsfFit:
         slope,
         best.mix,
         best.parts,
+        _Nuisance(best.inverse, best.coupling, np.array([1.0, 1.0, reach])[: len(best.free)]),
     )
 
 
@@ -166,6 +213,8 @@ class _Solved:
     mix: Floats
     free: Floats
     misfit: float
+    inverse: Floats
+    coupling: Floats
 
 
 def _slope_gain(level: _Solved, white: Floats) -> float:
@@ -189,9 +238,9 @@ def _solved(shapes: Dictionary, white: Floats, k: int) -> _Solved:
         start=np.zeros(shapes.columns.shape[0]),
     )
     misfit = float(np.sum((data - core @ mix) ** 2)) + float(r[-1, -1] ** 2)
-    right = r[:k, -1] - r[:k, k:-1] @ mix
-    free: Floats = linalg.solve_triangular(r[:k, :k], right, check_finite=False)
-    return _Solved(parts, mix, free, misfit)
+    inverse: Floats = linalg.solve_triangular(r[:k, :k], np.eye(k), check_finite=False)
+    free = inverse @ (r[:k, -1] - r[:k, k:-1] @ mix)
+    return _Solved(parts, mix, free, misfit, inverse, r[:k, k:-1])
 
 
 def _whiten(design: Floats, covariance: Floats) -> Floats:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Literal, TypeAlias
 
@@ -10,20 +11,20 @@ import numpy as np
 from ct_measure_plugin.physics.edge_bins import EdgeBins, bin_by_distance
 from ct_measure_plugin.physics.edge_noise import NoiseSpectrum, bin_covariance
 from ct_measure_plugin.physics.esf_fit import fit_esf
+from ct_measure_plugin.physics.esf_shape import Shape, conventional_shape, fitted_shape
 from ct_measure_plugin.physics.mtf_curve import (
     FREQUENCY_STEPS,
     Spread,
     conventional_mtf,
-    width_at,
 )
-from ct_measure_plugin.physics.results import Curve, Quantity
+from ct_measure_plugin.physics.results import NotMeasured, Quantity
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     Floats = NDArray[np.float64]
 
-__all__ = ["EsfData", "Method", "Shape", "jacobian_doubt", "measure_esf"]
+__all__ = ["EsfData", "Method", "jacobian_doubt", "measure_esf", "noise_numbers"]
 
 Method: TypeAlias = Literal["fitted", "conventional"]
 
@@ -81,18 +82,6 @@ class EsfData:
         return min(1.3 / self.sigma, 0.5 / gap, 2.0 / self.pixel_mm)
 
 
-@dataclass(frozen=True, slots=True, eq=False)
-class Shape:
-    """Edge and line spread function and what is read from them."""
-
-    esf: Curve
-    lsf: Curve
-    width: Quantity
-    overshoot: Quantity
-    step: float
-    shift: float = 0.0
-
-
 def measure_esf(data: EsfData, method: Method, unit: str) -> tuple[Spread, Shape]:
     """Return the MTF across an edge and the edge's shape, by either method."""
     return _fitted(data, unit) if method == "fitted" else _conventional(data, unit)
@@ -110,18 +99,7 @@ def _fitted(data: EsfData, unit: str) -> tuple[Spread, Shape]:
     fit = fit_esf(bins, data.sigma, covariance)
     frequency = np.linspace(0, data.top, FREQUENCY_STEPS)
     mtf, doubt = fit.mtf(frequency)
-    d = np.linspace(-6 * data.fwhm, 6 * data.fwhm, 361)
-    esf, lsf = fit.esf(d), fit.lsf(d) / fit.contrast
-    rise = float((esf - fit.gradient * d).max() - fit.level) / fit.contrast - 0.5
-    shape = Shape(
-        Curve(d, esf, None, "distance", "mm", "ESF", unit),
-        Curve(d, lsf, None, "distance", "mm", "LSF", "mm⁻¹"),
-        Quantity(width_at(d, lsf, 0.5), "mm"),
-        Quantity(max(0.0, rise), ""),
-        fit.contrast,
-        fit.shift,
-    )
-    return Spread(frequency, mtf, doubt), shape
+    return Spread(frequency, mtf, doubt), fitted_shape(fit, data.fwhm, unit)
 
 
 def _conventional(data: EsfData, unit: str) -> tuple[Spread, Shape]:
@@ -139,18 +117,8 @@ def _conventional(data: EsfData, unit: str) -> tuple[Spread, Shape]:
     )
     covariance = bin_covariance(full, data.spectrum, data.normals, data.length)
     frequency = np.linspace(0, min(data.top, 0.25 / width), FREQUENCY_STEPS)
-    spread, lsf = conventional_mtf(middles, esf, covariance, half=half, frequency=frequency)
-    edge = 0.6 * half
-    low, high = esf[middles < -edge].mean(), esf[middles > edge].mean()
-    step = float(high - low)
-    doubt = np.sqrt(np.diag(covariance))
-    shape = Shape(
-        Curve(middles, esf, doubt, "distance", "mm", "ESF", unit),
-        Curve(middles, lsf / step, None, "distance", "mm", "LSF", "mm⁻¹"),
-        Quantity(width_at(middles, lsf / step, 0.5), "mm"),
-        Quantity(max(0.0, float((esf.max() - high) / step)), ""),
-        step,
-    )
+    spread = conventional_mtf(middles, esf, covariance, half=half, frequency=frequency)
+    shape = conventional_shape(middles, esf, covariance, half=half, fwhm=data.fwhm, unit=unit)
     return spread, shape
 
 
@@ -179,3 +147,17 @@ def jacobian_doubt(jacobian: Floats, spectrum: NoiseSpectrum) -> Floats:
     variance = (square * power).sum(axis=(1, 2)) / (ny * nx)
     found: Floats = np.sqrt(variance)
     return found
+
+
+def noise_numbers(noise: float, independent: float, contrast: Quantity) -> dict[str, object]:
+    """Return contrast, noise and their ratio as the named Quantities of a result."""
+    doubt = noise / math.sqrt(2 * max(independent - 10.0, 1.0))
+    found = {
+        "contrast": Quantity(abs(contrast.value), contrast.unit, contrast.uncertainty),
+        "noise": Quantity(noise, contrast.unit, doubt),
+    }
+    if noise <= 0:
+        return found | {"contrast_to_noise": NotMeasured("there is no noise", "none is needed")}
+    ratio = abs(contrast.value) / noise
+    shares = (contrast.uncertainty or 0.0) / abs(contrast.value), doubt / noise
+    return found | {"contrast_to_noise": Quantity(ratio, "", ratio * math.hypot(*shares))}

@@ -113,19 +113,21 @@ def checked_stack(image: object, least: int, *, name: str = "image") -> Floats:
 def width_at(x: Floats, y: Floats, share: float) -> float:
     """Return the full width of a peak at a share of its height, linearly interpolated.
 
+    Between the outermost places where it has that height, so that a dip in a noisy peak does
+    not cut it in two. A peak that does not fall so low within x has the width of x.
+
     >>> x = np.linspace(-5, 5, 2001)
     >>> round(width_at(x, np.exp(-x * x / 2), 0.5), 4)
     2.3548
     """
-    top = int(np.argmax(y))
-    level = share * y[top]
-    right = np.flatnonzero(y[top:] < level)
-    left = np.flatnonzero(y[: top + 1][::-1] < level)
-    if len(right) == 0 or len(left) == 0:
-        return float(x[-1] - x[0])
-    i, j = top + int(right[0]), top - int(left[0])
-    upper = x[i - 1] + (y[i - 1] - level) / (y[i - 1] - y[i]) * (x[i] - x[i - 1])
-    lower = x[j + 1] - (y[j + 1] - level) / (y[j + 1] - y[j]) * (x[j + 1] - x[j])
+    level = share * float(y.max())
+    above = np.flatnonzero(y >= level)
+    first, last = int(above[0]), int(above[-1])
+    lower, upper = float(x[first]), float(x[last])
+    if first > 0:
+        lower -= (y[first] - level) / (y[first] - y[first - 1]) * (x[first] - x[first - 1])
+    if last < len(x) - 1:
+        upper += (y[last] - level) / (y[last] - y[last + 1]) * (x[last + 1] - x[last])
     return float(upper - lower)
 
 
@@ -136,7 +138,7 @@ def conventional_mtf(
     *,
     half: float,
     frequency: Floats,
-) -> tuple[Spread, Floats]:
+) -> Spread:
     """Bin, differentiate, window, transform, correct: the textbook route.
 
     Parameters
@@ -152,9 +154,7 @@ def conventional_mtf(
 
     Returns
     -------
-    spread : Spread
-    lsf : ndarray, shape (n,)
-        Line spread function before the window, 0 at both ends.
+    Spread
 
     Notes
     -----
@@ -191,9 +191,7 @@ def conventional_mtf(
     phase = np.where(modulus > 0, spectrum.conj() / np.maximum(modulus, 1e-300), 1.0)
     weights = (phase[:, None] * operator).real / contrast - modulus[:, None] * plateau / contrast
     variance = np.einsum("fi,fi->f", weights @ covariance, weights)
-    lsf = np.zeros(n)
-    lsf[1:-1] = (esf[2:] - esf[:-2]) / (2 * step)
-    return Spread(frequency, mtf, np.sqrt(np.maximum(variance, 0.0)) / correction), lsf
+    return Spread(frequency, mtf, np.sqrt(np.maximum(variance, 0.0)) / correction)
 
 
 def falls_through(mtf: Floats, level: float) -> int | None:
@@ -300,15 +298,12 @@ def _levels(spread: Spread, levels: tuple[float, ...], slope_over: float) -> Cur
         return None
     if not all(0 < level < 1 for level in levels):
         raise ArgumentError("levels", "must lie between 0 and 1", levels)
-    found = [
-        (level, at.value, at.uncertainty or 0.0)
-        for level in sorted(levels)
-        if isinstance(
-            at := level_frequency(
-                spread.frequency, spread.mtf, spread.doubt, level, slope_over=slope_over
-            ),
-            Quantity,
+    rows = []
+    for level in sorted(levels):
+        at = level_frequency(
+            spread.frequency, spread.mtf, spread.doubt, level, slope_over=slope_over
         )
-    ]
-    level, at, doubt = np.array(found, dtype=float).reshape(-1, 3).T
-    return Curve(level, at, doubt, "MTF", "", "frequency", "mm⁻¹")
+        if isinstance(at, Quantity):
+            rows.append((level, at.value, at.uncertainty or 0.0))
+    table = np.array(rows, dtype=float).reshape(-1, 3)
+    return Curve(table[:, 0], table[:, 1], table[:, 2], "MTF", "", "frequency", "mm⁻¹")

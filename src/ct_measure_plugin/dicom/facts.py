@@ -17,7 +17,7 @@ from ct_measure_plugin.dicom.frames import frame_items
 from ct_measure_plugin.dicom.header import Header, UnreadableFileError
 from ct_measure_plugin.dicom.layout import PixelLayout, layout_of
 from ct_measure_plugin.dicom.syntaxes import SYNTAXES
-from ct_measure_plugin.dicom.texts import digest_of, plain_word, shown_text
+from ct_measure_plugin.dicom.texts import digest_of, known_position, shown_text
 from ct_measure_plugin.dicom.windows import windows_of
 from ct_measure_plugin.physics.volume import Acquisition
 
@@ -120,7 +120,7 @@ def _images_of(header: Header, path: str, uid: str) -> list[ImageFacts]:
         description=shown_text(
             elements.raw(tags.SERIES_DESCRIPTION), elements.text(tags.CHARACTER_SET)
         ),
-        patient_position=plain_word(elements.text(tags.PATIENT_POSITION)),
+        patient_position=known_position(elements.text(tags.PATIENT_POSITION)),
         spacing_between=elements.number(tags.SPACING_BETWEEN),
         tilt_tag=elements.number(tags.GANTRY_TILT),
         lossy=_is_lossy(elements, header.syntax_uid),

@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Any, Final
 
 import numpy as np
 
-from ct_measure_plugin.dicom.texts import plain_word
+from ct_measure_plugin.dicom.texts import known_unit
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
@@ -71,7 +71,7 @@ def unit_of(image: ImageFacts) -> str:
         return "stored values"
     if image.rescale_type in ("", "HU"):
         return "HU"
-    return f"rescaled units ({plain_word(image.rescale_type) or 'unnamed'})"
+    return f"rescaled units ({known_unit(image.rescale_type) or 'unnamed'})"
 
 
 def apply_whole(plane: NDArray[np.int16], rescale: Rescale) -> None:

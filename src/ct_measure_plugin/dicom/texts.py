@@ -3,12 +3,33 @@
 from __future__ import annotations
 
 import hashlib
-import re
 from functools import lru_cache
 
-__all__ = ["digest_of", "plain_word", "shown_text"]
+__all__ = ["digest_of", "known_position", "known_unit", "shown_text"]
 
-_WORD = re.compile(r"[A-Z0-9_]{1,16}")
+#: PS3.3, C.7.3.1.1.2: head, feet, left, right, front or back first; supine, prone, on a side
+_POSITIONS = frozenset(
+    [
+        "HFP",
+        "HFS",
+        "HFDR",
+        "HFDL",
+        "FFDR",
+        "FFDL",
+        "FFP",
+        "FFS",
+        "LFP",
+        "LFS",
+        "RFP",
+        "RFS",
+        "AFDR",
+        "AFDL",
+        "PFDR",
+        "PFDL",
+    ]
+)
+#: PS3.3, C.11.1.1.2
+_UNITS = frozenset(["OD", "HU", "US", "MGML", "Z_EFF", "ED", "EDW", "HU_MOD", "PCT"])
 #: single-byte and UTF-8 character sets of PS3.3, C.12.1.1.2; others are shown as far as ASCII goes
 _CODECS = {
     "": "ascii",
@@ -56,12 +77,24 @@ def shown_text(raw: bytes, charset: str, *, longest: int = 64) -> str:
 
 
 @lru_cache(maxsize=256)
-def plain_word(text: str) -> str:
-    """Return a code word of the standard's shape (capitals, digits), or ``""``.
+def known_position(text: str) -> str:
+    """Return a patient position if it is one of the standard's, else ``""``.
 
     Examples
     --------
-    >>> plain_word("HFS"), plain_word("see notes")
+    >>> known_position("HFS"), known_position("SMITH")
     ('HFS', '')
     """
-    return text if _WORD.fullmatch(text) else ""
+    return text if text in _POSITIONS else ""
+
+
+@lru_cache(maxsize=256)
+def known_unit(text: str) -> str:
+    """Return a rescale type if it is one of the standard's, else ``""``.
+
+    Examples
+    --------
+    >>> known_unit("MGML"), known_unit("SMITH")
+    ('MGML', '')
+    """
+    return text if text in _UNITS else ""

@@ -295,11 +295,12 @@ _LABELS = {
 def label_of(name: str) -> str:
     """Return what tables and pages call a field, the same everywhere.
 
-    >>> label_of("sd"), label_of("peak_frequency")
-    ('SD', 'Peak frequency')
+    >>> label_of("sd"), label_of("peak_frequency"), label_of("pixel_sd")
+    ('SD', 'Peak frequency', 'Pixel SD')
     """
-    words = name.replace("_", " ")
-    return _LABELS.get(name, words[:1].upper() + words[1:])
+    words = [_LABELS.get(word, word) for word in name.split("_")]
+    words[0] = _LABELS.get(words[0], words[0][:1].upper() + words[0][1:])
+    return _LABELS.get(name, " ".join(words))
 
 
 def _fields_of(result: Any, kind: type[_T]) -> dict[str, _T]:

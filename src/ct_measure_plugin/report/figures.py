@@ -14,7 +14,16 @@ from matplotlib.figure import Figure
 from matplotlib.patches import Ellipse as EllipsePatch
 from matplotlib.patches import Polygon as PolygonPatch
 
-from ct_measure_plugin.physics.regions import Box, Disc, Ellipse, Mask, Polygon, Region, Segment
+from ct_measure_plugin.physics.regions import (
+    Box,
+    Disc,
+    Ellipse,
+    Ellipsoid,
+    Mask,
+    Polygon,
+    Region,
+    Segment,
+)
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
@@ -110,7 +119,7 @@ def place_svg(preview: Preview, regions: Sequence[Region]) -> str:
 def _outline(axes: Axes, region: Region) -> tuple[float, float]:
     """Draw a region's border; return where its number goes."""
     line: dict[str, Any] = {"edgecolor": _MARK, "facecolor": "none", "linewidth": 1.3}
-    if isinstance(region, Disc | Ellipse):
+    if isinstance(region, Disc | Ellipse | Ellipsoid):
         y, x = region.center_mm
         radii = (region.radius_mm,) * 2 if isinstance(region, Disc) else region.radii_mm
         turn = 0.0 if isinstance(region, Disc) else -region.angle_deg  # y points down

@@ -13,6 +13,7 @@ import ct_measure_plugin
 from ct_measure_plugin.measurements import find
 from ct_measure_plugin.physics.results import (
     Caution,
+    Curve,
     NotMeasured,
     Quantity,
     curves_of,
@@ -46,6 +47,7 @@ class _Section:
     title: str
     summary: str
     rows: tuple[_Row, ...]
+    further: tuple[_Row, ...]
     refusal: NotMeasured | None
     cautions: tuple[Caution, ...]
     place: Markup | None
@@ -92,19 +94,26 @@ def _section(record: Record) -> _Section:
     measurement = find(record.measurement)
     answer = record.answer()
     place = None
+    rows: tuple[_Row, ...]
+    further: tuple[_Row, ...]
     if record.preview is not None:
         place = Markup(place_svg(record.preview, record.typed_regions()))  # noqa: S704 - our own SVG
     if isinstance(answer, NotMeasured):
-        rows: tuple[_Row, ...] = ()
+        rows, further = (), ()
         figures: list[tuple[str, Markup]] = []
     else:
         found = quantities_of(answer)
-        order = [name for name in measurement.columns if name in found]
-        order += [name for name in found if name not in order]
-        rows = tuple(_row(name, found[name]) for name in order)
+        curves = curves_of(answer)
+        chief = [name for name in measurement.columns if name in found]
+        lists = [name for name in measurement.lists if name in curves]
+        rows = tuple(_row(label_of(name), found[name]) for name in chief)
+        rows += tuple(row for name in lists for row in _rows_of(label_of(name), curves[name]))
+        rest = [name for name in found if name not in chief]
+        further = tuple(_row(label_of(name), found[name]) for name in rest)
         figures = [
             (label_of(name), Markup(curve_svg(curve)))  # noqa: S704 - our own SVG
-            for name, curve in curves_of(answer).items()
+            for name, curve in curves.items()
+            if name not in lists
         ]
         figures += [
             (label_of(name), Markup(picture_svg(picture)))  # noqa: S704 - our own SVG
@@ -115,6 +124,7 @@ def _section(record: Record) -> _Section:
         measurement.title,
         measurement.summary,
         rows,
+        further,
         answer if isinstance(answer, NotMeasured) else None,
         tuple(dict.fromkeys(answer.cautions)),
         place,
@@ -127,12 +137,18 @@ def _short(value: object) -> str:
     if isinstance(value, float):
         return f"{value:.3f}".rstrip("0").rstrip(".")
     if isinstance(value, list | tuple):
-        return ", ".join(_short(part) for part in value)
+        return ", ".join(_short(part) for part in value) or "none"
     return str(value)
 
 
-def _row(name: str, quantity: Quantity) -> _Row:
+def _rows_of(label: str, curve: Curve) -> tuple[_Row, ...]:
+    """Return the rows of a curve that is rather a list of numbers, such as percentiles."""
+    unit = f" {curve.x_unit}".rstrip()
+    return tuple(_row(f"{label}: {x:g}{unit}", y) for x, y in curve.samples())
+
+
+def _row(label: str, quantity: Quantity) -> _Row:
     value, doubt = quantity.rounded()
     if not doubt:
         doubt = "not stated" if quantity.uncertainty is None else "exact"
-    return _Row(label_of(name), value, doubt, quantity.unit)
+    return _Row(label, value, doubt, quantity.unit)

@@ -4,6 +4,11 @@ from __future__ import annotations
 
 import itertools
 import math
+import os
+import subprocess
+import sys
+import zipfile
+from pathlib import Path
 
 import numpy as np
 import pydicom
@@ -170,3 +175,25 @@ def test_the_command_lists_and_makes_samples(tmp_path, capsys):
     assert new == (samples.folder("enhanced") / "frames.dcm").read_bytes()
     assert main(["simulate", "--samples", str(tmp_path), "--only", "soft"]) == 2
     assert "no sample volume is called 'soft'" in capsys.readouterr().err
+
+
+@pytest.mark.long  # builds a wheel, which fetches the build backend
+def test_the_samples_are_in_the_wheel(tmp_path):
+    """Unpacked where nothing else of the source tree is, the wheel finds and measures them."""
+    root = Path(__file__).parents[2]
+    build = [sys.executable, "-m", "build", "--wheel", "--outdir", str(tmp_path), str(root)]
+    subprocess.run(build, check=True, capture_output=True)
+    [wheel] = tmp_path.glob("*.whl")
+    place = tmp_path / "installed"
+    zipfile.ZipFile(wheel).extractall(place)
+    command = [sys.executable, "-m", "ct_measure_plugin.cli", "demo", "--no-window", "--out", "out"]
+    env = {**os.environ, "PYTHONPATH": str(place)}
+    done = subprocess.run(
+        command, check=True, capture_output=True, text=True, cwd=tmp_path, env=env
+    )
+    assert "PTFE rod" in done.stdout
+    where = "from ct_measure_plugin.virtual_scanner import samples; print(samples.folder())"
+    found = subprocess.run(
+        [sys.executable, "-c", where], check=True, capture_output=True, text=True, env=env
+    )
+    assert Path(found.stdout.strip()) == place / "ct_measure_plugin" / "sample_volumes"

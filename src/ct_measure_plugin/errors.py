@@ -6,7 +6,9 @@ The tree::
     ├── ArgumentError      (ValueError)   an argument breaks a rule
     │   └── RegionError                   a region cannot be measured as it is drawn
     ├── UnknownNameError   (LookupError)  no measurement, preset or series of that name
-    ├── PlanError          (ValueError)   a plan file is wrong; all faults at once
+    ├── FaultsError        (ValueError)   a file that people write is wrong; all faults at once
+    │   ├── PlanError                     a plan
+    │   └── MaterialsError                a list of materials or a layout of rods
     ├── SeriesError                       a DICOM series cannot be read
     │   ├── NoSeriesError                 nothing readable under the folder
     │   ├── SeriesChoiceError             several series; one must be chosen
@@ -27,6 +29,8 @@ __all__ = [
     "Cancelled",
     "CtMeasureError",
     "DecoderMissingError",
+    "FaultsError",
+    "MaterialsError",
     "NoSeriesError",
     "PlanError",
     "RecordError",
@@ -95,8 +99,8 @@ class UnknownNameError(CtMeasureError, LookupError):
         return f"no {self.kind} is called '{self.name}'; there are: {', '.join(self.known)}"
 
 
-class PlanError(CtMeasureError, ValueError):
-    """A plan is wrong; `problems` maps each place in it to what is wrong there.
+class FaultsError(CtMeasureError, ValueError):
+    """A file that people write is wrong; `problems` maps each place in it to what is wrong there.
 
     Examples
     --------
@@ -110,6 +114,14 @@ class PlanError(CtMeasureError, ValueError):
 
     def __str__(self) -> str:
         return "\n".join(f"{where}: {what}" for where, what in self.problems.items())
+
+
+class PlanError(FaultsError):
+    """A plan is wrong."""
+
+
+class MaterialsError(FaultsError):
+    """A list of materials, or a layout of rods, is wrong."""
 
 
 class SeriesError(CtMeasureError):

@@ -9,7 +9,15 @@ from skimage.draw import polygon2mask
 
 from ct_measure_plugin.errors import ArgumentError, RegionError
 from ct_measure_plugin.physics.coverage import Coverage, plane_coverage, slices_of
-from ct_measure_plugin.physics.regions import Box, Disc, Ellipse, Mask, Polygon, Segment
+from ct_measure_plugin.physics.regions import (
+    Box,
+    Disc,
+    Ellipse,
+    Ellipsoid,
+    Mask,
+    Polygon,
+    Segment,
+)
 from ct_measure_plugin.physics.volume import Volume
 
 ROUNDING = 1e-12  # double precision, a few thousand additions
@@ -206,3 +214,47 @@ def test_slices_by_position_and_range():
 def test_the_rule_must_be_known():
     with pytest.raises(ArgumentError, match="'rule' must be 'area' or 'center', got 'half'"):
         plane_coverage(Disc((1, 1), 1), (4, 4), spacing_mm=(1, 1), rule="half")
+
+
+@pytest.mark.parametrize("z_mm", [40.0, 40.7, 41.0])
+@pytest.mark.parametrize("dz", [0.5, 3.0, 20.0])
+def test_slabs_side_by_side_hold_an_ellipsoids_volume(z_mm, dz):
+    """4/3 π a b c to rounding, however coarse the slices: each holds its slab's mean section."""
+    body = Ellipsoid((20.3, 21.0), (6.0, 9.0), 11.5, 33.0, z_mm=z_mm)
+    volume = Volume(np.zeros((int(90 / dz), 48, 48)), (dz, 1.0, 1.0))
+    total = 0.0
+    for k in slices_of(body, volume):
+        z = float(volume.positions_mm[k])
+        cover = plane_coverage(body, (48, 48), spacing_mm=(1, 1), z_mm=z, slab_mm=dz)
+        total += float(cover.weights.sum()) * dz
+    assert total == pytest.approx(body.volume_mm3, rel=1e-10)
+
+
+def test_the_center_rule_takes_the_lattice_points_of_a_ball():
+    """Points of the cubic lattice within 5 of one of them: 515, by counting."""
+    body = Ellipsoid((20.0, 20.0), (5.0, 5.0), 5.0, z_mm=10.0)
+    volume = Volume(np.zeros((21, 41, 41)), (1.0, 1.0, 1.0))
+    z, y, x = np.mgrid[-6:7, -6:7, -6:7]
+    lattice = int(np.count_nonzero(z * z + y * y + x * x <= 25))
+    found = sum(
+        plane_coverage(
+            body, (41, 41), spacing_mm=(1, 1), rule="center", z_mm=float(k), slab_mm=1.0
+        ).weights.sum()
+        for k in slices_of(body, volume, rule="center")
+    )
+    assert lattice == 515
+    assert found == lattice
+
+
+def test_a_deep_mask_keeps_its_volume_on_slices_of_another_thickness():
+    rng = np.random.default_rng(7)
+    inside = rng.random((9, 12, 12)) < 0.4
+    mask = Mask(inside, (1.5, 1.0, 1.0), (7.3, 10.0, 11.0))
+    volume = Volume(np.zeros((20, 40, 40)), (2.2, 1.0, 1.0))
+    total = sum(
+        plane_coverage(
+            mask, (40, 40), spacing_mm=(1, 1), z_mm=float(volume.positions_mm[k]), slab_mm=2.2
+        ).weights.sum()
+        for k in slices_of(mask, volume)
+    )
+    assert total * 2.2 == pytest.approx(np.count_nonzero(inside) * 1.5, rel=1e-10)

@@ -9,7 +9,15 @@ import numpy as np
 import pytest
 
 from ct_measure_plugin.errors import RegionError
-from ct_measure_plugin.physics.regions import Box, Disc, Ellipse, Mask, Polygon, Segment
+from ct_measure_plugin.physics.regions import (
+    Box,
+    Disc,
+    Ellipse,
+    Ellipsoid,
+    Mask,
+    Polygon,
+    Segment,
+)
 
 
 @pytest.mark.parametrize(
@@ -24,6 +32,13 @@ from ct_measure_plugin.physics.regions import Box, Disc, Ellipse, Mask, Polygon,
         (lambda: Segment((1, 1), (1, 1)), r"'end_mm' must differ from start_mm"),
         (lambda: Segment((1, 1), (1, 2), -1.0), r"'width_mm' must not be negative"),
         (lambda: Disc((0, 0), 1.0, z_mm=(5.0, 1.0)), r"'z_mm' must be given as \(low, high\)"),
+        (lambda: Disc((0, 0), 1.0, values=(2.0, 1.0)), r"'values' must be given as \(low, high\)"),
+        (lambda: Disc((0, 0), 1.0, values=(math.nan, 1.0)), r"'values' must be given as"),
+        (lambda: Disc((0, 0), 1.0, code="rod"), r"'code' must be scheme:value"),
+        (lambda: Disc((0, 0), 1.0, code=":rod"), r"'code' must be scheme:value"),
+        (lambda: Disc((0, 0), 1.0, code="S:" + 17 * "9"), r"each of 1 to 16 characters"),
+        (lambda: Ellipsoid((0, 0), (1, 1), 1.0), r"'z_mm' must be the position of the centre"),
+        (lambda: Ellipsoid((0, 0), (1, 1), -1.0, z_mm=1.0), r"'z_radius_mm' must be greater"),
         (lambda: Mask(np.zeros((3, 3), bool), (1, 1, 1)), r"must hold at least one pixel"),
         (lambda: Mask(np.ones((3, 3)), (1, 1, 1)), r"must be an array of bool"),
         (lambda: Mask(np.ones(3, bool), (1, 1, 1)), r"must be 2-D or 3-D"),

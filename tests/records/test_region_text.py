@@ -3,12 +3,21 @@
 from __future__ import annotations
 
 import json
+import math
 
 import numpy as np
 import pytest
 
 from ct_measure_plugin.errors import RegionError
-from ct_measure_plugin.physics.regions import Box, Disc, Ellipse, Mask, Polygon, Segment
+from ct_measure_plugin.physics.regions import (
+    Box,
+    Disc,
+    Ellipse,
+    Ellipsoid,
+    Mask,
+    Polygon,
+    Segment,
+)
 from ct_measure_plugin.records import region_from_dict, region_to_dict
 
 REGIONS = [
@@ -17,10 +26,14 @@ REGIONS = [
     Box((1, 2), (3, 4)),
     Polygon(((0, 0), (0, 5), (5, 1.25))),
     Segment((0, 0), (3, 4), 1.5, name="ä ± µ"),
+    Ellipsoid((1, 2), (3, 4), 5.5, 20.0, z_mm=7.0, group="rod", code="99LAB:ROD-1"),
+    Disc((1, 2), 3, values=(-math.inf, 30.0), name="below"),
 ]
 
 
-@pytest.mark.parametrize("region", REGIONS, ids=lambda region: region.kind)
+@pytest.mark.parametrize(
+    "region", REGIONS, ids=[f"{i} {region.kind}" for i, region in enumerate(REGIONS)]
+)
 def test_a_region_comes_back_the_same(region):
     text = json.dumps(region_to_dict(region))
     assert region_from_dict(json.loads(text)) == region
@@ -48,6 +61,12 @@ def test_a_mask_comes_back_pixel_by_pixel(shape):
         ({"kind": "disc", "center_mm": [0, 0], "radius_mm": "3"}, "'radius_mm' must be a number"),
         ({"kind": "disc", "center_mm": [0, 0], "radius_mm": True}, "'radius_mm' must be a number"),
         ({"kind": "disc", "center_mm": [0, 0], "radius_mm": 3, "name": 4}, "'name' must be text"),
+        ({"kind": "disc", "center_mm": [0, 0], "radius_mm": 3, "code": "rod"},
+         "'code' must be scheme:value"),
+        ({"kind": "disc", "center_mm": [0, 0], "radius_mm": 3, "values": 4},
+         "'values' must be two numbers"),
+        ({"kind": "disc", "center_mm": [0, 0], "radius_mm": 3, "values": [4, 3]},
+         r"'values' must be given as \(low, high\)"),
         ({"kind": "mask", "inside": {"shape": [9, 9], "bits": "eJw="}, "spacing_mm": [1, 1, 1]},
          "'inside' must hold the shape"),
         ({"kind": "mask", "inside": {"shape": [10**6, 10**6], "bits": ""}, "spacing_mm": [1, 1, 1]},
@@ -67,3 +86,9 @@ def test_a_mask_that_would_unpack_without_end_is_cut_short():
     given = {"kind": "mask", "inside": {"shape": [8, 8], "bits": bomb}, "spacing_mm": [1, 1, 1]}
     with pytest.raises(RegionError, match="'inside' must hold the shape"):
         region_from_dict(given)
+
+
+def test_text_is_json_that_any_reader_takes():
+    """Infinity is no JSON; an open end is null."""
+    text = json.dumps(region_to_dict(Disc((1, 2), 3, values=(5.0, math.inf))), allow_nan=False)
+    assert json.loads(text)["values"] == [5.0, None]

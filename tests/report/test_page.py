@@ -11,7 +11,15 @@ import pytest
 from examples import EXAMPLES
 
 from ct_measure_plugin.measurements import NAMES
-from ct_measure_plugin.physics.regions import Box, Disc, Ellipse, Mask, Polygon, Segment
+from ct_measure_plugin.physics.regions import (
+    Box,
+    Disc,
+    Ellipse,
+    Ellipsoid,
+    Mask,
+    Polygon,
+    Segment,
+)
 from ct_measure_plugin.physics.results import Caution, quantities_of
 from ct_measure_plugin.physics.volume import Acquisition, Source, Volume
 from ct_measure_plugin.report import write_report
@@ -78,7 +86,7 @@ def test_every_kind_of_region_is_drawn(tmp_path):
     regions = [
         Disc((32, 32), 9), Ellipse((32, 32), (5, 9), 30.0), Box((32, 32), (8, 12), 20.0),
         Polygon(((10, 10), (10, 30), (30, 20))), Segment((5, 5), (50, 40), 4.0),
-        Mask(inside, (1, 1, 1)),
+        Mask(inside, (1, 1, 1)), Ellipsoid((32, 32), (9, 9), 9, z_mm=0.0),
     ]  # fmt: skip
     page = page_of(tmp_path, run_measurement("region_statistics", volume, regions))
     drawings = re.findall(r"<svg.*?</svg>", page, flags=re.DOTALL)

@@ -14,9 +14,11 @@ __all__ = ["HELP", "region_from_words"]
 
 HELP = (
     "a region in words: KIND then NAME=VALUE, lengths in mm, points as y,x. "
-    "disc center=0,0 radius=20 | ellipse center= radii= angle= | box center= size= angle= | "
+    "disc center=0,0 radius=20 (or diameter=40) | ellipse center= radii= angle= | "
+    "ellipsoid center= radii= z-radius= z= | box center= size= angle= | "
     "polygon vertices=y,x;y,x;y,x | segment start= end= width= ; each with z=MM, z=LOW:HIGH or "
-    "slice=K or slice=K:L (counted from 0), and name=WORD"
+    "slice=K or slice=K:L (counted from 0), name=WORD, class=WORD, code=SCHEME:VALUE, and "
+    "values=LOW:HIGH for the range of values that counts, an end of which may be left out"
 )
 
 _FIELDS = {
@@ -29,7 +31,11 @@ _FIELDS = {
     "start": "start_mm",
     "end": "end_mm",
     "width": "width_mm",
+    "z-radius": "z_radius_mm",
 }
+
+#: Words that are kept as text.
+_TEXTS = {"name": "name", "class": "group", "code": "code"}
 
 
 def region_from_words(words: str, volume: Volume) -> Region:
@@ -59,8 +65,12 @@ def region_from_words(words: str, volume: Volume) -> Region:
             raise RegionError(
                 "region", "must be KIND NAME=VALUE ..., without spaces in a value", part
             )
-        if name == "name":
-            found["name"] = value
+        if name in _TEXTS:
+            found[_TEXTS[name]] = value
+        elif name == "diameter":
+            found["radius_mm"] = _number(name, value) / 2
+        elif name == "values":
+            found["values"] = _open_range(value)
         elif name == "z":
             found["z_mm"] = _range(name, value)
         elif name == "slice":
@@ -70,7 +80,7 @@ def region_from_words(words: str, volume: Volume) -> Region:
         elif name in _FIELDS:
             found[_FIELDS[name]] = _value(name, value)
         else:
-            known = ", ".join((*_FIELDS, "z", "slice", "name"))
+            known = ", ".join((*_FIELDS, "diameter", "z", "slice", *_TEXTS, "values"))
             raise RegionError("region", f"must use the names {known}", name)
     return region_from_dict(found)
 
@@ -90,7 +100,7 @@ def _point(name: str, text: str) -> list[float]:
 
 
 def _value(name: str, text: str) -> float | list[float]:
-    if name in ("radius", "angle", "width"):
+    if name in ("radius", "angle", "width", "z-radius"):
         return _number(name, text)
     return _point(name, text)
 
@@ -98,6 +108,13 @@ def _value(name: str, text: str) -> float | list[float]:
 def _range(name: str, text: str) -> float | list[float]:
     low, colon, high = text.partition(":")
     return [_number(name, low), _number(name, high)] if colon else _number(name, low)
+
+
+def _open_range(text: str) -> list[float | None]:
+    low, colon, high = text.partition(":")
+    if not colon:
+        raise RegionError("values", "must be LOW:HIGH", text)
+    return [_number("values", end) if end else None for end in (low, high)]
 
 
 def _slice(text: str, volume: Volume) -> float | list[float]:

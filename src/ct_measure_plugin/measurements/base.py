@@ -37,7 +37,7 @@ class RegionNeed:
     Attributes
     ----------
     kinds : tuple of str
-        Kinds it accepts ("disc", "ellipse", "box", "polygon", "segment", "mask").
+        Kinds it accepts: AREAS, BODIES, or some of them.
     at_least : int
         How many it needs.
     together : bool
@@ -50,7 +50,9 @@ class RegionNeed:
     together: bool = False
 
 
+#: Kinds that enclose pixels on a slice, and these with the kinds that only a stack of slices has.
 AREAS = ("disc", "ellipse", "box", "polygon", "segment", "mask")
+BODIES = (*AREAS, "ellipsoid")
 
 
 class Measurement(ABC):

@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from ct_measure_plugin.physics.coverage import Rule, plane_coverage, slices_of
+from ct_measure_plugin.physics.coverage import Rule, plane_coverage, reach_of, slices_of
 from ct_measure_plugin.physics.results import Caution, NotMeasured
 
 if TYPE_CHECKING:
@@ -47,9 +47,11 @@ class Gathered:
 def gather(volume: Volume, region: Region, *, rule: Rule = "area") -> Gathered | NotMeasured:
     """Return the pixels of a region; outside, padding and saturation left out and cautioned.
 
+    So are the pixels beyond the region's own range of values, if it has one.
+
     NotMeasured if the region misses the volume or nothing is left.
     """
-    slices = slices_of(region, volume)
+    slices = slices_of(region, volume, rule=rule)
     positions = volume.positions_mm
     covers = []
     for k in slices:
@@ -60,6 +62,7 @@ def gather(volume: Volume, region: Region, *, rule: Rule = "area") -> Gathered |
             origin_mm=volume.origin_mm[1:],
             rule=rule,
             z_mm=float(positions[k]),
+            slab_mm=volume.spacing_mm[0],
         )
         if cover.weights.any():
             covers.append((k, cover))
@@ -68,8 +71,7 @@ def gather(volume: Volume, region: Region, *, rule: Rule = "area") -> Gathered |
     rows, columns = _union([c.rows for _, c in covers]), _union([c.columns for _, c in covers])
     shape = (len(covers), rows.stop - rows.start, columns.stop - columns.start)
     values, weights = np.zeros(shape), np.zeros(shape)
-    padded = 0
-    clipped = 0
+    padded = clipped = beyond = 0
     for i, (k, cover) in enumerate(covers):
         plane = np.asarray(volume.hu[k, rows, columns])
         values[i] = plane
@@ -79,16 +81,22 @@ def gather(volume: Volume, region: Region, *, rule: Rule = "area") -> Gathered |
         if padding is not None:
             padded += int(np.count_nonzero(padding & (weights[i] > 0)))
             weights[i][padding] = 0.0
+        if region.values is not None:
+            low, high = region.values
+            other = ~((plane >= low) & (plane <= high)) & (weights[i] > 0)
+            beyond += int(np.count_nonzero(other))
+            weights[i][other] = 0.0
         if volume.representable_hu is not None:
             low, high = volume.representable_hu
             saturated = ((plane <= low) | (plane >= high)) & (weights[i] > 0)
             clipped += int(np.count_nonzero(saturated))
             weights[i][saturated] = 0.0
-    outside = max(c.outside for _, c in covers)
-    cautions = (*volume.cautions, *_left_out(outside, padded, clipped, int((weights > 0).sum())))
+    lost = _Lost(
+        max(c.outside for _, c in covers), padded, clipped, beyond, int(np.count_nonzero(weights))
+    )
+    cautions = (*volume.cautions, *_left_out(lost, region, volume))
     if not weights.any():
-        only = "saturated pixels and padding" if clipped else "padding"
-        return NotMeasured(f"the region holds only {only}", "move it onto the image", cautions)
+        return NotMeasured(*_nothing(lost, region), cautions)
     if len(covers) == 1:
         values, weights = values[0], weights[0]
         spacing: tuple[float, ...] = volume.spacing_mm[1:]
@@ -105,31 +113,82 @@ def _within(inner: slice, outer: slice) -> slice:
     return slice(inner.start - outer.start, inner.stop - outer.start)
 
 
-def _left_out(outside: float, padded: int, clipped: int, kept: int) -> list[Caution]:
+@dataclass(frozen=True, slots=True)
+class _Lost:
+    """Share outside the image, and pixels left out as padding, saturated or beyond the range."""
+
+    outside: float
+    padded: int
+    clipped: int
+    beyond: int
+    kept: int
+
+
+def _nothing(lost: _Lost, region: Region) -> tuple[str, str]:
+    """Return why no pixel is left, and the remedy."""
+    if lost.beyond and region.values is not None:
+        low, high = region.values
+        return f"no pixel of the region lies from {low:g} to {high:g}", "widen the range of values"
+    only = "saturated pixels and padding" if lost.clipped else "padding"
+    return f"the region holds only {only}", "move it onto the image"
+
+
+def _left_out(lost: _Lost, region: Region, volume: Volume) -> list[Caution]:
     found = []
-    if outside > 0:
+    if lost.outside > 0:
         found.append(
             Caution(
                 "outside-image",
-                f"{100 * outside:.1f} % of the region lies outside the image and was left out.",
+                f"{100 * lost.outside:.1f} % of the region lies outside the image and was left"
+                " out.",
                 "Move the region onto the image.",
             )
         )
-    if padded:
+    missing = _beyond_slices(region, volume)
+    if missing > 0:
+        found.append(
+            Caution(
+                "outside-image",
+                f"The region reaches {missing:.1f} mm beyond the first or last slice; that part"
+                " was left out.",
+                "Move the region onto the image.",
+            )
+        )
+    if lost.padded:
         found.append(
             Caution(
                 "padding-excluded",
-                f"{padded} padding pixels inside the region were left out.",
+                f"{lost.padded} pixels of the region are padding and were left out.",
                 "Keep the region within the reconstructed circle.",
             )
         )
-    if clipped:
+    if lost.beyond and region.values is not None:
+        low, high = region.values
+        found.append(
+            Caution(
+                "threshold",
+                f"Only values from {low:g} to {high:g} count: {lost.kept} of"
+                f" {lost.kept + lost.beyond} pixels.",
+            )
+        )
+    if lost.clipped:
         found.append(
             Caution(
                 "clipped-values",
-                f"{clipped} of {clipped + kept} pixels stand at the end of the stored range and"
-                " were left out; mean and SD are biased.",
+                f"{lost.clipped} of {lost.clipped + lost.kept} pixels stand at the end of the"
+                " stored range and were left out; mean and SD are biased.",
                 "Reconstruct with an extended CT-number range, or measure elsewhere.",
             )
         )
     return found
+
+
+def _beyond_slices(region: Region, volume: Volume) -> float:
+    """Return how far a region reaches beyond the slabs of the first and last slice, in mm."""
+    reach = reach_of(region)
+    if reach is None:
+        return 0.0
+    half = volume.spacing_mm[0] / 2
+    first, last = float(volume.positions_mm[0]) - half, float(volume.positions_mm[-1]) + half
+    missing = max(first - reach[0], reach[1] - last)
+    return missing if missing > 1e-6 else 0.0

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, ClassVar, Literal, cast
 import numpy as np
 from pydantic import Field
 
-from ct_measure_plugin.measurements.base import AREAS, Measurement, RegionNeed, Settings
+from ct_measure_plugin.measurements.base import BODIES, Measurement, RegionNeed, Settings
 from ct_measure_plugin.measurements.gather import Gathered, gather
 from ct_measure_plugin.physics.region_glance import RegionGlance, region_glance
 from ct_measure_plugin.physics.region_statistics import RegionStatistics, region_statistics
@@ -71,7 +71,7 @@ class MeasureRegionStatistics(Measurement):
     summary: ClassVar[str] = "Mean, SD, area and extremes of the pixels in each region."
     settings_type: ClassVar[type[Settings]] = RegionStatisticsSettings
     result_type: ClassVar[type[Result]] = RegionStatistics
-    regions: ClassVar[RegionNeed] = RegionNeed(AREAS)
+    regions: ClassVar[RegionNeed] = RegionNeed(BODIES)
     columns: ClassVar[tuple[str, ...]] = (
         "mean",
         "sd",

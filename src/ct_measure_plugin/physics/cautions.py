@@ -71,6 +71,7 @@ KINDS: dict[str, CautionKind] = {
     "clipped-values": _warning("Values at the end of the stored range"),
     "padding-excluded": _warning("Padding inside the region was left out"),
     "outside-image": _warning("The region reaches outside the image"),
+    "threshold": _note("Only a range of values counts"),
     "few-pixels": _warning("Few pixels"),
     "not-finite": _warning("Pixels without a finite value were left out"),
     # --- the numbers ----------------------------------------------------------------

@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
-from typing import TYPE_CHECKING, Literal, TypeAlias
+from typing import TYPE_CHECKING, Any, Literal, TypeAlias
 
 import numpy as np
 
@@ -18,6 +18,7 @@ from ct_measure_plugin.physics.regions import (
     Box,
     Disc,
     Ellipse,
+    Ellipsoid,
     Mask,
     Polygon,
     Region,
@@ -34,7 +35,7 @@ if TYPE_CHECKING:
 
     Floats = NDArray[np.float64]
 
-__all__ = ["Coverage", "Rule", "plane_coverage", "slices_of"]
+__all__ = ["Coverage", "Rule", "plane_coverage", "reach_of", "slices_of"]
 
 Rule: TypeAlias = Literal["area", "center"]
 
@@ -67,13 +68,14 @@ def plane_coverage(
     origin_mm: tuple[float, float] = (0.0, 0.0),
     rule: Rule = "area",
     z_mm: float = 0.0,
+    slab_mm: float = 0.0,
 ) -> Coverage:
     """Return the coverage of a region on one slice.
 
     Parameters
     ----------
     region : Region
-        Disc, Ellipse, Box, Polygon, Segment with a width, or Mask.
+        Disc, Ellipse, Ellipsoid, Box, Polygon, Segment with a width, or Mask.
     shape : (int, int)
         Rows and columns of the image.
     spacing_mm, origin_mm : (float, float)
@@ -82,7 +84,11 @@ def plane_coverage(
         "area": the exact fraction of each pixel. "center": 1 where the pixel's centre lies inside
         or on the border, else 0.
     z_mm : float
-        The slice's position; only a deep Mask asks for it.
+        The slice's position; an Ellipsoid and a deep Mask ask for it.
+    slab_mm : float
+        How thick a slab the slice stands for: an Ellipsoid or a deep Mask covers it by the mean
+        over the slab, so that slabs side by side hold its volume. 0 takes the section at `z_mm`,
+        as the rule "center" always does.
 
     Returns
     -------
@@ -107,19 +113,27 @@ def plane_coverage(
         region = Ellipse(region.center_mm, (region.radius_mm, region.radius_mm))
     if isinstance(region, Segment):
         region = _as_box(region)
+    if isinstance(region, Ellipsoid):
+        section = region.section(z_mm, slab_mm if rule == "area" else 0.0)
+        if section is None:
+            return Coverage(np.zeros((0, 0)), slice(0, 0), slice(0, 0), 0.0)
+        region = section
     if isinstance(region, Ellipse):
         return _ellipse(region, grid, rule)
     if isinstance(region, Box | Polygon):
         return _polygon(np.asarray(region.vertices_mm, float), region.area_mm2, grid, rule)
     if isinstance(region, Mask):
-        return _mask(region, grid, rule, z_mm)
-    raise RegionError("region", "must be a disc, ellipse, box, polygon, segment or mask", region)
+        return _mask(region, grid, rule, (z_mm, slab_mm))
+    kinds = "disc, ellipse, ellipsoid, box, polygon, segment or mask"
+    raise RegionError("region", f"must be a {kinds}", region)
 
 
-def slices_of(region: Region, volume: Volume) -> list[int]:
+def slices_of(region: Region, volume: Volume, *, rule: Rule = "area") -> list[int]:
     """Return the indices of the slices a region lies on, in order; empty if it misses them all.
 
-    A slice counts as a whole: it belongs to a range when its centre does.
+    A slice belongs to a range when its centre does, and then counts as a whole. It belongs to an
+    ellipsoid or a deep mask when any part of its slab does, with the rule "center" when its centre
+    does.
 
     >>> from ct_measure_plugin.physics.volume import Volume
     >>> volume = Volume(np.zeros((6, 4, 4)), spacing_mm=(2.0, 1.0, 1.0))
@@ -128,11 +142,10 @@ def slices_of(region: Region, volume: Volume) -> list[int]:
     """
     positions = volume.positions_mm
     margin = 1e-6
-    if isinstance(region, Mask) and region.inside.ndim == 3:
-        used = np.flatnonzero(region.inside.any(axis=(1, 2)))
-        half = region.spacing_mm[0] / 2
-        low = region.origin_mm[0] + used[0] * region.spacing_mm[0] - half
-        high = region.origin_mm[0] + used[-1] * region.spacing_mm[0] + half
+    own = _own_reach(region)
+    if own is not None:
+        low, high = own
+        margin = volume.spacing_mm[0] / 2 - 1e-6 if rule == "area" else 1e-6
     elif region.z_mm is None:
         return list(range(len(positions)))
     elif isinstance(region.z_mm, tuple):
@@ -144,6 +157,28 @@ def slices_of(region: Region, volume: Volume) -> list[int]:
             return []
     inside = (positions >= low - margin) & (positions <= high + margin)
     return [int(k) for k in np.flatnonzero(inside)]
+
+
+def reach_of(region: Region) -> tuple[float, float] | None:
+    """Return the lowest and highest z of a region that spans several slices; None for the others.
+
+    >>> reach_of(Ellipsoid((0, 0), (3, 3), 4.0, z_mm=10.0))
+    (6.0, 14.0)
+    """
+    own = _own_reach(region)
+    return region.z_mm if own is None and isinstance(region.z_mm, tuple) else own
+
+
+def _own_reach(region: Region) -> tuple[float, float] | None:
+    """Return the lowest and highest z of a region whose form says it."""
+    if isinstance(region, Ellipsoid) and isinstance(region.z_mm, int | float):
+        return region.z_mm - region.z_radius_mm, region.z_mm + region.z_radius_mm
+    if isinstance(region, Mask) and region.inside.ndim == 3:
+        used = np.flatnonzero(region.inside.any(axis=(1, 2)))
+        step = region.spacing_mm[0]
+        first = region.origin_mm[0] - step / 2
+        return first + float(used[0]) * step, first + float(used[-1] + 1) * step
+    return None
 
 
 @dataclass(frozen=True, slots=True)
@@ -332,14 +367,10 @@ def _centers_in_polygon(points: Floats, shape: tuple[int, int]) -> NDArray[np.bo
 # --- masks ---------------------------------------------------------------------------------------
 
 
-def _mask(region: Mask, grid: _Grid, rule: Rule, z_mm: float) -> Coverage:
-    if region.inside.ndim == 2:
-        flat = region.inside
-    else:
-        k = round((z_mm - region.origin_mm[0]) / region.spacing_mm[0])
-        if not 0 <= k < len(region.inside):
-            return Coverage(np.zeros((0, 0)), slice(0, 0), slice(0, 0), 0.0)
-        flat = region.inside[k]
+def _mask(region: Mask, grid: _Grid, rule: Rule, slab: tuple[float, float]) -> Coverage:
+    flat = region.inside
+    if flat.ndim == 3:
+        flat = _slab_of(region, *slab, rule)
     if not flat.any():
         return Coverage(np.zeros((0, 0)), slice(0, 0), slice(0, 0), 0.0)
     used_rows, used_columns = np.flatnonzero(flat.any(1)), np.flatnonzero(flat.any(0))
@@ -356,11 +387,24 @@ def _mask(region: Mask, grid: _Grid, rule: Rule, z_mm: float) -> Coverage:
             _overlap(centers, grid.spacing_mm[axis], first_mm[axis], step[axis], flat.shape[axis])
         )
     weights = np.clip(axes[0] @ flat.astype(float) @ axes[1].T, 0.0, 1.0)
-    area = float(np.count_nonzero(flat)) * float(step[0] * step[1])
+    area = float(flat.sum()) * float(step[0] * step[1])
     outside = _outside(weights, area, grid)
     if rule == "center":
         weights = (weights >= 0.5).astype(float)
     return Coverage(weights, rows, columns, outside)
+
+
+def _slab_of(region: Mask, z_mm: float, slab_mm: float, rule: Rule) -> NDArray[Any]:
+    """Return the share of each mask pixel's column that lies inside, within a slab."""
+    step, count = region.spacing_mm[0], len(region.inside)
+    k = round((z_mm - region.origin_mm[0]) / step)
+    aligned = abs(slab_mm - step) + abs(region.origin_mm[0] + k * step - z_mm) < 1e-6 * step
+    if aligned or slab_mm <= 0 or rule == "center":
+        return region.inside[k] if 0 <= k < count else np.zeros(region.inside.shape[1:], bool)
+    share = _overlap(np.array([z_mm]), slab_mm, region.origin_mm[0], step, count)[0]
+    used = np.flatnonzero(share)
+    mixed: Floats = np.tensordot(share[used], region.inside[used].astype(float), axes=1)
+    return mixed
 
 
 def _overlap(centers: Floats, width: float, first: float, step: float, count: int) -> Floats:

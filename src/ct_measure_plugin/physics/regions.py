@@ -21,7 +21,20 @@ from ct_measure_plugin.errors import RegionError
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
-__all__ = ["Box", "Disc", "Ellipse", "Mask", "Polygon", "Region", "Segment", "direction"]
+__all__ = [
+    "Box",
+    "Disc",
+    "Ellipse",
+    "Ellipsoid",
+    "Mask",
+    "Polygon",
+    "Region",
+    "Segment",
+    "direction",
+]
+
+#: Characters of a code and of its scheme (DICOM PS3.5, 6.2, value representation SH).
+LONGEST_CODE = 16
 
 Point: TypeAlias = tuple[float, float]
 Extent: TypeAlias = float | tuple[float, float] | None
@@ -48,6 +61,15 @@ def _positive(name: str, *values: float) -> None:
         raise RegionError(name, "must be greater than 0", values if len(values) > 1 else values[0])
 
 
+def _coded(text: str) -> None:
+    scheme, _, value = text.partition(":")
+    fits = all(0 < len(part.strip()) <= LONGEST_CODE for part in (scheme, value))
+    if text and not (fits and "\\" not in text):
+        raise RegionError(
+            "code", f"must be scheme:value, each of 1 to {LONGEST_CODE} characters", text
+        )
+
+
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Region:
     """Parent of all regions.
@@ -59,14 +81,27 @@ class Region:
         included), or None for every slice.
     name : str
         A name people gave it; shown in tables and records.
+    group : str
+        Its class: what it shows, "liver" or "rod".
+    code : str
+        The class as a code, "scheme:value" as in DICOM's coded entries, each of 1 to 16 characters.
+    values : (float, float) or None
+        A threshold within the region: only pixels from the first to the second value count, both
+        included; an end may be infinite.
     """
 
     kind: ClassVar[str] = "region"
 
     z_mm: Extent = None
     name: str = ""
+    group: str = ""
+    code: str = ""
+    values: tuple[float, float] | None = None
 
     def __post_init__(self) -> None:
+        _coded(self.code)
+        if self.values is not None and not self.values[0] <= self.values[1]:
+            raise RegionError("values", "must be given as (low, high)", self.values)
         if isinstance(self.z_mm, tuple):
             _finite("z_mm", *self.z_mm)
             if self.z_mm[0] > self.z_mm[1]:
@@ -139,6 +174,74 @@ class Ellipse(Region):
     def area_mm2(self) -> float:
         """Area in closed form."""
         return math.pi * self.radii_mm[0] * self.radii_mm[1]
+
+
+@dataclass(frozen=True, slots=True)
+class Ellipsoid(Region):
+    """An ellipsoid, a sphere if all its half axes are equal; one half axis is along z.
+
+    Attributes
+    ----------
+    center_mm : (float, float)
+        y and x of the centre; its z is `z_mm`.
+    radii_mm : (float, float)
+        As those of an :class:`Ellipse`: in the plane.
+    z_radius_mm : float
+        Half axis along z.
+    angle_deg : float
+        Direction of the second semi-axis, in the plane.
+
+    Examples
+    --------
+    >>> round(Ellipsoid((0.0, 0.0), (5.0, 5.0), 5.0, z_mm=40.0).volume_mm3, 1)
+    523.6
+    """
+
+    kind: ClassVar[str] = "ellipsoid"
+
+    center_mm: Point
+    radii_mm: Point
+    z_radius_mm: float
+    angle_deg: float = 0.0
+
+    def __post_init__(self) -> None:
+        Region.__post_init__(self)
+        if not isinstance(self.z_mm, int | float):
+            raise RegionError("z_mm", "must be the position of the centre", self.z_mm)
+        _finite("center_mm", *self.center_mm)
+        _finite("angle_deg", self.angle_deg)
+        _positive("radii_mm", *self.radii_mm)
+        _positive("z_radius_mm", self.z_radius_mm)
+
+    @property
+    def area_mm2(self) -> float:
+        """Area of the section through the centre."""
+        return math.pi * self.radii_mm[0] * self.radii_mm[1]
+
+    @property
+    def volume_mm3(self) -> float:
+        """Volume in closed form."""
+        return 4 / 3 * self.area_mm2 * self.z_radius_mm
+
+    def section(self, z_mm: float, slab_mm: float = 0.0) -> Ellipse | None:
+        """Return the ellipse in which a slab cuts it, or None if the slab misses it.
+
+        The ellipse has the mean area of the sections within the slab, so that slabs side by side
+        hold the ellipsoid's volume; a slab of no thickness gives the section itself.
+        """
+        assert isinstance(self.z_mm, int | float)  # noqa: S101 - checked in __post_init__
+        c, at = self.z_radius_mm, z_mm - self.z_mm
+        if slab_mm > 0:
+            low, high = max(at - slab_mm / 2, -c), min(at + slab_mm / 2, c)
+            inside = max(high - low, 0.0)
+            share = (inside - (high**3 - low**3) / (3 * c * c)) / slab_mm if inside else 0.0
+        else:
+            share = 1 - (at / c) ** 2
+            share = 1e-16 if abs(share) < 1e-12 else share  # a pole belongs to it
+        if share <= 0:
+            return None
+        b, a = (radius * math.sqrt(share) for radius in self.radii_mm)
+        return Ellipse(self.center_mm, (b, a), self.angle_deg)
 
 
 @dataclass(frozen=True, slots=True)

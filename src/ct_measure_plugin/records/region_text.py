@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import base64
 import binascii
+import math
 import zlib
 from dataclasses import MISSING, fields
 from typing import Any
@@ -36,12 +37,14 @@ def region_to_dict(region: Region) -> dict[str, Any]:
     {'kind': 'disc', 'center_mm': [1.0, 2.0], 'radius_mm': 3.0, 'z_mm': 4.0, 'name': 'water'}
     """
     found: dict[str, Any] = {"kind": region.kind}
-    late = {"z_mm", "name"}
+    late = {"z_mm", "name", "group", "code", "values"}
     ordered = sorted(fields(region), key=lambda field: field.name in late)
     for field in ordered:
         value = getattr(region, field.name)
         if isinstance(value, np.ndarray):
             found[field.name] = _pack(value)
+        elif field.name == "values" and value is not None:
+            found["values"] = [end if math.isfinite(end) else None for end in value]
         elif field.default is MISSING or value != field.default:
             found[field.name] = _plain(value)
     return found
@@ -74,6 +77,8 @@ def region_from_dict(given: Any) -> Region:
     for name, field in wanted.items():
         if name not in values and field.default is MISSING:
             raise RegionError(name, f"must be given for a {kind}", None)
+    if values.get("values") is not None:
+        values["values"] = _open_range(values["values"])
     if kinds[kind] is Mask:
         values["inside"] = _unpack(values["inside"])
     made = {name: _typed(name, value) for name, value in values.items()}
@@ -90,7 +95,7 @@ def _typed(name: str, value: Any) -> Any:
     """Turn lists into tuples and numbers into floats; anything else is refused by name."""
     if isinstance(value, np.ndarray) or value is None:
         return value
-    if name == "name":
+    if name in ("name", "group", "code"):
         if not isinstance(value, str):
             raise RegionError(name, "must be text", value)
         return value
@@ -99,6 +104,14 @@ def _typed(name: str, value: Any) -> Any:
     if isinstance(value, list | tuple):
         return tuple(_typed(name, part) for part in value)
     return float(value)
+
+
+def _open_range(given: Any) -> tuple[float, float]:
+    """Return a range whose missing ends are infinite."""
+    if not isinstance(given, list | tuple) or len(given) != 2:
+        raise RegionError("values", "must be two numbers, the lowest and the highest", given)
+    low, high = given
+    return -math.inf if low is None else low, math.inf if high is None else high
 
 
 def _pack(mask: np.ndarray[Any, Any]) -> dict[str, Any]:

@@ -43,11 +43,14 @@ class RegionNeed:
     together : bool
         True if it takes all regions as one set and gives one result; False if it measures each
         region by itself.
+    thresholds : bool
+        True if a region's own range of values counts; False if it is refused.
     """
 
     kinds: tuple[str, ...]
     at_least: int = 1
     together: bool = False
+    thresholds: bool = False
 
 
 #: Kinds that enclose pixels on a slice, and these with the kinds that only a stack of slices has.
@@ -132,3 +135,5 @@ class Measurement(ABC):
                 raise RegionError(
                     "regions", f"must be of kind {', '.join(self.regions.kinds)}", region.kind
                 )
+            if region.values is not None and not self.regions.thresholds:
+                raise RegionError("values", f"must be left out for {self.name}", region.values)

@@ -71,7 +71,7 @@ class MeasureRegionStatistics(Measurement):
     summary: ClassVar[str] = "Mean, SD, area and extremes of the pixels in each region."
     settings_type: ClassVar[type[Settings]] = RegionStatisticsSettings
     result_type: ClassVar[type[Result]] = RegionStatistics
-    regions: ClassVar[RegionNeed] = RegionNeed(BODIES)
+    regions: ClassVar[RegionNeed] = RegionNeed(BODIES, thresholds=True)
     columns: ClassVar[tuple[str, ...]] = (
         "mean",
         "sd",

@@ -1,0 +1,150 @@
+"""Answers are kept, come within their time, and never stand beside a region that moved on."""
+
+from __future__ import annotations
+
+import threading
+from dataclasses import replace
+
+import numpy as np
+import pytest
+
+from ct_measure_plugin.measurements import find, measure
+from ct_measure_plugin.physics.regions import Disc
+from ct_measure_plugin.viewer import region_answers
+from ct_measure_plugin.viewer.region_answers import Ask, RegionAnswers
+
+NAME = "region_statistics"
+
+
+@pytest.fixture
+def answers():
+    made = RegionAnswers(NAME)
+    yield made
+    made.stop()
+
+
+def asks_of(volume, count, shift=0.0, **more):
+    settings = find(NAME).settings_type()
+    return [
+        Ask(volume, Disc((0.0, 12.0 + 2 * i + shift), 4.0, z_mm=-15.0), settings, **more)
+        for i in range(count)
+    ]
+
+
+def counted(answers, monkeypatch, hold=None):
+    """Count what is measured, and hold it up while `hold` is not set."""
+    done, real = [], answers._answer
+
+    def answer(ask):
+        if hold is not None:
+            hold.begun.set()
+            hold.wait(5)
+        done.append(ask)
+        return real(ask)
+
+    monkeypatch.setattr(answers, "_answer", answer)
+    return done
+
+
+def test_an_answer_is_what_python_gives_and_is_found_once(answers, volume, monkeypatch):
+    done = counted(answers, monkeypatch)
+    asks = asks_of(volume, 3)
+    assert answers.find(asks) == 0
+    assert answers.find(asks) == 0
+    assert done == asks
+    for ask in asks:
+        assert answers.known(ask).mean == measure(NAME, volume, ask.region).mean
+
+
+def test_only_what_moved_is_measured_again(answers, volume, monkeypatch):
+    done = counted(answers, monkeypatch)
+    asks = asks_of(volume, 4)
+    answers.find(asks)
+    moved = replace(asks[2], region=replace(asks[2].region, center_mm=(1.0, 16.0)))
+    answers.find([*asks[:2], moved, asks[3]])
+    assert done == [*asks, moved]
+
+
+def test_without_time_nothing_is_measured_and_the_rest_is_told(answers, volume, monkeypatch):
+    done = counted(answers, monkeypatch)
+    asks = asks_of(volume, 5)
+    assert answers.find(asks, seconds=0.0) == 5
+    assert done == []
+
+
+def test_the_first_asked_is_the_first_measured(answers, volume, monkeypatch):
+    clock = iter(np.arange(0, 100, 0.006))
+    monkeypatch.setattr(region_answers.time, "perf_counter", lambda: float(next(clock)))
+    done = counted(answers, monkeypatch)
+    asks = asks_of(volume, 6)
+    rest = answers.find(asks[::-1], seconds=0.02)
+    assert 0 < rest < 6
+    assert done == asks[::-1][: 6 - rest]
+
+
+def test_a_long_one_is_measured_elsewhere(answers, volume, monkeypatch, qtbot):
+    monkeypatch.setattr(region_answers, "LONG", 0.0)
+    here = threading.get_ident()
+    where = []
+    real = answers._answer
+    monkeypatch.setattr(
+        answers, "_answer", lambda ask: (where.append(threading.get_ident()), real(ask))[1]
+    )
+    [ask] = asks_of(volume, 1)
+    with_told = []
+    answers.changed.connect(lambda: with_told.append(1))
+    assert answers.find([ask], seconds=1.0) == 0
+    assert answers.known(ask) is None
+    qtbot.waitUntil(lambda: bool(with_told), timeout=5000)
+    answers.find([ask], seconds=0.0)
+    assert answers.known(ask).mean == measure(NAME, volume, ask.region).mean
+    assert where
+    assert here not in where
+
+
+def test_many_at_rest_are_measured_elsewhere(answers, volume, monkeypatch, qtbot):
+    """In a drag they are not: their questions would be out of date before the answers came."""
+    monkeypatch.setattr(region_answers, "MANY", 0.0)
+    for step in range(3):
+        answers.find(asks_of(volume, 5, shift=0.1 * step), seconds=0.0)
+        assert not answers.busy
+    asks = asks_of(volume, 5, shift=0.2)
+    assert answers.find(asks, seconds=0.0) == 0
+    assert answers.busy
+    qtbot.waitUntil(lambda: not answers.busy, timeout=5000)
+    answers.find(asks, seconds=0.0)
+    assert all(answers.known(ask) for ask in asks)
+
+
+def test_an_answer_that_comes_too_late_is_dropped(answers, volume, monkeypatch, qtbot):
+    """The values changed while the job ran: what it found was of the values before."""
+    monkeypatch.setattr(region_answers, "LONG", 0.0)
+    hold = threading.Event()
+    hold.begun = threading.Event()
+    done = counted(answers, monkeypatch, hold)
+    [ask] = asks_of(volume, 1)
+    answers.find([ask], seconds=1.0)
+    assert hold.begun.wait(5)
+    answers.forget()
+    hold.set()
+    qtbot.waitUntil(lambda: bool(done), timeout=5000)
+    answers.find([ask], seconds=0.0)
+    assert answers.known(ask) is None
+    qtbot.waitUntil(lambda: not answers.busy, timeout=5000)
+
+
+def test_a_range_of_values_is_part_of_the_question(answers, volume):
+    [ask] = asks_of(volume, 1)
+    [narrow] = asks_of(volume, 1, values=(30.0, 50.0))
+    [nothing] = asks_of(volume, 1, values=(5000.0, 6000.0))
+    answers.find([ask, narrow, nothing])
+    assert answers.known(narrow).minimum.value >= 30 > answers.known(ask).minimum.value
+    assert not answers.known(nothing)
+    assert "no pixel of the region" in answers.known(nothing).reason
+
+
+def test_answers_nobody_asks_for_are_forgotten(answers, volume, monkeypatch):
+    monkeypatch.setattr(region_answers, "_SPARE", 2)
+    for step in range(20):
+        answers.find(asks_of(volume, 1, shift=0.1 * step))
+    assert len(answers._known) <= 5  # two an ask, the spare ones, and the newest

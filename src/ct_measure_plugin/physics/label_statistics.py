@@ -196,7 +196,8 @@ def _from_runs(runs: _Runs, percentiles: tuple[float, ...]) -> LabelNumbers:
         np.bincount(row, weighted * residual**k, minlength=labels) / safe for k in (1, 2, 3)
     )
     last = np.maximum(runs.start[1:] - 1, 0)
-    spread = runs.value[last] - anchor if len(runs.value) else np.zeros(labels)
+    highest = runs.value[last] if len(runs.value) else np.zeros(labels)
+    spread = highest - anchor
     m2 = np.where(spread == 0, 0.0, m2)  # equal values: rounding must not invent a spread
     curved = m2 > 0
     divisor = np.where(curved, m2, 1.0)
@@ -211,7 +212,7 @@ def _from_runs(runs: _Runs, percentiles: tuple[float, ...]) -> LabelNumbers:
         np.where(n > 1, sd, math.nan),
         np.sqrt(m2) + nothing,
         anchor + nothing,
-        anchor + spread + nothing,
+        highest + nothing,
         np.where(curved, m3 / divisor**1.5, 0.0) + nothing,
         np.where(curved, m4 / divisor**2 - 3.0, 0.0) + nothing,
         _percentiles(runs, n, percentiles),

@@ -7,7 +7,7 @@ import math
 import numpy as np
 import pytest
 
-from ct_measure_plugin.physics.regions import Box, Disc, Ellipse, Polygon
+from ct_measure_plugin.physics.regions import Box, Disc, Ellipse, Ellipsoid, Polygon, Segment
 from ct_measure_plugin.viewer.layers import layer_of, placement_of
 from ct_measure_plugin.viewer.shapes import (
     drawn_on,
@@ -162,3 +162,89 @@ def test_a_cancelled_polygon_is_repaired(scene):
     assert repair(layer) is True
     assert len(layer.features) == layer.nshapes == 1
     assert drawn_on(layer, placement, viewer.dims.point)[0].name == "kept"
+
+
+def tagged(scene, corners, kind, **columns):
+    viewer, image, placement = scene
+    layer = new_regions_layer(viewer, image)
+    layer.add(np.asarray(corners, dtype=float), shape_type=kind)
+    layer.features = {name: [value] for name, value in columns.items()}
+    return drawn_on(layer, placement, viewer.dims.point)
+
+
+CIRCLE = [(10, 20), (10, 30), (20, 30), (20, 20)]
+
+
+def test_a_line_is_the_strip_that_its_edge_covers(scene):
+    """Edge width 3 on pixels of 0.7 mm: a strip of 2.1 mm."""
+    [found] = add(scene, on_slice(1, [(5, 5), (25, 25)]), "line", edge_width=3)
+    assert isinstance(found.region, Segment)
+    assert found.region.width_mm == pytest.approx(2.1, abs=FLOAT32)
+    assert found.region.start_mm == pytest.approx((-14 + 3.5, 7 + 3.5), abs=FLOAT32)
+    assert found.region.length_mm == pytest.approx(20 * math.sqrt(2) * 0.7, abs=FLOAT32)
+
+
+def test_the_width_of_a_line_is_in_its_own_layers_units(scene):
+    viewer, _, placement = scene
+    layer = viewer.add_shapes(
+        [np.array([[0, 0], [0, 100]])], shape_type="line", edge_width=20, scale=(0.1, 0.1),
+        translate=(-6.0, 12.0), units="mm",
+    )  # fmt: skip
+    [found] = drawn_on(layer, placement, viewer.dims.point)
+    assert found.region.width_mm == pytest.approx(2.0, abs=FLOAT32)
+
+
+@pytest.mark.parametrize(
+    ("low", "high", "expected"),
+    [
+        (-20.0, -12.5, (-20.0, -12.5)),
+        (math.nan, -7.5, (-12.5, -7.5)),
+        (-17.5, math.nan, (-17.5, -12.5)),
+        (-math.inf, math.inf, None),
+        (-math.inf, -15.0, (-20.0, -15.0)),
+    ],
+)
+def test_a_region_reaches_over_the_slices_that_its_features_say(scene, low, high, expected):
+    """Drawn on slice 3, at -12.5 mm."""
+    [found] = tagged(scene, on_slice(3, CIRCLE), "ellipse", z_low_mm=low, z_high_mm=high)
+    assert found.region.z_mm == expected
+
+
+def test_an_ellipse_is_swept_to_the_ellipsoid_that_ends_with_its_slices(scene):
+    """Slices 1 to 4 of 2.5 mm: four slabs, 10 mm from end to end."""
+    [found] = tagged(
+        scene, on_slice(3, CIRCLE), "ellipse",
+        z_low_mm=-17.5, z_high_mm=-10.0, swept_to="ellipsoid", name="bead",
+    )  # fmt: skip
+    assert isinstance(found.region, Ellipsoid)
+    assert found.region.z_radius_mm == 5.0
+    assert found.region.z_mm == -13.75
+    assert found.region.name == "bead"
+    assert found.region.radii_mm == pytest.approx((3.5, 3.5), abs=FLOAT32)
+
+
+@pytest.mark.parametrize(
+    ("kind", "columns", "problem"),
+    [
+        ("ellipse", {}, "needs several slices"),
+        ("rectangle", {"z_low_mm": -20.0, "z_high_mm": -10.0}, "a box cannot be swept"),
+    ],
+)
+def test_what_cannot_be_swept_says_why(scene, kind, columns, problem):
+    [found] = tagged(scene, on_slice(3, CIRCLE), kind, swept_to="ellipsoid", **columns)
+    assert found.region is None
+    assert problem in found.problem
+
+
+def test_class_code_and_range_of_values_belong_to_the_region(scene):
+    words = {"class": "insert", "code": "SCT:1234", "value_low": -50.0}
+    [found] = tagged(scene, on_slice(3, CIRCLE), "ellipse", **words)
+    assert (found.group, found.code) == ("insert", "SCT:1234")
+    assert (found.region.group, found.region.code) == ("insert", "SCT:1234")
+    assert found.region.values == (-50.0, math.inf)
+
+
+def test_a_code_that_is_none_is_told_in_the_row(scene):
+    [found] = tagged(scene, on_slice(3, CIRCLE), "ellipse", code="1234")
+    assert found.region is None
+    assert "must be scheme:value" in found.problem

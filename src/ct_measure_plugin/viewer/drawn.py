@@ -29,8 +29,6 @@ class Drawn:
         The class it was given: what it shows.
     code : str
         The class as a code, "scheme:value".
-    values : (float, float) or None
-        The range of values that counts within the region; None if every value does.
     """
 
     index: int
@@ -39,4 +37,3 @@ class Drawn:
     problem: str = ""
     group: str = ""
     code: str = ""
-    values: tuple[float, float] | None = None

@@ -14,12 +14,12 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from psygnal import Signal
 
+from ct_measure_plugin.errors import CtMeasureError
 from ct_measure_plugin.physics.label_regions import joined, label_boxes, label_mask, overlap
 from ct_measure_plugin.viewer.drawn import Drawn
 from ct_measure_plugin.viewer.following import Following
 from ct_measure_plugin.viewer.label_grid import Grid, NoGrid, grid_of
 from ct_measure_plugin.viewer.region_features import tags_on
-from ct_measure_plugin.viewer.shapes import range_of
 
 if TYPE_CHECKING:
     from collections.abc import Iterator, Sequence
@@ -197,12 +197,15 @@ class LabelRegions:
         found = []
         for label, tags in zip(labels, tags_on(self.layer, labels), strict=True):
             name = tags.name or f"label {label}"
-            mask = self._known.masks[label]
-            if (mask.name, mask.z_mm) != (name, grid.z_mm):
-                mask = replace(mask, name=name, z_mm=grid.z_mm)
-                self._known.masks[label] = mask
-            values = range_of(tags.values)
-            found.append(Drawn(label, name, mask, "", tags.group, tags.code, values))
+            mask, problem = self._known.masks[label], ""
+            words = {"name": name, "z_mm": grid.z_mm, **tags.words()}
+            try:
+                if any(getattr(mask, word) != value for word, value in words.items()):
+                    self._known.masks[label] = mask = replace(mask, **words)
+            except CtMeasureError as error:
+                problem = str(error)
+            region = None if problem else mask
+            found.append(Drawn(label, name, region, problem, tags.group, tags.code))
         return tuple(found)
 
 

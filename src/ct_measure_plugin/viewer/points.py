@@ -13,14 +13,15 @@ from ct_measure_plugin.errors import CtMeasureError
 from ct_measure_plugin.physics.regions import Disc
 from ct_measure_plugin.viewer.drawn import Drawn
 from ct_measure_plugin.viewer.layer_frame import LayerFrame
-from ct_measure_plugin.viewer.region_features import Tags, tags_on
-from ct_measure_plugin.viewer.shapes import extent_of, range_of
+from ct_measure_plugin.viewer.region_features import ELLIPSOID, Tags, tags_on
+from ct_measure_plugin.viewer.shapes import NoRegionError, extent_of, swept
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
 
     from numpy.typing import NDArray
 
+    from ct_measure_plugin.physics.regions import Region
     from ct_measure_plugin.physics.volume import Volume
     from ct_measure_plugin.viewer.placement import Placement
 
@@ -55,15 +56,19 @@ def _drawn(
     index: int, center: NDArray[np.float64], radius: float, tags: Tags, volume: Volume
 ) -> Drawn:
     name = tags.name or f"point {index + 1}"
-    more = tags.group, tags.code, range_of(tags.values)
+    region: Region | None = None
+    problem = ""
     k = int(np.rint(center[0]))
     if not 0 <= k < volume.shape[0]:
-        return Drawn(index, name, None, "it lies above or below the volume", *more)
-    if radius <= 0:
-        return Drawn(index, name, None, "a point of size 0 has no area; give it a size", *more)
-    z = extent_of(tags, float(volume.positions_mm[k]), volume)
-    try:
-        region = Disc((float(center[1]), float(center[2])), radius, z_mm=z, name=name)
-    except CtMeasureError as error:
-        return Drawn(index, name, None, str(error), *more)
-    return Drawn(index, name, region, "", *more)
+        problem = "it lies above or below the volume"
+    elif radius <= 0:
+        problem = "a point of size 0 has no area; give it a size"
+    else:
+        z = extent_of(tags, float(volume.positions_mm[k]), volume)
+        place = float(center[1]), float(center[2])
+        try:
+            region = Disc(place, radius, z_mm=z, name=name, **tags.words())
+            region = swept(region, volume) if tags.swept == ELLIPSOID else region
+        except (CtMeasureError, NoRegionError) as error:
+            region, problem = None, str(error)
+    return Drawn(index, name, region, problem, tags.group, tags.code)

@@ -1,23 +1,26 @@
 """Answers of many regions, kept while nothing about them changes, found without holding up a drag.
 
 Each tick asks for all of them. Those not known are measured until the tick's time is used up, the
-first ones first; the rest waits for the next tick. A region that would take long by itself, and
-many that have come to rest, are measured in a thread. An answer belongs to its question, region
-and Volume and settings, so an old one can never stand beside a region that has moved on.
+first ones first; where many move at once, each is glanced at (the same numbers, without their
+uncertainties) until the full answers follow. A region that would take long by itself, and many
+that have come to rest, are measured in a thread. An answer belongs to its question, region and
+Volume and settings, so an old one can never stand beside a region that has moved on.
 """
 
 from __future__ import annotations
 
+import math
 import time
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
 from psygnal import Signal
 
+from ct_measure_plugin.errors import CtMeasureError
 from ct_measure_plugin.measurements import find
 from ct_measure_plugin.physics.coverage import slices_of
+from ct_measure_plugin.physics.regions import Segment
 from ct_measure_plugin.physics.results import NotMeasured, Result
-from ct_measure_plugin.physics.threshold import threshold_mask
 from ct_measure_plugin.viewer.following import Following
 
 if TYPE_CHECKING:
@@ -28,7 +31,7 @@ if TYPE_CHECKING:
     from ct_measure_plugin.physics.volume import Volume
     from ct_measure_plugin.viewer.tasks import Work
 
-__all__ = ["Ask", "RegionAnswers", "cut"]
+__all__ = ["Ask", "RegionAnswers"]
 
 #: Seconds that one region may take in the main thread.
 LONG = 0.05
@@ -56,21 +59,11 @@ class Ask:
         Where.
     settings : Settings
         Complete.
-    values : (float, float) or None
-        The range of values that counts.
     """
 
     volume: Volume
     region: Region
     settings: Settings
-    values: tuple[float, float] | None = None
-
-
-def cut(ask: Ask) -> Region | NotMeasured:
-    """Return the region that is measured: itself, or the part within the range of values."""
-    if ask.values is None:
-        return ask.region
-    return threshold_mask(ask.volume, ask.region, *ask.values)
 
 
 class RegionAnswers:
@@ -92,6 +85,7 @@ class RegionAnswers:
     def __init__(self, name: str) -> None:
         self._measurement = find(name)
         self._known: dict[Ask, Result | NotMeasured] = {}
+        self._glanced: dict[Ask, Result | NotMeasured] = {}
         self._last: frozenset[Ask] = frozenset()
         self._guesses: dict[Ask, float] = {}
         self._pace = 1.0
@@ -106,12 +100,17 @@ class RegionAnswers:
         return self._following.busy
 
     def known(self, ask: Ask) -> Result | NotMeasured | None:
-        """Return an answer, None if it is not known yet."""
-        return self._known.get(ask)
+        """Return an answer, or a glance if that is all there is; None if not even that."""
+        return self._known[ask] if ask in self._known else self._glanced.get(ask)
+
+    def complete(self, ask: Ask) -> bool:
+        """Tell whether an answer is known with all its numbers."""
+        return ask in self._known
 
     def forget(self) -> None:
         """Measure everything anew: a Volume's values have changed."""
         self._known.clear()
+        self._glanced.clear()
         self._round += 1
         self.stop()
 
@@ -140,11 +139,15 @@ class RegionAnswers:
         self._make_room(asks)
         open_asks = [ask for ask in dict.fromkeys(asks) if ask not in self._known]
         if seconds is None:
-            self._measure(open_asks, None)
+            self._measure(open_asks, math.inf)
             return 0
         wanted = frozenset(asks)
         at_rest, self._last = wanted == self._last, wanted
-        self._measure([ask for ask in open_asks if self._cost(ask) <= LONG], seconds)
+        short = [ask for ask in open_asks if self._cost(ask) <= LONG]
+        end = time.perf_counter() + seconds
+        if sum(map(self._cost, short)) > seconds:
+            self._glance(short, end)
+        self._measure(short, end)
         rest = [ask for ask in open_asks if ask not in self._known]
         if not rest or self._following.busy:
             return len(rest)
@@ -159,20 +162,29 @@ class RegionAnswers:
 
     # --- inside ---------------------------------------------------------------------
 
-    def _measure(self, asks: Iterable[Ask], seconds: float | None) -> None:
-        end = None if seconds is None else time.perf_counter() + seconds
+    def _measure(self, asks: Iterable[Ask], end: float) -> None:
         for ask in asks:
             start = time.perf_counter()
-            if end is not None and start >= end:
+            if start >= end:
                 return
             self._known[ask] = self._answer(ask)
+            self._glanced.pop(ask, None)
             self._learn(ask, time.perf_counter() - start)
 
-    def _answer(self, ask: Ask) -> Result | NotMeasured:
-        region = cut(ask)
-        if isinstance(region, NotMeasured):
-            return replace(region, cautions=(*region.cautions, *ask.volume.cautions))
-        return self._measurement.measure(ask.volume, (region,), ask.settings)
+    def _glance(self, asks: Iterable[Ask], end: float) -> None:
+        for ask in asks:
+            if ask not in self._glanced:
+                if time.perf_counter() >= end:
+                    return
+                self._glanced[ask] = self._answer(ask, moving=True)
+
+    def _answer(self, ask: Ask, *, moving: bool = False) -> Result | NotMeasured:
+        measure = self._measurement.glance if moving else self._measurement.measure
+        try:
+            self._measurement.check_regions((ask.region,))
+            return measure(ask.volume, (ask.region,), ask.settings)
+        except CtMeasureError as error:
+            return NotMeasured(str(error), "draw it again", ask.volume.cautions)
 
     def _cost(self, ask: Ask) -> float:
         """Return about how long a region takes, in seconds."""
@@ -209,9 +221,10 @@ class RegionAnswers:
             self.changed.emit()
 
     def _make_room(self, asks: Sequence[Ask]) -> None:
-        if len(self._known) > 2 * len(asks) + _SPARE:
+        if len(self._known) + len(self._glanced) > 2 * len(asks) + _SPARE:
             wanted = set(asks)
             self._known = {ask: found for ask, found in self._known.items() if ask in wanted}
+            self._glanced = {ask: found for ask, found in self._glanced.items() if ask in wanted}
             self._guesses = {ask: cost for ask, cost in self._guesses.items() if ask in wanted}
 
 
@@ -227,7 +240,8 @@ def _pixels(ask: Ask, slices: int) -> float:
     if inside is not None:
         return float(inside.size)
     _, dy, dx = ask.volume.spacing_mm
-    area = getattr(region, "area_mm2", None)
-    if area is None:
+    if isinstance(region, Segment):
         area = region.length_mm * region.width_mm
+    else:
+        area = getattr(region, "area_mm2", 0.0)
     return slices * float(area) / (dy * dx)

@@ -12,6 +12,7 @@ from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
 from ct_measure_plugin.errors import ArgumentError
+from ct_measure_plugin.physics.regions import LONGEST_CODE
 from ct_measure_plugin.physics.results import NotMeasured, quantities_of
 
 if TYPE_CHECKING:
@@ -22,9 +23,15 @@ if TYPE_CHECKING:
 __all__ = [
     "CLASS",
     "CODE",
+    "ELLIPSOID",
+    "HIGH",
     "ID",
+    "LOW",
     "NAME",
     "PREFIX",
+    "SWEPT",
+    "Z_HIGH",
+    "Z_LOW",
     "Tags",
     "checked_code",
     "ids_on",
@@ -37,6 +44,10 @@ NAME, CLASS, CODE = "name", "class", "code"
 Z_LOW, Z_HIGH = "z_low_mm", "z_high_mm"
 LOW, HIGH = "value_low", "value_high"
 
+#: The column that says what a disc or an ellipse over several slices is swept to: nothing for a
+#: cylinder, or ELLIPSOID.
+SWEPT, ELLIPSOID = "swept_to", "ellipsoid"
+
 #: A number that stays with a region, whatever its place on the layer.
 ID = "region_id"
 
@@ -45,10 +56,6 @@ PREFIX = "ct_"
 
 #: The column of a Labels layer's features that names the label of each row; napari's own word.
 INDEX = "index"
-
-#: Characters of a code and of its scheme: DICOM's short strings (PS3.5, 6.2, value
-#: representation SH).
-_SHORT = 16
 
 
 @dataclass(frozen=True, slots=True)
@@ -63,6 +70,8 @@ class Tags:
         First and last slice it reaches over; NaN where nothing was said, infinite for all slices.
     values : (float, float)
         Lowest and highest value that counts; NaN where nothing was said.
+    swept : str
+        "ellipsoid" where the range of slices is that of one; else the form is the same on all.
     """
 
     name: str = ""
@@ -70,6 +79,14 @@ class Tags:
     code: str = ""
     z_mm: tuple[float, float] = (math.nan, math.nan)
     values: tuple[float, float] = (math.nan, math.nan)
+    swept: str = ""
+
+    def words(self) -> dict[str, Any]:
+        """Return what every kind of region takes besides its place: class, code, threshold."""
+        low, high = self.values
+        known = not (math.isnan(low) and math.isnan(high))
+        ends = (-math.inf if math.isnan(low) else low, math.inf if math.isnan(high) else high)
+        return {"group": self.group, "code": self.code, "values": ends if known else None}
 
 
 def tags_on(layer: Any, keys: Sequence[int] | None = None) -> list[Tags]:
@@ -87,13 +104,13 @@ def tags_on(layer: Any, keys: Sequence[int] | None = None) -> list[Tags]:
     if not len(features.columns):
         return [Tags()] * count
     rows = range(count) if keys is None else _rows_of_labels(layer, keys)
-    texts = [_column(features, name) for name in (NAME, CLASS, CODE)]
+    texts = [_column(features, name) for name in (NAME, CLASS, CODE, SWEPT)]
     numbers = [_column(features, name) for name in (Z_LOW, Z_HIGH, LOW, HIGH)]
 
     def tags(row: int) -> Tags:
-        name, group, code = (_text(column, row) for column in texts)
+        name, group, code, swept = (_text(column, row) for column in texts)
         z_low, z_high, low, high = (_number(column, row) for column in numbers)
-        return Tags(name, group, code, (z_low, z_high), (low, high))
+        return Tags(name, group, code, (z_low, z_high), (low, high), swept)
 
     return [tags(row) for row in rows]
 
@@ -208,9 +225,10 @@ def checked_code(text: str) -> str:
     if not text.strip():
         return ""
     scheme, colon, value = (part.strip() for part in text.partition(":"))
-    fits = scheme and value and len(scheme) <= _SHORT and len(value) <= _SHORT
+    fits = all(0 < len(part) <= LONGEST_CODE for part in (scheme, value))
     if not (colon and fits and "\\" not in text):
-        raise ArgumentError("code", f"must be scheme:value, each of 1 to {_SHORT} characters", text)
+        rule = f"must be scheme:value, each of 1 to {LONGEST_CODE} characters"
+        raise ArgumentError("code", rule, text)
     return f"{scheme}:{value}"
 
 
@@ -256,7 +274,7 @@ def _blank_defaults(layer: Any) -> None:
     """
     defaults = layer.feature_defaults.copy()
     for name in defaults.columns:
-        if name in (NAME, ID, Z_LOW, Z_HIGH, LOW, HIGH) or name.startswith(PREFIX):
+        if name in (NAME, ID, Z_LOW, Z_HIGH, LOW, HIGH, SWEPT) or name.startswith(PREFIX):
             blank = {"f": math.nan, "i": 0, "u": 0, "b": False}.get(defaults[name].dtype.kind, "")
             defaults[name] = [blank]
     layer.feature_defaults = defaults

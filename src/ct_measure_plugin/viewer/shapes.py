@@ -14,10 +14,18 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from ct_measure_plugin.errors import CtMeasureError
-from ct_measure_plugin.physics.regions import Box, Disc, Ellipse, Polygon, Region, Segment
+from ct_measure_plugin.physics.regions import (
+    Box,
+    Disc,
+    Ellipse,
+    Ellipsoid,
+    Polygon,
+    Region,
+    Segment,
+)
 from ct_measure_plugin.viewer.drawn import Drawn
 from ct_measure_plugin.viewer.layer_frame import LayerFrame
-from ct_measure_plugin.viewer.region_features import NAME, Tags, set_column, tags_on
+from ct_measure_plugin.viewer.region_features import ELLIPSOID, NAME, Tags, set_column, tags_on
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
@@ -31,14 +39,15 @@ if TYPE_CHECKING:
 
 __all__ = [
     "Drawn",
+    "NoRegionError",
     "drawn_on",
     "extent_of",
     "names_on",
     "new_regions_layer",
-    "range_of",
     "rename",
     "repair",
     "shape_of",
+    "swept",
 ]
 
 #: Relative difference up to which two half axes are one radius, and a cosine is a right angle:
@@ -124,7 +133,7 @@ def shape_of(region: Region) -> tuple[Floats, str]:
     """
     if isinstance(region, Disc):
         region = Ellipse(region.center_mm, (region.radius_mm,) * 2)
-    if isinstance(region, Ellipse):
+    if isinstance(region, Ellipse | Ellipsoid):
         size = (2 * region.radii_mm[0], 2 * region.radii_mm[1])
         return np.asarray(Box(region.center_mm, size, region.angle_deg).vertices_mm), "ellipse"
     if isinstance(region, Box):
@@ -151,14 +160,6 @@ def extent_of(tags: Tags, z_mm: float, volume: Volume) -> float | tuple[float, f
     return (low, high) if low <= high else (high, low)
 
 
-def range_of(values: tuple[float, float]) -> tuple[float, float] | None:
-    """Return the range of values that counts, None if every value does; an open end is infinite."""
-    low, high = values
-    if math.isnan(low) and math.isnan(high):
-        return None
-    return -math.inf if math.isnan(low) else low, math.inf if math.isnan(high) else high
-
-
 def _name(index: int, tags: Tags) -> str:
     return tags.name or f"region {index + 1}"
 
@@ -175,36 +176,69 @@ class _Outline:
 def _drawn(index: int, outline: _Outline, tags: Tags, placement: Placement) -> Drawn:
     try:
         region, problem = _region(outline, tags, placement.volume, _name(index, tags)), ""
-    except (CtMeasureError, _NoRegionError) as error:
+    except (CtMeasureError, NoRegionError) as error:
         region, problem = None, str(error)
-    return Drawn(
-        index, _name(index, tags), region, problem, tags.group, tags.code, range_of(tags.values)
-    )
+    return Drawn(index, _name(index, tags), region, problem, tags.group, tags.code)
 
 
-class _NoRegionError(Exception):
+class NoRegionError(Exception):
     """A shape that is no region."""
 
 
 def _region(outline: _Outline, tags: Tags, volume: Volume, name: str) -> Region:
     slices = np.rint(outline.voxels[:, 0]).astype(int)
     if len(set(slices.tolist())) > 1:
-        raise _NoRegionError("its corners lie on different slices")
+        raise NoRegionError("its corners lie on different slices")
     if not 0 <= slices[0] < volume.shape[0]:
-        raise _NoRegionError("it lies above or below the volume")
-    z = extent_of(tags, float(volume.positions_mm[slices[0]]), volume)
+        raise NoRegionError("it lies above or below the volume")
+    at = float(volume.positions_mm[slices[0]])
+    words = {"z_mm": extent_of(tags, at, volume), "name": name, **tags.words()}
     step, origin = np.asarray(volume.spacing_mm[1:]), np.asarray(volume.origin_mm[1:])
     corners = outline.voxels[:, 1:] * step + origin
+    flat = _flat_region(outline, corners, words)
+    return swept(flat, volume) if tags.swept == ELLIPSOID else flat
+
+
+def _flat_region(outline: _Outline, corners: Floats, words: dict[str, Any]) -> Region:
     if outline.kind == "line":
         ends = _pair(corners[0]), _pair(corners[1])
-        return Segment(*ends, float(outline.width), z_mm=z, name=name)
+        return Segment(*ends, float(outline.width), **words)
     if outline.kind == "path":
-        raise _NoRegionError("a path has no area; draw a line, whose width counts, or a polygon")
+        raise NoRegionError("a path has no area; draw a line, whose width counts, or a polygon")
     if outline.kind == "ellipse":
-        return _ellipse(corners, z, name)
+        return _ellipse(corners, words)
     if outline.kind == "rectangle":
-        return _rectangle(corners, z, name)
-    return Polygon(tuple(_pair(corner) for corner in corners), z_mm=z, name=name)
+        return _rectangle(corners, words)
+    return Polygon(tuple(_pair(corner) for corner in corners), **words)
+
+
+def swept(region: Region, volume: Volume) -> Region:
+    """Return a disc or an ellipse over several slices as the ellipsoid that ends with them.
+
+    It ends where the first and the last slice do, half a slice beyond their centres.
+
+    Raises
+    ------
+    NoRegionError
+        For a region of another kind, or on a single slice.
+    """
+    if isinstance(region, Disc):
+        radii, angle = (region.radius_mm,) * 2, 0.0
+    elif isinstance(region, Ellipse):
+        radii, angle = region.radii_mm, region.angle_deg
+    else:
+        raise NoRegionError(f"a {region.kind} cannot be swept to an ellipsoid; an ellipse can")
+    low, high = (volume.positions_mm[0], volume.positions_mm[-1])
+    if isinstance(region.z_mm, tuple):
+        low, high = region.z_mm
+    elif region.z_mm is not None:
+        raise NoRegionError("an ellipsoid needs several slices; give it a first and a last one")
+    half = (float(high) - float(low) + volume.spacing_mm[0]) / 2
+    middle = (float(low) + float(high)) / 2
+    return Ellipsoid(
+        region.center_mm, radii, half, angle,
+        z_mm=middle, name=region.name, group=region.group, code=region.code, values=region.values,
+    )  # fmt: skip
 
 
 def _pair(corner: Floats) -> tuple[float, float]:
@@ -216,7 +250,7 @@ def _halves(corners: Floats) -> tuple[tuple[float, float], Floats, Floats]:
     return _pair(corners.mean(axis=0)), (corners[1] - corners[0]) / 2, (corners[3] - corners[0]) / 2
 
 
-def _ellipse(corners: Floats, z: Any, name: str) -> Region:
+def _ellipse(corners: Floats, words: dict[str, Any]) -> Region:
     """Return the ellipse that touches a parallelogram's sides in their middles.
 
     The half sides are conjugate half diameters; the singular values of their matrix are the half
@@ -225,23 +259,23 @@ def _ellipse(corners: Floats, z: Any, name: str) -> Region:
     center, u, v = _halves(corners)
     directions, radii, _ = np.linalg.svd(np.stack([u, v], axis=1))
     if radii[1] <= 0:
-        raise _NoRegionError("it has no area")
+        raise NoRegionError("it has no area")
     if radii[0] - radii[1] <= _ROUNDING * radii[0]:
-        return Disc(center, float(radii.mean()), z_mm=z, name=name)
+        return Disc(center, float(radii.mean()), **words)
     y, x = directions[:, 0]
     angle = math.degrees(math.atan2(-y, x)) % 180.0
-    return Ellipse(center, (float(radii[1]), float(radii[0])), angle, z_mm=z, name=name)
+    return Ellipse(center, (float(radii[1]), float(radii[0])), angle, **words)
 
 
-def _rectangle(corners: Floats, z: Any, name: str) -> Region:
+def _rectangle(corners: Floats, words: dict[str, Any]) -> Region:
     center, u, v = _halves(corners)
     long_u, long_v = float(np.linalg.norm(u)), float(np.linalg.norm(v))
     if min(long_u, long_v) <= 0:
-        raise _NoRegionError("it has no area")
+        raise NoRegionError("it has no area")
     if abs(float(u @ v)) > _ROUNDING * long_u * long_v:
-        return Polygon(tuple(_pair(corner) for corner in corners), z_mm=z, name=name)
+        return Polygon(tuple(_pair(corner) for corner in corners), **words)
     width, height = (u, v) if abs(u[1]) >= abs(v[1]) else (v, u)
     angle = math.degrees(math.atan2(-width[0], width[1]))
     angle = (angle + 90.0) % 180.0 - 90.0
     size = 2 * float(np.linalg.norm(height)), 2 * float(np.linalg.norm(width))
-    return Box(center, size, angle, z_mm=z, name=name)
+    return Box(center, size, angle, **words)

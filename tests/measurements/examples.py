@@ -78,8 +78,21 @@ def edge_mtf() -> Example:
     )
 
 
+def ct_number_line() -> Example:
+    from rod_images import RING, ring_of_rods
+
+    return Example(
+        ring_of_rods(noise=5.0, seed=3),
+        RING,
+        moves_with_level=("intercept", "water_offset"),
+        # where μ reads 0 HU, and the energy of best agreement with the definition
+        rests_on_zero=("water_equivalent_factor", "scale_energy"),
+    )
+
+
 EXAMPLES: dict[str, Callable[[], Example]] = {
     "region_statistics": region_statistics,
     "noise_power": noise_power,
     "edge_mtf": edge_mtf,
+    "ct_number_line": ct_number_line,
 }

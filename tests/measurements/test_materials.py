@@ -139,3 +139,9 @@ def test_an_unknown_name_lists_the_known_ones():
 def test_the_list_is_part_of_the_package():
     assert SHIPPED.exists()
     assert SHIPPED.parent.name == "measurements"
+
+
+def test_a_line_can_be_a_key_and_goes_through_json():
+    """Docks keep answers by their settings."""
+    for entry in shipped_materials():
+        assert hash(entry) == hash(type(entry).model_validate_json(entry.model_dump_json()))

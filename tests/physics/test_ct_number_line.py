@@ -150,6 +150,12 @@ def test_the_remedy_names_a_material_that_helps(names):
     assert found.effective_energy.uncertainty == pytest.approx(float(promised), rel=0.1)
 
 
+def test_advice_prefers_what_does_not_harden_the_beam():
+    """Aluminium and PVC would tell the energy better, and would not tell the rods' energy."""
+    refused = pick("air", "LDPE", "polypropylene", "polymethylpentene")
+    assert refused.remedy.startswith("add a rod of PTFE")
+
+
 def test_one_material_alone_is_told_what_a_set_is():
     assert pick("PMMA").remedy == "measure more rods, for example air, LDPE, PMMA and PTFE"
 

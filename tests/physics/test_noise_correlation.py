@@ -162,3 +162,12 @@ def test_the_library_holds_spectra():
     # times ring areas they sum to the variance: 1 for those without a floor, whose ring areas
     # were normalised; the area of the resolved square for the floors
     np.testing.assert_allclose(spectra.sum(axis=1), 1.0, atol=0.01)
+
+
+@pytest.mark.parametrize("level", [344.5650, 0.1, -99.3353])
+def test_equal_values_leave_nothing_in_doubt(level):
+    """Whatever rounding makes of their mean, on one slice and on several."""
+    for shape in ((12, 12), (3, 12, 12)):
+        weights = np.random.default_rng(1).uniform(0.1, 1.0, shape)
+        found = doubt_of_mean(np.full(shape, level), weights, (2.0, 0.5, 0.5)[-len(shape) :])
+        assert found.variance_of_mean == 0.0

@@ -26,6 +26,7 @@ _CLASSES: dict[str, str] = {
     "region_statistics": "MeasureRegionStatistics",
     "noise_power": "MeasureNoisePower",
     "edge_mtf": "MeasureEdgeMtf",
+    "ct_number_line": "MeasureCtNumberLine",
 }
 
 NAMES: tuple[str, ...] = tuple(_CLASSES)

@@ -8,7 +8,14 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import yaml
-from pydantic import BaseModel, ConfigDict, Field, model_validator
+from pydantic import (
+    BaseModel,
+    ConfigDict,
+    Field,
+    field_serializer,
+    field_validator,
+    model_validator,
+)
 
 from ct_measure_plugin.errors import ArgumentError, MaterialsError, UnknownNameError
 from ct_measure_plugin.measurements.written_files import checked, read_written
@@ -50,25 +57,34 @@ class MaterialEntry(BaseModel):
 
     name: str = Field(min_length=1, max_length=80)
     formula: str | None = None
-    weight_fractions: dict[str, float] | None = None
+    weight_fractions: tuple[tuple[str, float], ...] | None = None
     density_g_cm3: float = Field(gt=0, lt=25)
     density_uncertainty_g_cm3: float = Field(ge=0, lt=5)
     source: str = ""
     aliases: tuple[str, ...] = ()
 
+    @field_validator("weight_fractions", mode="before")
+    @classmethod
+    def _pairs(cls, given: Any) -> Any:
+        """Take a mapping, as files have it; kept as pairs, so that a setting can be a key."""
+        return tuple(given.items()) if isinstance(given, dict) else given
+
+    @field_serializer("weight_fractions")
+    def _mapping(self, pairs: tuple[tuple[str, float], ...] | None) -> dict[str, float] | None:
+        return None if pairs is None else dict(pairs)
+
     @model_validator(mode="after")
     def _one_composition(self) -> Self:
         if (self.formula is None) == (self.weight_fractions is None):
             raise ValueError("must have either a formula or weight_fractions")
-        mass_attenuation(self.formula or self.weight_fractions or "", 60.0)
+        mass_attenuation(self.formula or dict(self.weight_fractions or ()), 60.0)
         return self
 
     def material(self) -> Material:
         """Return it as physics takes it."""
-        fractions = tuple((self.weight_fractions or {}).items())
         return Material(
             self.name,
-            self.formula or fractions,
+            self.formula or self.weight_fractions or (),
             self.density_g_cm3,
             self.source,
             self.density_uncertainty_g_cm3,

@@ -11,6 +11,7 @@ Each measurement's function has the measurement's name and lives in the file of 
 from __future__ import annotations
 
 from ct_measure_plugin.physics import regions
+from ct_measure_plugin.physics.ct_number_line import CtNumberLine, ct_number_line
 from ct_measure_plugin.physics.edge_mtf import EdgeMtf, edge_mtf
 from ct_measure_plugin.physics.noise_power import NoisePower, noise_power
 from ct_measure_plugin.physics.region_statistics import RegionStatistics, region_statistics
@@ -30,6 +31,7 @@ from ct_measure_plugin.physics.volume import Acquisition, HeaderWindow, Source, 
 __all__ = [
     "Acquisition",
     "Caution",
+    "CtNumberLine",
     "Curve",
     "EdgeMtf",
     "HeaderWindow",
@@ -42,6 +44,7 @@ __all__ = [
     "ResultGroup",
     "Source",
     "Volume",
+    "ct_number_line",
     "edge_mtf",
     "noise_power",
     "region_statistics",

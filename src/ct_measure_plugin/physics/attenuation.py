@@ -235,6 +235,12 @@ class Material:
                 "density_uncertainty_g_cm3", "must not be negative", self.density_uncertainty_g_cm3
             )
 
+    @property
+    def elements(self) -> frozenset[str]:
+        """Symbols of the elements it is made of."""
+        parts = self.composition if isinstance(self.composition, str) else dict(self.composition)
+        return frozenset(symbol for symbol, _ in _fractions(parts))
+
     def mu(self, energy_kev: ArrayLike) -> FloatArray:
         """Return μ in cm⁻¹ at energies in keV."""
         parts = self.composition if isinstance(self.composition, str) else dict(self.composition)

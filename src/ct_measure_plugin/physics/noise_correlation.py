@@ -11,7 +11,7 @@ widens the standard error by the factor of Student's distribution.
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cache
 from typing import TYPE_CHECKING
 
@@ -127,6 +127,8 @@ def doubt_of_mean(values: Floats, weights: Floats, spacing_mm: tuple[float, ...]
     total = float(cover.sum())
     inside = weights > 0
     white = independent_doubt(values[inside], weights[inside])
+    if np.ptp(values[inside]) == 0:  # equal values: rounding must not invent a spread
+        return replace(white, variance_of_mean=0.0)
     if white.variance_of_mean == 0 or total < FEWEST:
         return white
     residual = np.where(cover > 0, stack - float(np.sum(cover * stack)) / total, 0.0)

@@ -33,6 +33,9 @@ _TYPICAL_KEV = 70.0
 #: Denser than what CT numbers are made for: such a rod would harden the beam for all others.
 _DENSEST_G_CM3 = 3.0
 
+#: Elements of materials that harden a beam about as water does; others are advised only if need be.
+_LIGHT = frozenset({"H", "C", "N", "O", "F", "Ar"})
+
 
 def refusal_of(rods: Rods, library: Sequence[Material]) -> NotMeasured | None:
     """Return why these rods cannot fix a line, if they cannot."""
@@ -63,20 +66,30 @@ def too_vague(rods: Rods, library: Sequence[Material], u_energy: float | None) -
 def _advice(rods: Rods, library: Sequence[Material], otherwise: str, *, widen: bool = False) -> str:
     """Return the remedy: the listed material that would make the energy most certain."""
     have = {m.composition for m in rods.materials}
+    open_to = [
+        m for m in library if m.composition not in have and m.density_g_cm3 <= _DENSEST_G_CM3
+    ]
+    for group in ([m for m in open_to if m.elements <= _LIGHT], open_to):
+        best, least = _best_of(rods, group, widen=widen)
+        if least <= VAGUEST_ENERGY_KEV:
+            break
+    if not best:
+        return otherwise
+    known = f"{least:.1f}" if least < 9.95 else f"{least:.0f}"
+    return f"add a rod of {best}; the energy would then be known to about {known} keV"
+
+
+def _best_of(rods: Rods, group: Sequence[Material], *, widen: bool) -> tuple[str, float]:
+    """Return the material that makes the energy most certain, and how certain; "" if none does."""
     best, least = "", math.inf
-    for candidate in library:
-        if candidate.composition in have or candidate.density_g_cm3 > _DENSEST_G_CM3:
-            continue
+    for candidate in group:
         more = _with(rods, candidate)
         if widen and float(np.ptp(more.hu)) < NARROWEST_SPAN_HU:
             continue
         spread = _energy_spread(more)
         if spread < least:
             best, least = candidate.name, spread
-    if not best:
-        return otherwise
-    known = f"{least:.1f}" if least < 9.95 else f"{least:.0f}"
-    return f"add a rod of {best}; the energy would then be known to about {known} keV"
+    return best, least
 
 
 def _with(rods: Rods, candidate: Material) -> Rods:

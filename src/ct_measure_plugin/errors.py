@@ -8,7 +8,8 @@ The tree::
     ├── UnknownNameError   (LookupError)  no measurement, preset or series of that name
     ├── FaultsError        (ValueError)   a file that people write is wrong; all faults at once
     │   ├── PlanError                     a plan
-    │   └── MaterialsError                a list of materials or a layout of rods
+    │   ├── MaterialsError                a list of materials or a layout of rods
+    │   └── RegionFileError               a file of regions
     ├── SeriesError                       a DICOM series cannot be read
     │   ├── NoSeriesError                 nothing readable under the folder
     │   ├── SeriesChoiceError             several series; one must be chosen
@@ -35,6 +36,7 @@ __all__ = [
     "PlanError",
     "RecordError",
     "RegionError",
+    "RegionFileError",
     "SeriesChoiceError",
     "SeriesError",
     "UnknownNameError",
@@ -122,6 +124,10 @@ class PlanError(FaultsError):
 
 class MaterialsError(FaultsError):
     """A list of materials, or a layout of rods, is wrong."""
+
+
+class RegionFileError(FaultsError):
+    """A file of regions is wrong."""
 
 
 class SeriesError(CtMeasureError):

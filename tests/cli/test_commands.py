@@ -13,6 +13,7 @@ from series_writer import line, noise, save, write_series
 import ct_measure_plugin as ctm
 from ct_measure_plugin.cli import BAD_INPUT, DONE, NOT_MEASURABLE, TOLERANCE_FAILED, main
 from ct_measure_plugin.measurements import find
+from ct_measure_plugin.records import write_regions
 
 WATER = "disc center=6,6 radius=4 slice=1 name=water"
 
@@ -82,6 +83,20 @@ def test_settings_are_taken_by_name(capsys, folder):
     )  # fmt: skip
     assert code == DONE
     assert json.loads(out)[0]["settings"]["coverage"] == "center"
+
+
+def test_a_file_of_regions_is_measured_like_words(capsys, folder, tmp_path):
+    volume = ctm.read_series(folder)
+    disc = ctm.regions.Disc((6, 6), 4, z_mm=float(volume.positions_mm[1]), name="water")
+    file = write_regions([disc], tmp_path / "a.regions.json", volume=volume)
+    _, words, _ = run(capsys, "measure", folder, "region_statistics", "--region", WATER)
+    code, kept, _ = run(capsys, "measure", folder, "region_statistics", "--regions", file)
+    assert code == DONE
+    assert kept == words
+    write_regions([disc], file)
+    code, _, err = run(capsys, "measure", folder, "region_statistics", "--regions", file)
+    assert code == BAD_INPUT
+    assert "the regions lie in the frame of a plain array" in err
 
 
 def test_every_output_is_written(capsys, folder, tmp_path):

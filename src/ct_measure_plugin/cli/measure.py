@@ -12,6 +12,7 @@ from ct_measure_plugin.errors import ArgumentError, SeriesChoiceError
 if TYPE_CHECKING:
     import argparse
 
+    from ct_measure_plugin.physics.regions import Region
     from ct_measure_plugin.physics.volume import Volume
     from ct_measure_plugin.records import Plan
 
@@ -27,6 +28,9 @@ def add_parser(commands: argparse._SubParsersAction[argparse.ArgumentParser]) ->
         "--index", type=int, help="which series, as `ct-measure series` counts them"
     )
     parser.add_argument("--region", action="append", default=[], metavar="WORDS", help=HELP)
+    parser.add_argument(
+        "--regions", action="append", default=[], metavar="FILE", help="a file of regions"
+    )
     parser.add_argument(
         "--set", action="append", default=[], metavar="NAME=VALUE", help=SETTING_HELP
     )
@@ -72,9 +76,21 @@ def _plan(arguments: argparse.Namespace, volume: Volume) -> Plan:
     given = dict(setting_from_words(words, kind) for words in arguments.set)
     settings = settings_for(arguments.measurement, given)
     regions = [region_from_words(words, volume) for words in arguments.region]
+    for file in arguments.regions:
+        regions += _regions_of(file, volume)
     step = PlanStep(
         measurement=arguments.measurement,
         settings=settings.model_dump(mode="json"),
         regions=tuple(region_to_dict(region) for region in regions),
     )
     return Plan(steps=(step,))
+
+
+def _regions_of(file: str, volume: Volume) -> list[Region]:
+    from ct_measure_plugin.errors import RegionFileError
+    from ct_measure_plugin.records import read_regions
+
+    kept = read_regions(file)
+    if problem := kept.frame.problem(volume):
+        raise RegionFileError({"frame": problem})
+    return list(kept.regions)

@@ -50,8 +50,9 @@ def region_from_words(words: str, volume: Volume) -> Region:
     --------
     >>> import numpy as np, ct_measure_plugin as ctm
     >>> volume = ctm.Volume(np.zeros((5, 64, 64)), (2.0, 1.0, 1.0))
-    >>> region_from_words("disc center=30,31 radius=9 slice=2 name=water", volume)
-    Disc(z_mm=4.0, name='water', center_mm=(30.0, 31.0), radius_mm=9.0)
+    >>> water = region_from_words("disc center=30,31 radius=9 slice=2 name=water", volume)
+    >>> water == ctm.regions.Disc((30, 31), 9, z_mm=4.0, name="water")
+    True
     """
     from ct_measure_plugin.records import region_from_dict
 

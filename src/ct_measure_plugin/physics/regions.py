@@ -12,7 +12,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
-from typing import TYPE_CHECKING, ClassVar, TypeAlias
+from typing import TYPE_CHECKING, Any, ClassVar, TypeAlias
 
 import numpy as np
 
@@ -53,6 +53,33 @@ def direction(angle_deg: float) -> Point:
 def _finite(name: str, *values: float) -> None:
     if not all(math.isfinite(value) for value in values):
         raise RegionError(name, "must be finite", values)
+
+
+def _as_point(name: str, value: Any) -> Point:
+    """Return two finite numbers as floats, whatever sequence they came in."""
+    try:
+        y, x = (float(part) for part in value)
+    except (TypeError, ValueError):
+        raise RegionError(name, "must be two numbers (y, x)", value) from None
+    _finite(name, y, x)
+    return y, x
+
+
+def _as_range(name: str, value: Any) -> tuple[float, float]:
+    """Return a lowest and a highest number as floats."""
+    rule = "must be given as (low, high)"
+    try:
+        low, high = (float(part) for part in value)
+    except (TypeError, ValueError):
+        raise RegionError(name, rule, value) from None
+    if not low <= high:
+        raise RegionError(name, rule, value)
+    return low, high
+
+
+def _set_points(region: Region, *names: str) -> None:
+    for name in names:
+        object.__setattr__(region, name, _as_point(name, getattr(region, name)))
 
 
 def _positive(name: str, *values: float) -> None:
@@ -100,14 +127,15 @@ class Region:
 
     def __post_init__(self) -> None:
         _coded(self.code)
-        if self.values is not None and not self.values[0] <= self.values[1]:
-            raise RegionError("values", "must be given as (low, high)", self.values)
-        if isinstance(self.z_mm, tuple):
-            _finite("z_mm", *self.z_mm)
-            if self.z_mm[0] > self.z_mm[1]:
-                raise RegionError("z_mm", "must be given as (low, high)", self.z_mm)
-        elif self.z_mm is not None:
-            _finite("z_mm", self.z_mm)
+        if self.values is not None:
+            object.__setattr__(self, "values", _as_range("values", self.values))
+        if self.z_mm is None:
+            return
+        try:
+            object.__setattr__(self, "z_mm", float(self.z_mm))  # type: ignore[arg-type]
+        except TypeError:
+            object.__setattr__(self, "z_mm", _as_range("z_mm", self.z_mm))
+        _finite("z_mm", *np.atleast_1d(self.z_mm).tolist())
 
 
 @dataclass(frozen=True, slots=True)
@@ -134,7 +162,7 @@ class Disc(Region):
 
     def __post_init__(self) -> None:
         Region.__post_init__(self)
-        _finite("center_mm", *self.center_mm)
+        _set_points(self, "center_mm")
         _positive("radius_mm", self.radius_mm)
 
     @property
@@ -166,8 +194,9 @@ class Ellipse(Region):
 
     def __post_init__(self) -> None:
         Region.__post_init__(self)
-        _finite("center_mm", *self.center_mm)
+        _set_points(self, "center_mm")
         _finite("angle_deg", self.angle_deg)
+        _set_points(self, "radii_mm")
         _positive("radii_mm", *self.radii_mm)
 
     @property
@@ -208,8 +237,9 @@ class Ellipsoid(Region):
         Region.__post_init__(self)
         if not isinstance(self.z_mm, int | float):
             raise RegionError("z_mm", "must be the position of the centre", self.z_mm)
-        _finite("center_mm", *self.center_mm)
+        _set_points(self, "center_mm")
         _finite("angle_deg", self.angle_deg)
+        _set_points(self, "radii_mm")
         _positive("radii_mm", *self.radii_mm)
         _positive("z_radius_mm", self.z_radius_mm)
 
@@ -266,8 +296,9 @@ class Box(Region):
 
     def __post_init__(self) -> None:
         Region.__post_init__(self)
-        _finite("center_mm", *self.center_mm)
+        _set_points(self, "center_mm")
         _finite("angle_deg", self.angle_deg)
+        _set_points(self, "size_mm")
         _positive("size_mm", *self.size_mm)
 
     @property
@@ -306,8 +337,8 @@ class Polygon(Region):
         Region.__post_init__(self)
         if len(self.vertices_mm) < 3:
             raise RegionError("vertices_mm", "must have at least 3 corners", len(self.vertices_mm))
-        for vertex in self.vertices_mm:
-            _finite("vertices_mm", *vertex)
+        corners = tuple(_as_point("vertices_mm", vertex) for vertex in self.vertices_mm)
+        object.__setattr__(self, "vertices_mm", corners)
         if _crosses_itself(self.vertices_mm):
             raise RegionError(
                 "vertices_mm", "must not cross itself", f"{len(self.vertices_mm)} corners that do"
@@ -343,8 +374,8 @@ class Segment(Region):
 
     def __post_init__(self) -> None:
         Region.__post_init__(self)
-        _finite("start_mm", *self.start_mm)
-        _finite("end_mm", *self.end_mm)
+        _set_points(self, "start_mm")
+        _set_points(self, "end_mm")
         _finite("width_mm", self.width_mm)
         if self.width_mm < 0:
             raise RegionError("width_mm", "must not be negative", self.width_mm)

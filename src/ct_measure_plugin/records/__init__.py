@@ -11,24 +11,36 @@ from ct_measure_plugin.records.exchange import read_json, write_csv, write_json
 from ct_measure_plugin.records.logbook import Logbook
 from ct_measure_plugin.records.plan import Plan, PlanStep, load_plan, save_plan
 from ct_measure_plugin.records.record import Preview, Record, SourceFacts
+from ct_measure_plugin.records.region_file import (
+    Frame,
+    RegionFile,
+    read_regions,
+    regions_from_text,
+    write_regions,
+)
 from ct_measure_plugin.records.region_text import region_from_dict, region_to_dict
 from ct_measure_plugin.records.tolerances import Tolerance, Verdict, judge
 
 __all__ = [
+    "Frame",
     "Logbook",
     "Plan",
     "PlanStep",
     "Preview",
     "Record",
+    "RegionFile",
     "SourceFacts",
     "Tolerance",
     "Verdict",
     "judge",
     "load_plan",
     "read_json",
+    "read_regions",
     "region_from_dict",
     "region_to_dict",
+    "regions_from_text",
     "save_plan",
     "write_csv",
     "write_json",
+    "write_regions",
 ]

@@ -13,6 +13,7 @@ if TYPE_CHECKING:
     from collections.abc import Sequence
 
     from ct_measure_plugin.physics.results import Curve
+    from ct_measure_plugin.physics.tables import Table
     from ct_measure_plugin.records import Plan, Record
 
 __all__ = ["add_output_options", "deliver", "print_records"]
@@ -69,6 +70,7 @@ def print_records(records: Sequence[Record], *, everything: bool = False) -> Non
         label_of,
         quantities_of,
     )
+    from ct_measure_plugin.physics.tables import tables_of
 
     for record in records:
         print(f"{record.title}: {record.region_names}")
@@ -87,6 +89,8 @@ def print_records(records: Sequence[Record], *, everything: bool = False) -> Non
             for name, curve in curves_of(answer).items():
                 if name in measurement.lists:
                     _print_list(label_of(name), curve)
+            for name, table in tables_of(answer).items():
+                _print_table(label_of(name), table)
             if rest and not everything:
                 print(f"  and {len(rest)} more, in the files and with --all")
         for caution in answer.cautions:
@@ -98,6 +102,16 @@ def _print_list(label: str, curve: Curve) -> None:
     unit = f" {curve.x_unit}".rstrip()
     rows = ", ".join(f"{x:g}{unit}: {y}" for x, y in curve.samples())
     print(f"  {label} ({curve.x_name or 'number'}): {rows}")
+
+
+def _print_table(label: str, table: Table) -> None:
+    """Print a result's own table, its columns aligned."""
+    rows = [table.titles, *table.cells()]
+    widths = [max(len(row[k]) for row in rows) for k in range(len(table.columns))]
+    print(f"  {label}")
+    for row in rows:
+        cells = (f"{cell:<{width}}" for cell, width in zip(row, widths, strict=True))
+        print(f"    {'  '.join(cells)}".rstrip())
 
 
 def _code(records: Sequence[Record], plan: Plan | None, *, quiet: bool) -> int:

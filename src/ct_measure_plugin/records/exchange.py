@@ -10,7 +10,8 @@ from typing import TYPE_CHECKING
 from pydantic import TypeAdapter, ValidationError
 
 from ct_measure_plugin.errors import RecordError
-from ct_measure_plugin.physics.results import NotMeasured, quantities_of
+from ct_measure_plugin.physics.results import NotMeasured, Quantity, quantities_of
+from ct_measure_plugin.physics.tables import tables_of
 from ct_measure_plugin.records.record import Record
 
 if TYPE_CHECKING:
@@ -28,7 +29,11 @@ _MANY = TypeAdapter(tuple[Record, ...])
 
 
 def rows_of(record: Record) -> list[dict[str, str]]:
-    """Return a record's rows for a table: one a quantity, or one that says why there is none."""
+    """Return a record's rows for a table: one a quantity, or one that says why there is none.
+
+    Numbers of a result's own tables follow as ``table.column``, the row's name in place of the
+    region's.
+    """
     answer = record.answer()
     positions = [region.get("z_mm") for region in record.regions]
     shared = {
@@ -46,16 +51,21 @@ def rows_of(record: Record) -> list[dict[str, str]]:
     }
     if isinstance(answer, NotMeasured):
         return [{**shared, "not_measured": safe_cell(f"{answer.reason}. {answer.remedy}")}]
-    return [
-        {
-            **shared,
-            "quantity": name,
-            "value": repr(quantity.value),
-            "uncertainty": "" if quantity.uncertainty is None else repr(quantity.uncertainty),
-            "unit": quantity.unit,
-        }
-        for name, quantity in quantities_of(answer).items()
-    ]
+    rows = [{**shared, **_row(name, one)} for name, one in quantities_of(answer).items()]
+    for table, found in tables_of(answer).items():
+        for called, name, one in found.quantities():
+            own = {"region": safe_cell(called)}
+            rows.append({**shared, **own, **_row(f"{table}.{name}", one)})
+    return rows
+
+
+def _row(name: str, quantity: Quantity) -> dict[str, str]:
+    return {
+        "quantity": name,
+        "value": repr(quantity.value),
+        "uncertainty": "" if quantity.uncertainty is None else repr(quantity.uncertainty),
+        "unit": quantity.unit,
+    }
 
 
 def write_csv(records: Sequence[Record], path: str | Path) -> Path:

@@ -21,6 +21,7 @@ from ct_measure_plugin.physics.results import (
     pictures_of,
     quantities_of,
 )
+from ct_measure_plugin.physics.tables import Table, tables_of
 from ct_measure_plugin.report.figures import curve_svg, picture_svg, place_svg
 
 if TYPE_CHECKING:
@@ -52,6 +53,7 @@ class _Section:
     cautions: tuple[Caution, ...]
     place: Markup | None
     figures: tuple[tuple[str, Markup], ...]
+    tables: tuple[tuple[str, Table], ...]
 
 
 def write_report(records: Sequence[Record], path: str | Path, *, title: str = "") -> Path:
@@ -119,6 +121,7 @@ def _section(record: Record) -> _Section:
             (label_of(name), Markup(picture_svg(picture)))  # noqa: S704 - our own SVG
             for name, picture in pictures_of(answer).items()
         ]
+    tables = {} if isinstance(answer, NotMeasured) else tables_of(answer)
     return _Section(
         record,
         measurement.title,
@@ -129,6 +132,7 @@ def _section(record: Record) -> _Section:
         tuple(dict.fromkeys(answer.cautions)),
         place,
         tuple(figures),
+        tuple((label_of(name), table) for name, table in tables.items()),
     )
 
 
@@ -136,6 +140,9 @@ def _short(value: object) -> str:
     """Return a setting or a region's value as text, numbers to a thousandth of a millimetre."""
     if isinstance(value, float):
         return f"{value:.3f}".rstrip("0").rstrip(".")
+    if isinstance(value, dict):
+        told = {k: f"{v:g}" if isinstance(v, float) else _short(v) for k, v in value.items() if v}
+        return "(" + ", ".join(f"{key} {text}" for key, text in told.items()) + ")"
     if isinstance(value, list | tuple):
         return ", ".join(_short(part) for part in value) or "none"
     return str(value)

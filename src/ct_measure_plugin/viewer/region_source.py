@@ -1,0 +1,255 @@
+"""One face for the layers that regions come from: Shapes, Points and Labels.
+
+The dock asks what is drawn, selects and is told of selections, and reads and writes names, the
+same way whatever the layer is.
+"""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING, Any, ClassVar
+
+from ct_measure_plugin.viewer.labels import LabelRegions
+from ct_measure_plugin.viewer.points import points_on
+from ct_measure_plugin.viewer.region_features import set_column, write_answers
+from ct_measure_plugin.viewer.shapes import drawn_on, repair
+
+if TYPE_CHECKING:
+    from collections.abc import Collection, Mapping, Sequence
+
+    from ct_measure_plugin.physics.results import NotMeasured, Result
+    from ct_measure_plugin.viewer.drawn import Drawn
+    from ct_measure_plugin.viewer.placement import Placement
+
+__all__ = ["LabelSource", "PointSource", "RegionSource", "ShapeSource", "kinds", "source_of"]
+
+
+class RegionSource:
+    """A layer that regions come from.
+
+    Parameters
+    ----------
+    layer : napari layer
+        Shapes, Points or Labels.
+    viewer : ViewerModel
+        Where it is shown.
+
+    Attributes
+    ----------
+    events : tuple of str
+        The layer's events after which what is drawn may differ.
+    selection_event : str
+        The one that tells of a selection.
+    """
+
+    events: ClassVar[tuple[str, ...]] = ("set_data", "data", "features")
+    selection_event: ClassVar[str] = "highlight"
+
+    def __init__(self, layer: Any, viewer: Any) -> None:
+        self.layer = layer
+        self.viewer = viewer
+
+    def note(self, event: Any) -> None:
+        """Take note of one of the layer's events."""
+
+    def drawn(
+        self, placement: Placement, point: Sequence[float], *, wait: bool = False
+    ) -> tuple[Drawn, ...]:
+        """Return what is drawn, as regions of an image layer's Volume; complete if told to wait."""
+        raise NotImplementedError
+
+    @property
+    def empty(self) -> bool:
+        """True if nothing is drawn."""
+        return not len(self.layer.data)
+
+    @property
+    def busy(self) -> bool:
+        """True while the layer is looked through in the background."""
+        return False
+
+    @property
+    def unfinished(self) -> bool:
+        """True while a region is being drawn, which has no row of features yet."""
+        return False
+
+    def close(self) -> None:
+        """Stop what runs in the background."""
+
+    def mend(self) -> None:
+        """Mend what napari leaves behind; call it outside the layer's own events."""
+
+    # --- selections -----------------------------------------------------------------
+
+    def selected(self) -> set[int]:
+        """Return the indices of the regions selected in the viewer."""
+        return {int(i) for i in self.layer.selected_data}
+
+    def select(self, indices: Collection[int]) -> None:
+        """Select regions in the viewer, so that they light up."""
+        wanted = set(indices)
+        if wanted and self.layer not in self.viewer.layers.selection:
+            self.viewer.layers.selection.active = self.layer
+        if self.selected() != wanted:
+            self.layer.selected_data = wanted
+
+    # --- features -------------------------------------------------------------------
+
+    def write(self, column: str, values: Mapping[int, Any]) -> None:
+        """Write names, classes and the like; by index."""
+        set_column(self.layer, column, values)
+
+    def write_answers(
+        self, answers: Mapping[int, Result | NotMeasured], image: str, suffix: str = ""
+    ) -> bool:
+        """Write answers into the features; return whether anything changed."""
+        return write_answers(self.layer, answers, image=image, suffix=suffix)
+
+
+class ShapeSource(RegionSource):
+    """The shapes of a Shapes layer."""
+
+    events: ClassVar[tuple[str, ...]] = ("set_data", "data", "features", "edge_width")
+
+    def drawn(
+        self,
+        placement: Placement,
+        point: Sequence[float],
+        *,
+        wait: bool = False,  # noqa: ARG002
+    ) -> tuple[Drawn, ...]:
+        """Return every shape as a region."""
+        return drawn_on(self.layer, placement, point)
+
+    @property
+    def empty(self) -> bool:
+        """True if nothing is drawn."""
+        return not self.layer.nshapes
+
+    @property
+    def unfinished(self) -> bool:
+        """True while a shape is being drawn."""
+        return bool(getattr(self.layer, "_is_creating", False))
+
+    def mend(self) -> None:
+        """Take away the row of features that a cancelled polygon leaves."""
+        if not self.unfinished:
+            repair(self.layer)
+
+
+class PointSource(RegionSource):
+    """The points of a Points layer, each a disc of its size."""
+
+    events: ClassVar[tuple[str, ...]] = ("set_data", "data", "features", "size")
+
+    def drawn(
+        self,
+        placement: Placement,
+        point: Sequence[float],
+        *,
+        wait: bool = False,  # noqa: ARG002
+    ) -> tuple[Drawn, ...]:
+        """Return every point as a region."""
+        return points_on(self.layer, placement, point)
+
+
+class LabelSource(RegionSource):
+    """The labels of a Labels layer; a region's index is its label."""
+
+    events: ClassVar[tuple[str, ...]] = ("set_data", "data", "features", "labels_update", "paint")
+    selection_event: ClassVar[str] = "selected_label"
+
+    def __init__(self, layer: Any, viewer: Any) -> None:
+        super().__init__(layer, viewer)
+        self.regions = LabelRegions(layer)
+        self._labels: list[int] = []
+
+    def note(self, event: Any) -> None:
+        """Take note of a stroke, an edit, a redraw or another array."""
+        kind = getattr(event, "type", "")
+        if kind == "labels_update":
+            self.regions.stroke(event)
+        elif kind == "paint":
+            self.regions.painted(event)
+        elif kind == "set_data":
+            self.regions.refreshed(self.viewer.dims.point)
+        elif kind == "data":
+            self.regions.replaced()
+
+    def drawn(
+        self, placement: Placement, point: Sequence[float], *, wait: bool = False
+    ) -> tuple[Drawn, ...]:
+        """Return every label as a region; those known while the map is still looked through."""
+        found = self.regions.drawn(placement, point, wait=wait)
+        self._labels = [one.index for one in found if one.index]
+        return found
+
+    @property
+    def empty(self) -> bool:
+        """False: whether anything is painted is only known once it was looked for."""
+        return False
+
+    @property
+    def busy(self) -> bool:
+        """True while the map is looked through in the background."""
+        return self.regions.busy
+
+    def close(self) -> None:
+        """Stop what runs in the background."""
+        self.regions.close()
+
+    def selected(self) -> set[int]:
+        """Return the label that the brush would paint, if it is on the map."""
+        label = int(self.layer.selected_label)
+        return {label} if label in self._labels else set()
+
+    def select(self, indices: Collection[int]) -> None:
+        """Make a label the one to paint with."""
+        wanted = sorted(indices)
+        if not wanted:
+            return
+        if self.layer not in self.viewer.layers.selection:
+            self.viewer.layers.selection.active = self.layer
+        if int(self.layer.selected_label) != wanted[0]:
+            with self.regions.quietly():
+                self.layer.selected_label = wanted[0]
+
+    def show_alone(self, *, alone: bool) -> None:
+        """Show the selected label alone, or all of them."""
+        with self.regions.quietly():
+            self.layer.show_selected_label = alone
+
+    def write(self, column: str, values: Mapping[int, Any]) -> None:
+        """Write names, classes and the like; by label."""
+        set_column(self.layer, column, values, keys=self._labels)
+
+    def write_answers(
+        self, answers: Mapping[int, Result | NotMeasured], image: str, suffix: str = ""
+    ) -> bool:
+        """Write answers into the features; return whether anything changed."""
+        mine = {label: found for label, found in answers.items() if label in self._labels}
+        if not mine:
+            return False
+        return write_answers(self.layer, mine, image=image, suffix=suffix, keys=self._labels)
+
+
+def kinds() -> tuple[type, ...]:
+    """Return the kinds of napari layers that regions come from."""
+    from napari.layers import Labels, Points, Shapes
+
+    return (Shapes, Labels, Points)
+
+
+def source_of(layer: Any, viewer: Any) -> RegionSource:
+    """Return the face of a layer.
+
+    Raises
+    ------
+    TypeError
+        If it is of none of :func:`kinds`.
+    """
+    from napari.layers import Labels, Points, Shapes
+
+    for kind, face in ((Shapes, ShapeSource), (Labels, LabelSource), (Points, PointSource)):
+        if isinstance(layer, kind):
+            return face(layer, viewer)
+    raise TypeError(type(layer).__name__)

@@ -54,6 +54,19 @@ def region_statistics() -> Example:
     )
 
 
+def region_contrast() -> Example:
+    volume = _noise()
+    hu = volume.hu.copy()
+    hu[:, 4:28, 4:28] += 60
+    rod, water = Disc((7.75, 7.75), 5.0, z_mm=2.0), Disc((22.0, 22.0), 5.0, z_mm=2.0)
+    return Example(
+        Volume(hu, volume.spacing_mm),
+        (rod, water),
+        moves_with_level=("object_mean", "background_mean"),
+        rests_on_zero=("contrast", "snr", "attenuation_snr"),
+    )
+
+
 def noise_power() -> Example:
     frequencies = ("peak_frequency", "mean_frequency", "lowest_frequency")
     return Example(
@@ -92,6 +105,7 @@ def ct_number_line() -> Example:
 
 EXAMPLES: dict[str, Callable[[], Example]] = {
     "region_statistics": region_statistics,
+    "region_contrast": region_contrast,
     "noise_power": noise_power,
     "edge_mtf": edge_mtf,
     "ct_number_line": ct_number_line,

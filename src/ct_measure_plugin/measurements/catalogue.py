@@ -24,6 +24,7 @@ __all__ = ["NAMES", "find", "glance_each", "measure", "measure_each", "settings_
 #: Public name -> class, in the file of that name. Adding a measurement adds a line.
 _CLASSES: dict[str, str] = {
     "region_statistics": "MeasureRegionStatistics",
+    "region_contrast": "MeasureRegionContrast",
     "noise_power": "MeasureNoisePower",
     "edge_mtf": "MeasureEdgeMtf",
     "ct_number_line": "MeasureCtNumberLine",

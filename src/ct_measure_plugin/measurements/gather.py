@@ -18,7 +18,10 @@ if TYPE_CHECKING:
 
     Floats = NDArray[np.float64]
 
-__all__ = ["Gathered", "gather"]
+__all__ = ["Gathered", "gather", "gather_enough", "shared"]
+
+#: Fewer pixels than this are refused: a spread from so few tells nothing (common practice).
+TOO_FEW_PIXELS = 9
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -33,6 +36,8 @@ class Gathered:
         Indices of the slices.
     spacing_mm : tuple of float
         Of the crop's axes.
+    rows, columns : slice
+        Where the crop lies in the image.
     cautions : tuple of Caution
         The volume's, and what was left out here.
     """
@@ -41,7 +46,29 @@ class Gathered:
     weights: Floats
     slices: list[int]
     spacing_mm: tuple[float, ...]
+    rows: slice
+    columns: slice
     cautions: tuple[Caution, ...]
+
+    @property
+    def stack(self) -> Floats:
+        """The weights as a stack of slices, shape (nz, h, w)."""
+        return self.weights if self.weights.ndim == 3 else self.weights[None]
+
+
+def gather_enough(volume: Volume, region: Region, *, rule: Rule) -> Gathered | NotMeasured:
+    """Return what :func:`gather` does, or NotMeasured if too few pixels have a spread to quote."""
+    found = gather(volume, region, rule=rule)
+    if isinstance(found, NotMeasured):
+        return found
+    count = int(np.count_nonzero(found.weights))
+    if count >= TOO_FEW_PIXELS:
+        return found
+    return NotMeasured(
+        f"the region holds {count} pixel{'s' * (count != 1)}; at least {TOO_FEW_PIXELS} are needed",
+        "draw it larger, or over more slices",
+        found.cautions,
+    )
 
 
 def gather(volume: Volume, region: Region, *, rule: Rule = "area") -> Gathered | NotMeasured:
@@ -102,7 +129,25 @@ def gather(volume: Volume, region: Region, *, rule: Rule = "area") -> Gathered |
         spacing: tuple[float, ...] = volume.spacing_mm[1:]
     else:
         spacing = volume.spacing_mm
-    return Gathered(values, weights, [k for k, _ in covers], spacing, cautions)
+    return Gathered(values, weights, [k for k, _ in covers], spacing, rows, columns, cautions)
+
+
+def shared(one: Gathered, other: Gathered) -> float:
+    """Return the weight of the pixels that two regions share, as a fraction of the smaller one."""
+    height, width = (
+        slice(max(a.start, b.start), min(a.stop, b.stop))
+        for a, b in ((one.rows, other.rows), (one.columns, other.columns))
+    )
+    if height.start >= height.stop or width.start >= width.stop:
+        return 0.0
+    both = 0.0
+    for i, k in enumerate(one.slices):
+        if k in other.slices:
+            mine = one.stack[i, _within(height, one.rows), _within(width, one.columns)]
+            j = other.slices.index(k)
+            theirs = other.stack[j, _within(height, other.rows), _within(width, other.columns)]
+            both += float(np.minimum(mine, theirs).sum())
+    return both / min(float(one.weights.sum()), float(other.weights.sum()))
 
 
 def _union(spans: list[slice]) -> slice:

@@ -5,11 +5,10 @@ from __future__ import annotations
 from dataclasses import replace
 from typing import TYPE_CHECKING, ClassVar, Literal, cast
 
-import numpy as np
 from pydantic import Field
 
 from ct_measure_plugin.measurements.base import BODIES, Measurement, RegionNeed, Settings
-from ct_measure_plugin.measurements.gather import Gathered, gather
+from ct_measure_plugin.measurements.gather import gather_enough
 from ct_measure_plugin.physics.region_glance import RegionGlance, region_glance
 from ct_measure_plugin.physics.region_statistics import RegionStatistics, region_statistics
 from ct_measure_plugin.physics.results import NotMeasured, Result
@@ -21,9 +20,6 @@ if TYPE_CHECKING:
     from ct_measure_plugin.physics.volume import Volume
 
 __all__ = ["MeasureRegionStatistics", "RegionStatisticsSettings"]
-
-#: Fewer pixels than this are refused: a spread from so few tells nothing (common practice).
-TOO_FEW_PIXELS = 9
 
 
 class RegionStatisticsSettings(Settings):
@@ -89,7 +85,7 @@ class MeasureRegionStatistics(Measurement):
     ) -> RegionStatistics | NotMeasured:
         """Measure one region."""
         wanted = cast("RegionStatisticsSettings", settings)
-        found = self._pixels(volume, regions[0], wanted)
+        found = gather_enough(volume, regions[0], rule=wanted.coverage)
         if isinstance(found, NotMeasured):
             return found
         curves = wanted.along_z and len(found.slices) > 1
@@ -110,26 +106,11 @@ class MeasureRegionStatistics(Measurement):
         self, volume: Volume, regions: Sequence[Region], settings: Settings
     ) -> RegionGlance | NotMeasured:
         """Return one region's numbers without their uncertainties."""
-        found = self._pixels(volume, regions[0], cast("RegionStatisticsSettings", settings))
+        wanted = cast("RegionStatisticsSettings", settings)
+        found = gather_enough(volume, regions[0], rule=wanted.coverage)
         if isinstance(found, NotMeasured):
             return found
         result = region_glance(
             found.values, found.weights, spacing_mm=found.spacing_mm, unit=volume.unit
         )
         return replace(result, cautions=(*found.cautions, *result.cautions))
-
-    def _pixels(
-        self, volume: Volume, region: Region, wanted: RegionStatisticsSettings
-    ) -> Gathered | NotMeasured:
-        found = gather(volume, region, rule=wanted.coverage)
-        if isinstance(found, NotMeasured):
-            return found
-        count = int(np.count_nonzero(found.weights))
-        if count < TOO_FEW_PIXELS:
-            return NotMeasured(
-                f"the region holds {count} pixel{'s' * (count != 1)};"
-                f" at least {TOO_FEW_PIXELS} are needed",
-                "draw it larger, or over more slices",
-                found.cautions,
-            )
-        return found

@@ -14,6 +14,7 @@ from ct_measure_plugin.physics import regions
 from ct_measure_plugin.physics.ct_number_line import CtNumberLine, ct_number_line
 from ct_measure_plugin.physics.edge_mtf import EdgeMtf, edge_mtf
 from ct_measure_plugin.physics.noise_power import NoisePower, noise_power
+from ct_measure_plugin.physics.region_contrast import RegionContrast, region_contrast
 from ct_measure_plugin.physics.region_statistics import RegionStatistics, region_statistics
 from ct_measure_plugin.physics.results import (
     Caution,
@@ -26,6 +27,7 @@ from ct_measure_plugin.physics.results import (
 )
 from ct_measure_plugin.physics.scan_difference import scan_difference
 from ct_measure_plugin.physics.standard_error import standard_error_from_nps
+from ct_measure_plugin.physics.uniformity import Uniformity, uniformity
 from ct_measure_plugin.physics.volume import Acquisition, HeaderWindow, Source, Volume
 
 __all__ = [
@@ -39,16 +41,20 @@ __all__ = [
     "NotMeasured",
     "Picture",
     "Quantity",
+    "RegionContrast",
     "RegionStatistics",
     "Result",
     "ResultGroup",
     "Source",
+    "Uniformity",
     "Volume",
     "ct_number_line",
     "edge_mtf",
     "noise_power",
+    "region_contrast",
     "region_statistics",
     "regions",
     "scan_difference",
     "standard_error_from_nps",
+    "uniformity",
 ]

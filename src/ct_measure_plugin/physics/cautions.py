@@ -67,11 +67,15 @@ KINDS: dict[str, CautionKind] = {
     "unreadable-files": _warning("Files that could not be read"),
     "split-series": _note("One series UID holds several volumes"),
     "simulated": _note("Simulated data"),
+    "segments-overlap": _warning("Segments overlap"),
+    "segmentation-outside": _warning("Part of the segmentation lies outside the volume"),
     # --- the region -----------------------------------------------------------------
     "clipped-values": _warning("Values at the end of the stored range"),
     "padding-excluded": _warning("Padding inside the region was left out"),
     "outside-image": _warning("The region reaches outside the image"),
     "threshold": _note("Only a range of values counts"),
+    "regions-overlap": _warning("Object and background share pixels"),
+    "unlike-sizes": _note("Object and background differ in size"),
     "few-pixels": _warning("Few pixels"),
     "not-finite": _warning("Pixels without a finite value were left out"),
     # --- the numbers ----------------------------------------------------------------

@@ -7,7 +7,7 @@ import pytest
 from npe2 import PluginManager
 
 from ct_measure_plugin.dicom import read_series
-from ct_measure_plugin.measurements import NAMES
+from ct_measure_plugin.measurements import NAMES, find
 from ct_measure_plugin.physics.regions import Box, Disc, Mask
 from ct_measure_plugin.records import load_plan, write_json
 from ct_measure_plugin.run import run_plan
@@ -36,7 +36,8 @@ def test_regions_are_drawn_where_they_lie(viewer_model, volume):
     assert plug.radius_mm == pytest.approx(5.0, abs=1e-5)
     assert plug.z_mm == -12.5
     assert box.angle_deg == pytest.approx(30.0, abs=1e-4)
-    assert box.z_mm == -15.0  # the middle slice of its range
+    assert box.z_mm == (-20.0, -10.0)
+    assert layer.data[1][0][0] == 2  # drawn on the middle slice of its range
     assert [plug.name, box.name] == ["plug", "box"]
 
 
@@ -69,9 +70,34 @@ def test_the_demo_fills_every_dock(make_napari_viewer, tmp_path, monkeypatch):
     assert all(any(title in dock for dock in docks) for title in titles)
     session = Session.of(viewer)
     assert len(session.records) == len(records)
-    assert viewer.layers["Regions"].nshapes == len(demo.regions_of(records))
+    for name in {record.measurement for record in records}:
+        own = [record for record in records if record.measurement == name]
+        drawn = viewer.layers[f"Regions: {find(name).title}"]
+        assert drawn.nshapes == len(demo.regions_of(own))
     measured = set(session.answers)
     assert measured <= set(NAMES)
+
+
+def test_a_dock_of_the_demo_finds_what_the_record_says(qtbot, viewer_model):
+    """The drawn regions, slices and all, give the recorded numbers back (corners are float32)."""
+    from ct_measure_plugin.viewer.docks.all_measurements import AllMeasurementsDock
+
+    volume = read_series(samples.folder("standard"))
+    records = run_plan(load_plan(samples.folder() / "demo_plan.yaml"), volume)
+    data, attributes, _ = layer_of(volume)
+    image = viewer_model.add_image(data, **attributes)
+    layers = demo.draw_records(viewer_model, image, records)
+    dock = AllMeasurementsDock(viewer_model)
+    qtbot.addWidget(dock)
+    for name, layer in layers.items():
+        demo.aim([dock], image, {name: layer})
+        dock.measure_now()
+        kept = [record.answer() for record in records if record.measurement == name]
+        found = [one.result for one in dock.answers.answers()]
+        assert len(found) == len(kept)
+        for one, two in zip(found, kept, strict=True):
+            column = find(name).columns[0]
+            assert getattr(one, column).value == pytest.approx(getattr(two, column).value, rel=1e-4)
 
 
 @pytest.mark.canvas

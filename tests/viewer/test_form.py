@@ -58,11 +58,15 @@ def test_an_optional_number_is_none_until_ticked(form):
 
 
 def test_what_is_not_valid_is_said_and_not_used(form):
+    told = []
+    form.told.connect(told.append)
     form._controls["width_mm"].value = 0.0
     assert form.settings == Sample()
+    assert told == [form.problem]
     assert form.problem.startswith("Width mm: Input should be greater than 0")
     form._controls["width_mm"].value = 1.0
     assert form.problem == ""
+    assert told[1:] == [""]
     assert form.settings.width_mm == 1.0
 
 

@@ -25,9 +25,9 @@ FILE = Path(ct_measure_plugin.__file__).with_name("napari.yaml")
 
 #: How many contributions each section must hold: a misspelt section would be dropped in silence.
 COUNTS = {
-    "commands": 4 + len(samples.names()),
+    "commands": 7 + len(samples.names()),
     "readers": 1,
-    "widgets": 2,
+    "widgets": 5,
     "sample_data": len(samples.names()),
     "menus": 2,
     "configurations": 1,
@@ -88,12 +88,36 @@ def test_every_sample_is_offered_with_its_own_command(written):
 
 
 def test_a_measurement_s_dock_has_its_name(written):
-    """One word, many doors: command, file and measurement are called the same."""
+    """One word, many doors: command, file and measurement are called the same.
+
+    The docks that serve several measurements are named for what these have in common.
+    """
     commands = {c["id"]: c["python_name"] for c in written["contributions"]["commands"]}
     for entry in written["contributions"]["widgets"]:
         word = entry["command"].removeprefix(f"{NAME}.")
         assert f".docks.{word}:" in commands[entry["command"]]
-        assert word == "window" or word in NAMES
+        assert word in ("window", "mtf", "all_measurements") or word in NAMES
+
+
+def docks(written) -> list[type]:
+    """Return the classes of the docks that are made from a measurement's types."""
+    from ct_measure_plugin.viewer.docks.measurement import MeasurementDock
+
+    commands = {c["id"]: c["python_name"] for c in written["contributions"]["commands"]}
+    found = []
+    for entry in written["contributions"]["widgets"]:
+        module, name = commands[entry["command"]].split(":")
+        dock = getattr(importlib.import_module(module), name)
+        if issubclass(dock, MeasurementDock):
+            assert dock.title == entry["display_name"]
+            found.append(dock)
+    return found
+
+
+def test_every_measurement_has_a_dock_and_no_dock_is_empty(written):
+    offered = [set(dock.names) & set(NAMES) for dock in docks(written)]
+    assert all(offered)
+    assert set().union(*offered) == set(NAMES)
 
 
 def broken(manifest: dict, change) -> dict:
@@ -105,7 +129,7 @@ def broken(manifest: dict, change) -> dict:
 @pytest.mark.parametrize(
     ("change", "fault"),
     [
-        (lambda c: c.update(widget=c.pop("widgets")), "widgets: 0 instead of 2"),
+        (lambda c: c.update(widget=c.pop("widgets")), "widgets: 0 instead of 5"),
         (lambda c: c["widgets"][0].update(command=f"{NAME}.windw"), "undeclared command"),
         (lambda c: c["readers"][0].update(command=f"{NAME}.red"), "undeclared command"),
         (lambda c: c["menus"].update({"napari/layers/context": []}), "takes no plugins"),

@@ -8,6 +8,7 @@ The docks are those of the plugin's own manifest, so a new one appears here by i
 from __future__ import annotations
 
 import argparse
+import math
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -17,7 +18,16 @@ if TYPE_CHECKING:
     from ct_measure_plugin.physics.regions import Region
     from ct_measure_plugin.records import Record
 
-__all__ = ["PLUGIN", "add_docks", "draw_regions", "fill", "main", "regions_of"]
+__all__ = [
+    "PLUGIN",
+    "add_docks",
+    "aim",
+    "draw_records",
+    "draw_regions",
+    "fill",
+    "main",
+    "regions_of",
+]
 
 PLUGIN = "ct-measure-plugin"
 
@@ -57,8 +67,8 @@ def fill(viewer: Any, folder: Path, records: Sequence[Record] = ()) -> None:
     session = Session.of(viewer)
     for record in records:
         session.keep(record)
-    draw_regions(viewer, image, regions_of(records))
-    add_docks(viewer)
+    layers = draw_records(viewer, image, records)
+    aim(add_docks(viewer), image, layers)
     viewer.canvas.overlays.scale_bar.visible = True
     viewer.reset_view()
 
@@ -75,7 +85,39 @@ def regions_of(records: Iterable[Record]) -> list[Region]:
     return list(found.values())
 
 
-def draw_regions(viewer: Any, image: Any, regions: Sequence[Region]) -> Any:
+def draw_records(viewer: Any, image: Any, records: Sequence[Record]) -> dict[str, Any]:
+    """Draw the records' regions, on a layer of their own for each measurement.
+
+    Returns the Shapes layers by the measurement's name. Regions of different measurements stay
+    apart: a spectrum takes all shapes of its layer together.
+    """
+    from ct_measure_plugin.measurements import find
+
+    found = {}
+    for name in reversed(dict.fromkeys(record.measurement for record in records)):
+        regions = regions_of(record for record in records if record.measurement == name)
+        if regions:
+            title = find(name).title
+            found[name] = draw_regions(viewer, image, regions, f"Regions: {title}")
+    return found
+
+
+def aim(docks: Iterable[Any], image: Any, layers: dict[str, Any]) -> None:
+    """Let each dock measure the regions that were drawn for one of its measurements."""
+    from ct_measure_plugin.viewer.docks.measurement import MeasurementDock
+    from ct_measure_plugin.viewer.docks.region_statistics import RegionStatisticsDock
+
+    for dock in docks:
+        if isinstance(dock, MeasurementDock):
+            name = next((one for one in dock.names if one in layers), None)
+            if name is not None:
+                dock.choose_measurement(name)
+                dock.choose(image, regions=layers[name])
+        elif isinstance(dock, RegionStatisticsDock) and "region_statistics" in layers:
+            dock.choose(image, layers["region_statistics"])
+
+
+def draw_regions(viewer: Any, image: Any, regions: Sequence[Region], name: str = "Regions") -> Any:
     """Draw regions on a layer over an image, each on the slice in its middle; go to the first.
 
     Returns the Shapes layer.
@@ -83,11 +125,12 @@ def draw_regions(viewer: Any, image: Any, regions: Sequence[Region]) -> Any:
     import numpy as np
 
     from ct_measure_plugin.physics.coverage import slices_of
+    from ct_measure_plugin.viewer.region_features import Z_HIGH, Z_LOW, set_column
     from ct_measure_plugin.viewer.session import Session
     from ct_measure_plugin.viewer.shapes import new_regions_layer, rename, shape_of
 
     placement = Session.of(viewer).placement(image)
-    layer = new_regions_layer(viewer, image)
+    layer = new_regions_layer(viewer, image, name)
     stand = None
     for region in regions:
         slices = slices_of(region, placement.volume)
@@ -96,12 +139,22 @@ def draw_regions(viewer: Any, image: Any, regions: Sequence[Region]) -> Any:
         worlds = [placement.world_of((z, float(y), float(x))) for y, x in corners]
         layer.add([np.array([layer.world_to_data(world) for world in worlds])], shape_type=kind)
         rename(layer, layer.nshapes - 1, region.name)
+        low, high = _ends(region.z_mm)
+        set_column(layer, Z_LOW, {layer.nshapes - 1: low})
+        set_column(layer, Z_HIGH, {layer.nshapes - 1: high})
         stand = worlds[0] if stand is None else stand
     if stand is not None and layer.ndim == 3:
         viewer.dims.set_point(0, stand[0])
         layer.selected_data = {0}
     layer.mode = "select"
     return layer
+
+
+def _ends(z_mm: float | tuple[float, float] | None) -> tuple[float, float]:
+    """Return the slices of a region as a layer's features hold them."""
+    if z_mm is None:
+        return -math.inf, math.inf
+    return z_mm if isinstance(z_mm, tuple) else (math.nan, math.nan)
 
 
 def add_docks(viewer: Any) -> list[Any]:

@@ -44,9 +44,12 @@ class SettingsForm:
     -------
     changed(settings)
         New valid settings.
+    told(problem)
+        The controls became invalid, and why; or valid again: "".
     """
 
     changed = Signal(object)
+    told = Signal(str)
 
     def __init__(self, settings_type: type[Settings], settings: Settings | None = None) -> None:
         self._type = settings_type
@@ -79,6 +82,12 @@ class SettingsForm:
         self.changed.emit(settings)
 
     def _take(self) -> None:
+        before = self.problem
+        self._read()
+        if self.problem != before:
+            self.told.emit(self.problem)
+
+    def _read(self) -> None:
         try:
             found = self._type(**{name: one.value for name, one in self._controls.items()})
         except ValidationError as error:

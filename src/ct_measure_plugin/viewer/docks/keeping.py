@@ -10,12 +10,15 @@ from qtpy.QtCore import Signal
 from qtpy.QtWidgets import QFileDialog, QHBoxLayout, QPushButton, QWidget
 
 from ct_measure_plugin.errors import CtMeasureError
+from ct_measure_plugin.measurements import find
 from ct_measure_plugin.records import Logbook, write_csv, write_json
 from ct_measure_plugin.run import run_measurement
+from ct_measure_plugin.viewer.tasks import run_here
 
 if TYPE_CHECKING:
     from ct_measure_plugin.records import Record
     from ct_measure_plugin.viewer.session import Session
+    from ct_measure_plugin.viewer.tasks import Work
 
 __all__ = ["KeepingButtons"]
 
@@ -28,8 +31,9 @@ class KeepingButtons(QWidget):
     session : Session
         The viewer's session.
     question : callable
-        Returns measurement name, Volume, regions and settings as the dock shows them now. Records
-        are made from these, so that what is kept is what a script would find.
+        Returns measurement name, Volume, regions and settings as the dock shows them now; a list of
+        such where the dock measures several layers. Records are made from these, so that what is
+        kept is what a script would find.
     """
 
     copy = Signal()
@@ -37,7 +41,7 @@ class KeepingButtons(QWidget):
     def __init__(
         self,
         session: Session,
-        question: Callable[[], tuple[Any, ...]],
+        question: Callable[[], tuple[Any, ...] | list[tuple[Any, ...]]],
         parent: QWidget | None = None,
     ) -> None:
         super().__init__(parent)
@@ -58,11 +62,21 @@ class KeepingButtons(QWidget):
             line.addWidget(button)
 
     def records(self) -> tuple[Record, ...]:
-        """Make the records of what is shown."""
-        name, volume, regions, settings = self._question()
-        if volume is None or not regions:
+        """Make the records of what is shown, while the window stays alive."""
+        asked = self._question()
+        questions = [one for one in (asked if isinstance(asked, list) else [asked]) if _whole(one)]
+        if not questions:
             return ()
-        return run_measurement(name, volume, regions, settings)
+
+        def job(work: Work) -> tuple[Record, ...]:
+            found: list[Record] = []
+            for place, (name, volume, regions, settings) in enumerate(questions):
+                work.stop_if_asked()
+                work.progress(place, len(questions))
+                found += run_measurement(name, volume, regions, settings)
+            return tuple(found)
+
+        return run_here(job, "Making records")
 
     def export_to(self, path: str | Path) -> Path:
         """Write the records; the suffix decides between CSV and JSON."""
@@ -82,6 +96,8 @@ class KeepingButtons(QWidget):
         for record in records:
             self._session.keep(record)
         return count
+
+    # --- the buttons ----------------------------------------------------------------
 
     def _export(self) -> None:
         path, _ = QFileDialog.getSaveFileName(
@@ -112,3 +128,9 @@ class KeepingButtons(QWidget):
             show_error(str(error))
         except OSError as error:
             show_error(f"The file cannot be written: {error.strerror}")
+
+
+def _whole(question: tuple[Any, ...]) -> bool:
+    """Tell whether there is something to measure: a Volume, and as many regions as it takes."""
+    name, volume, regions, _ = question
+    return volume is not None and len(regions) >= find(name).regions.at_least

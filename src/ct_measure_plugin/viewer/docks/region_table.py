@@ -59,6 +59,12 @@ class TableModel(QAbstractTableModel):
         """The rows shown."""
         return self._rows
 
+    def offer(self, columns: tuple[str, ...]) -> None:
+        """Offer other columns: fields of another measurement's result; the rows go."""
+        self.beginResetModel()
+        self._offered, self._columns, self._rows = columns, (), ()
+        self.endResetModel()
+
     def show(self, rows: tuple[Row, ...]) -> bool:
         """Show other rows; return whether the table's shape changed."""
         used = tuple(c for c in self._offered if any(row.quantity(c) is not None for row in rows))
@@ -80,7 +86,7 @@ class TableModel(QAbstractTableModel):
             return line.name
         if isinstance(line.answer, NotMeasured):
             return f"not measured: {line.answer.reason}" if column == 1 else ""
-        quantity = line.quantity(self._columns[column - 1])
+        quantity = line.quantity(self._columns[column - 1]) if self._columns else None
         return "" if quantity is None else " ± ".join(part for part in quantity.rounded() if part)
 
     def heading(self, column: int) -> str:

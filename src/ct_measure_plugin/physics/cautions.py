@@ -82,6 +82,7 @@ KINDS: dict[str, CautionKind] = {
     "no-uncertainty": _note("A number without a stated uncertainty"),
     "correlated-noise": _note("Noise correlation estimated from the region"),
     "independence-assumed": _note("Independent pixels were assumed"),
+    "independent-images": _note("Two images were taken as independent"),
     "few-independent-samples": _warning("Few independent samples"),
     # --- resolution -----------------------------------------------------------------
     "aliasing": _warning("The image is aliased"),

@@ -24,7 +24,7 @@ UNDEFINED: Final = 0xFFFFFFFF
 ITEM: Final = 0xFFFEE000
 ITEM_END: Final = 0xFFFEE00D
 SEQUENCE_END: Final = 0xFFFEE0DD
-#: nesting of the functional groups is three deep; a file that nests deeper is hostile
+#: nesting of the functional groups is three deep; more is hostile
 MAX_DEPTH: Final = 24
 #: twenty thousand frames of a dozen functional groups; bounds what a hostile header can claim
 MAX_ITEMS: Final = 1 << 18
@@ -84,11 +84,20 @@ class Elements:
         What the offsets count in.
     encoding : Encoding
         How it is written.
+    wanted : frozenset of int
+        The tags to keep.
     """
 
-    __slots__ = ("budget", "data", "encoding", "found", "items")
+    __slots__ = ("budget", "data", "encoding", "found", "items", "wanted")
 
-    def __init__(self, data: bytes, encoding: Encoding, budget: list[int] | None = None) -> None:
+    def __init__(
+        self,
+        data: bytes,
+        encoding: Encoding,
+        budget: list[int] | None = None,
+        wanted: frozenset[int] = tags.WANTED,
+    ) -> None:
+        self.wanted = wanted
         #: how many more sequence items may be kept, one count for the whole file
         self.budget = [MAX_ITEMS] if budget is None else budget
         self.data = data
@@ -174,7 +183,9 @@ def _decimal_numbers(raw: bytes) -> tuple[float | None, ...]:
     return tuple(values)
 
 
-def index_elements(data: bytes, start: int, encoding: Encoding) -> Elements:
+def index_elements(
+    data: bytes, start: int, encoding: Encoding, wanted: frozenset[int] = tags.WANTED
+) -> Elements:
     """Index a data set up to its pixel data, or to the end of the bytes.
 
     Parameters
@@ -185,6 +196,8 @@ def index_elements(data: bytes, start: int, encoding: Encoding) -> Elements:
         Where the data set begins.
     encoding : Encoding
         How it is written.
+    wanted : frozenset of int
+        The tags to keep.
 
     Raises
     ------
@@ -193,7 +206,7 @@ def index_elements(data: bytes, start: int, encoding: Encoding) -> Elements:
     BrokenHeaderError
         If the bytes do not follow the encoding.
     """
-    elements = Elements(data, encoding)
+    elements = Elements(data, encoding, wanted=wanted)
     try:
         _walk(elements, start, len(data), depth=0, closed=False)
     except (BrokenHeaderError, ShortHeaderError) as problem:
@@ -215,7 +228,7 @@ def _walk(  # noqa: C901 - the one hot loop of opening a series
     implicit, order = into.encoding.implicit, into.encoding.order
     unpack_explicit = struct.Struct(order + "HH2sH").unpack_from
     unpack_implicit = struct.Struct(order + "HHL").unpack_from
-    wanted, pixel_tags, short_vrs = tags.WANTED, tags.PIXEL_TAGS, _SHORT_VRS
+    wanted, pixel_tags, short_vrs = into.wanted, tags.PIXEL_TAGS, _SHORT_VRS
     while position + 8 <= end:
         if implicit:
             group, element, length = unpack_implicit(data, position)
@@ -306,7 +319,7 @@ def _read_items(
             break
         if marker != ITEM:
             raise BrokenHeaderError("a sequence holds something other than items")
-        item = Elements(into.data, encoding, into.budget)
+        item = Elements(into.data, encoding, into.budget, into.wanted)
         into.budget[0] -= 1
         if into.budget[0] < 0:
             raise BrokenHeaderError("there are more sequence items than a CT image has")

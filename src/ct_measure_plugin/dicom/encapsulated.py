@@ -2,22 +2,18 @@
 
 from __future__ import annotations
 
-import logging
 import os
-import threading
-import warnings
-from contextlib import contextmanager
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any, Final
 
 import numpy as np
 
 from ct_measure_plugin.dicom.codestream import Codestream, codestream_of
+from ct_measure_plugin.dicom.quiet import silenced
 from ct_measure_plugin.dicom.syntaxes import SYNTAXES, installed, missing_decoder
 from ct_measure_plugin.errors import DecoderMissingError, SeriesError
 
 if TYPE_CHECKING:
-    from collections.abc import Iterator
     from typing import BinaryIO
 
     from numpy.typing import NDArray
@@ -27,21 +23,6 @@ if TYPE_CHECKING:
 __all__ = ["decoded_plane", "require_decoder"]
 
 _ITEM: Final = b"\xfe\xff\x00\xe0"
-#: where the DICOM library and its decoders log from while they decode
-_LOUD: Final = (
-    "pydicom",
-    "pydicom.misc",
-    "pydicom.encaps",
-    "pydicom.pixels.common",
-    "pydicom.pixels.utils",
-    "pydicom.pixels.decoders.base",
-    "jpeg_ls",
-    "pylibjpeg",
-    "pylibjpeg.utils",
-    "openjpeg.utils",
-    "libjpeg.utils",
-)
-_RLE_NOTE: Final = "The decoded RLE segment contains non-conformant padding"
 
 
 @dataclass(frozen=True, slots=True)
@@ -139,7 +120,7 @@ def _decoded(image: ImageFacts, data: bytes, allocated: int) -> NDArray[Any]:
         "correct_unused_bits": False,
     }
     try:
-        with _silenced():
+        with silenced():
             plane, _ = get_decoder(image.syntax_uid).as_array(
                 encapsulate([data]),
                 index=0,
@@ -225,40 +206,3 @@ def _pieces_of(fragments: _Fragments, image: ImageFacts) -> tuple[tuple[int, int
     if not chosen:
         raise SeriesError("the frames of a compressed file cannot be told apart")
     return chosen
-
-
-class _Quiet(logging.Filter):
-    """Keeps back what the DICOM library logs while this thread decodes."""
-
-    def __init__(self) -> None:
-        super().__init__()
-        self.here = threading.local()
-
-    def filter(self, record: logging.LogRecord) -> bool:  # noqa: ARG002 - the base class names it
-        return not getattr(self.here, "on", False)
-
-
-_quiet = _Quiet()
-
-
-@contextmanager
-def _silenced() -> Iterator[None]:
-    """Keep the DICOM library's log lines and its one possible warning from the user.
-
-    Thread-safe: the log filter looks at a flag of this thread only. The warning is refused by an
-    entry that names its text; `warnings.catch_warnings` would change the filters of all threads.
-    """
-    for name in _LOUD:
-        logging.getLogger(name).addFilter(_quiet)  # adding it again does nothing
-    if not any(entry[0] == "ignore" and _names_rle(entry) for entry in warnings.filters):
-        warnings.filterwarnings("ignore", message=_RLE_NOTE)
-    _quiet.here.on = True
-    try:
-        yield
-    finally:
-        _quiet.here.on = False
-
-
-def _names_rle(entry: tuple[Any, ...]) -> bool:
-    pattern = entry[1]
-    return pattern is not None and getattr(pattern, "pattern", "") == _RLE_NOTE

@@ -80,8 +80,15 @@ class Header:
         return self.syntax_uid == DEFLATED
 
 
-def read_header(path: str | os.PathLike[str]) -> Header:
+def read_header(path: str | os.PathLike[str], wanted: frozenset[int] = tags.WANTED) -> Header:
     """Read and index a file's header.
+
+    Parameters
+    ----------
+    path : path
+        The file.
+    wanted : frozenset of int
+        The tags to keep; by default those that reading a series needs.
 
     Raises
     ------
@@ -97,7 +104,7 @@ def read_header(path: str | os.PathLike[str]) -> Header:
             raise UnreadableFileError("the file is empty", stray=True)
         while True:
             try:
-                return _header_of(data, size)
+                return _header_of(data, size, wanted)
             except ShortHeaderError as problem:
                 if len(data) >= min(size, LARGEST_HEADER):
                     raise _damaged(_short_reason(size), problem.seen) from None
@@ -130,23 +137,26 @@ def _short_reason(size: int) -> str:
     return "the file is cut short inside its header"
 
 
-def _header_of(data: bytes, size: int) -> Header:
+def _header_of(data: bytes, size: int, wanted: frozenset[int]) -> Header:
     if data[128:132] == b"DICM":
-        return _conformant(data, 132, size)
+        return _conformant(data, 132, size, wanted)
     if data[:8].startswith(b"\x02\x00\x00\x00UL"):  # file meta without a preamble
-        return _conformant(data, 0, size, headerless=True)
-    return _bare(data, size)
+        return _conformant(data, 0, size, wanted, headerless=True)
+    return _bare(data, size, wanted)
 
 
-def _conformant(data: bytes, start: int, size: int, *, headerless: bool = False) -> Header:
+def _conformant(
+    data: bytes, start: int, size: int, wanted: frozenset[int], *, headerless: bool = False
+) -> Header:
     """Index a file that has file meta information."""
     syntax_uid, body = _file_meta(data, start)
     if not syntax_uid:
         syntax_uid, headerless = _guess_syntax(data, body), True
     if syntax_uid == DEFLATED:
-        return _deflated(data, body, size, headerless=headerless)
+        return _deflated(data, body, size, wanted, headerless=headerless)
     encoding = _encoding_of(syntax_uid, data, body)
-    return Header(index_elements(data, body, encoding), syntax_uid, size, headerless)
+    elements = index_elements(data, body, encoding, wanted)
+    return Header(elements, syntax_uid, size, headerless)
 
 
 def _file_meta(data: bytes, start: int) -> tuple[str, int]:
@@ -189,7 +199,7 @@ def _guess_syntax(data: bytes, body: int) -> str:
     return EXPLICIT_BIG if data[body] == 0 else EXPLICIT_LITTLE
 
 
-def _bare(data: bytes, size: int) -> Header:
+def _bare(data: bytes, size: int, wanted: frozenset[int]) -> Header:
     """Index a file that starts with its data set; refuse it unless it is unambiguous."""
     group = data[:2]
     if group not in (b"\x08\x00", b"\x00\x08") or len(data) < 16:
@@ -197,7 +207,7 @@ def _bare(data: bytes, size: int) -> Header:
     syntax_uid = _guess_syntax(data, 0)
     encoding = Encoding(implicit=syntax_uid == IMPLICIT_LITTLE, big=syntax_uid == EXPLICIT_BIG)
     try:
-        elements = index_elements(data, 0, encoding)
+        elements = index_elements(data, 0, encoding, wanted)
     except BrokenHeaderError:
         raise UnreadableFileError("not a DICOM file", stray=True) from None
     except ShortHeaderError:
@@ -209,13 +219,15 @@ def _bare(data: bytes, size: int) -> Header:
     return Header(elements, syntax_uid, size, headerless=True)
 
 
-def _deflated(data: bytes, body: int, size: int, *, headerless: bool) -> Header:
+def _deflated(
+    data: bytes, body: int, size: int, wanted: frozenset[int], *, headerless: bool
+) -> Header:
     """Index a deflated data set, inflating no more than the header needs."""
     limit = FIRST_READ
     while True:
         plain = inflate(data[body:], limit)
         try:
-            elements = index_elements(plain, 0, _encoding_of(DEFLATED, plain, 0))
+            elements = index_elements(plain, 0, _encoding_of(DEFLATED, plain, 0), wanted)
         except ShortHeaderError:
             if len(plain) < limit:  # all that these bytes hold
                 raise

@@ -29,7 +29,7 @@ if TYPE_CHECKING:
     from ct_measure_plugin.dicom.facts import ImageFacts
     from ct_measure_plugin.physics.results import Caution
 
-__all__ = ["read_series"]
+__all__ = ["read_series", "volume_of"]
 
 _SAMPLED_SLICES: Final = 5
 
@@ -141,7 +141,7 @@ def _loaded_volume(entry: SeriesEntry, loaded: Loaded) -> Volume:
         doubt = implausible(sample)
         cautions += [doubt] if doubt else []
         limits = observed_limits(sample, limits)
-    return _volume(entry, loaded.values, loaded.padding, cautions, limits)
+    return volume_of(entry, loaded.values, loaded.padding, cautions, limits)
 
 
 def _lazy_volume(entry: SeriesEntry) -> Volume:
@@ -149,16 +149,17 @@ def _lazy_volume(entry: SeriesEntry) -> Volume:
     hounsfield = entry.unit == "HU"
     padding = [padding_unseen(image, hounsfield=hounsfield) for image in images]
     cautions = [*entry.cautions, *padding_cautions(padding, images, entry.unit)]
-    return _volume(entry, lazy_array(images), padding, cautions, representable_of(images))
+    return volume_of(entry, lazy_array(images), padding, cautions, representable_of(images))
 
 
-def _volume(
+def volume_of(
     entry: SeriesEntry,
     values: Any,
     padding: Sequence[PaddingFound],
     cautions: Sequence[Caution],
     limits: tuple[float, float] | None,
 ) -> Volume:
+    """Return a Volume of values in the series' geometry, with what its headers tell."""
     geometry = entry._geometry
     images = entry._stack.images
     return Volume(

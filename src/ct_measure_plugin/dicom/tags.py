@@ -1,4 +1,4 @@
-"""The data elements this room looks at, by tag and value representation; it reads no others.
+"""The data elements that reading looks at, by tag and value representation; it reads no others.
 
 Numbers are ``group << 16 | element`` (PS3.6, chapter 6). Names, birth dates, accession numbers,
 institutions and the like are absent on purpose: what is never read cannot leak.

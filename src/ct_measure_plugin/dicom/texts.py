@@ -5,7 +5,7 @@ from __future__ import annotations
 import hashlib
 from functools import lru_cache
 
-__all__ = ["digest_of", "known_position", "known_unit", "shown_text"]
+__all__ = ["codec_of", "digest_of", "known_position", "known_unit", "shown_text"]
 
 #: PS3.3, C.7.3.1.1.2: head, feet, left, right, front or back first; supine, prone, on a side
 _POSITIONS = frozenset(
@@ -34,6 +34,7 @@ _UNITS = frozenset(["OD", "HU", "US", "MGML", "Z_EFF", "ED", "EDW", "HU_MOD", "P
 _CODECS = {
     "": "ascii",
     "ISO_IR 6": "ascii",
+    "ISO_IR 13": "shift_jis",
     "ISO_IR 100": "latin-1",
     "ISO_IR 101": "iso8859-2",
     "ISO_IR 109": "iso8859-3",
@@ -43,6 +44,7 @@ _CODECS = {
     "ISO_IR 138": "iso8859-8",
     "ISO_IR 144": "iso8859-5",
     "ISO_IR 148": "iso8859-9",
+    "ISO_IR 166": "tis-620",
     "ISO_IR 192": "utf-8",
     "GB18030": "gb18030",
     "GBK": "gbk",
@@ -61,6 +63,17 @@ def digest_of(uid: str) -> str:
     return hashlib.sha256(uid.encode("utf-8", "replace")).hexdigest()
 
 
+def codec_of(name: str) -> str:
+    """Return the codec of a character set's name, that of ASCII if it is not known.
+
+    Examples
+    --------
+    >>> codec_of("ISO_IR 192"), codec_of("ISO 2022 IR 100"), codec_of("EBCDIC")
+    ('utf-8', 'latin-1', 'ascii')
+    """
+    return _CODECS.get(name.replace("ISO 2022 IR", "ISO_IR"), "ascii")
+
+
 @lru_cache(maxsize=4096)
 def shown_text(raw: bytes, charset: str, *, longest: int = 64) -> str:
     r"""Return free text fit for a screen: one line, printable, at most `longest` characters.
@@ -70,8 +83,7 @@ def shown_text(raw: bytes, charset: str, *, longest: int = 64) -> str:
     >>> shown_text(b"Water\x00\n phantom ", "")
     'Water phantom'
     """
-    codec = _CODECS.get(charset.split("\\", maxsplit=1)[0], "ascii")
-    text = raw.decode(codec, "replace")
+    text = raw.decode(codec_of(charset.split("\\", maxsplit=1)[0]), "replace")
     kept = "".join(c if c.isprintable() and c != "\ufffd" else " " for c in text)
     return " ".join(kept.split())[:longest]
 

@@ -41,7 +41,8 @@ def spectrum_against_the_transform_alone(title: str, limit: float | None, **more
         else f", at most {limit} wanted: " + ("met" if ratio <= limit else "MISSED")
     )
     print(
-        f"{title}: {1e3 * ours:.0f} ms, rfft2 alone {1e3 * alone:.0f} ms: ratio {ratio:.2f}{verdict}"
+        f"{title}: {1e3 * ours:.0f} ms, rfft2 alone {1e3 * alone:.0f} ms:"
+        f" ratio {ratio:.2f}{verdict}"
     )
 
 

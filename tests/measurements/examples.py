@@ -103,10 +103,25 @@ def ct_number_line() -> Example:
     )
 
 
+def uniformity() -> Example:
+    y, x = np.mgrid[:96, :96]
+    inside = np.hypot(y - 47.3, x - 48.1) < 40
+    noise = np.random.default_rng(12).normal(20, 12, (1, 96, 96))
+    values = np.where(inside, np.rint(noise), -1000).astype(np.int16)
+    return Example(
+        Volume(values, (2.0, 0.5, 0.5)),
+        (),
+        moves_with_level=("water", "centre", "edge"),
+        rests_on_zero=("cupping_percent", "integral_non_uniformity"),
+        scales_with_spacing={"radius": 1},
+    )
+
+
 EXAMPLES: dict[str, Callable[[], Example]] = {
     "region_statistics": region_statistics,
     "region_contrast": region_contrast,
     "noise_power": noise_power,
+    "uniformity": uniformity,
     "edge_mtf": edge_mtf,
     "ct_number_line": ct_number_line,
 }

@@ -26,6 +26,7 @@ _CLASSES: dict[str, str] = {
     "region_statistics": "MeasureRegionStatistics",
     "region_contrast": "MeasureRegionContrast",
     "noise_power": "MeasureNoisePower",
+    "uniformity": "MeasureUniformity",
     "edge_mtf": "MeasureEdgeMtf",
     "ct_number_line": "MeasureCtNumberLine",
 }

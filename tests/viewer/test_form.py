@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
+from pathlib import Path
 from typing import Literal
 
 import pytest
-from pydantic import Field
+from pydantic import Field, field_validator
 
 from ct_measure_plugin.measurements import NAMES, Settings, find
 from ct_measure_plugin.viewer.docks.form import SettingsForm
@@ -19,6 +20,13 @@ class Sample(Settings):
     diameter_mm: float | None = Field(None, ge=0.01, le=3)
     levels: tuple[float, ...] = ()
     ranges: tuple[tuple[float, float], ...] = Field((), title="Ranges")
+    rods: tuple[str, ...] = ()
+    table: tuple[int, ...] | tuple[str, ...] = Field((), json_schema_extra={"file": "a table"})
+
+    @field_validator("table", mode="before")
+    @classmethod
+    def _read(cls, given):
+        return Path(given).read_text().split() if isinstance(given, str) else given
 
 
 @pytest.fixture
@@ -81,6 +89,23 @@ def test_several_numbers_and_ranges_are_written_in_a_line(form):
     form.show(Sample(levels=(0.25,), ranges=((0.0, 5.5),)))
     assert form._controls["levels"]._line.value == "0.25"
     assert form._controls["ranges"]._line.value == "0 to 5.5"
+
+
+def test_words_are_written_in_a_line(form):
+    form._controls["rods"]._line.value = "PTFE, LDPE; water"
+    assert form.settings.rods == ("PTFE", "LDPE", "water")
+    form.show(Sample(rods=("air",)))
+    assert form._controls["rods"]._line.value == "air"
+
+
+def test_a_file_s_content_is_the_setting(form, tmp_path):
+    """The path is not kept: it would not mean anything elsewhere."""
+    (tmp_path / "table.txt").write_text("a b")
+    form._controls["table"]._file.line_edit.value = str(tmp_path / "table.txt")
+    assert form.settings.table == ("a", "b")
+    form.show(Sample(table=("c",)))
+    form._controls["repeats"].value = 7
+    assert form.settings.table == ("c",)
 
 
 def test_showing_settings_tells_once(form):

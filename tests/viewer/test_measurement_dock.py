@@ -13,6 +13,7 @@ import pytest
 from ct_measure_plugin.measurements import NAMES, find, measure
 from ct_measure_plugin.physics.regions import Box
 from ct_measure_plugin.physics.results import curves_of, pictures_of
+from ct_measure_plugin.physics.tables import tables_of
 from ct_measure_plugin.records import read_json
 from ct_measure_plugin.viewer.demo import draw_regions
 from ct_measure_plugin.viewer.docks.all_measurements import AllMeasurementsDock
@@ -63,9 +64,16 @@ def test_every_measurement_is_shown_whatever_it_answers(name, qtbot, viewer_mode
     assert all(answers), answers
     first = answers[0]
     curves = [n for n, c in curves_of(first).items() if len(c.x) > 1]
-    assert dock.answers.fields() == [*curves, *pictures_of(first)]
+    assert dock.answers.fields() == [*curves, *pictures_of(first), *tables_of(first)]
     for index in range(dock.answers.tabs.count()):
         dock.answers.tabs.setCurrentIndex(index)
+        shown = [not part.isHidden() for part in (dock.answers.plot, dock.answers.picture,
+                 dock.answers.rows)]  # fmt: skip
+        assert sum(shown) == 1
+        if shown[2]:
+            table = tables_of(first)[dock.answers.fields()[index]]
+            lines = ["\t".join(cells) for cells in (table.titles, *table.cells())]
+            assert dock.answers.rows.as_text().splitlines() == lines
     column = find(name).columns[0]
     value, doubt = getattr(first, column).rounded()
     assert value.replace("-", "−") in dock.headline.texts()[0]

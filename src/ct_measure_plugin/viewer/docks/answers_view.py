@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import replace
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, TypeVar
 
 from qtpy.QtCore import QSignalBlocker, Signal
 from qtpy.QtWidgets import (
@@ -25,7 +25,9 @@ from ct_measure_plugin.physics.results import (
     label_of,
     pictures_of,
 )
+from ct_measure_plugin.physics.tables import Table, tables_of
 from ct_measure_plugin.viewer.docks.region_table import RegionTable, Row, TableModel
+from ct_measure_plugin.viewer.docks.result_table import ResultTable
 from ct_measure_plugin.viewer.pictures import can_be_layer
 from ct_measure_plugin.viewer.plots.curve_plot import CurvePlot
 from ct_measure_plugin.viewer.plots.legend import Legend
@@ -39,6 +41,8 @@ if TYPE_CHECKING:
 __all__ = ["AnswersView"]
 
 _HINT = "Point at it to read values."
+
+_T = TypeVar("_T")
 
 #: Widest the column of names becomes, pixels, so that numbers are seen beside it.
 _NAME_WIDTH = 130
@@ -80,14 +84,15 @@ class AnswersView(QWidget):
         self.tabs.setDrawBase(False)
         self.tabs.setUsesScrollButtons(True)
         self.tabs.setSizePolicy(QSizePolicy.Policy.Ignored, QSizePolicy.Policy.Fixed)
-        self.tabs.setAccessibleName("Curve or picture")
+        self.tabs.setAccessibleName("Curve, picture or table")
         self.tabs.currentChanged.connect(self._tab_chosen)
         self.plot, self.legend, self.picture = CurvePlot(self), Legend(self), PicturePlot(self)
+        self.rows = ResultTable(self)
         self.reading = QLabel(_HINT, self)
         self.reading.setAccessibleName("Value under the mouse")
         for plot in (self.plot, self.picture):
             plot.read.connect(lambda text: self.reading.setText(text or _HINT))
-        for widget in (self.tabs, self.plot, self.picture, self.reading, self.legend):
+        for widget in (self.tabs, self.plot, self.picture, self.rows, self.reading, self.legend):
             lines.addWidget(widget)
         lines.addWidget(self._buttons())
         self.model = TableModel((), self)
@@ -145,7 +150,7 @@ class AnswersView(QWidget):
 
     def recolour(self, colours: Colours) -> None:
         """Take up the colours of a theme."""
-        for part in (self.plot, self.picture, self.legend, self.table):
+        for part in (self.plot, self.picture, self.rows, self.legend, self.table):
             part.recolour(colours)
 
     # --- to be asked ----------------------------------------------------------------
@@ -160,7 +165,7 @@ class AnswersView(QWidget):
         return answers[min(self._at, len(answers) - 1)] if answers else None
 
     def fields(self) -> list[str]:
-        """Return the curves and pictures that can be looked at, by name."""
+        """Return the curves, pictures and tables that can be looked at, by name."""
         return list(self._fields)
 
     # --- inside ---------------------------------------------------------------------
@@ -203,10 +208,11 @@ class AnswersView(QWidget):
             for answer, colour, frozen in self._looks()
         ]
         curves = [entry for entry in found if isinstance(entry[1], Curve)]
-        picture = self._picture()
+        picture, table = self._picture(), self._one_of(name, Table)
         for widget in (self.plot, self.legend):
             widget.setVisible(bool(curves))
         self.picture.setVisible(picture is not None)
+        self.rows.setVisible(table is not None)
         self.reading.setVisible(bool(curves) or picture is not None)
         self.layer_button.setVisible(picture is not None and can_be_layer(picture))
         if curves:
@@ -224,6 +230,8 @@ class AnswersView(QWidget):
             self.legend.show_traces(traces)
         if picture is not None:
             self.picture.show_picture(picture)
+        if table is not None:
+            self.rows.show_table(table)
 
     def _looks(self) -> list[tuple[Answer, int, bool]]:
         live = [(answer, place, False) for place, answer in enumerate(self._live)]
@@ -236,12 +244,14 @@ class AnswersView(QWidget):
         return entry[0], entry[1]
 
     def _picture(self) -> Picture | None:
-        """Return the picture of the chosen answer, else of the first that has it."""
-        name = self._present()
+        return self._one_of(self._present(), Picture)
+
+    def _one_of(self, name: str, kind: type[_T]) -> _T | None:
+        """Return the chosen answer's field, else that of the first answer that has it."""
         chosen = self.chosen_answer()
         answers = (*(() if chosen is None else (chosen,)), *self.answers())
-        found = (getattr(one.result, name, None) for one in answers)
-        return next((one for one in found if isinstance(one, Picture)), None)
+        found = (_field(one.result, name) for one in answers)
+        return next((one for one in found if isinstance(one, kind)), None)
 
     def _tab_chosen(self, *_: Any) -> None:
         self._field = self._present()
@@ -261,10 +271,17 @@ class AnswersView(QWidget):
 
 
 def _fields_of(answers: tuple[Answer, ...]) -> list[str]:
-    """Return the names of all curves and pictures, in the order of the first that has each."""
+    """Return the names of all curves, pictures and tables, as the first that has each has them."""
     found: dict[str, None] = {}
     for answer in answers:
         if isinstance(answer.result, Result):
             curves = [name for name, one in curves_of(answer.result).items() if len(one.x) > 1]
-            found |= dict.fromkeys([*curves, *pictures_of(answer.result)])
+            others = [*pictures_of(answer.result), *tables_of(answer.result)]
+            found |= dict.fromkeys([*curves, *others])
     return list(found)
+
+
+def _field(result: Any, name: str) -> Any:
+    """Return a result's curve, picture or table."""
+    tables = tables_of(result) if isinstance(result, Result) else {}
+    return tables.get(name, getattr(result, name, None))

@@ -10,7 +10,16 @@ from magicgui.widgets import CheckBox, Container, create_widget
 from psygnal import Signal
 from pydantic import ValidationError
 
-from ct_measure_plugin.viewer.docks.number_lists import NumberList, holds_numbers, holds_ranges
+from ct_measure_plugin.viewer.docks.setting_lines import (
+    FileChoice,
+    LineList,
+    holds_numbers,
+    holds_ranges,
+    holds_words,
+    numbers_of,
+    ranges_of,
+    words_of,
+)
 
 if TYPE_CHECKING:
     from pydantic.fields import FieldInfo
@@ -124,15 +133,24 @@ class _Optional(Container[Any]):
             self._inner.value = value
 
 
+#: What a line of text can hold, and how it is read.
+_LINES = ((holds_numbers, numbers_of), (holds_ranges, ranges_of), (holds_words, words_of))
+
+
 def _control(name: str, field: FieldInfo, value: Any) -> Any:
     """Return the control of one field."""
     label = field.title or name.replace("_", " ").capitalize()
     names = {"name": name, "label": label, "tooltip": field.description or ""}
     annotation, optional = _without_none(field.annotation)
-    if holds_numbers(annotation) or holds_ranges(annotation):
-        lines = NumberList(ranges=holds_ranges(annotation), **names)
-        lines.value = value
-        return lines
+    for holds, read in _LINES:
+        if holds(annotation):
+            line: Any = LineList(read, **names)
+            line.value = value
+            return line
+    if isinstance(field.json_schema_extra, dict) and "file" in field.json_schema_extra:
+        file: Any = FileChoice(**names)
+        file.value = value
+        return file
     options = {**_bounds(field), **_steps_of(annotation, field)}
     if not optional:
         control: Any = create_widget(

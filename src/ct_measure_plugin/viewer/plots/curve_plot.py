@@ -23,6 +23,9 @@ __all__ = ["CurvePlot"]
 _BAND_ALPHA = 60
 _WIDTH = 1.6
 
+#: Up to so many samples are marked singly: what lies between them was not measured.
+_FEW = 24
+
 
 class _Drawn:
     """The items of one trace, kept and refilled."""
@@ -41,7 +44,11 @@ class _Drawn:
         x, y = np.asarray(trace.curve.x, float), np.asarray(trace.curve.y, float)
         style = Qt.PenStyle.DashLine if trace.frozen else Qt.PenStyle.SolidLine
         self.line.setPen(pg.mkPen(colour, width=_WIDTH, style=style))
-        self.line.setData(x, y)
+        few = len(x) <= _FEW
+        self.line.setData(x, y, symbol="o" if few else None, symbolSize=6)
+        if few:
+            self.line.setSymbolBrush(colour)
+            self.line.setSymbolPen(None)
         doubt = trace.curve.y_uncertainty if trace.band else None
         self.band.setVisible(doubt is not None)
         if doubt is None:

@@ -1,14 +1,28 @@
-"""A line of text for settings that hold several numbers, or several ranges of numbers."""
+"""A line of text for settings that hold several numbers, ranges of numbers, words, or a file."""
 
 from __future__ import annotations
 
 import re
 import typing
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
-from magicgui.widgets import Container, LineEdit
+from magicgui.types import FileDialogMode
+from magicgui.widgets import Container, FileEdit, LineEdit
 
-__all__ = ["NumberList", "holds_numbers", "holds_ranges", "numbers_of", "ranges_of", "text_of"]
+if TYPE_CHECKING:
+    from collections.abc import Callable
+
+__all__ = [
+    "FileChoice",
+    "LineList",
+    "holds_numbers",
+    "holds_ranges",
+    "holds_words",
+    "numbers_of",
+    "ranges_of",
+    "text_of",
+    "words_of",
+]
 
 _RANGE = re.compile(r"^\s*(\S+?)\s*(?:to|…|\.\.)\s*(\S+)\s*$")
 
@@ -25,6 +39,20 @@ def holds_ranges(annotation: Any) -> bool:
     if typing.get_origin(annotation) is not tuple or len(inside) != 2 or inside[1] is not ...:
         return False
     return typing.get_origin(inside[0]) is tuple and typing.get_args(inside[0]) == (float, float)
+
+
+def holds_words(annotation: Any) -> bool:
+    """Tell whether a type is a tuple of any number of texts."""
+    return typing.get_origin(annotation) is tuple and typing.get_args(annotation) == (str, ...)
+
+
+def words_of(text: str) -> tuple[str, ...]:
+    """Return the words of a line, parted by commas or semicolons.
+
+    >>> words_of("PTFE, LDPE; water")
+    ('PTFE', 'LDPE', 'water')
+    """
+    return tuple(part.strip() for part in re.split(r"[,;]", text) if part.strip())
 
 
 def numbers_of(text: str) -> tuple[float, ...]:
@@ -68,7 +96,7 @@ def ranges_of(text: str) -> tuple[tuple[float, float], ...]:
 
 
 def text_of(value: tuple[Any, ...]) -> str:
-    """Return numbers or ranges as a line that reads back the same.
+    """Return numbers, ranges or words as a line that reads back the same.
 
     >>> text_of((0.5, 10.0)), text_of(((-10.0, 10.0),))
     ('0.5, 10', '-10 to 10')
@@ -79,8 +107,8 @@ def text_of(value: tuple[Any, ...]) -> str:
     )
 
 
-def _text(number: float) -> str:
-    return repr(float(number)).removesuffix(".0")
+def _text(one: float | str) -> str:
+    return one if isinstance(one, str) else repr(float(one)).removesuffix(".0")
 
 
 def _number(text: str) -> float:
@@ -90,25 +118,24 @@ def _number(text: str) -> float:
         raise ValueError(f"write numbers, not '{text}'") from None
 
 
-class NumberList(Container[Any]):
+class LineList(Container[Any]):
     """A line edit whose value is a tuple; text that is no such tuple is its own value.
 
     So the settings refuse it, and say why, in one place for all controls.
     """
 
-    def __init__(self, *, ranges: bool, **names: Any) -> None:
-        self._read = ranges_of if ranges else numbers_of
+    def __init__(self, read: Callable[[str], tuple[Any, ...]], **names: Any) -> None:
+        self._read = read
         self._line = LineEdit(name="line", label="")
         super().__init__(widgets=[self._line], layout="horizontal", labels=False, **names)
         self.margins = (0, 0, 0, 0)
-        hint = "such as −10 to 10, 30 to 60" if ranges else "such as 0.3, 0.05"
-        self._line.native.setPlaceholderText(hint)
+        self._line.native.setPlaceholderText(_HINTS[read])
         self._line.native.setAccessibleName(self.label)
         self._line.tooltip = self.tooltip
 
     @property
     def value(self) -> Any:
-        """The numbers; the text itself where it holds none."""
+        """What the line holds; the text itself where it cannot be read."""
         try:
             return self._read(self._line.value)
         except ValueError:
@@ -117,3 +144,36 @@ class NumberList(Container[Any]):
     @value.setter
     def value(self, value: tuple[Any, ...]) -> None:
         self._line.value = text_of(value)
+
+
+#: What stands in an empty line.
+_HINTS: dict[Any, str] = {
+    numbers_of: "such as 0.3, 0.05",
+    ranges_of: "such as −10 to 10, 30 to 60",
+    words_of: "such as one, another",
+}
+
+
+class FileChoice(Container[Any]):
+    """A file whose content is the setting; the settings read it. Empty for none."""
+
+    def __init__(self, **names: Any) -> None:
+        self._file = FileEdit(
+            mode=FileDialogMode.EXISTING_FILE, name="file", label="", nullable=True
+        )
+        self._content: Any = ()
+        super().__init__(widgets=[self._file], layout="horizontal", labels=False, **names)
+        self.margins = (0, 0, 0, 0)
+        self._file.line_edit.native.setAccessibleName(self.label)
+        self._file.line_edit.native.setPlaceholderText("none")
+
+    @property
+    def value(self) -> Any:
+        """The path as text, for the settings to read; else what was shown last."""
+        path = self._file.line_edit.value.strip()
+        return path or self._content
+
+    @value.setter
+    def value(self, value: Any) -> None:
+        self._content = value
+        self._file.line_edit.value = ""

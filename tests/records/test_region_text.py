@@ -14,6 +14,7 @@ from ct_measure_plugin.physics.regions import (
     Disc,
     Ellipse,
     Ellipsoid,
+    Labels,
     Mask,
     Polygon,
     Segment,
@@ -51,6 +52,27 @@ def test_a_mask_comes_back_pixel_by_pixel(shape):
     )  # fmt: skip
 
 
+@pytest.mark.parametrize("highest", [3, 300, 70_000, 2**40, -5])
+@pytest.mark.parametrize("shape", [(7, 5), (3, 11, 13)])
+def test_a_label_map_comes_back_number_by_number(shape, highest):
+    numbers = np.random.default_rng(2).integers(0, 4, shape).astype(np.int64)
+    numbers[numbers == 3] = highest
+    labels = Labels(
+        numbers, (2.0, 0.5, 0.7), (1.0, 2.0, 3.0), names=((1, "rod"),), codes=((1, "99LAB:ROD"),)
+    )
+    again = region_from_dict(json.loads(json.dumps(region_to_dict(labels))))
+    assert isinstance(again, Labels)
+    np.testing.assert_array_equal(again.labels, numbers)
+    assert (again.spacing_mm, again.origin_mm, again.names, again.codes) == (
+        labels.spacing_mm, labels.origin_mm, labels.names, labels.codes,
+    )  # fmt: skip
+    assert region_to_dict(again) == region_to_dict(labels)
+
+
+LABELS = {"kind": "labels", "spacing_mm": [1, 1, 1]}
+PACKED = {"shape": [2, 2], "type": "u1", "numbers": "eJxjYGRgAgAACQAE"}
+
+
 @pytest.mark.parametrize(
     ("given", "message"),
     [
@@ -67,6 +89,13 @@ def test_a_mask_comes_back_pixel_by_pixel(shape):
          "'values' must be two numbers"),
         ({"kind": "disc", "center_mm": [0, 0], "radius_mm": 3, "values": [4, 3]},
          r"'values' must be given as \(low, high\)"),
+        ({**LABELS, "labels": 3}, "'labels' must hold the shape"),
+        ({**LABELS, "labels": {**PACKED, "type": "f8"}}, "'labels' must hold the shape"),
+        ({**LABELS, "labels": {**PACKED, "shape": [9, 9]}}, "'labels' must hold the shape"),
+        ({**LABELS, "labels": {**PACKED, "numbers": "?"}}, "'labels' must hold the shape"),
+        ({**LABELS, "labels": PACKED, "names": 3}, "'names' must be pairs of a label and a text"),
+        ({**LABELS, "labels": PACKED, "names": [[1, 2]]}, "'names' must be pairs"),
+        ({**LABELS, "labels": PACKED, "codes": [["a", "b"]]}, "'codes' must be pairs"),
         ({"kind": "mask", "inside": {"shape": [9, 9], "bits": "eJw="}, "spacing_mm": [1, 1, 1]},
          "'inside' must hold the shape"),
         ({"kind": "mask", "inside": {"shape": [10**6, 10**6], "bits": ""}, "spacing_mm": [1, 1, 1]},

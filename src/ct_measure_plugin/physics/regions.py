@@ -12,32 +12,38 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
-from typing import TYPE_CHECKING, Any, ClassVar, TypeAlias
+from typing import TYPE_CHECKING, ClassVar
 
 import numpy as np
 
 from ct_measure_plugin.errors import RegionError
+from ct_measure_plugin.physics.region_base import (
+    LONGEST_CODE,
+    Point,
+    Region,
+    as_point,
+    finite,
+    positive,
+    set_points,
+)
+from ct_measure_plugin.physics.region_masks import Labels, Mask
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
 __all__ = [
+    "LONGEST_CODE",
     "Box",
     "Disc",
     "Ellipse",
     "Ellipsoid",
+    "Labels",
     "Mask",
     "Polygon",
     "Region",
     "Segment",
     "direction",
 ]
-
-#: Characters of a code and of its scheme (DICOM PS3.5, 6.2, value representation SH).
-LONGEST_CODE = 16
-
-Point: TypeAlias = tuple[float, float]
-Extent: TypeAlias = float | tuple[float, float] | None
 
 
 def direction(angle_deg: float) -> Point:
@@ -48,94 +54,6 @@ def direction(angle_deg: float) -> Point:
     """
     turn = math.radians(angle_deg)
     return -math.sin(turn), math.cos(turn)
-
-
-def _finite(name: str, *values: float) -> None:
-    if not all(math.isfinite(value) for value in values):
-        raise RegionError(name, "must be finite", values)
-
-
-def _as_point(name: str, value: Any) -> Point:
-    """Return two finite numbers as floats, whatever sequence they came in."""
-    try:
-        y, x = (float(part) for part in value)
-    except (TypeError, ValueError):
-        raise RegionError(name, "must be two numbers (y, x)", value) from None
-    _finite(name, y, x)
-    return y, x
-
-
-def _as_range(name: str, value: Any) -> tuple[float, float]:
-    """Return a lowest and a highest number as floats."""
-    rule = "must be given as (low, high)"
-    try:
-        low, high = (float(part) for part in value)
-    except (TypeError, ValueError):
-        raise RegionError(name, rule, value) from None
-    if not low <= high:
-        raise RegionError(name, rule, value)
-    return low, high
-
-
-def _set_points(region: Region, *names: str) -> None:
-    for name in names:
-        object.__setattr__(region, name, _as_point(name, getattr(region, name)))
-
-
-def _positive(name: str, *values: float) -> None:
-    _finite(name, *values)
-    if not all(value > 0 for value in values):
-        raise RegionError(name, "must be greater than 0", values if len(values) > 1 else values[0])
-
-
-def _coded(text: str) -> None:
-    scheme, _, value = text.partition(":")
-    fits = all(0 < len(part.strip()) <= LONGEST_CODE for part in (scheme, value))
-    if text and not (fits and "\\" not in text):
-        raise RegionError(
-            "code", f"must be scheme:value, each of 1 to {LONGEST_CODE} characters", text
-        )
-
-
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Region:
-    """Parent of all regions.
-
-    Attributes
-    ----------
-    z_mm : float, (float, float) or None
-        The slice nearest to a position, the slices whose centres lie in a range (both ends
-        included), or None for every slice.
-    name : str
-        A name people gave it; shown in tables and records.
-    group : str
-        Its class: what it shows, "liver" or "rod".
-    code : str
-        The class as a code, "scheme:value" as in DICOM's coded entries, each of 1 to 16 characters.
-    values : (float, float) or None
-        A threshold within the region: only pixels from the first to the second value count, both
-        included; an end may be infinite.
-    """
-
-    kind: ClassVar[str] = "region"
-
-    z_mm: Extent = None
-    name: str = ""
-    group: str = ""
-    code: str = ""
-    values: tuple[float, float] | None = None
-
-    def __post_init__(self) -> None:
-        _coded(self.code)
-        if self.values is not None:
-            object.__setattr__(self, "values", _as_range("values", self.values))
-        if self.z_mm is None:
-            return
-        try:
-            object.__setattr__(self, "z_mm", float(self.z_mm))  # type: ignore[arg-type]
-        except TypeError:
-            object.__setattr__(self, "z_mm", _as_range("z_mm", self.z_mm))
-        _finite("z_mm", *np.atleast_1d(self.z_mm).tolist())
 
 
 @dataclass(frozen=True, slots=True)
@@ -162,8 +80,8 @@ class Disc(Region):
 
     def __post_init__(self) -> None:
         Region.__post_init__(self)
-        _set_points(self, "center_mm")
-        _positive("radius_mm", self.radius_mm)
+        set_points(self, "center_mm")
+        positive("radius_mm", self.radius_mm)
 
     @property
     def area_mm2(self) -> float:
@@ -194,10 +112,10 @@ class Ellipse(Region):
 
     def __post_init__(self) -> None:
         Region.__post_init__(self)
-        _set_points(self, "center_mm")
-        _finite("angle_deg", self.angle_deg)
-        _set_points(self, "radii_mm")
-        _positive("radii_mm", *self.radii_mm)
+        set_points(self, "center_mm")
+        finite("angle_deg", self.angle_deg)
+        set_points(self, "radii_mm")
+        positive("radii_mm", *self.radii_mm)
 
     @property
     def area_mm2(self) -> float:
@@ -237,11 +155,11 @@ class Ellipsoid(Region):
         Region.__post_init__(self)
         if not isinstance(self.z_mm, int | float):
             raise RegionError("z_mm", "must be the position of the centre", self.z_mm)
-        _set_points(self, "center_mm")
-        _finite("angle_deg", self.angle_deg)
-        _set_points(self, "radii_mm")
-        _positive("radii_mm", *self.radii_mm)
-        _positive("z_radius_mm", self.z_radius_mm)
+        set_points(self, "center_mm")
+        finite("angle_deg", self.angle_deg)
+        set_points(self, "radii_mm")
+        positive("radii_mm", *self.radii_mm)
+        positive("z_radius_mm", self.z_radius_mm)
 
     @property
     def area_mm2(self) -> float:
@@ -296,10 +214,10 @@ class Box(Region):
 
     def __post_init__(self) -> None:
         Region.__post_init__(self)
-        _set_points(self, "center_mm")
-        _finite("angle_deg", self.angle_deg)
-        _set_points(self, "size_mm")
-        _positive("size_mm", *self.size_mm)
+        set_points(self, "center_mm")
+        finite("angle_deg", self.angle_deg)
+        set_points(self, "size_mm")
+        positive("size_mm", *self.size_mm)
 
     @property
     def area_mm2(self) -> float:
@@ -337,7 +255,7 @@ class Polygon(Region):
         Region.__post_init__(self)
         if len(self.vertices_mm) < 3:
             raise RegionError("vertices_mm", "must have at least 3 corners", len(self.vertices_mm))
-        corners = tuple(_as_point("vertices_mm", vertex) for vertex in self.vertices_mm)
+        corners = tuple(as_point("vertices_mm", vertex) for vertex in self.vertices_mm)
         object.__setattr__(self, "vertices_mm", corners)
         if _crosses_itself(self.vertices_mm):
             raise RegionError(
@@ -374,9 +292,9 @@ class Segment(Region):
 
     def __post_init__(self) -> None:
         Region.__post_init__(self)
-        _set_points(self, "start_mm")
-        _set_points(self, "end_mm")
-        _finite("width_mm", self.width_mm)
+        set_points(self, "start_mm")
+        set_points(self, "end_mm")
+        finite("width_mm", self.width_mm)
         if self.width_mm < 0:
             raise RegionError("width_mm", "must not be negative", self.width_mm)
         if self.length_mm <= 0:
@@ -386,43 +304,6 @@ class Segment(Region):
     def length_mm(self) -> float:
         """Distance between the ends."""
         return math.dist(self.start_mm, self.end_mm)
-
-
-@dataclass(frozen=True, slots=True, eq=False)
-class Mask(Region):
-    """A region given pixel by pixel, as from a label map.
-
-    Attributes
-    ----------
-    inside : ndarray of bool, shape (ny, nx) or (nz, ny, nx)
-        True inside. A flat mask lies on the slices that `z_mm` names; a deep one brings its own.
-    spacing_mm : (float, float, float)
-        dz, dy, dx of the mask's grid.
-    origin_mm : (float, float, float)
-        z, y, x of the centre of its first voxel.
-    """
-
-    kind: ClassVar[str] = "mask"
-
-    inside: NDArray[np.bool_]
-    spacing_mm: tuple[float, float, float]
-    origin_mm: tuple[float, float, float] = (0.0, 0.0, 0.0)
-
-    def __post_init__(self) -> None:
-        Region.__post_init__(self)
-        if self.inside.ndim not in (2, 3):
-            raise RegionError("inside", "must be 2-D or 3-D", self.inside.shape)
-        if self.inside.dtype != np.bool_:
-            raise RegionError("inside", "must be an array of bool", self.inside.dtype)
-        if not self.inside.any():
-            raise RegionError("inside", "must hold at least one pixel", "none")
-        _positive("spacing_mm", *self.spacing_mm)
-        _finite("origin_mm", *self.origin_mm)
-
-    @property
-    def area_mm2(self) -> float:
-        """Area of the pixels inside, summed over slices."""
-        return float(np.count_nonzero(self.inside)) * self.spacing_mm[1] * self.spacing_mm[2]
 
 
 def _crosses_itself(vertices: tuple[Point, ...]) -> bool:

@@ -13,7 +13,7 @@ import numpy as np
 
 from ct_measure_plugin.errors import RegionError
 from ct_measure_plugin.physics import regions
-from ct_measure_plugin.physics.regions import Mask, Region
+from ct_measure_plugin.physics.regions import Labels, Mask, Region
 
 __all__ = ["region_from_dict", "region_to_dict"]
 
@@ -81,6 +81,10 @@ def region_from_dict(given: Any) -> Region:
         values["values"] = _open_range(values["values"])
     if kinds[kind] is Mask:
         values["inside"] = _unpack(values["inside"])
+    if kinds[kind] is Labels:
+        values["labels"] = _unpack_labels(values["labels"])
+        for name in ("names", "codes"):
+            values[name] = _texts(name, values.get(name, ()))
     made = {name: _typed(name, value) for name, value in values.items()}
     return kinds[kind](**made)
 
@@ -93,7 +97,7 @@ def _plain(value: Any) -> Any:
 
 def _typed(name: str, value: Any) -> Any:
     """Turn lists into tuples and numbers into floats; anything else is refused by name."""
-    if isinstance(value, np.ndarray) or value is None:
+    if isinstance(value, np.ndarray) or value is None or name in ("names", "codes"):
         return value
     if name in ("name", "group", "code"):
         if not isinstance(value, str):
@@ -114,23 +118,62 @@ def _open_range(given: Any) -> tuple[float, float]:
     return -math.inf if low is None else low, math.inf if high is None else high
 
 
+def _texts(name: str, given: Any) -> tuple[tuple[int, str], ...]:
+    """Return what labels are called: pairs of a label and a text."""
+    rule = "must be pairs of a label and a text"
+    if not isinstance(given, list | tuple):
+        raise RegionError(name, rule, given)
+    found = []
+    for pair in given:
+        if not isinstance(pair, list | tuple) or len(pair) != 2:
+            raise RegionError(name, rule, pair)
+        number, text = pair
+        if isinstance(number, bool) or not isinstance(number, int) or not isinstance(text, str):
+            raise RegionError(name, rule, pair)
+        found.append((number, text))
+    return tuple(found)
+
+
 def _pack(mask: np.ndarray[Any, Any]) -> dict[str, Any]:
+    if mask.dtype != np.bool_:
+        small = mask.astype(np.min_scalar_type(int(mask.max(initial=0))), copy=False)
+        whole = small if int(mask.min(initial=0)) >= 0 else mask.astype(np.int64)
+        data = whole.astype(whole.dtype.newbyteorder("<")).tobytes()
+        numbers = base64.b64encode(zlib.compress(data, 6)).decode()
+        return {"shape": list(mask.shape), "type": whole.dtype.str[1:], "numbers": numbers}
     bits = np.packbits(mask.ravel()).tobytes()
     return {"shape": list(mask.shape), "bits": base64.b64encode(zlib.compress(bits, 6)).decode()}
 
 
 def _unpack(given: Any) -> np.ndarray[Any, np.dtype[np.bool_]]:
-    rule = "must hold the shape and the packed bits that this program wrote"
+    shape, data = _unpacked("inside", given, "bits", 1)
+    count = int(np.prod(shape))
+    flat = np.unpackbits(np.frombuffer(data, np.uint8), count=count)
+    return flat.astype(bool).reshape(shape)
+
+
+def _unpack_labels(given: Any) -> np.ndarray[Any, Any]:
+    kind = given.get("type") if isinstance(given, dict) else None
+    if kind not in ("u1", "u2", "u4", "u8", "i8"):
+        raise RegionError("labels", _PACKED, kind)
+    shape, data = _unpacked("labels", given, "numbers", 8 * int(kind[1:]))
+    return np.frombuffer(data, f"<{kind}").reshape(shape).astype(kind)
+
+
+_PACKED = "must hold the shape and the packed pixels that this program wrote"
+
+
+def _unpacked(name: str, given: Any, key: str, bits: int) -> tuple[tuple[int, ...], bytes]:
+    """Return the shape and the bytes of pixels of so many bits; never more than they can be."""
     try:
         shape = tuple(int(n) for n in given["shape"])
         count = int(np.prod(shape, dtype=object))
         if len(shape) not in (2, 3) or min(shape) < 1 or count > LARGEST_MASK:
-            raise RegionError("inside", rule, shape)
-        size = (count + 7) // 8
-        bits = zlib.decompressobj().decompress(base64.b64decode(given["bits"]), size + 1)
-    except (KeyError, TypeError, ValueError, binascii.Error, zlib.error):
-        raise RegionError("inside", rule, type(given).__name__) from None
-    if len(bits) != size:
-        raise RegionError("inside", rule, f"{len(bits)} bytes for shape {shape}")
-    flat = np.unpackbits(np.frombuffer(bits, np.uint8), count=count)
-    return flat.astype(bool).reshape(shape)
+            raise RegionError(name, _PACKED, shape)
+        size = (count * bits + 7) // 8
+        data = zlib.decompressobj().decompress(base64.b64decode(given[key]), size + 1)
+    except (KeyError, TypeError, ValueError, OverflowError, binascii.Error, zlib.error):
+        raise RegionError(name, _PACKED, type(given).__name__) from None
+    if len(data) != size:
+        raise RegionError(name, _PACKED, f"{len(data)} bytes for shape {shape}")
+    return shape, data

@@ -14,14 +14,18 @@ import time
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
+import numpy as np
 from psygnal import Signal
 
 from ct_measure_plugin.errors import CtMeasureError
 from ct_measure_plugin.measurements import find
+from ct_measure_plugin.measurements.two_images import difference_between
 from ct_measure_plugin.physics.coverage import slices_of
-from ct_measure_plugin.physics.regions import Segment
+from ct_measure_plugin.physics.region_difference import region_difference
+from ct_measure_plugin.physics.regions import Mask, Segment
 from ct_measure_plugin.physics.results import NotMeasured, Result
 from ct_measure_plugin.viewer.following import Following
+from ct_measure_plugin.viewer.shapes import shape_of
 
 if TYPE_CHECKING:
     from collections.abc import Iterable, Sequence
@@ -49,7 +53,7 @@ _SPARE = 256
 
 @dataclass(frozen=True, slots=True)
 class Ask:
-    """One region on one Volume.
+    """One region on one Volume, or what differs between two.
 
     Attributes
     ----------
@@ -59,11 +63,19 @@ class Ask:
         Where.
     settings : Settings
         Complete.
+    other : Ask or None
+        The same region on a second Volume; given, the difference is asked for, second minus this.
     """
 
     volume: Volume
     region: Region
     settings: Settings
+    other: Ask | None = None
+
+    @property
+    def alone(self) -> Ask:
+        """The first of two by itself."""
+        return Ask(self.volume, self.region, self.settings)
 
 
 class RegionAnswers:
@@ -179,12 +191,24 @@ class RegionAnswers:
                 self._glanced[ask] = self._answer(ask, moving=True)
 
     def _answer(self, ask: Ask, *, moving: bool = False) -> Result | NotMeasured:
+        if ask.other is not None:
+            return self._difference(ask.alone, ask.other, moving=moving)
         measure = self._measurement.glance if moving else self._measurement.measure
         try:
             self._measurement.check_regions((ask.region,))
             return measure(ask.volume, (ask.region,), ask.settings)
         except CtMeasureError as error:
             return NotMeasured(str(error), "draw it again", ask.volume.cautions)
+
+    def _difference(self, one: Ask, two: Ask, *, moving: bool) -> Result | NotMeasured:
+        known = self._glanced if moving else self._known
+        first, second = (
+            known[ask] if ask in known else self._answer(ask, moving=moving) for ask in (one, two)
+        )
+        if moving or not _same_place(one.region, two.region):
+            return region_difference(first, second)  # type: ignore[arg-type]
+        pair = one.volume, two.volume
+        return difference_between(pair, one.region, (first, second), one.settings)
 
     def _cost(self, ask: Ask) -> float:
         """Return about how long a region takes, in seconds."""
@@ -226,6 +250,30 @@ class RegionAnswers:
             self._known = {ask: found for ask, found in self._known.items() if ask in wanted}
             self._glanced = {ask: found for ask, found in self._glanced.items() if ask in wanted}
             self._guesses = {ask: cost for ask, cost in self._guesses.items() if ask in wanted}
+
+
+def _same_place(one: Region, two: Region) -> bool:
+    """Tell whether a region lies in the same place of two frames, to a thousandth of a mm."""
+    if isinstance(one, Mask) or isinstance(two, Mask):
+        return (
+            isinstance(one, Mask)
+            and isinstance(two, Mask)
+            and np.allclose(one.origin_mm, two.origin_mm, rtol=0, atol=1e-3)
+            and np.allclose(one.spacing_mm, two.spacing_mm, rtol=1e-6)
+            and np.array_equal(one.inside, two.inside)
+        )
+    (corners, kind), (others, other) = shape_of(one), shape_of(two)
+    return (
+        kind == other
+        and corners.shape == others.shape
+        and bool(np.allclose(corners, others, rtol=0, atol=1e-3))
+        and np.allclose(_ends(one), _ends(two), rtol=0, atol=1e-3)
+    )
+
+
+def _ends(region: Region) -> tuple[float, float]:
+    z = region.z_mm
+    return (0.0, 0.0) if z is None else z if isinstance(z, tuple) else (z, z)
 
 
 def _guess(ask: Ask) -> float:

@@ -6,7 +6,10 @@ same way whatever the layer is.
 
 from __future__ import annotations
 
+from contextlib import ExitStack, contextmanager
 from typing import TYPE_CHECKING, Any, ClassVar
+
+from psygnal import Signal
 
 from ct_measure_plugin.viewer.labels import LabelRegions
 from ct_measure_plugin.viewer.points import points_on
@@ -14,13 +17,25 @@ from ct_measure_plugin.viewer.region_features import set_column, write_answers
 from ct_measure_plugin.viewer.shapes import drawn_on, repair
 
 if TYPE_CHECKING:
-    from collections.abc import Collection, Mapping, Sequence
+    from collections.abc import Collection, Iterator, Mapping, Sequence
 
     from ct_measure_plugin.physics.results import NotMeasured, Result
     from ct_measure_plugin.viewer.drawn import Drawn
     from ct_measure_plugin.viewer.placement import Placement
 
 __all__ = ["LabelSource", "PointSource", "RegionSource", "ShapeSource", "kinds", "source_of"]
+
+
+class Signals:
+    """What a source tells of by itself.
+
+    Signals
+    -------
+    changed()
+        A look through the layer in the background has ended.
+    """
+
+    changed = Signal()
 
 
 class RegionSource:
@@ -47,6 +62,7 @@ class RegionSource:
     def __init__(self, layer: Any, viewer: Any) -> None:
         self.layer = layer
         self.viewer = viewer
+        self.looked_through = Signals()
 
     def note(self, event: Any) -> None:
         """Take note of one of the layer's events."""
@@ -160,26 +176,31 @@ class LabelSource(RegionSource):
 
     def __init__(self, layer: Any, viewer: Any) -> None:
         super().__init__(layer, viewer)
-        self.regions = LabelRegions(layer)
+        self._by_image: dict[int, LabelRegions] = {}
         self._labels: list[int] = []
 
     def note(self, event: Any) -> None:
         """Take note of a stroke, an edit, a redraw or another array."""
         kind = getattr(event, "type", "")
-        if kind == "labels_update":
-            self.regions.stroke(event)
-        elif kind == "paint":
-            self.regions.painted(event)
-        elif kind == "set_data":
-            self.regions.refreshed(self.viewer.dims.point)
-        elif kind == "data":
-            self.regions.replaced()
+        for regions in self._by_image.values():
+            if kind == "labels_update":
+                regions.stroke(event)
+            elif kind == "paint":
+                regions.painted(event)
+            elif kind == "set_data":
+                regions.refreshed(self.viewer.dims.point)
+            elif kind == "data":
+                regions.replaced()
 
     def drawn(
         self, placement: Placement, point: Sequence[float], *, wait: bool = False
     ) -> tuple[Drawn, ...]:
         """Return every label as a region; those known while the map is still looked through."""
-        found = self.regions.drawn(placement, point, wait=wait)
+        image = id(placement.layer)
+        if image not in self._by_image:
+            self._by_image[image] = regions = LabelRegions(self.layer)
+            regions.changed.connect(self.looked_through.changed.emit)
+        found = self._by_image[image].drawn(placement, point, wait=wait)
         self._labels = [one.index for one in found if one.index]
         return found
 
@@ -191,11 +212,13 @@ class LabelSource(RegionSource):
     @property
     def busy(self) -> bool:
         """True while the map is looked through in the background."""
-        return self.regions.busy
+        return any(regions.busy for regions in self._by_image.values())
 
     def close(self) -> None:
         """Stop what runs in the background."""
-        self.regions.close()
+        for regions in self._by_image.values():
+            regions.close()
+        self._by_image.clear()
 
     def selected(self) -> set[int]:
         """Return the label that the brush would paint, if it is on the map."""
@@ -210,13 +233,21 @@ class LabelSource(RegionSource):
         if self.layer not in self.viewer.layers.selection:
             self.viewer.layers.selection.active = self.layer
         if int(self.layer.selected_label) != wanted[0]:
-            with self.regions.quietly():
+            with self._quietly():
                 self.layer.selected_label = wanted[0]
 
     def show_alone(self, *, alone: bool) -> None:
         """Show the selected label alone, or all of them."""
-        with self.regions.quietly():
+        with self._quietly():
             self.layer.show_selected_label = alone
+
+    @contextmanager
+    def _quietly(self) -> Iterator[None]:
+        """Change the layer's looks alone: no reason to look through it again."""
+        with ExitStack() as stack:
+            for regions in self._by_image.values():
+                stack.enter_context(regions.quietly())
+            yield
 
     def write(self, column: str, values: Mapping[int, Any]) -> None:
         """Write names, classes and the like; by label."""

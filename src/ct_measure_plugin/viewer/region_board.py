@@ -1,0 +1,259 @@
+"""What the dock of regions shows: rows of answers, for one image or several, and their features.
+
+No Qt here. The board reads the layers, asks, and lays the answers out; the dock draws them.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Any
+
+from psygnal import Signal
+
+from ct_measure_plugin.errors import CtMeasureError
+from ct_measure_plugin.physics.results import NotMeasured, Quantity, Result
+from ct_measure_plugin.viewer.layers import shows_slab
+from ct_measure_plugin.viewer.region_answers import Ask, RegionAnswers
+from ct_measure_plugin.viewer.region_features import ids_on
+
+if TYPE_CHECKING:
+    from collections.abc import Collection, Sequence
+
+    from ct_measure_plugin.measurements import Settings
+    from ct_measure_plugin.physics.regions import Region
+    from ct_measure_plugin.viewer.drawn import Drawn
+    from ct_measure_plugin.viewer.placement import Placement
+    from ct_measure_plugin.viewer.region_source import RegionSource
+    from ct_measure_plugin.viewer.session import Session
+
+__all__ = ["RegionBoard", "Row"]
+
+_WAITING = NotMeasured("it is being measured", "wait a moment")
+
+_SLAB = "The canvas shows several slices as one; single slices are measured."
+
+
+@dataclass(frozen=True, slots=True)
+class Row:
+    """One region on one image, or what differs there between two.
+
+    Attributes
+    ----------
+    index : int
+        The region's place on its layer; of a label, its value.
+    name, group, code : str
+        What people call the region, its class, and the class as "scheme:value".
+    answer : Result or NotMeasured
+        What was found.
+    image : str
+        Which image; "" where there is only one.
+    complete : bool
+        False while only a glance, or nothing yet, is known of where the region now is.
+    difference : bool
+        True for a difference.
+    """
+
+    index: int
+    name: str
+    group: str
+    code: str
+    answer: Result | NotMeasured
+    image: str = ""
+    complete: bool = True
+    difference: bool = False
+
+    def quantity(self, column: str) -> Quantity | None:
+        """Return one of the answer's quantities, None if it has none of that name."""
+        found = getattr(self.answer, column, None)
+        return found if isinstance(found, Quantity) else None
+
+    def warnings(self) -> int:
+        """Return how many warnings the answer carries."""
+        return sum(caution.kind.level == "warning" for caution in self.answer.cautions)
+
+
+class RegionBoard:
+    """Rows of a layer's regions on image layers.
+
+    Parameters
+    ----------
+    session : Session
+        The viewer's session.
+    name : str
+        The measurement's.
+
+    Signals
+    -------
+    changed()
+        Something came in from the background; look again.
+    """
+
+    changed = Signal()
+
+    def __init__(self, session: Session, name: str) -> None:
+        self._session = session
+        self._name = name
+        self.images: tuple[Any, ...] = ()
+        self.source: RegionSource | None = None
+        self.settings: Settings | None = None
+        self.rows: tuple[Row, ...] = ()
+        self.said = ""
+        self.drawn: tuple[Drawn, ...] = ()
+        self._asked: list[tuple[Placement, tuple[Drawn, ...]]] = []
+        self.answers = RegionAnswers(name)
+        self.answers.changed.connect(self.changed.emit)
+
+    # --- looking --------------------------------------------------------------------
+
+    def look(self, first: Collection[int] = (), seconds: float | None = None) -> int:
+        """Read the layers and answer what can be answered in time; all of it without a time.
+
+        Parameters
+        ----------
+        first : collection of int
+            Indices of the regions most wanted.
+        seconds : float, optional
+            How long to measure.
+
+        Returns
+        -------
+        int
+            How many regions are worth another look soon.
+        """
+        self._asked, self.drawn, self.rows = [], (), ()
+        self.said = self._read(wait=seconds is None)
+        if not self._asked:
+            return 0
+        columns = [self._asks(*asked) for asked in self._asked]
+        differences = [
+            [_difference(one, two) for one, two in zip(columns[0], column, strict=True)]
+            for column in columns[1:]
+        ]
+        order = sorted(range(len(self.drawn)), key=lambda i: self.drawn[i].index not in first)
+        every = [*columns, *differences]
+        asks = [ask for i in order for column in every if (ask := column[i]) is not None]
+        left = self.answers.find(asks, seconds)
+        self.rows = tuple(self._lay_out(columns, differences))
+        return left
+
+    @property
+    def busy(self) -> bool:
+        """True while something runs in the background."""
+        return self.answers.busy or (self.source is not None and self.source.busy)
+
+    def stop(self) -> None:
+        """Stop what runs in the background."""
+        self.answers.stop()
+        if self.source is not None:
+            self.source.close()
+
+    def questions(self) -> list[tuple[Any, ...]]:
+        """Return what records are made of, one an image: name, Volume, regions and settings."""
+        return [
+            (self._name, placement.volume, self._regions(drawn), self.settings)
+            for placement, drawn in self._asked
+        ]
+
+    def placement(self) -> Placement | None:
+        """Return the first image's placement, None if there is none."""
+        return self._asked[0][0] if self._asked else None
+
+    def region(self, index: int) -> Region | None:
+        """Return a region in the first image's frame."""
+        return next((one.region for one in self.drawn if one.index == index), None)
+
+    def answer(self, index: int) -> Result | NotMeasured | None:
+        """Return what was found in a region of the first image."""
+        return next((row.answer for row in self.rows if row.index == index), None)
+
+    def write_features(self) -> bool:
+        """Write the answers into the layer's features; not while any of them is still to come."""
+        source = self.source
+        if source is None or source.unfinished or not self.rows:
+            return False
+        if not all(row.complete for row in self.rows):
+            return False
+        changed = False
+        for place, image in enumerate(self.images):
+            title = image.name if len(self.images) > 1 else ""
+            mine = {
+                row.index: row.answer
+                for row in self.rows
+                if row.image == title and not row.difference
+            }
+            suffix = f"_{place + 1}" if place else ""
+            changed |= source.write_answers(mine, image.name, suffix)
+        if hasattr(source.layer, "selected_data"):
+            ids_on(source.layer)
+        return changed
+
+    # --- inside ---------------------------------------------------------------------
+
+    def _read(self, *, wait: bool) -> str:
+        """Read the layers; return what stands in the way, or a remark."""
+        if not self.images:
+            return "Open an image first."
+        if self.source is None or self.source.empty:
+            return "Press Draw, or choose a layer that holds regions."
+        point = self._session.viewer.dims.point
+        asked = []
+        for image in self.images:
+            try:
+                placement = self._session.placement(image)
+            except CtMeasureError as error:
+                return str(error) if len(self.images) == 1 else f"{image.name}: {error}"
+            asked.append((placement, self.source.drawn(placement, point, wait=wait)))
+        if len({len(drawn) for _, drawn in asked}) > 1:
+            return "Looking for the labels."  # one image's look through the map is ahead
+        self._asked, self.drawn = asked, asked[0][1]
+        if self.source.busy and not self.drawn:
+            return "Looking for the labels."
+        if not self.drawn:
+            return "No label is painted yet."
+        if any(shows_slab(image, self._session.viewer.dims) for image in self.images):
+            return _SLAB
+        return ""
+
+    def _asks(self, placement: Placement, drawn: Sequence[Drawn]) -> list[Ask | None]:
+        settings = self.settings
+        if settings is None:
+            return [None] * len(drawn)
+        return [
+            None if one.region is None else Ask(placement.volume, one.region, settings)
+            for one in drawn
+        ]
+
+    def _lay_out(
+        self, columns: list[list[Ask | None]], differences: list[list[Ask | None]]
+    ) -> list[Row]:
+        several = len(columns) > 1
+        names = [image.name for image in self.images]
+        rows = []
+        for i in range(len(self.drawn)):
+            for k, column in enumerate(columns):
+                one = self._asked[k][1][i]
+                rows.append(self._row(one, column[i], names[k] if several else ""))
+            for k, column in enumerate(differences, start=1):
+                words = f"{names[k]} − {names[0]}"
+                rows.append(self._row(self.drawn[i], column[i], words, difference=True))
+        return rows
+
+    def _row(self, one: Drawn, ask: Ask | None, image: str, *, difference: bool = False) -> Row:
+        answer: Result | NotMeasured | None
+        if ask is None:
+            answer, complete = NotMeasured(one.problem or "it is no region", "draw it again"), True
+        else:
+            answer, complete = self.answers.known(ask), self.answers.complete(ask)
+        return Row(
+            one.index, one.name, one.group, one.code,
+            _WAITING if answer is None else answer, image, complete, difference,
+        )  # fmt: skip
+
+    def _regions(self, drawn: Sequence[Drawn]) -> tuple[Region, ...]:
+        return tuple(one.region for one in drawn if one.region is not None)
+
+
+def _difference(one: Ask | None, two: Ask | None) -> Ask | None:
+    if one is None or two is None:
+        return None
+    return Ask(one.volume, one.region, one.settings, two)

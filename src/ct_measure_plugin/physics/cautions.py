@@ -114,6 +114,8 @@ KINDS: dict[str, CautionKind] = {
     "scale-off": _warning("The HU scale is off"),
     "rod-left-out": _warning("A rod was left out"),
     "rod-uneven": _warning("A rod's CT number changes from its middle to its border"),
+    "rod-placed": _note("A rod was placed by the layout"),
+    "layout-scale": _warning("Distances differ from the layout's"),
     "beam-disagrees": _warning("Rods and beam quality disagree about the energy"),
     "mu-scale": _note("Attenuation converted from HU at one energy"),
 }

@@ -82,7 +82,7 @@ def test_two_images_give_their_rows_and_the_difference(scene, pair):
 def test_an_image_moved_by_hand_shares_no_pixels(scene, pair):
     """The same place in mm is another place in its voxels: no pixelwise difference."""
     _, images, board = scene
-    images[1].translate = np.array(images[1].translate) + [0, 0.35, 0]
+    images[1].translate = np.array(images[1].translate) + np.array([0, 0.35, 0])
     board.images = tuple(images)
     draw(scene, pair[0], Disc((0.0, 24.0), 6.0))
     board.look()
@@ -131,7 +131,7 @@ def test_the_chosen_region_comes_first(scene, pair, monkeypatch):
     board.images = (images[0],)
     draw(scene, pair[0], *(Disc((0.0, 14.0 + i), 4.0) for i in range(6)))
     asked = []
-    monkeypatch.setattr(board.answers, "find", lambda asks, seconds: asked.extend(asks) or 0)
+    monkeypatch.setattr(board.answers, "find", lambda asks, _seconds: asked.extend(asks) or 0)
     board.look(first={4}, seconds=1.0)
     assert asked[0].region == board.drawn[4].region
     assert len(asked) == 6

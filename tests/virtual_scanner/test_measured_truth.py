@@ -65,6 +65,9 @@ def _promised(record, truth):
     where = [region["name"] for region in record.regions]
     if record.measurement == "noise_power":
         return _spectrum_numbers(truth) | {"sd": truth.noise_sd()}
+    if record.measurement == "uniformity":
+        flat = dict.fromkeys(("water", "centre", "edge", "cupping", "cup_depth", "tilt"), 0.0)
+        return flat | {"sd": truth.noise_sd((0.0, 15.0))}
     if record.measurement == "region_contrast":
         noise = truth.noise_sd((-8.0, -4.0))
         return {"difference": 10.0, "background_mean": 0.0, "cnr": 10.0 / noise}
@@ -98,7 +101,7 @@ def test_the_demo_measures_what_is_true():
             off = abs(found[name].value - value)
             assert off < 3.0 * found[name].uncertainty + slack, (record.regions, name)
             compared.add((record.measurement, name))
-    assert len(compared) >= 18
+    assert len(compared) >= 25
 
 
 def _standardised(name, inserts, section, share):
@@ -176,6 +179,34 @@ def test_the_whole_mtf_of_a_strong_edge_lies_on_the_true_curve():
         off = np.abs(curve.y - truth.mtf(curve.x))[used]
         assert np.all(off < truth.mtf_bound + 4.0 * curve.y_uncertainty[used])
         assert off.max() < 0.04
+
+
+def _cup_over_disc(truth, from_axis_mm, radius_mm):
+    """Return the mean of the true cup over a disc."""
+    steps = np.linspace(-radius_mm, radius_mm, 101)
+    inside = np.hypot(steps[:, None], steps) <= radius_mm
+    away = np.hypot(steps[:, None], from_axis_mm + steps)[inside]
+    return float(truth.water_cup(away, bench.CYLINDER_MM).mean())
+
+
+def test_the_cup_is_as_deep_as_beam_hardening_makes_it():
+    """Uniformity of the series without correction: each within 4 standard uncertainties.
+
+    The truth is the inverse Radon transform of the hardened readings, good to 0.2 HU.
+    """
+    truth, size = _truth("cup"), 0.1 * bench.CYLINDER_MM
+    found = ctm.measure("uniformity", _series("cup"))
+    centre, edge = (_cup_over_disc(truth, at, size) for at in (0.0, 8.0 * size))
+    axis, border = truth.water_cup([0.0, 9.0 * size], bench.CYLINDER_MM)
+    for got, value in (
+        (found.centre, centre),
+        (found.edge, edge),
+        (found.cupping, edge - centre),
+        (found.cup_depth, border - axis),
+        (found.water, _cup_over_disc(truth, 0.0, 4.0 * size)),
+    ):
+        assert abs(got.value - value) < 4.0 * got.uncertainty + 0.2
+    assert edge - centre > 30.0  # it is a cup worth measuring
 
 
 def test_noise_power_of_a_fresh_scan_is_the_truth_within_its_uncertainty():

@@ -13,7 +13,7 @@ import numpy as np
 from skimage.measure import regionprops_table
 
 from ct_measure_plugin.measurements import glance_each, measure_each
-from ct_measure_plugin.physics.label_statistics import label_numbers
+from ct_measure_plugin.physics.label_numbers import label_numbers
 from ct_measure_plugin.physics.regions import Disc
 from ct_measure_plugin.physics.volume import Volume
 

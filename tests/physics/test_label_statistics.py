@@ -1,181 +1,132 @@
-"""Statistics of labels against SimpleITK, scikit-image, and numpy label by label."""
+"""Rows of labels against the same regions measured one by one."""
 
 from __future__ import annotations
 
-import math
-
 import numpy as np
 import pytest
-import SimpleITK as sitk  # noqa: N813 - as its own pages import it
-from scipy import stats
-from skimage.measure import regionprops_table
 
 from ct_measure_plugin.errors import ArgumentError
-from ct_measure_plugin.measurements import measure
-from ct_measure_plugin.physics.label_statistics import label_numbers
-from ct_measure_plugin.physics.regions import Mask
-from ct_measure_plugin.physics.volume import Volume
+from ct_measure_plugin.physics import label_statistics, region_statistics
+from ct_measure_plugin.physics.results import NotMeasured, Quantity
 
-ROUNDING = 1e-9  # sums of 10⁴ values of size 10³ in double precision, in two orders
-
-SPACING = (2.5, 0.7, 0.6)
-
-
-def scattered(rng: np.random.Generator, labels: int, shape=(9, 40, 44)) -> np.ndarray:
-    """Labels thrown at random: touching, torn, some of a single voxel."""
-    found = rng.integers(0, labels + 1, shape)
-    found[rng.random(shape) < 0.5] = 0
-    found[0, 0, 0] = labels + 3  # one voxel, after a gap
-    return found.astype(np.uint16)
-
-
-@pytest.fixture(scope="module", params=["whole", "fractions"])
-def pair(request) -> tuple[np.ndarray, np.ndarray]:
-    rng = np.random.default_rng(41)
-    labels = scattered(rng, 12)
-    values = rng.normal(40, 200, labels.shape) + 30.0 * labels
-    return (np.rint(values).astype(np.int16) if request.param == "whole" else values), labels
-
-
-def test_simpleitks_label_statistics_agree(pair):
-    """LabelStatisticsImageFilter, and LabelIntensityStatisticsImageFilter for the third and fourth
-    moments, which it divides by powers of the sample variance where ours is the population's."""
-    values, labels = pair
-    image, map_ = sitk.GetImageFromArray(values.astype(float)), sitk.GetImageFromArray(labels)
-    for one in (image, map_):
-        one.SetSpacing(SPACING[::-1])
-    plain, shaped = sitk.LabelStatisticsImageFilter(), sitk.LabelIntensityStatisticsImageFilter()
-    plain.Execute(image, map_)
-    shaped.Execute(map_, image)
-    found = label_numbers(values, labels)
-    assert found.label.tolist() == [one for one in sorted(plain.GetLabels()) if one]
-    for i, label in enumerate(found.label.tolist()):
-        n = plain.GetCount(label)
-        assert found.n[i] == n
-        assert found.mean[i] == pytest.approx(plain.GetMean(label), rel=ROUNDING)
-        assert found.minimum[i] == plain.GetMinimum(label)
-        assert found.maximum[i] == plain.GetMaximum(label)
-        if n < 2:
-            assert math.isnan(found.sd[i])
-            continue
-        assert found.sd[i] == pytest.approx(plain.GetSigma(label), rel=ROUNDING)
-        # its power sums are not centred: a digit or two less
-        ratio = n / (n - 1)
-        assert found.skewness[i] == pytest.approx(
-            shaped.GetSkewness(label) * ratio**1.5, rel=1e-6, abs=1e-8
-        )
-        assert found.kurtosis[i] == pytest.approx(
-            (shaped.GetKurtosis(label) + 3) * ratio**2 - 3, rel=1e-6, abs=1e-8
-        )
-
-
-def test_scikit_images_region_properties_agree(pair):
-    """regionprops_table's intensity_std is the population's."""
-    values, labels = pair
-    asked = ("label", "intensity_mean", "intensity_std", "intensity_min", "intensity_max", "area")
-    table = regionprops_table(labels, values, properties=asked)
-    found = label_numbers(values, labels)
-    np.testing.assert_array_equal(found.label, table["label"])
-    np.testing.assert_array_equal(found.n, table["area"])
-    np.testing.assert_allclose(found.mean, table["intensity_mean"], rtol=ROUNDING)
-    np.testing.assert_allclose(found.population_sd, table["intensity_std"], rtol=ROUNDING)
-    np.testing.assert_array_equal(found.minimum, table["intensity_min"])
-    np.testing.assert_array_equal(found.maximum, table["intensity_max"])
-
-
-def test_order_and_shape_are_numpys_and_scipys(pair):
-    values, labels = pair
-    found = label_numbers(values, labels, percentiles=(0.0, 10.0, 50.0, 97.5, 100.0))
-    for i, label in enumerate(found.label.tolist()):
-        own = values[labels == label].astype(float)
-        expected = np.percentile(own, [0, 10, 50, 97.5, 100])
-        np.testing.assert_allclose(found.percentiles[i], expected, rtol=ROUNDING)
-        if own.size > 1:
-            assert found.skewness[i] == pytest.approx(stats.skew(own), rel=1e-7, abs=ROUNDING)
-            assert found.kurtosis[i] == pytest.approx(stats.kurtosis(own), rel=1e-7, abs=ROUNDING)
-
-
-def test_a_label_and_its_mask_are_one_region(pair):
-    """Through the measurement, with its uncertainties, and through the table: one answer."""
-    values, labels = pair
-    found = label_numbers(values, labels)
-    volume = Volume(values, SPACING)
-    for i, label in enumerate(found.label.tolist()):
-        if found.n[i] < 9:
-            continue
-        answer = measure("region_statistics", volume, Mask(labels == label, SPACING))
-        for name in ("mean", "sd", "population_sd", "minimum", "maximum", "skewness", "kurtosis"):
-            mine, table = getattr(answer, name).value, getattr(found, name)[i]
-            assert table == pytest.approx(mine, rel=1e-7, abs=ROUNDING), name
-        assert answer.n.value == found.n[i]
-        assert answer.median.value == pytest.approx(found.percentiles[i, 2], rel=ROUNDING)
-        assert answer.volume.value == pytest.approx(found.n[i] * math.prod(SPACING), rel=ROUNDING)
-
-
-def test_counting_and_sorting_give_the_same():
-    """Whole numbers are counted in a table; the same as floats are sorted."""
-    rng = np.random.default_rng(42)
-    labels = scattered(rng, 30)
-    values = rng.integers(-1024, 3072, labels.shape, dtype=np.int16)
-    counted, ordered = label_numbers(values, labels), label_numbers(values.astype(float), labels)
-    for name in ("label", "n", "minimum", "maximum", "percentiles"):
-        np.testing.assert_array_equal(getattr(counted, name), getattr(ordered, name))
-    for name in ("mean", "sd", "population_sd", "skewness", "kurtosis"):
-        np.testing.assert_allclose(getattr(counted, name), getattr(ordered, name), rtol=1e-12)
-
-
-def test_ten_thousand_labels():
-    rng = np.random.default_rng(43)
-    labels = rng.permutation(np.arange(400_000) % 10_001).reshape(20, 100, 200)
-    values = rng.normal(0, 10, labels.shape)
-    found = label_numbers(values, labels)
-    assert len(found.label) == 10_000
-    some = rng.choice(10_000, 50, replace=False)
-    for i in some.tolist():
-        own = values[labels == found.label[i]]
-        assert found.mean[i] == pytest.approx(own.mean(), rel=ROUNDING, abs=ROUNDING)
-        assert found.percentiles[i, 2] == pytest.approx(np.median(own), rel=ROUNDING)
-
-
-def test_negative_labels_and_wide_ones_are_labels_too():
-    labels = np.array([[-3, -3, 0, 2_000_000_000]])
-    found = label_numbers(np.array([[1, 3, 9, 5]]), labels)
-    assert found.label.tolist() == [-3, 2_000_000_000]
-    assert found.mean.tolist() == [2.0, 5.0]
-
-
-def test_values_without_a_number_are_counted():
-    values = np.array([1.0, np.nan, 3.0, np.inf, np.nan, 7.0])
-    found = label_numbers(values, np.array([1, 1, 1, 1, 2, 3]))
-    assert found.n.tolist() == [2, 0, 1]
-    assert found.lost.tolist() == [2, 1, 0]
-    assert found.mean[0] == 2.0
-    assert np.isnan(found.mean[1])
-    assert np.isnan(found.percentiles[1]).all()
-
-
-def test_equal_values_have_no_spread():
-    values = np.full(30, 0.1)
-    found = label_numbers(values, np.ones(30, int))
-    assert (found.sd[0], found.skewness[0], found.kurtosis[0]) == (0.0, 0.0, 0.0)
-
-
-def test_a_map_without_labels_gives_none():
-    found = label_numbers(np.zeros((4, 4)), np.zeros((4, 4), np.uint8))
-    assert len(found.label) == 0
-    assert found.percentiles.shape == (0, 5)
-
-
-@pytest.mark.parametrize(
-    ("labels", "message"),
-    [
-        (np.zeros((4, 5), int), r"'labels' must have the values' shape \(4, 4\), got \(4, 5\)"),
-        (np.zeros((4, 4)), "'labels' must hold whole numbers, got 'float64'"),
-    ],
-    ids=["another shape", "fractions"],
+SPACING = (2.0, 0.6, 0.7)
+NUMBERS = (
+    *("mean", "sd", "minimum", "maximum", "median", "p10", "p25", "p75", "p90"),
+    *("skewness", "kurtosis", "n"),
 )
-def test_misuse_names_the_argument(labels, message):
-    with pytest.raises(ArgumentError, match=message):
-        label_numbers(np.zeros((4, 4)), labels)
-    with pytest.raises(ArgumentError, match="'percentiles' must lie within 0 to 100"):
-        label_numbers(np.zeros(3), np.zeros(3, int), percentiles=(101.0,))
+
+
+def blobs() -> np.ndarray:
+    """Four boxes, one of them on a single slice, and a ball."""
+    labels = np.zeros((6, 60, 64), np.uint16)
+    labels[1:5, 4:24, 4:30] = 3
+    labels[2, 30:50, 4:28] = 7
+    labels[0:6, 4:20, 36:60] = 8
+    z, y, x = np.mgrid[:6, :60, :64]
+    labels[((z - 3) / 3) ** 2 + ((y - 42) / 14) ** 2 + ((x - 48) / 13) ** 2 <= 1] = 300
+    return labels
+
+
+def noisy(kind: str, labels: np.ndarray) -> np.ndarray:
+    from scipy import ndimage
+
+    rng = np.random.default_rng(51)
+    field = rng.normal(0, 40, labels.shape)
+    if kind == "smooth":
+        field = ndimage.gaussian_filter(field, (0, 1, 1))
+    values = 30 + field
+    return np.rint(values).astype(np.int16) if kind == "whole" else values
+
+
+@pytest.mark.parametrize("kind", ["whole", "white", "smooth"])
+def test_a_row_is_the_region_measured_by_itself(kind):
+    """Values and uncertainties, the label's noise correlation among them."""
+    labels = blobs()
+    values = noisy(kind, labels)
+    found = label_statistics(values, labels, spacing_mm=SPACING, names={3: "block"})
+    assert [row.name for row in found.labels] == ["block", "label 7", "label 8", "label 300"]
+    for row in found.labels:
+        z, y, x = (
+            np.flatnonzero((labels == row.label).any(axis=a)) for a in ((1, 2), (0, 2), (0, 1))
+        )
+        box = np.s_[z[0] : z[-1] + 1, y[0] : y[-1] + 1, x[0] : x[-1] + 1]
+        own, inside = values[box].astype(float), (labels[box] == row.label).astype(float)
+        steps = SPACING
+        if len(own) == 1:
+            own, inside, steps = own[0], inside[0], SPACING[1:]
+        twin = region_statistics(own, inside, spacing_mm=steps)
+        for name in NUMBERS:
+            mine, theirs = getattr(row, name), getattr(twin, name)
+            assert mine.value == pytest.approx(theirs.value, rel=1e-9, abs=1e-9), name
+            assert mine.unit == theirs.unit
+            if theirs.uncertainty is None:
+                assert mine.uncertainty is None
+            else:
+                assert mine.uncertainty == pytest.approx(theirs.uncertainty, rel=1e-6), name
+        assert row.size.value == pytest.approx(row.n.value * 0.84)
+
+
+def test_independent_pixels_are_the_textbooks():
+    labels = blobs()
+    values = noisy("smooth", labels)
+    found = label_statistics(values, labels, spacing_mm=SPACING, noise="independent")
+    for row in found.labels:
+        # Student's factor of a thousand pixels
+        naive = row.sd.value / np.sqrt(row.n.value)
+        assert naive < row.mean.uncertainty < 1.003 * naive
+    assert "independence-assumed" in {c.code for c in found.cautions}
+    true = label_statistics(values, labels, spacing_mm=SPACING)
+    assert true.labels[0].mean.uncertainty > 2 * found.labels[0].mean.uncertainty
+
+
+def test_without_uncertainties_the_numbers_are_the_same():
+    labels = blobs()
+    values = noisy("whole", labels)
+    full = label_statistics(values, labels, spacing_mm=SPACING)
+    plain = label_statistics(values, labels, spacing_mm=SPACING, noise="none")
+    for row, other in zip(full.labels, plain.labels, strict=True):
+        for name in NUMBERS:
+            mine = getattr(other, name)
+            assert mine.value == getattr(row, name).value, name
+            assert mine.uncertainty in (None, 0.0)
+    assert any("No uncertainties were asked for" in c.text for c in plain.cautions)
+
+
+def test_one_pixel_has_no_spread_and_none_without_a_value_no_mean():
+    values = np.array([[1.0, np.nan, 3.0, 5.0]])
+    found = label_statistics(values, np.array([[4, 5, 6, 6]]), spacing_mm=(1.0, 1.0))
+    one, lost, two = found.labels
+    assert (one.mean.value, one.mean.uncertainty, one.sd) == (1.0, None, "")
+    assert (lost.n.value, lost.mean, lost.median) == (0.0, "", "")
+    assert two.mean.value == 4.0
+    assert isinstance(two.sd, Quantity)
+    said = {c.code: c.text for c in found.cautions}
+    assert said["not-finite"].startswith("1 pixels of the labels")
+    assert said["few-pixels"].startswith("3 of 3 labels")
+
+
+def test_an_empty_map_is_not_measured():
+    found = label_statistics(np.zeros((4, 4)), np.zeros((4, 4), int), spacing_mm=(1, 1))
+    assert isinstance(found, NotMeasured)
+    assert found.reason == "the label map holds no label"
+
+
+def test_ten_thousand_labels_are_ten_thousand_rows():
+    rng = np.random.default_rng(52)
+    labels = np.arange(10_000).repeat(25).reshape(100, 2500) + 1
+    values = rng.integers(-50, 90, labels.shape)
+    found = label_statistics(values, labels, spacing_mm=(1.0, 1.0), noise="independent")
+    assert len(found.labels) == found.count.value == 10_000
+    own = values[labels == 4321]
+    row = found.labels[4320]
+    assert (row.label, row.mean.value) == (4321, pytest.approx(own.mean()))
+    assert row.sd.value == pytest.approx(own.std(ddof=1))
+
+
+def test_misuse_names_the_argument():
+    with pytest.raises(ArgumentError, match="'labels' must have the values' shape"):
+        label_statistics(np.zeros((4, 4)), np.zeros((4, 5), int), spacing_mm=(1, 1))
+    with pytest.raises(ArgumentError, match="'noise' must be 'region', 'independent' or 'none'"):
+        label_statistics(np.zeros((4, 4)), np.zeros((4, 4), int), spacing_mm=(1, 1), noise="x")
+    with pytest.raises(ArgumentError, match="'spacing_mm' must hold 2 lengths"):
+        label_statistics(np.zeros((4, 4)), np.zeros((4, 4), int), spacing_mm=(1, 1, 1))

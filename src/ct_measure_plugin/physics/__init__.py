@@ -12,7 +12,9 @@ from __future__ import annotations
 
 from ct_measure_plugin.physics import regions
 from ct_measure_plugin.physics.ct_number_line import CtNumberLine, ct_number_line
+from ct_measure_plugin.physics.disc_mtf import DiscMtf, disc_mtf
 from ct_measure_plugin.physics.edge_mtf import EdgeMtf, edge_mtf
+from ct_measure_plugin.physics.label_statistics import LabelStatistics, label_statistics
 from ct_measure_plugin.physics.noise_power import NoisePower, noise_power
 from ct_measure_plugin.physics.region_contrast import RegionContrast, region_contrast
 from ct_measure_plugin.physics.region_statistics import RegionStatistics, region_statistics
@@ -35,8 +37,10 @@ __all__ = [
     "Caution",
     "CtNumberLine",
     "Curve",
+    "DiscMtf",
     "EdgeMtf",
     "HeaderWindow",
+    "LabelStatistics",
     "NoisePower",
     "NotMeasured",
     "Picture",
@@ -49,7 +53,9 @@ __all__ = [
     "Uniformity",
     "Volume",
     "ct_number_line",
+    "disc_mtf",
     "edge_mtf",
+    "label_statistics",
     "noise_power",
     "region_contrast",
     "region_statistics",

@@ -1,237 +1,326 @@
-"""Statistics of every label of a label map in one pass over the volume.
-
-CT numbers are whole and few, so a label's pixels are known entirely by how many of them hold each
-value: one counting pass makes that table for all labels, and every first-order statistic, the exact
-median and percentiles among them, follows from the table. Values that are not whole, or spread too
-far for a table, are sorted by label and value instead.
-"""
+"""Every label of a label map as a row of one table, with uncertainties."""
 
 from __future__ import annotations
 
 import math
-from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, Literal, TypeAlias, get_args
 
 import numpy as np
 
 from ct_measure_plugin.errors import ArgumentError
+from ct_measure_plugin.physics.first_order import Moments
+from ct_measure_plugin.physics.label_numbers import LabelNumbers, label_numbers, label_quantiles
+from ct_measure_plugin.physics.noise_correlation import (
+    MeanDoubt,
+    doubt_of_mean,
+    doubt_of_samples,
+)
+from ct_measure_plugin.physics.quantisation import single_value
+from ct_measure_plugin.physics.region_masks import boxes_of
+from ct_measure_plugin.physics.region_numbers import mean_and_sd
+from ct_measure_plugin.physics.region_statistics import FEW_PIXELS, FEW_SAMPLES
+from ct_measure_plugin.physics.results import Caution, NotMeasured, Quantity, Result
 
 if TYPE_CHECKING:
+    from collections.abc import Iterator, Mapping
+
     from numpy.typing import NDArray
 
     Floats = NDArray[np.float64]
 
-__all__ = ["LabelNumbers", "label_numbers"]
+__all__ = ["LabelRow", "LabelStatistics", "NoiseModel", "label_statistics"]
 
-#: Entries of the table of counts, labels times values: 4 million take 32 MB.
-TABLE = 1 << 22
+#: How the pixels of a label are taken to depend on each other; "none" states no uncertainty.
+NoiseModel: TypeAlias = Literal["region", "independent", "none"]
 
-#: Voxels counted at once by a thread; keeps its keys within the processor's cache.
-CHUNK = 1 << 18
-
-#: Threads that count; more would mostly wait for memory.
-THREADS = 2
+#: The quantiles of a row, and where they stand.
+_AT = (0.1, 0.25, 0.5, 0.75, 0.9)
+_NAMES = ("p10", "p25", "median", "p75", "p90")
 
 
-@dataclass(frozen=True, slots=True, eq=False)
-class LabelNumbers:
-    """Plain numbers of every label, each an array of shape (labels,).
+@dataclass(frozen=True, slots=True, kw_only=True)
+class LabelRow:
+    """One label.
 
     Attributes
     ----------
-    label : ndarray of int
-        The labels that occur, increasing; 0 is background and is left out.
-    n : ndarray
+    name : str
+        What people call it.
+    label : int
+        Its number.
+    n : Quantity
         Pixels with a finite value.
-    lost : ndarray
-        Pixels without one.
-    mean, sd, population_sd, minimum, maximum, skewness, kurtosis : ndarray
-        As in :class:`ct_measure_plugin.physics.region_statistics.RegionStatistics`; sd is NaN for
-        a label of one pixel, and all are NaN for one without a finite value.
-    percentiles : ndarray, shape (labels, percentiles)
-        In the order asked for.
+    size : Quantity
+        Their area in mm² (flat map) or volume in mm³.
+    mean, sd, minimum, maximum, median, p10, p25, p75, p90, skewness, kurtosis : Quantity or str
+        As in :class:`~ct_measure_plugin.physics.region_statistics.RegionStatistics`; an empty text
+        where a label has no pixel with a value, and for the SD of a single one.
     """
 
-    label: NDArray[np.int64]
-    n: NDArray[np.int64]
-    lost: NDArray[np.int64]
-    mean: Floats
-    sd: Floats
-    population_sd: Floats
-    minimum: Floats
-    maximum: Floats
-    skewness: Floats
-    kurtosis: Floats
-    percentiles: Floats
+    name: str
+    label: int
+    n: Quantity
+    size: Quantity
+    mean: Quantity | str = ""
+    sd: Quantity | str = ""
+    minimum: Quantity | str = ""
+    maximum: Quantity | str = ""
+    median: Quantity | str = ""
+    p10: Quantity | str = ""
+    p25: Quantity | str = ""
+    p75: Quantity | str = ""
+    p90: Quantity | str = ""
+    skewness: Quantity | str = ""
+    kurtosis: Quantity | str = ""
 
 
-def label_numbers(
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class LabelStatistics(Result):
+    """All labels of a map.
+
+    Attributes
+    ----------
+    count : Quantity
+        How many labels there are.
+    n, size : Quantity
+        Their pixels with a finite value, and their area or volume, together.
+    labels : tuple of LabelRow
+        One a label, by number.
+    """
+
+    count: Quantity
+    n: Quantity
+    size: Quantity
+    labels: tuple[LabelRow, ...]
+
+
+def label_statistics(
     values: NDArray[Any],
     labels: NDArray[Any],
     *,
-    percentiles: tuple[float, ...] = (10.0, 25.0, 50.0, 75.0, 90.0),
-) -> LabelNumbers:
+    spacing_mm: tuple[float, ...],
+    unit: str = "HU",
+    names: Mapping[int, str] | None = None,
+    noise: NoiseModel = "region",
+) -> LabelStatistics | NotMeasured:
     """Return the first-order statistics of every label.
 
     Parameters
     ----------
-    values : ndarray of real numbers
-        CT numbers, any shape.
+    values : ndarray, shape (ny, nx) or (nz, ny, nx)
+        CT numbers.
     labels : ndarray of int, same shape
         0 is background.
-    percentiles : tuple of float
-        0 to 100; interpolated linearly, as numpy's default does.
+    spacing_mm : tuple of float
+        Step along each axis.
+    unit : str
+        Unit of the values.
+    names : mapping of int to str, optional
+        What labels are called; by default "label 7".
+    noise : {"region", "independent", "none"}
+        "region": each label's standard error from its own noise, as for any region, about a
+        millisecond a label and slice. "independent": pixels are taken as independent, at once, and
+        wrong where noise is correlated. "none": numbers without uncertainties.
+
+    Returns
+    -------
+    LabelStatistics or NotMeasured
+        NotMeasured if there is no label.
 
     Raises
     ------
     ArgumentError
-        If the shapes differ, or the labels are not whole numbers.
+        If shapes differ, the labels are not whole numbers, or the noise is none of the three.
 
     Examples
     --------
-    >>> found = label_numbers(np.array([[3, 5, 7], [1, 1, 9]]), np.array([[1, 1, 1], [0, 4, 4]]))
-    >>> found.label.tolist(), found.mean.tolist(), found.percentiles[:, 2].tolist()
-    ([1, 4], [5.0, 5.0], [5.0, 5.0])
+    >>> image = np.array([[3, 5, 7], [1, 1, 9]])
+    >>> found = label_statistics(image, np.array([[1, 1, 1], [0, 4, 4]]), spacing_mm=(1.0, 1.0))
+    >>> [(row.label, row.mean.value, str(row.size)) for row in found.labels]
+    [(1, 5.0, '3 mm²'), (4, 5.0, '2 mm²')]
     """
-    if labels.shape != values.shape:
-        raise ArgumentError("labels", f"must have the values' shape {values.shape}", labels.shape)
-    if labels.dtype.kind not in "iub":
-        raise ArgumentError("labels", "must hold whole numbers", str(labels.dtype))
-    if not all(0 <= p <= 100 for p in percentiles):
-        raise ArgumentError("percentiles", "must lie within 0 to 100", percentiles)
-    v = np.ascontiguousarray(values).ravel()
-    owner = np.ascontiguousarray(labels).ravel()
-    if owner.dtype.kind == "b":
-        owner = owner.view(np.uint8)
-    whole = _by_counting(v, owner)
-    return _from_runs(whole if whole is not None else _by_sorting(v, owner), percentiles)
+    if noise not in get_args(NoiseModel):
+        raise ArgumentError("noise", "must be 'region', 'independent' or 'none'", noise)
+    if values.ndim not in (2, 3) or len(spacing_mm) != values.ndim:
+        raise ArgumentError("spacing_mm", f"must hold {values.ndim} lengths", spacing_mm)
+    found = label_numbers(values, labels, percentiles=tuple(100 * at for at in _AT))
+    if not len(found.label):
+        return NotMeasured("the label map holds no label", "paint one, or choose another map")
+    called = names or {}
+    doubts = _doubts(found, values, labels, tuple(spacing_mm), noise)
+    spreads = None if doubts is None else _spreads(found, doubts)
+    kept = _Writer(math.prod(spacing_mm), "mm²" if values.ndim == 2 else "mm³", unit)
+    rows = tuple(
+        kept.row(
+            found,
+            i,
+            called.get(number, f"label {number}"),
+            None if doubts is None else doubts[i],
+            None if spreads is None else spreads[i],
+        )
+        for i, number in enumerate(found.label.tolist())
+    )
+    total = float(found.n.sum())
+    return LabelStatistics(
+        count=Quantity(float(len(rows)), "", 0.0),
+        n=Quantity(total, "px", 0.0),
+        size=Quantity(total * kept.pixel, kept.size_unit, 0.0),
+        labels=rows,
+        cautions=tuple(_cautions(found, doubts, noise)),
+    )
 
 
-@dataclass(frozen=True, slots=True, eq=False)
-class _Runs:
-    """Distinct values of each label with their counts, labels one after the other.
+@dataclass(frozen=True, slots=True)
+class _Writer:
+    """Makes rows of one map."""
 
-    `start` holds where each label's runs begin, and one entry more.
-    """
+    pixel: float
+    size_unit: str
+    unit: str
 
-    label: NDArray[np.int64]
-    lost: NDArray[np.int64]
-    start: NDArray[np.int64]
-    value: Floats
-    count: NDArray[np.int64]
+    def row(
+        self,
+        found: LabelNumbers,
+        i: int,
+        name: str,
+        doubt: MeanDoubt | None,
+        spread: Floats | None,
+    ) -> LabelRow:
+        n = int(found.n[i])
+        head: dict[str, Any] = {
+            "name": name,
+            "label": int(found.label[i]),
+            "n": Quantity(float(n), "px", 0.0),
+            "size": Quantity(n * self.pixel, self.size_unit, 0.0),
+        }
+        if not n:
+            return LabelRow(**head)
+        order: dict[str, Any] = {
+            called: Quantity(
+                float(found.percentiles[i, k]),
+                self.unit,
+                None if spread is None else float(spread[k]),
+            )
+            for k, called in enumerate(_NAMES)
+        }
+        return LabelRow(
+            **head,
+            **self._mean_and_sd(found, i, doubt),
+            **order,
+            minimum=Quantity(float(found.minimum[i]), self.unit),
+            maximum=Quantity(float(found.maximum[i]), self.unit),
+        )
+
+    def _mean_and_sd(self, found: LabelNumbers, i: int, doubt: MeanDoubt | None) -> dict[str, Any]:
+        numbers = {
+            "mean": Quantity(float(found.mean[i]), self.unit),
+            "skewness": Quantity(float(found.skewness[i]), ""),
+            "kurtosis": Quantity(float(found.kurtosis[i]), ""),
+        }
+        if found.n[i] < 2:
+            return numbers
+        if doubt is None:
+            return {**numbers, "sd": Quantity(float(found.sd[i]), self.unit)}
+        _, u_mean, sd, u_sd = mean_and_sd(
+            _moments(found, i), int(found.n[i]), doubt, float(found.whole[i])
+        )
+        nu = max(doubt.power_samples, 2.0)
+        return {
+            "mean": Quantity(float(found.mean[i]), self.unit, u_mean),
+            "sd": Quantity(sd, self.unit, u_sd),
+            "skewness": Quantity(float(found.skewness[i]), "", math.sqrt(6.0 / nu)),
+            "kurtosis": Quantity(float(found.kurtosis[i]), "", math.sqrt(24.0 / nu)),
+        }
 
 
-def _by_counting(v: NDArray[Any], owner: NDArray[Any]) -> _Runs | None:
-    """Count pixels by label and value, or return None where a table would be too large."""
-    if v.dtype.kind not in "iu" or v.size == 0:
+def _moments(found: LabelNumbers, i: int) -> Moments:
+    m2, n = float(found.population_sd[i]) ** 2, float(found.n[i])
+    m3 = float(found.skewness[i]) * m2**1.5
+    m4 = (float(found.kurtosis[i]) + 3.0) * m2**2
+    return Moments(float(found.mean[i]), m2, m3, m4, n, n)
+
+
+def _doubts(
+    found: LabelNumbers,
+    values: NDArray[Any],
+    labels: NDArray[Any],
+    steps: tuple[float, ...],
+    noise: NoiseModel,
+) -> list[MeanDoubt | None] | None:
+    """Return the doubt of each label's mean, None for one with fewer than two pixels."""
+    if noise == "none":
         return None
-    low, high = int(v.min()), int(v.max())
-    first, last = int(owner.min()), int(owner.max())
-    width, rows = high - low + 1, last - first + 1
-    if width * rows > max(TABLE, v.size // 4) or rows * width > 1 << 31:
-        return None
-    bounds = list(range(0, v.size, CHUNK))
+    if noise == "independent":
+        return [
+            doubt_of_samples(float(found.sd[i]) ** 2, float(found.n[i])) if found.n[i] > 1 else None
+            for i in range(len(found.label))
+        ]
+    return [
+        doubt if n > 1 else None
+        for n, doubt in zip(found.n, _by_region(found, values, labels, steps), strict=True)
+    ]
 
-    def count(part: int) -> NDArray[np.int64]:
-        table = np.zeros(rows * width, np.int64)
-        for begin in bounds[part::THREADS]:
-            key = owner[begin : begin + CHUNK].astype(np.int32)
-            key -= first
-            key *= width
-            key += v[begin : begin + CHUNK]
-            key -= low
-            found = np.bincount(key)
-            table[: len(found)] += found
-        return table
 
-    with ThreadPoolExecutor(THREADS) as pool:
-        table = sum(pool.map(count, range(THREADS))).reshape(rows, width)  # type: ignore[union-attr]
-    label = np.arange(first, last + 1)
-    table[label == 0] = 0
-    kept = np.flatnonzero(table.any(axis=1))
-    row, column = np.nonzero(table[kept])
-    return _Runs(
-        label[kept].astype(np.int64),
-        np.zeros(len(kept), np.int64),
-        np.searchsorted(row, np.arange(len(kept) + 1)),
-        (column + low).astype(float),
-        table[kept][row, column],
+def _by_region(
+    found: LabelNumbers, values: NDArray[Any], labels: NDArray[Any], steps: tuple[float, ...]
+) -> Iterator[MeanDoubt | None]:
+    numbers = tuple(found.label.tolist())
+    for i, box in enumerate(boxes_of(labels, numbers)):
+        if found.n[i] < 2:
+            yield None
+            continue
+        inside = (labels[box] == numbers[i]).astype(float)
+        own = np.asarray(values[box], float)
+        finite = np.isfinite(own)
+        if not finite.all():
+            own, inside = np.where(finite, own, 0.0), np.where(finite, inside, 0.0)
+        if own.ndim == 3 and len(own) == 1:
+            own, inside = own[0], inside[0]
+        yield doubt_of_mean(own, inside, steps[-own.ndim :])
+
+
+def _spreads(found: LabelNumbers, doubts: list[MeanDoubt | None]) -> Floats:
+    """Return the uncertainty of each quantile of each label, as a region's are found."""
+    at = np.tile(np.asarray(_AT), (len(doubts), 1))
+    effective = found.n.astype(float)
+    for i, doubt in enumerate(doubts):
+        if doubt is not None and doubt.variance_of_mean > 0:
+            effective[i] = min(float(found.sd[i]) ** 2 / doubt.variance_of_mean, effective[i])
+    reach = np.sqrt(at * (1 - at) / np.maximum(effective, 1.0)[:, None])
+    high, low = label_quantiles(found, at + reach), label_quantiles(found, at - reach)
+    spread: Floats = np.hypot((high - low) / 2, single_value(1.0) * found.whole[:, None])
+    return spread
+
+
+def _cautions(
+    found: LabelNumbers, doubts: list[MeanDoubt | None] | None, noise: NoiseModel
+) -> Iterator[Caution]:
+    yield Caution(
+        "no-uncertainty",
+        "Minimum, maximum and single pixels describe these pixels only; no uncertainty is stated."
+        if doubts is not None
+        else "No uncertainties were asked for.",
     )
-
-
-def _by_sorting(v: NDArray[Any], owner: NDArray[Any]) -> _Runs:
-    """Sort the pixels of the labels by label, then by value."""
-    inside = np.flatnonzero(owner)
-    own, value = owner[inside].astype(np.int64), v[inside].astype(float)
-    label, number = np.unique(own, return_inverse=True)
-    finite = np.isfinite(value)
-    lost = np.bincount(number[~finite], minlength=len(label))
-    number, value = number[finite], value[finite]
-    order = np.lexsort((value, number))
-    number, value = number[order], value[order]
-    new = np.ones(len(value), bool)
-    new[1:] = (np.diff(number) != 0) | (np.diff(value) != 0)
-    at = np.flatnonzero(new)
-    count = np.diff(np.append(at, len(value)))
-    start = np.searchsorted(number[at], np.arange(len(label) + 1))
-    return _Runs(label, lost, start, value[at], count)
-
-
-def _from_runs(runs: _Runs, percentiles: tuple[float, ...]) -> LabelNumbers:
-    """Return every statistic from the distinct values and their counts."""
-    labels = len(runs.label)
-    row = np.repeat(np.arange(labels), np.diff(runs.start))
-    n = np.bincount(row, runs.count, minlength=labels).astype(np.int64)
-    filled = n > 0
-    safe = np.maximum(n, 1)
-    # sums about a value of the label's own keep their digits
-    anchor = np.zeros(labels)
-    anchor[filled] = runs.value[runs.start[:-1][filled]]
-    shifted = np.bincount(row, runs.count * (runs.value - anchor[row]), minlength=labels) / safe
-    mean = anchor + shifted
-    residual = runs.value - mean[row]
-    weighted = runs.count * residual
-    m2, m3, m4 = (
-        np.bincount(row, weighted * residual**k, minlength=labels) / safe for k in (1, 2, 3)
-    )
-    last = np.maximum(runs.start[1:] - 1, 0)
-    highest = runs.value[last] if len(runs.value) else np.zeros(labels)
-    spread = highest - anchor
-    m2 = np.where(spread == 0, 0.0, m2)  # equal values: rounding must not invent a spread
-    curved = m2 > 0
-    divisor = np.where(curved, m2, 1.0)
-    nothing = np.where(filled, 0.0, math.nan)
-    with np.errstate(invalid="ignore", divide="ignore"):
-        sd = np.sqrt(m2 * n / (n - 1.0))
-    return LabelNumbers(
-        runs.label,
-        n,
-        runs.lost,
-        mean + nothing,
-        np.where(n > 1, sd, math.nan),
-        np.sqrt(m2) + nothing,
-        anchor + nothing,
-        highest + nothing,
-        np.where(curved, m3 / divisor**1.5, 0.0) + nothing,
-        np.where(curved, m4 / divisor**2 - 3.0, 0.0) + nothing,
-        _percentiles(runs, n, percentiles),
-    )
-
-
-def _percentiles(runs: _Runs, n: NDArray[np.int64], wanted: tuple[float, ...]) -> Floats:
-    """Interpolate linearly between order statistics, label by label in one go."""
-    found = np.full((len(n), len(wanted)), math.nan)
-    rows = np.flatnonzero(n > 0)
-    if not len(rows):
-        return found
-    upto = np.cumsum(runs.count)  # pixels up to and with each run
-    before = (np.cumsum(n) - n)[rows]
-    for i, percent in enumerate(wanted):
-        place = percent / 100.0 * (n[rows] - 1)
-        below = np.floor(place).astype(np.int64)
-        above = np.minimum(below + 1, n[rows] - 1)
-        low = runs.value[np.searchsorted(upto, before + below, "right")]
-        high = runs.value[np.searchsorted(upto, before + above, "right")]
-        found[rows, i] = low + (place - below) * (high - low)
-    return found
+    if noise == "independent":
+        yield Caution("independence-assumed", "The pixels were taken as independent samples.")
+    if lost := int(found.lost.sum()):
+        yield Caution(
+            "not-finite",
+            f"{lost} pixels of the labels hold no finite value and were left out.",
+            "Look where they come from.",
+        )
+    if few := int(np.count_nonzero(found.n < FEW_PIXELS)):
+        yield Caution(
+            "few-pixels",
+            f"{few} of {len(found.n)} labels hold fewer than {FEW_PIXELS} pixels.",
+            "Read their spread with care.",
+        )
+    smooth = [d for d in doubts or () if d is not None and d.reach > 0]
+    if scarce := sum(d.power_samples < FEW_SAMPLES for d in smooth):
+        yield Caution(
+            "few-independent-samples",
+            f"{scarce} of {len(found.n)} labels hold fewer than {FEW_SAMPLES:.0f} independent noise"
+            " samples; their standard errors are themselves uncertain.",
+            "Read them with care.",
+        )

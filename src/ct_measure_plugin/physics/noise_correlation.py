@@ -25,7 +25,7 @@ if TYPE_CHECKING:
 
     Floats = NDArray[np.float64]
 
-__all__ = ["MeanDoubt", "doubt_of_mean", "independent_doubt"]
+__all__ = ["MeanDoubt", "doubt_of_mean", "doubt_of_samples", "independent_doubt"]
 
 #: A known white floor, in units of the region's variance, added to data and model alike: it keeps
 #: frequencies at which there is next to no noise from outvoting those that decide the mean.
@@ -93,6 +93,16 @@ def independent_doubt(values: Floats, weights: Floats) -> MeanDoubt:
     freedom = max(samples - 1, 1.0)
     variance = spread / (total**2 - squares)
     return MeanDoubt(variance * _student(freedom) ** 2, samples, 0.0, freedom)
+
+
+def doubt_of_samples(variance: float, count: float) -> MeanDoubt:
+    """Return the doubt of the plain mean of so many independent samples of a sample variance.
+
+    >>> doubt_of_samples(100.0, 2000.0).power_samples
+    2000.0
+    """
+    freedom = max(count - 1, 1.0)
+    return MeanDoubt(variance / count * _student(freedom) ** 2, count, 0.0, freedom)
 
 
 def doubt_of_mean(values: Floats, weights: Floats, spacing_mm: tuple[float, ...]) -> MeanDoubt:

@@ -117,11 +117,26 @@ def uniformity() -> Example:
     )
 
 
+def disc_mtf() -> Example:
+    from truth_images import HANN, disc_image
+
+    noise = np.random.default_rng(9).normal(0, 12, (2, 56, 56))
+    values = np.rint(disc_image(HANN, 6.0, shape=(56, 56), contrast=900) + noise)
+    frequencies = ("f50", "f10", "f2", "nyquist")
+    return Example(
+        Volume(values.astype(np.int16), (2.0, 0.5, 0.5)),
+        (Disc((13.75, 13.75), 12.0, z_mm=0.0),),
+        scales_with_spacing=dict.fromkeys(frequencies, -1)
+        | {"width": 1, "radius": 1, "roundness": 1},
+    )
+
+
 EXAMPLES: dict[str, Callable[[], Example]] = {
     "region_statistics": region_statistics,
     "region_contrast": region_contrast,
     "noise_power": noise_power,
     "uniformity": uniformity,
     "edge_mtf": edge_mtf,
+    "disc_mtf": disc_mtf,
     "ct_number_line": ct_number_line,
 }

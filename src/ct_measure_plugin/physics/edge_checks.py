@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
@@ -164,18 +164,30 @@ def _straight(facts: EdgeFacts, _: str) -> NotMeasured | None:
     return None
 
 
-def other_objects(residual: Floats, contrast: float) -> float:
+def other_objects(
+    residual: Floats, contrast: float, used: NDArray[np.bool_] | None = None
+) -> float:
     """Return the largest mean residual of blocks of 6 by 6 pixels, relative to the contrast.
 
-    0 where it is within the scatter of all blocks (eight robust SDs).
+    0 where it is within the scatter of all blocks (eight robust SDs). `used` leaves blocks out
+    that are not wholly within it.
     """
     ny, nx = (n // 6 * 6 for n in residual.shape)
     if ny < 12 or nx < 12:
         return 0.0
-    blocks = residual[:ny, :nx].reshape(ny // 6, 6, nx // 6, 6).mean(axis=(1, 3))
+    blocks = _blocks(residual[:ny, :nx]).mean(axis=(1, 3)).ravel()
+    if used is not None:
+        blocks = blocks[_blocks(used[:ny, :nx]).all(axis=(1, 3)).ravel()]
+    if len(blocks) < 4:
+        return 0.0
     spread = 1.4826 * float(np.median(np.abs(blocks - np.median(blocks))))
     largest = float(np.abs(blocks).max())
     return largest / contrast if largest > 8 * spread else 0.0
+
+
+def _blocks(image: NDArray[Any]) -> NDArray[Any]:
+    ny, nx = image.shape
+    return image.reshape(ny // 6, 6, nx // 6, 6)
 
 
 def _alone(facts: EdgeFacts, _: str) -> NotMeasured | None:

@@ -70,8 +70,8 @@ class EdgeLine:
         Signed distance to the edge and place along it of every pixel, mm.
     residual : ndarray, shape (ny, nx)
         Pixels minus the rough edge.
-    jacobian : ndarray, shape (2, ny, nx)
-        Derivatives of the pixels by offset and by angle.
+    jacobian : ndarray, shape (5, ny, nx)
+        Derivatives of the pixels by offset and by angle, and by level, slope and step of the edge.
     """
 
     angle: float
@@ -174,7 +174,7 @@ def _line(
         d,
         t,
         residual,
-        columns[:2],
+        np.stack([*columns[:2], np.ones_like(d), d, rough.at(d)]),
     )
 
 
@@ -210,6 +210,19 @@ def rough_esf(bins: EdgeBins, sigma: float | None, *, terms: int, wide: bool = T
         trials = np.geomspace(bins.width, reach / 3, 24)
     else:
         trials = sigma * (np.geomspace(0.6, 1.6, 9) if wide else np.array([0.97, 1.0, 1.03]))
+    _, gain = _solved(bins, trials, terms)
+    s = _best_trial(trials, gain)
+    (mix,), _ = _solved(bins, np.array([s]), terms)
+    grid = np.linspace(-reach, reach, int(2 * reach / min(bins.width / 2, s / 8)) + 1)
+    shapes = _hermite_edges(grid, np.array([s]), terms, 0)[0]
+    lines = _hermite_edges(grid, np.array([s]), terms, 1)[0]
+    value = mix[0] + mix[1] * grid / reach + mix[2:] @ shapes
+    return RoughEsf(s, grid, value, mix[2:] @ lines)
+
+
+def _solved(bins: EdgeBins, trials: Floats, terms: int) -> tuple[Floats, Floats]:
+    """Return for each sigma the least-squares mix and the sum of squares that it explains."""
+    reach = float(np.abs(bins.distance).max())
     edges = _hermite_edges(bins.distance, trials, terms, 0)
     edges += 0.5 * bins.spread * _hermite_edges(bins.distance, trials, terms, 2)
     plain = np.broadcast_to(
@@ -222,14 +235,23 @@ def rough_esf(bins: EdgeBins, sigma: float | None, *, terms: int, wide: bool = T
     normal = weighted @ columns.transpose(0, 2, 1)
     index = np.arange(normal.shape[1])
     normal[:, index, index] *= 1 + 1e-11
-    found = np.linalg.solve(normal, right[..., None])[..., 0]
-    best = int(np.argmax(np.sum(found * right, axis=1)))  # the least sum of squares left
-    s, mix = float(trials[best]), found[best]
-    grid = np.linspace(-reach, reach, int(2 * reach / min(bins.width / 2, s / 8)) + 1)
-    shapes = _hermite_edges(grid, trials[best : best + 1], terms, 0)[0]
-    lines = _hermite_edges(grid, trials[best : best + 1], terms, 1)[0]
-    value = mix[0] + mix[1] * grid / reach + mix[2:] @ shapes
-    return RoughEsf(s, grid, value, mix[2:] @ lines)
+    found: Floats = np.linalg.solve(normal, right[..., None])[..., 0]
+    return found, np.sum(found * right, axis=1)
+
+
+def _best_trial(trials: Floats, gain: Floats) -> float:
+    """Return the best sigma: the top of a parabola in log sigma through the three best trials."""
+    best = int(np.argmax(gain))
+    if not 0 < best < len(trials) - 1:
+        return float(trials[best])
+    x = np.log(trials[best - 1 : best + 2] / trials[best])
+    y = gain[best - 1 : best + 2] - gain[best]
+    # through (x0, y0), (0, 0), (x2, y2)
+    curve = (y[0] / x[0] - y[2] / x[2]) / (x[0] - x[2])
+    slope = y[0] / x[0] - curve * x[0]
+    if not curve < 0:
+        return float(trials[best])
+    return float(trials[best] * math.exp(min(max(-slope / (2 * curve), x[0]), x[2])))
 
 
 def _hermite_edges(d: Floats, s: Floats, terms: int, derivative: int) -> Floats:

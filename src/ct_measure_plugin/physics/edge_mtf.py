@@ -71,7 +71,7 @@ class EdgeMtf(MtfResult):
     contrast: Quantity
     noise: Quantity
     contrast_to_noise: Quantity | NotMeasured
-    width: Quantity
+    width: Quantity | NotMeasured
     overshoot: Quantity
     esf: Curve
     lsf: Curve
@@ -233,7 +233,7 @@ def _data(facts: EdgeFacts, line: EdgeLine, spectrum: NoiseSpectrum) -> EsfData:
 
 
 def _line_numbers(line: EdgeLine, facts: EdgeFacts, spectrum: NoiseSpectrum) -> dict[str, object]:
-    u_offset, u_angle = (float(u) for u in jacobian_doubt(line.jacobian, spectrum))
+    u_offset, u_angle = (float(u) for u in jacobian_doubt(line.jacobian, spectrum)[:2])
     screen = -math.degrees(line.angle)  # +y points down, angles count upwards
     ny, nx = facts.values.shape
     dy, dx = facts.spacing_mm

@@ -11,7 +11,7 @@ from scipy import signal
 
 from ct_measure_plugin.physics.esf_basis import REACH, dictionary
 from ct_measure_plugin.physics.mtf_curve import width_at
-from ct_measure_plugin.physics.results import Curve, Quantity
+from ct_measure_plugin.physics.results import Curve, NotMeasured, Quantity
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -24,6 +24,10 @@ __all__ = ["Shape", "conventional_shape", "fitted_shape"]
 
 #: Slope of a Gaussian at half its height, in heights a standard deviation: sqrt(2 ln 2) / 2.
 GAUSSIAN_SLOPE = math.sqrt(2 * math.log(2)) / 2
+
+#: Noise of the line spread function, in areas a FWHM, beyond which its width is not read: a
+#: Gaussian's peak is 0.94, and three times this would stand at its half.
+MOST_LSF_NOISE = 0.15
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -43,7 +47,7 @@ class Shape:
     esf: Curve
     lsf: Curve
     contrast: Quantity
-    width: Quantity
+    width: Quantity | NotMeasured
     overshoot: Quantity
     shift: float = 0.0
 
@@ -61,13 +65,13 @@ def fitted_shape(fit: EsfFit, fwhm: float, unit: str) -> Shape:
         top = int(np.searchsorted(d, 1.5 * fwhm))
     width = width_at(d, lsf, 0.5)
     ends = shapes.slopes(np.array([width / 2 / s])) / s**2
-    slope = -float(ends[0] @ fit.mix)
+    slope = -float(ends[0] @ fit.mix) / step
     whole = 2 * shapes.edges(np.array([REACH]))
     at_half = shapes.lines(np.array([width / 2 / s, 0.0])) / s
     rows = np.stack(
         [
             whole[0],
-            2 * (at_half[0] - at_half[1] / 2) / slope if slope > 0 else np.zeros(len(fit.mix)),
+            2 * (at_half[0] - at_half[1] / 2) / (step * slope) if slope > 0 else 0 * whole[0],
             (edges[top] - (rise[top] + 0.5) * whole[0]) / step,
         ]
     )
@@ -100,12 +104,12 @@ def conventional_shape(
     span = 2 * max(3, round(0.5 * fwhm / bin_mm)) + 1
     inner = np.arange(span // 2, len(esf) - span // 2)
     level, slope = (_moving(span, bin_mm, deriv, len(esf)) for deriv in (0, 1))
-    smooth, line = level @ esf, slope @ esf
-    top = int(np.argmax(smooth))
+    top = int(np.argmax(level @ esf / contrast))
     excess = (level[top] - high / high.sum()) / contrast
-    width, weights = _width(middles[inner], line, slope)
-    rows = np.stack([plateau, excess, weights])
-    doubts = np.sqrt(np.maximum(np.einsum("ki,ij,kj->k", rows, covariance, rows), 0.0))
+    width, weights = _width(middles[inner], slope @ esf / contrast, slope / contrast)
+    rows = np.stack([plateau, excess, weights, slope[len(slope) // 2] / contrast])
+    doubts = np.sqrt(np.maximum(np.sum((rows @ covariance) * rows, axis=1), 0.0))
+    hidden = float(doubts[3]) * fwhm > MOST_LSF_NOISE
     lsf, band = np.zeros_like(esf), np.zeros_like(esf)
     lsf[1:-1] = (esf[2:] - esf[:-2]) / (2 * bin_mm * contrast)
     auto = np.diag(covariance)
@@ -115,7 +119,12 @@ def conventional_shape(
         Curve(middles, esf, np.sqrt(auto), "distance", "mm", "ESF", unit),
         Curve(middles, lsf, band, "distance", "mm", "LSF", "mm⁻¹"),
         Quantity(contrast, unit, float(doubts[0])),
-        Quantity(width, "mm", float(doubts[2])),
+        NotMeasured(
+            f"noise hides the width of the line spread function: {doubts[3]:.2g} mm⁻¹ of it",
+            "measure it with the fitted method, or average more slices",
+        )
+        if hidden
+        else Quantity(width, "mm", float(doubts[2])),
         Quantity(max(0.0, float(excess @ esf)), "", float(doubts[1])),
     )
 

@@ -18,6 +18,7 @@ if TYPE_CHECKING:
     from ct_measure_plugin import errors, physics
     from ct_measure_plugin.dicom import read_series, scan_series
     from ct_measure_plugin.measurements import measure, measure_each
+    from ct_measure_plugin.measurements.rod_layouts import find_rods
     from ct_measure_plugin.physics import regions
     from ct_measure_plugin.physics.results import (
         Caution,
@@ -38,6 +39,7 @@ _load, __dir__, _ = lazy_loader.attach(
     submod_attrs={
         "dicom": ["read_series", "scan_series"],
         "measurements": ["measure", "measure_each"],
+        "measurements.rod_layouts": ["find_rods"],
         "physics": ["regions"],
         "physics.results": [
             "Caution",
@@ -63,6 +65,7 @@ __all__ = [
     "ResultGroup",
     "Volume",
     "errors",
+    "find_rods",
     "measure",
     "measure_each",
     "physics",

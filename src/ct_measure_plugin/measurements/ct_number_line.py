@@ -17,6 +17,12 @@ from ct_measure_plugin.measurements.materials import (
     load_materials,
     shipped_materials,
 )
+from ct_measure_plugin.measurements.rod_layouts import (
+    FoundRods,
+    RodLayout,
+    find_rods,
+    load_layout,
+)
 from ct_measure_plugin.physics.attenuation import MATERIALS, Material
 from ct_measure_plugin.physics.ct_number_line import CtNumberLine, ct_number_line
 from ct_measure_plugin.physics.results import Caution, NotMeasured, Quantity, Result
@@ -50,6 +56,26 @@ class CtNumberLineSettings(Settings):
         description="a file of your own with formulas and densities; empty for the list that is"
         " shipped",
         json_schema_extra={"file": "materials"},
+    )
+    layout: RodLayout | None = Field(
+        None,
+        title="Layout of the rods",
+        description="a file that says where the rods are in their phantom; they are then found by"
+        " themselves, and no regions are drawn",
+        json_schema_extra={"file": "layout"},
+    )
+    layout_z_mm: float | None = Field(
+        None,
+        title="Slice of the rods (mm)",
+        description="position of the slice on which a layout is looked for; the middle one if it"
+        " is not set",
+    )
+    layout_slices: int = Field(
+        1,
+        ge=1,
+        le=100,
+        title="Slices of the rods",
+        description="so many slices about it are averaged to find the rods, and measured",
     )
     further_hu: float = Field(
         1.0,
@@ -86,6 +112,14 @@ class CtNumberLineSettings(Settings):
             return given
         return load_materials(given) if given.strip() else ()
 
+    @field_validator("layout", mode="before")
+    @classmethod
+    def _read_layout(cls, given: Any) -> Any:
+        """Read a layout that is given by its file's path."""
+        if not isinstance(given, str):
+            return given
+        return load_layout(given) if given.strip() else None
+
     @property
     def listed(self) -> tuple[MaterialEntry, ...]:
         """The list of materials in use."""
@@ -111,7 +145,7 @@ class MeasureCtNumberLine(Measurement):
     )
     settings_type: ClassVar[type[Settings]] = CtNumberLineSettings
     result_type: ClassVar[type[Result]] = CtNumberLine
-    regions: ClassVar[RegionNeed] = RegionNeed(AREAS, together=True)
+    regions: ClassVar[RegionNeed] = RegionNeed(AREAS, at_least=0, together=True)
     columns: ClassVar[tuple[str, ...]] = (
         "effective_energy",
         "scale_factor",
@@ -132,6 +166,11 @@ class MeasureCtNumberLine(Measurement):
                 "use a series that is rescaled to HU",
                 volume.cautions,
             )
+        placed = _placed(volume, regions, wanted)
+        if isinstance(placed, NotMeasured):
+            return replace(placed, cautions=volume.cautions)
+        if placed is not None:
+            regions = placed.regions
         rods, cautions = _read_rods(volume, regions, _materials_of(regions, wanted))
         library = [_at_temperature(entry.material(), wanted) for entry in wanted.listed]
         found = ct_number_line(
@@ -142,11 +181,59 @@ class MeasureCtNumberLine(Measurement):
             library=library,
             water=replace(MATERIALS["water"], density_g_cm3=wanted.scale_water_g_cm3),
         )
-        return replace(found, cautions=(*volume.cautions, *cautions, *found.cautions))
+        said = (*volume.cautions, *cautions, *found.cautions)
+        if placed is None or isinstance(found, NotMeasured):
+            return replace(found, cautions=said)
+        return replace(
+            found,
+            layout_rotation=placed.found.rotation,
+            layout_scale=placed.found.scale,
+            places=placed.found.rods,
+            cautions=(*placed.found.cautions, *said),
+        )
+
+    def marks(
+        self,
+        volume: Volume,
+        regions: Sequence[Region],
+        settings: Settings,
+        answer: Result | NotMeasured,
+    ) -> tuple[Region, ...]:
+        """Return where the rods were read: the regions drawn, or those that a layout found."""
+        if not isinstance(answer, CtNumberLine):
+            return ()
+        placed = _placed(volume, regions, cast("CtNumberLineSettings", settings))
+        found = placed.regions if isinstance(placed, FoundRods) else tuple(regions)
+        read = {rod.name for rod in answer.rods}
+        return tuple(region for region in found if not region.name or region.name in read)
+
+
+def _placed(
+    volume: Volume, regions: Sequence[Region], wanted: CtNumberLineSettings
+) -> FoundRods | NotMeasured | None:
+    """Return the rods that a layout finds, or None where regions were drawn."""
+    if wanted.layout is None:
+        if regions:
+            return None
+        return NotMeasured(
+            "there are no rods",
+            "draw a region in each rod and name it by its material, or give a layout",
+        )
+    if regions:
+        raise ArgumentError("layout", "must be left out where regions are given", "both")
+    return find_rods(
+        volume,
+        wanted.layout,
+        z_mm=wanted.layout_z_mm,
+        slices=wanted.layout_slices,
+        materials=wanted.listed,
+    )
 
 
 def _materials_of(regions: Sequence[Region], wanted: CtNumberLineSettings) -> tuple[Material, ...]:
-    names = wanted.rods or tuple(region.name for region in regions)
+    names = tuple(region.name for region in regions)
+    if wanted.rods and wanted.layout is None:
+        names = wanted.rods
     if len(names) != len(regions):
         raise ArgumentError("rods", f"must name {len(regions)} regions", len(names))
     return tuple(find_material(name, wanted.listed) for name in names)

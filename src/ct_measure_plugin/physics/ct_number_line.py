@@ -27,6 +27,7 @@ from ct_measure_plugin.physics.rod_fit import (
     best_scale,
     energy_interval,
 )
+from ct_measure_plugin.physics.rod_layout import PlacedRod
 from ct_measure_plugin.physics.rod_readings import Readings, RodReading, readings_of
 
 if TYPE_CHECKING:
@@ -34,7 +35,7 @@ if TYPE_CHECKING:
 
     from numpy.typing import ArrayLike
 
-__all__ = ["CtNumberLine", "RodReading", "ct_number_line"]
+__all__ = ["CtNumberLine", "PlacedRod", "RodReading", "ct_number_line"]
 
 #: Leverage beyond which one rod decides the line nearly alone.
 DECIDING_LEVERAGE = 0.7
@@ -94,6 +95,10 @@ class CtNumberLine(Result):
         Chi-squared of the best line, and the correlation, at every energy.
     rods : tuple of RodReading
         One a rod, in the order given.
+    layout_rotation, layout_scale : Quantity or None
+        By what a layout that found the rods is turned, and distances over its own.
+    places : tuple of PlacedRod
+        Where it found them.
     """
 
     effective_energy: Quantity
@@ -117,6 +122,9 @@ class CtNumberLine(Result):
     energy_curve: Curve
     correlation_curve: Curve | None
     rods: tuple[RodReading, ...] = ()
+    layout_rotation: Quantity | None = None
+    layout_scale: Quantity | None = None
+    places: tuple[PlacedRod, ...] = ()
 
 
 def ct_number_line(

@@ -96,7 +96,7 @@ class RodsFound(Result):
     Attributes
     ----------
     rotation : Quantity
-        By what the layout is turned, degrees counter-clockwise on the screen.
+        By what the layout is turned, degrees counter-clockwise on the screen, -180 to 180.
     shift_y, shift_x : Quantity
         Where the layout's origin is, mm from the centre of the first pixel.
     scale : Quantity

@@ -135,7 +135,7 @@ class Match:
     Attributes
     ----------
     angle : float
-        Degrees counter-clockwise on the screen.
+        Degrees counter-clockwise on the screen, -180 to 180.
     shift : ndarray, shape (2,)
         Where the layout's origin comes to lie, mm.
     cost : float
@@ -284,7 +284,7 @@ def _refined(scene: Scene, angle: float, shift: Floats) -> Match:
         angle = math.atan2(cross, float(np.sum(a * b)))
         shift = spots.mean(axis=0) - _turned(rods, np.array(angle)).mean(axis=0)
     cost, _ = _costs(scene, np.array([angle]), shift[None])
-    degrees = math.degrees(angle) % 360.0
+    degrees = (math.degrees(angle) + 180.0) % 360.0 - 180.0
     visible = int(np.count_nonzero(scene.visible))
     return Match(degrees, shift, float(cost[0]), _met(scene, angle, shift), visible)
 

@@ -1,8 +1,9 @@
-"""Pictures of the docks as people see them, 1280 × 800, dark and light.
+"""Pictures of the docks as people see them, 1280 × 800.
 
-    xvfb-run -a -s "-screen 0 1400x900x24" python tests/viewer/screens.py FOLDER
+    xvfb-run -a -s "-screen 0 1400x900x24" python tests/viewer/screens.py [FOLDER] [--all]
 
-Without a folder they go to docs/images. 256 colours keep each under 200 kB.
+Without a folder they go to docs/images: each dock in the dark theme, and one picture for the
+README. With --all each is taken in the light theme, too. 256 colours keep each under 200 kB.
 """
 
 from __future__ import annotations
@@ -72,12 +73,36 @@ def raise_tab(widget):
         widget.raise_()
 
 
+def stage(viewer, dock):
+    """Show the regions of a dock alone, on the slice of the first; wait until it has measured."""
+    from napari.layers import Shapes
+
+    raise_tab(dock)
+    wait(0.3)
+    layer = getattr(dock, "_bound", None)
+    if layer is not None and layer.nshapes:
+        for one in viewer.layers:
+            if isinstance(one, Shapes):
+                one.visible = one is layer
+        place = layer.data_to_world(layer.data[0][0])
+        viewer.dims.set_point(0, place[0])
+        viewer.layers.selection.active = layer
+        layer.selected_data = set()
+    following = getattr(dock, "_following", None)
+    wait(1.5)
+    while following is not None and following.busy:
+        wait(0.2)
+    wait(0.6)
+
+
 def save(viewer, path):
     """Write a picture of the whole window."""
     from PIL import Image
 
     pixels = viewer.screenshot(canvas_only=False, flash=False)[..., :3]
-    few = Image.fromarray(pixels).quantize(256, dither=Image.Dither.NONE)
+    few = Image.fromarray(pixels).quantize(
+        256, Image.Quantize.MAXCOVERAGE, dither=Image.Dither.NONE
+    )
     few.save(path, optimize=True)
     return pixels.shape
 
@@ -85,18 +110,22 @@ def save(viewer, path):
 def main():
     parser = argparse.ArgumentParser(description=__doc__)
     parser.add_argument("folder", type=Path, nargs="?", default=ROOT / "docs/images")
+    parser.add_argument("--all", action="store_true", help="the light theme, too")
     given = parser.parse_args()
     given.folder.mkdir(parents=True, exist_ok=True)
     viewer, docks = open_filled()
-    for theme in THEMES:
+    for theme in THEMES if given.all else THEMES[:1]:
         viewer.theme = theme
         for name, dock in docks.items():
-            raise_tab(dock)
-            wait()
-            file = given.folder / f"{name.lower().replace(' ', '_')}_{theme}.png"
+            stage(viewer, dock)
+            words = "".join(c if c.isalnum() else " " for c in name.lower()).split()
+            file = given.folder / f"{'_'.join(words)}_{theme}.png"
             shape = save(viewer, file)
             size = f"{file.stat().st_size / 1000:.0f} kB"
             print(f"{file.name}: {shape[1]} × {shape[0]}, {size}")  # noqa: T201
+    viewer.theme = "dark"
+    stage(viewer, docks["MTF"])
+    save(viewer, given.folder / "overview.png")
     viewer.close()
 
 

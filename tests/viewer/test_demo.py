@@ -72,7 +72,7 @@ def test_the_demo_fills_every_dock(make_napari_viewer, tmp_path, monkeypatch):
     assert len(session.records) == len(records)
     for name in {record.measurement for record in records}:
         own = [record for record in records if record.measurement == name]
-        drawn = viewer.layers[f"Regions: {find(name).title}"]
+        drawn = viewer.layers[find(name).title]
         assert drawn.nshapes == len(demo.regions_of(own))
     measured = set(session.answers)
     assert measured <= set(NAMES)

@@ -60,6 +60,33 @@ def test_a_hidden_dock_does_nothing_until_shown(dock, qtbot):
     qtbot.waitUntil(lambda: dock.refreshed == 2, timeout=2000)
 
 
+@pytest.mark.canvas
+def test_a_dock_behind_another_tab_sleeps(make_napari_viewer, qtbot):
+    """Qt does not hide it: it would go on measuring for nobody."""
+    viewer = make_napari_viewer(show=True)
+    first, second = Counting(viewer), Counting(viewer)
+    frames = [
+        viewer.window.add_dock_widget(one, name=name, area="right", tabify=name == "b")
+        for one, name in ((first, "a"), (second, "b"))
+    ]
+    qtbot.waitUntil(lambda: second.awake and not first.awake, timeout=3000)
+    frames[0].raise_()
+    qtbot.waitUntil(lambda: first.awake and not second.awake, timeout=3000)
+    qtbot.waitUntil(lambda: first.refreshed > 0, timeout=3000)
+    assert second.paused > 0
+    before = first.refreshed, second.refreshed
+    viewer.layers.events.reordered()  # napari calls reset_choices of every dock
+    for one in (first, second):
+        one.kick()
+    qtbot.waitUntil(lambda: first.refreshed > before[0], timeout=3000)
+    assert second.refreshed == before[1]
+    frames[1].raise_()
+    qtbot.waitUntil(lambda: second.refreshed > before[1], timeout=3000)
+    assert not first.awake
+    viewer.window.remove_dock_widget(frames[1])
+    assert not second.awake
+
+
 def test_a_proxy_is_the_viewer(qtbot, viewer_model):
     made = Counting(PublicOnlyProxy(viewer_model))
     qtbot.addWidget(made)

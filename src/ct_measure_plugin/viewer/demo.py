@@ -97,8 +97,7 @@ def draw_records(viewer: Any, image: Any, records: Sequence[Record]) -> dict[str
     for name in reversed(dict.fromkeys(record.measurement for record in records)):
         regions = regions_of(record for record in records if record.measurement == name)
         if regions:
-            title = find(name).title
-            found[name] = draw_regions(viewer, image, regions, f"Regions: {title}")
+            found[name] = draw_regions(viewer, image, regions, find(name).title)
     return found
 
 

@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
+import contextlib
 from typing import TYPE_CHECKING, Any
 
 from qtpy.QtCore import QSize, Qt, QTimer
-from qtpy.QtWidgets import QFrame, QScrollArea, QSizePolicy, QVBoxLayout, QWidget
+from qtpy.QtWidgets import QDockWidget, QFrame, QScrollArea, QSizePolicy, QVBoxLayout, QWidget
 
 from ct_measure_plugin.viewer.session import Session
 from ct_measure_plugin.viewer.theme import Colours, colours_of
@@ -43,6 +44,8 @@ class Dock(QWidget):
         self._timer.setInterval(_TICK_MS)
         self._timer.timeout.connect(self._tick)
         self._links: list[tuple[Any, Any]] = []
+        self._frame: QDockWidget | None = None
+        self._behind = False
 
         content = QWidget(self)
         self.body = QVBoxLayout(content)
@@ -98,7 +101,7 @@ class Dock(QWidget):
     def kick(self, *_: Any) -> None:
         """Ask for a refresh soon; the slot for anything that changed."""
         self._stale = True
-        if self.isVisible() and not self._timer.isActive():
+        if self.awake and not self._timer.isActive():
             self._timer.start()
 
     def refresh_now(self) -> None:
@@ -106,6 +109,11 @@ class Dock(QWidget):
         self._timer.stop()
         self._stale = False
         self.refresh()
+
+    @property
+    def awake(self) -> bool:
+        """True while someone can see the dock: shown, and not behind another tab."""
+        return self.isVisible() and not self._behind
 
     @property
     def colours(self) -> Colours:
@@ -121,22 +129,62 @@ class Dock(QWidget):
     def showEvent(self, event: QShowEvent) -> None:  # noqa: N802
         """Wake up."""
         super().showEvent(event)
-        self.recolour(self.colours)
-        if self._stale and not self._timer.isActive():
-            self._timer.start()
+        self._watch_frame()
+        self._wake()
 
     def hideEvent(self, event: QHideEvent) -> None:  # noqa: N802
         """Go to sleep; closing a dock in napari arrives here too."""
+        self._sleep()
+        super().hideEvent(event)
+
+    def _watch_frame(self) -> None:
+        """Follow the frame that napari put the dock into.
+
+        Qt does not hide a dock behind another tab, it moves it out of sight; only its frame tells.
+        """
+        frame: Any = self.parentWidget()
+        while frame is not None and not isinstance(frame, QDockWidget):
+            frame = frame.parentWidget()
+        if frame is self._frame:
+            return
+        if self._frame is not None:
+            with contextlib.suppress(RuntimeError):  # the frame may be gone with its window
+                self._frame.visibilityChanged.disconnect(self._on_frame)
+        self._frame = frame
+        self._behind = False
+        if frame is not None:
+            frame.visibilityChanged.connect(self._on_frame)
+            QTimer.singleShot(0, self, self._look_behind)  # when the tabs are laid out
+
+    def _look_behind(self) -> None:
+        """See where the frame stands already: that it fell behind may have been told before."""
+        tabbed = self._frame is not None and self._frame.parentWidget() is not None
+        if tabbed and self.isVisible() and self.visibleRegion().isEmpty():
+            self._on_frame(False)
+
+    def _on_frame(self, seen: bool) -> None:
+        self._behind = not seen
+        if seen:
+            self._wake()
+        else:
+            self._sleep()
+
+    def _wake(self) -> None:
+        if self.awake:
+            self.recolour(self.colours)
+            if self._stale and not self._timer.isActive():
+                self._timer.start()
+
+    def _sleep(self) -> None:
         self._timer.stop()
         self._stale = True
         self.pause()
-        super().hideEvent(event)
 
     def _tick(self) -> None:
-        if self.isVisible():
+        if self.awake:
             self.refresh_now()
 
     def _on_theme(self, event: Any = None) -> None:  # noqa: ARG002
-        if self.isVisible():
+        if self.awake:
             self.recolour(self.colours)
             self.kick()

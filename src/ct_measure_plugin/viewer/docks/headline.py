@@ -66,7 +66,7 @@ class _Tile(QWidget):
         super().__init__(parent)
         self.name, self.value, self.doubt = QLabel(), QLabel(), QLabel()
         # napari's own style sheet wins over a font
-        self.value.setStyleSheet(f"font-size: {_LARGE_PT}pt; padding: 0; margin: 0;")
+        self.value.setStyleSheet(f"font-size: {_LARGE_PT}pt; padding: 0 0 0 3px; margin: 0;")
         lines = QVBoxLayout(self)
         lines.setContentsMargins(0, 0, 0, 0)
         lines.setSpacing(0)
@@ -219,8 +219,8 @@ class Headline(QWidget):
             shown |= {k: v for k, v in quantities_of(answer).items() if k not in large}
         while len(self._cells) < len(shown):
             cells = QLabel(self._rest), QLabel(self._rest)
-            cells[0].setWordWrap(True)
-            cells[1].setAlignment(Qt.AlignmentFlag.AlignRight | Qt.AlignmentFlag.AlignBottom)
+            cells[0].setSizePolicy(QSizePolicy.Policy.Ignored, QSizePolicy.Policy.Preferred)
+            cells[1].setAlignment(Qt.AlignmentFlag.AlignRight)
             for column, label in enumerate(cells):
                 label.setTextFormat(Qt.TextFormat.PlainText)
                 self._grid.addWidget(label, len(self._cells), column)
@@ -230,6 +230,7 @@ class Headline(QWidget):
                 label.hide()
         for cells, (name, found) in zip(self._cells, shown.items(), strict=False):
             cells[0].setText(label_of(name))
+            cells[0].setToolTip(label_of(name))
             cells[1].setText(
                 " ".join(number_and_doubt(found)) if isinstance(found, Quantity) else "not measured"
             )

@@ -10,7 +10,7 @@ from ct_measure_plugin.errors import ArgumentError
 if TYPE_CHECKING:
     from pydicom.dataset import Dataset
 
-__all__ = ["OWN_SCHEME", "REGION", "Code", "LabelClass", "is_text", "own_code", "unit_code"]
+__all__ = ["OWN_SCHEME", "REGION", "Code", "LabelClass", "code_in", "is_text", "own_code"]
 
 #: designator of the codes that no standard has; PS3.16, 8.2: private ones begin with 99
 OWN_SCHEME: Final = "99CTMEASURE"
@@ -129,43 +129,9 @@ class LabelClass:
 
 
 def own_code(value: str, meaning: str) -> Code:
-    """Return a code of this package's own scheme."""
-    return Code(value, OWN_SCHEME, meaning[:_LONG])
-
-
-#: unit as this package writes it -> UCUM code and its name (PS3.16, CID 82; the HU is CID 83's)
-_UNITS: Final = {
-    "": ("1", "no units"),
-    "HU": ("[hnsf'U]", "Hounsfield unit"),
-    "mm": ("mm", "mm"),
-    "mm²": ("mm2", "mm2"),
-    "mm³": ("mm3", "mm3"),
-    "mm⁻¹": ("/mm", "/mm"),
-    "cm⁻¹": ("/cm", "/cm"),
-    "°": ("deg", "degree"),
-    "%": ("%", "percent"),
-    "px": ("{pixels}", "pixels"),
-    "keV": ("keV", "keV"),
-    "mGy": ("mGy", "mGy"),
-    "kV": ("kV", "kV"),
-    "g/cm³": ("g/cm3", "g/cm3"),
-}
-
-
-def unit_code(unit: str) -> Code:
-    """Return a unit as UCUM has it; one that it lacks becomes an annotation of a pure number.
-
-    Examples
-    --------
-    >>> unit_code("HU").value, unit_code("mm⁻¹").value, unit_code("HU²·mm²").value
-    ("[hnsf'U]", '/mm', '{HU2.mm2}')
-    """
-    known = _UNITS.get(unit)
-    if known is not None:
-        return Code(known[0], "UCUM", known[1])
-    plain = unit.translate(str.maketrans("²³⁴·", "234.")).replace("⁻", "-").replace("¹", "1")
-    plain = "".join(c for c in plain if c.isascii() and c.isprintable() and c not in "{}\\")
-    return Code(f"{{{plain[: _SHORT - 2]}}}", "UCUM", unit[:_LONG])
+    """Return a code of this package's own scheme; its meaning is cut to what DICOM can hold."""
+    plain = "".join(c if c.isprintable() and c != "\\" else " " for c in meaning)
+    return Code(value, OWN_SCHEME, plain[:_LONG].strip())
 
 
 def code_in(item: Dataset | None) -> Code | None:

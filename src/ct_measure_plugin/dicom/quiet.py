@@ -98,18 +98,25 @@ def unwarned() -> Iterator[None]:
 
 
 @contextmanager
-def contained(sentence: str) -> Iterator[None]:
-    """Let whatever the DICOM libraries raise become one sentence, and keep the rest back.
+def contained(sentence: str, *, nameless: bool = False) -> Iterator[None]:
+    """Let whatever the DICOM libraries raise become one sentence.
+
+    Parameters
+    ----------
+    sentence : str
+        What to say instead of their own text, which may quote the file.
+    nameless : bool
+        True if what they see holds nothing of a patient; their error is then kept as the cause.
 
     Raises
     ------
     SeriesError
-        With that sentence, without the libraries' own text or traceback, which may quote the file.
+        With that sentence.
     """
     with unwarned():
         try:
             yield
         except (CtMeasureError, MemoryError):
             raise
-        except Exception:  # noqa: BLE001 - they raise what they like
-            raise SeriesError(sentence) from None
+        except Exception as problem:  # noqa: BLE001 - they raise what they like
+            raise SeriesError(sentence) from problem if nameless else None

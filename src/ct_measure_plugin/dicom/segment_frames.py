@@ -73,8 +73,8 @@ class SegmentLink:
 
     Attributes
     ----------
-    sop_class, instance_uid : str
-        The segmentation object.
+    sop_class, instance_uid, series_uid : str
+        The segmentation object and its series.
     number : int
         The segment in it.
     tracking_uid, tracking_id : str
@@ -83,6 +83,7 @@ class SegmentLink:
 
     sop_class: str = field(repr=False)
     instance_uid: str = field(repr=False)
+    series_uid: str = field(repr=False)
     number: int
     tracking_uid: str = field(repr=False, default="")
     tracking_id: str = field(repr=False, default="")
@@ -135,6 +136,7 @@ class SegmentFrames:
     own: bool
     sop_class: str = field(repr=False)
     instance_uid: str = field(repr=False)
+    series_uid: str = field(repr=False)
     _image: Any = field(repr=False)
     _grid: Volume = field(repr=False)
     outside: int = 0
@@ -145,6 +147,7 @@ class SegmentFrames:
         return SegmentLink(
             self.sop_class,
             self.instance_uid,
+            self.series_uid,
             segment,
             str(item.get("TrackingUID", "")),
             str(item.get("TrackingID", "")),
@@ -222,7 +225,8 @@ def _opened(path: str | os.PathLike[str], grid: Volume) -> SegmentFrames:
     image = Segmentation.from_dataset(ds, copy=False)
     items: dict[int, Dataset] = {int(one.SegmentNumber): one for one in image.SegmentSequence}
     items.pop(0, None)  # the background of a label map
-    return SegmentFrames(items, own, str(image.SOPClassUID), str(image.SOPInstanceUID), image, grid)
+    names = (str(image.SOPClassUID), str(image.SOPInstanceUID), str(image.SeriesInstanceUID))
+    return SegmentFrames(items, own, *names, image, grid)
 
 
 def _segment_of(group: Dataset, shared: Dataset) -> int:

@@ -204,7 +204,7 @@ def written(path: str | os.PathLike[str], make: Callable[[], Dataset], facts: St
 
     target = Path(path)
     part = target.with_name(f".{target.name}.{os.getpid()}.part")
-    with contained("the DICOM object cannot be made from this series"):
+    with contained("the DICOM object cannot be made from this series", nameless=True):
         ds = make()
     try:
         with contained("the file cannot be written: an element cannot be encoded"):

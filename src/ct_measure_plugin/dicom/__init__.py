@@ -5,8 +5,8 @@ headers give reason for; segmentations in and out, measurements out. What it may
 errors, pydicom and its decoders, highdicom, numpy, dask for series larger than memory. What it must
 not do: measure, draw, or let anything out that identifies a patient. Names, birth dates, accession
 numbers and institutions are not read; UIDs leave as SHA-256 digests; file text never stands in an
-error. The one exception is :mod:`ct_measure_plugin.dicom.identity`: an object that is written for a series
-repeats its patient, as DICOM demands, and nothing else ever sees what is read for that.
+error. The one exception is :mod:`ct_measure_plugin.dicom.identity`: an object that is written for
+a series repeats its patient, as DICOM demands, and nothing else ever sees what is read for that.
 """
 
 from __future__ import annotations

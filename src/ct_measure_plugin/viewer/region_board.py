@@ -155,8 +155,14 @@ class RegionBoard:
         ]
 
     def placement(self) -> Placement | None:
-        """Return the first image's placement, None if there is none."""
-        return self._asked[0][0] if self._asked else None
+        """Return the first image's placement, None if there is none.
+
+        Raises
+        ------
+        ArgumentError
+            If the image cannot be measured as it is.
+        """
+        return self._session.placement(self.images[0]) if self.images else None
 
     def region(self, index: int) -> Region | None:
         """Return a region in the first image's frame."""

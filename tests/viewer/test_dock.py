@@ -69,9 +69,12 @@ def test_a_dock_behind_another_tab_sleeps(make_napari_viewer, qtbot):
         viewer.window.add_dock_widget(one, name=name, area="right", tabify=name == "b")
         for one, name in ((first, "a"), (second, "b"))
     ]
-    qtbot.waitUntil(lambda: second.awake and not first.awake, timeout=3000)
-    frames[0].raise_()
-    qtbot.waitUntil(lambda: first.awake and not second.awake, timeout=3000)
+
+    def in_front(frame, one, other):
+        frame.raise_()  # again and again: napari lays its window out step by step
+        return one.awake and not other.awake
+
+    qtbot.waitUntil(lambda: in_front(frames[0], first, second), timeout=5000)
     qtbot.waitUntil(lambda: first.refreshed > 0, timeout=3000)
     assert second.paused > 0
     before = first.refreshed, second.refreshed
@@ -80,9 +83,8 @@ def test_a_dock_behind_another_tab_sleeps(make_napari_viewer, qtbot):
         one.kick()
     qtbot.waitUntil(lambda: first.refreshed > before[0], timeout=3000)
     assert second.refreshed == before[1]
-    frames[1].raise_()
+    qtbot.waitUntil(lambda: in_front(frames[1], second, first), timeout=5000)
     qtbot.waitUntil(lambda: second.refreshed > before[1], timeout=3000)
-    assert not first.awake
     viewer.window.remove_dock_widget(frames[1])
     assert not second.awake
 

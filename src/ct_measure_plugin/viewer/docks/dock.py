@@ -6,7 +6,15 @@ import contextlib
 from typing import TYPE_CHECKING, Any
 
 from qtpy.QtCore import QSize, Qt, QTimer
-from qtpy.QtWidgets import QDockWidget, QFrame, QScrollArea, QSizePolicy, QVBoxLayout, QWidget
+from qtpy.QtWidgets import (
+    QComboBox,
+    QDockWidget,
+    QFrame,
+    QScrollArea,
+    QSizePolicy,
+    QVBoxLayout,
+    QWidget,
+)
 
 from ct_measure_plugin.viewer.session import Session
 from ct_measure_plugin.viewer.theme import Colours, colours_of
@@ -14,10 +22,16 @@ from ct_measure_plugin.viewer.theme import Colours, colours_of
 if TYPE_CHECKING:
     from qtpy.QtGui import QHideEvent, QShowEvent
 
-__all__ = ["Dock"]
+__all__ = ["Dock", "narrow"]
 
 #: Milliseconds between refreshes while something is dragged: 30 a second.
 _TICK_MS = 33
+
+
+def narrow(box: QComboBox) -> None:
+    """Let a box be narrower than its longest entry, as a layer's name may be."""
+    box.setSizeAdjustPolicy(QComboBox.SizeAdjustPolicy.AdjustToMinimumContentsLengthWithIcon)
+    box.setMinimumContentsLength(6)
 
 
 class Dock(QWidget):
@@ -129,6 +143,8 @@ class Dock(QWidget):
     def showEvent(self, event: QShowEvent) -> None:  # noqa: N802
         """Wake up."""
         super().showEvent(event)
+        for box in self.findChildren(QComboBox):
+            narrow(box)
         self._watch_frame()
         self._wake()
 

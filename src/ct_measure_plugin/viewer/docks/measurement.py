@@ -23,7 +23,7 @@ from ct_measure_plugin.viewer.docks.form import SettingsForm
 from ct_measure_plugin.viewer.docks.headline import Headline
 from ct_measure_plugin.viewer.docks.keeping import KeepingButtons
 from ct_measure_plugin.viewer.docks.layer_questions import LayerQuestions
-from ct_measure_plugin.viewer.docks.sources import Sources, narrow
+from ct_measure_plugin.viewer.docks.sources import Sources
 from ct_measure_plugin.viewer.following import Following
 from ct_measure_plugin.viewer.layers import questions_for, shows_slab
 from ct_measure_plugin.viewer.marks import Marks
@@ -108,7 +108,6 @@ class MeasurementDock(Dock):
         form = QFormLayout(holder)
         form.setContentsMargins(0, 0, 0, 0)
         self.which = QComboBox()
-        narrow(self.which)
         self.which.setAccessibleName("Measurement")
         for name in self._offered:
             self.which.addItem(find(name).title, name)

@@ -24,7 +24,7 @@ if TYPE_CHECKING:
     from ct_measure_plugin.measurements import RegionNeed
     from ct_measure_plugin.viewer.session import Session
 
-__all__ = ["Sources", "narrow"]
+__all__ = ["Sources"]
 
 #: napari's drawing mode for each kind of region that can be drawn, and what it is called.
 _TOOLS = {
@@ -74,14 +74,12 @@ class Sources(QWidget):
         self.images.setToolTip("Tick several to measure the same regions on each.")
         self.images.itemChanged.connect(self._ticked)
         self.regions = QComboBox()
-        narrow(self.regions)
         self.regions.setAccessibleName("Layer of regions")
         self.regions.currentIndexChanged.connect(self._emit)
         self.draw = QPushButton("Draw")
         self.draw.setToolTip("Draw a region; a layer for it is added if there is none.")
         self.draw.clicked.connect(self._draw_first)
         self.slices = QComboBox()
-        narrow(self.slices)
         self.slices.setAccessibleName("Slices")
         self.slices.addItems([_DRAWN, _AROUND, _ALL])
         self.slices.setToolTip("Regions that state their own slices keep them.")
@@ -201,12 +199,6 @@ class Sources(QWidget):
         self.changed.emit()
 
     _first = ""
-
-
-def narrow(box: QComboBox) -> None:
-    """Let a box be narrower than its longest entry."""
-    box.setSizeAdjustPolicy(QComboBox.SizeAdjustPolicy.AdjustToMinimumContentsLengthWithIcon)
-    box.setMinimumContentsLength(6)
 
 
 def _beside(first: QWidget, second: QWidget) -> QWidget:

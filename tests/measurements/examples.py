@@ -11,7 +11,7 @@ from typing import Any
 
 import numpy as np
 
-from ct_measure_plugin.physics.regions import Box, Disc, Region
+from ct_measure_plugin.physics.regions import Box, Disc, Labels, Region
 from ct_measure_plugin.physics.volume import Volume
 
 __all__ = ["EXAMPLES", "Example"]
@@ -65,6 +65,13 @@ def region_contrast() -> Example:
         moves_with_level=("object_mean", "background_mean"),
         rests_on_zero=("contrast", "snr", "attenuation_snr"),
     )
+
+
+def label_statistics() -> Example:
+    volume = _noise()
+    labels = np.zeros(volume.shape, np.uint8)
+    labels[:, 8:30, 8:30], labels[1, 36:56, 10:50] = 2, 5
+    return Example(volume, (Labels(labels, volume.spacing_mm),), scales_with_spacing={"size": 2})
 
 
 def noise_power() -> Example:
@@ -134,6 +141,7 @@ def disc_mtf() -> Example:
 EXAMPLES: dict[str, Callable[[], Example]] = {
     "region_statistics": region_statistics,
     "region_contrast": region_contrast,
+    "label_statistics": label_statistics,
     "noise_power": noise_power,
     "uniformity": uniformity,
     "edge_mtf": edge_mtf,

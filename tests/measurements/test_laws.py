@@ -10,9 +10,17 @@ import pytest
 from examples import EXAMPLES, Example
 
 from ct_measure_plugin.errors import CtMeasureError
-from ct_measure_plugin.measurements import NAMES, find, glance_each, measure
+from ct_measure_plugin.measurements import DRAWN, NAMES, find, glance_each, measure
 from ct_measure_plugin.measurements.base import Measurement, Settings
-from ct_measure_plugin.physics.regions import Box, Disc, Ellipse, Polygon, Region, Segment
+from ct_measure_plugin.physics.regions import (
+    Box,
+    Disc,
+    Ellipse,
+    Labels,
+    Polygon,
+    Region,
+    Segment,
+)
 from ct_measure_plugin.physics.results import Result, quantities_of
 from ct_measure_plugin.physics.volume import Volume
 
@@ -40,6 +48,10 @@ def example(request) -> Example:
 
 def test_every_measurement_has_an_example():
     assert set(EXAMPLES) == set(NAMES)
+
+
+def test_what_is_not_drawn_takes_label_maps():
+    assert set(NAMES) - set(DRAWN) == {n for n in NAMES if find(n).regions.kinds == ("labels",)}
 
 
 def test_the_input_is_untouched(example):
@@ -132,6 +144,8 @@ def turned(region: Region, side_mm: float) -> Region:
         return replace(region, **ends)
     if isinstance(region, Polygon):
         return replace(region, vertices_mm=tuple(point(p) for p in region.vertices_mm))
+    if isinstance(region, Labels):
+        return replace(region, labels=np.rot90(region.labels, axes=(1, 2)).copy())
     raise NotImplementedError(region.kind)
 
 
@@ -150,6 +164,9 @@ def test_a_quarter_turn_changes_nothing(example):
 
 def doubled(region: Region) -> Region:
     """Stretch a region to twice its size about the origin."""
+    if isinstance(region, Labels):
+        dz, dy, dx = region.spacing_mm
+        return replace(region, spacing_mm=(dz, 2 * dy, 2 * dx))
     names = {"center_mm", "radius_mm", "size_mm", "start_mm", "end_mm", "width_mm"}
     held = {f.name: getattr(region, f.name) for f in fields(region) if f.name in names}
     assert held

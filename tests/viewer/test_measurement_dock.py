@@ -10,7 +10,7 @@ from pathlib import Path
 import numpy as np
 import pytest
 
-from ct_measure_plugin.measurements import NAMES, find, measure
+from ct_measure_plugin.measurements import DRAWN, find, measure
 from ct_measure_plugin.physics.regions import Box
 from ct_measure_plugin.physics.results import curves_of, pictures_of
 from ct_measure_plugin.physics.tables import tables_of
@@ -48,7 +48,7 @@ def shift(layer, by):
     layer.data = [np.asarray(one) + by for one in layer.data]
 
 
-@pytest.mark.parametrize("name", NAMES)
+@pytest.mark.parametrize("name", DRAWN)
 def test_every_measurement_is_shown_whatever_it_answers(name, qtbot, viewer_model):
     """Numbers, curves and pictures are found by type; no measurement is known by name."""
     example = EXAMPLES[name]()

@@ -12,7 +12,9 @@ from __future__ import annotations
 
 from ct_measure_plugin.measurements.base import Measurement, RegionNeed, Settings
 from ct_measure_plugin.measurements.catalogue import (
+    DRAWN,
     NAMES,
+    expanded,
     find,
     glance_each,
     measure,
@@ -20,10 +22,12 @@ from ct_measure_plugin.measurements.catalogue import (
 )
 
 __all__ = [
+    "DRAWN",
     "NAMES",
     "Measurement",
     "RegionNeed",
     "Settings",
+    "expanded",
     "find",
     "glance_each",
     "measure",

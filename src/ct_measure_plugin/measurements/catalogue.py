@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, Any, cast
 from pydantic import ValidationError
 
 from ct_measure_plugin.errors import ArgumentError, UnknownNameError
-from ct_measure_plugin.physics.regions import Region
+from ct_measure_plugin.physics.regions import Labels, Region
 from ct_measure_plugin.physics.results import ResultGroup
 
 if TYPE_CHECKING:
@@ -19,12 +19,22 @@ if TYPE_CHECKING:
     from ct_measure_plugin.physics.results import NotMeasured, Result
     from ct_measure_plugin.physics.volume import Volume
 
-__all__ = ["NAMES", "find", "glance_each", "measure", "measure_each", "settings_for"]
+__all__ = [
+    "DRAWN",
+    "NAMES",
+    "expanded",
+    "find",
+    "glance_each",
+    "measure",
+    "measure_each",
+    "settings_for",
+]
 
 #: Public name -> class, in the file of that name. Adding a measurement adds a line.
 _CLASSES: dict[str, str] = {
     "region_statistics": "MeasureRegionStatistics",
     "region_contrast": "MeasureRegionContrast",
+    "label_statistics": "MeasureLabelStatistics",
     "noise_power": "MeasureNoisePower",
     "uniformity": "MeasureUniformity",
     "edge_mtf": "MeasureEdgeMtf",
@@ -33,6 +43,9 @@ _CLASSES: dict[str, str] = {
 }
 
 NAMES: tuple[str, ...] = tuple(_CLASSES)
+
+#: Those that measure what is drawn; the others take a whole label map.
+DRAWN: tuple[str, ...] = tuple(name for name in NAMES if name != "label_statistics")
 
 
 @cache
@@ -104,6 +117,27 @@ def glance_each(
     return _each(name, volume, regions, settings, moving=True)
 
 
+def expanded(name: str, regions: Sequence[Region]) -> tuple[Region, ...]:
+    """Return the regions with a label map as the masks of its labels, unless maps are measured.
+
+    >>> import numpy as np
+    >>> from ct_measure_plugin.physics.regions import Labels
+    >>> labels = Labels(np.array([[0, 2, 5]]), (1, 1, 1))
+    >>> [one.name for one in expanded("region_statistics", [labels])]
+    ['label 2', 'label 5']
+    >>> expanded("label_statistics", [labels]) == (labels,)
+    True
+    """
+    kinds = find(name).regions.kinds
+    found: list[Region] = []
+    for region in regions:
+        if isinstance(region, Labels) and "labels" not in kinds:
+            found += region.masks()
+        else:
+            found.append(region)
+    return tuple(found)
+
+
 def _each(
     name: str,
     volume: Volume,
@@ -115,7 +149,7 @@ def _each(
     measurement = find(name)
     settings = measurement.settings_type() if settings is None else settings
     ask = measurement.glance if moving else measurement.measure
-    group = (regions,) if isinstance(regions, Region) else tuple(regions)
+    group = expanded(name, (regions,) if isinstance(regions, Region) else regions)
     measurement.check_regions(group)
     if measurement.regions.together or not group:
         return (ask(volume, group, settings),)

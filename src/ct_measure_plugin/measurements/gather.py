@@ -18,7 +18,7 @@ if TYPE_CHECKING:
 
     Floats = NDArray[np.float64]
 
-__all__ = ["Gathered", "gather", "gather_enough", "shared"]
+__all__ = ["Gathered", "Lost", "gather", "gather_enough", "left_out", "shared"]
 
 #: Fewer pixels than this are refused: a spread from so few tells nothing (common practice).
 TOO_FEW_PIXELS = 9
@@ -118,10 +118,10 @@ def gather(volume: Volume, region: Region, *, rule: Rule = "area") -> Gathered |
             saturated = ((plane <= low) | (plane >= high)) & (weights[i] > 0)
             clipped += int(np.count_nonzero(saturated))
             weights[i][saturated] = 0.0
-    lost = _Lost(
+    lost = Lost(
         max(c.outside for _, c in covers), padded, clipped, beyond, int(np.count_nonzero(weights))
     )
-    cautions = (*volume.cautions, *_left_out(lost, region, volume))
+    cautions = (*volume.cautions, *left_out(lost, region, volume))
     if not weights.any():
         return NotMeasured(*_nothing(lost, region), cautions)
     if len(covers) == 1:
@@ -159,7 +159,7 @@ def _within(inner: slice, outer: slice) -> slice:
 
 
 @dataclass(frozen=True, slots=True)
-class _Lost:
+class Lost:
     """Share outside the image, and pixels left out as padding, saturated or beyond the range."""
 
     outside: float
@@ -169,7 +169,7 @@ class _Lost:
     kept: int
 
 
-def _nothing(lost: _Lost, region: Region) -> tuple[str, str]:
+def _nothing(lost: Lost, region: Region) -> tuple[str, str]:
     """Return why no pixel is left, and the remedy."""
     if lost.beyond and region.values is not None:
         low, high = region.values
@@ -178,7 +178,8 @@ def _nothing(lost: _Lost, region: Region) -> tuple[str, str]:
     return f"the region holds only {only}", "move it onto the image"
 
 
-def _left_out(lost: _Lost, region: Region, volume: Volume) -> list[Caution]:
+def left_out(lost: Lost, region: Region, volume: Volume) -> list[Caution]:
+    """Return the cautions that say what was left out of a region."""
     found = []
     if lost.outside > 0:
         found.append(

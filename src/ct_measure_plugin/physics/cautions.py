@@ -74,6 +74,7 @@ KINDS: dict[str, CautionKind] = {
     "padding-excluded": _warning("Padding inside the region was left out"),
     "outside-image": _warning("The region reaches outside the image"),
     "threshold": _note("Only a range of values counts"),
+    "labels-resampled": _note("The label map has another grid"),
     "regions-overlap": _warning("Object and background share pixels"),
     "unlike-sizes": _note("Object and background differ in size"),
     "few-pixels": _warning("Few pixels"),
@@ -97,6 +98,7 @@ KINDS: dict[str, CautionKind] = {
     "leaning-object": _warning("The object leans through the slices"),
     "coarse-sampling": _warning("Few samples across the width"),
     "resampled-profile": _note("A profile between pixels is interpolated"),
+    "slanted-average": _warning("The profile is averaged across a slanted edge"),
     # --- noise ----------------------------------------------------------------------
     "few-patches": _warning("Few patches"),
     "nonstationary-noise": _warning("The noise is not the same everywhere"),

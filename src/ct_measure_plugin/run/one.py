@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from ct_measure_plugin.errors import Cancelled
-from ct_measure_plugin.measurements import find, measure_each
+from ct_measure_plugin.measurements import expanded, find, measure_each
 from ct_measure_plugin.records import Record
 from ct_measure_plugin.run.preview import preview_of
 
@@ -57,6 +57,7 @@ def run_measurement(
     """
     measurement = find(name)
     settings = measurement.settings_type() if settings is None else settings
+    regions = expanded(name, regions)
     answers = measure_each(name, volume, regions, settings=settings)
     if measurement.regions.together or not regions:
         groups = [tuple(regions)]

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import ClassVar
 
-from ct_measure_plugin.measurements import NAMES
+from ct_measure_plugin.measurements import DRAWN
 from ct_measure_plugin.viewer.docks.measurement import MeasurementDock
 
 __all__ = ["AllMeasurementsDock"]
@@ -14,7 +14,7 @@ class AllMeasurementsDock(MeasurementDock):
     """Any measurement, by its title."""
 
     title: ClassVar[str] = "All measurements"
-    names: ClassVar[tuple[str, ...]] = NAMES
+    names: ClassVar[tuple[str, ...]] = DRAWN
 
     def __init__(self, viewer: napari.viewer.Viewer) -> None:  # type: ignore[name-defined] # noqa: F821
         super().__init__(viewer)

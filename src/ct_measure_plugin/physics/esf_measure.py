@@ -152,7 +152,7 @@ def jacobian_doubt(jacobian: Floats, spectrum: NoiseSpectrum) -> Floats:
 def noise_numbers(noise: float, independent: float, contrast: Quantity) -> dict[str, object]:
     """Return contrast, noise and their ratio as the named Quantities of a result."""
     doubt = noise / math.sqrt(2 * max(independent - 10.0, 1.0))
-    found = {
+    found: dict[str, object] = {
         "contrast": Quantity(abs(contrast.value), contrast.unit, contrast.uncertainty),
         "noise": Quantity(noise, contrast.unit, doubt),
     }

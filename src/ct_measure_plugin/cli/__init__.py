@@ -21,7 +21,9 @@ __all__ = ["BAD_INPUT", "DONE", "NOT_MEASURABLE", "TOLERANCE_FAILED", "main"]
 
 DONE, TOLERANCE_FAILED, BAD_INPUT, NOT_MEASURABLE = 0, 1, 2, 3
 
-_COMMANDS = ("demo", "series", "measure", "materials", "report", "logbook", "simulate")
+_COMMANDS = (
+    *("demo", "series", "measure", "materials", "convert", "report", "logbook", "simulate"),
+)
 
 
 def _parser() -> argparse.ArgumentParser:

@@ -11,7 +11,7 @@ from typing import Any
 
 import numpy as np
 
-from ct_measure_plugin.physics.regions import Box, Disc, Labels, Region
+from ct_measure_plugin.physics.regions import Box, Disc, Labels, Region, Segment
 from ct_measure_plugin.physics.volume import Volume
 
 __all__ = ["EXAMPLES", "Example"]
@@ -138,6 +138,20 @@ def disc_mtf() -> Example:
     )
 
 
+def line_profile() -> Example:
+    from truth_images import HANN, edge_image
+
+    noise = np.random.default_rng(5).normal(0, 12, (2, 56, 56))
+    values = np.rint(edge_image(HANN, shape=(56, 56), angle=5, contrast=900) + noise)
+    lengths = ("edge_width", "middle", "length")
+    return Example(
+        Volume(values.astype(np.int16), (2.0, 0.5, 0.5)),
+        (Segment((14.2, 4.0), (13.1, 24.0), width_mm=3.0),),
+        moves_with_level=("mean", "minimum", "maximum", "level"),
+        scales_with_spacing=dict.fromkeys(lengths, 1),
+    )
+
+
 EXAMPLES: dict[str, Callable[[], Example]] = {
     "region_statistics": region_statistics,
     "region_contrast": region_contrast,
@@ -146,5 +160,6 @@ EXAMPLES: dict[str, Callable[[], Example]] = {
     "uniformity": uniformity,
     "edge_mtf": edge_mtf,
     "disc_mtf": disc_mtf,
+    "line_profile": line_profile,
     "ct_number_line": ct_number_line,
 }

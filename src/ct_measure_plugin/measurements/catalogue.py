@@ -39,6 +39,7 @@ _CLASSES: dict[str, str] = {
     "uniformity": "MeasureUniformity",
     "edge_mtf": "MeasureEdgeMtf",
     "disc_mtf": "MeasureDiscMtf",
+    "line_profile": "MeasureLineProfile",
     "ct_number_line": "MeasureCtNumberLine",
 }
 

@@ -15,6 +15,7 @@ from ct_measure_plugin.physics.ct_number_line import CtNumberLine, ct_number_lin
 from ct_measure_plugin.physics.disc_mtf import DiscMtf, disc_mtf
 from ct_measure_plugin.physics.edge_mtf import EdgeMtf, edge_mtf
 from ct_measure_plugin.physics.label_statistics import LabelStatistics, label_statistics
+from ct_measure_plugin.physics.line_profile import LineProfile, line_profile
 from ct_measure_plugin.physics.noise_power import NoisePower, noise_power
 from ct_measure_plugin.physics.region_contrast import RegionContrast, region_contrast
 from ct_measure_plugin.physics.region_statistics import RegionStatistics, region_statistics
@@ -41,6 +42,7 @@ __all__ = [
     "EdgeMtf",
     "HeaderWindow",
     "LabelStatistics",
+    "LineProfile",
     "NoisePower",
     "NotMeasured",
     "Picture",
@@ -56,6 +58,7 @@ __all__ = [
     "disc_mtf",
     "edge_mtf",
     "label_statistics",
+    "line_profile",
     "noise_power",
     "region_contrast",
     "region_statistics",

@@ -14,6 +14,7 @@ The tree::
     │   ├── NoSeriesError                 nothing readable under the folder
     │   ├── SeriesChoiceError             several series; one must be chosen
     │   └── DecoderMissingError           the pixel encoding needs a package that is not installed
+    ├── LabelFileError                    a file of labels cannot be read
     ├── RecordError                       a record or logbook cannot be read or written
     └── Cancelled                         the user stopped the work
 
@@ -31,6 +32,7 @@ __all__ = [
     "CtMeasureError",
     "DecoderMissingError",
     "FaultsError",
+    "LabelFileError",
     "MaterialsError",
     "NoSeriesError",
     "PlanError",
@@ -144,6 +146,10 @@ class SeriesChoiceError(SeriesError):
 
 class DecoderMissingError(SeriesError):
     """The pixel encoding needs a package that is not installed; the text names its pip command."""
+
+
+class LabelFileError(CtMeasureError):
+    """A file of labels cannot be read, or does not fit the volume."""
 
 
 class RecordError(CtMeasureError):

@@ -99,6 +99,30 @@ def test_a_file_of_regions_is_measured_like_words(capsys, folder, tmp_path):
     assert "the regions lie in the frame of a plain array" in err
 
 
+def test_a_label_file_is_measured_as_a_table_or_label_by_label(capsys, folder, tmp_path):
+    volume = ctm.read_series(folder)
+    labels = np.zeros(volume.shape, np.uint8)
+    labels[1, 10:30, 10:30], labels[2:, 5:25, 40:60] = 1, 4
+    np.save(tmp_path / "a.npy", labels)
+    asked = ("--labels", tmp_path / "a.npy")
+    code, out, err = run(capsys, "measure", folder, "label_statistics", *asked)
+    assert (code, err) == (DONE, "")
+    own = volume.hu[labels == 4]
+    assert f"{own.size}" in out
+    code, out, _ = run(capsys, "measure", folder, "region_statistics", *asked, "--json")
+    assert code == DONE
+    found = json.loads(out)
+    assert [record["regions"][0]["name"] for record in found] == ["label 1", "label 4"]
+    assert found[1]["result"]["mean"]["value"] == pytest.approx(own.mean(), rel=1e-12)
+    table = tmp_path / "a.csv"
+    run(capsys, "measure", folder, "label_statistics", *asked, "--csv", table)
+    assert "labels.mean" in table.read_text(encoding="utf-8-sig")
+    np.save(tmp_path / "a.npy", labels[:2])
+    code, _, err = run(capsys, "measure", folder, "label_statistics", *asked)
+    assert code == BAD_INPUT
+    assert "a.npy has 2 × 64 × 64 voxels and the volume 4 × 64 × 64" in err
+
+
 def test_every_output_is_written(capsys, folder, tmp_path):
     names = ["t.csv", "r.json", "p.html", "b.sqlite"]
     csv, saved, page, book = (tmp_path / name for name in names)

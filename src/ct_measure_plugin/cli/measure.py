@@ -32,6 +32,13 @@ def add_parser(commands: argparse._SubParsersAction[argparse.ArgumentParser]) ->
         "--regions", action="append", default=[], metavar="FILE", help="a file of regions"
     )
     parser.add_argument(
+        "--labels",
+        action="append",
+        default=[],
+        metavar="FILE",
+        help="a label map: .npy, .npz, .tif or a DICOM Segmentation",
+    )
+    parser.add_argument(
         "--set", action="append", default=[], metavar="NAME=VALUE", help=SETTING_HELP
     )
     parser.add_argument(
@@ -70,7 +77,7 @@ def _volume(arguments: argparse.Namespace) -> Volume:
 
 def _plan(arguments: argparse.Namespace, volume: Volume) -> Plan:
     from ct_measure_plugin.measurements.catalogue import find, settings_for
-    from ct_measure_plugin.records import Plan, PlanStep, region_to_dict
+    from ct_measure_plugin.records import Plan, PlanStep, read_labels, region_to_dict
 
     kind = find(arguments.measurement).settings_type
     given = dict(setting_from_words(words, kind) for words in arguments.set)
@@ -78,6 +85,7 @@ def _plan(arguments: argparse.Namespace, volume: Volume) -> Plan:
     regions = [region_from_words(words, volume) for words in arguments.region]
     for file in arguments.regions:
         regions += _regions_of(file, volume)
+    regions += [read_labels(file, volume) for file in arguments.labels]
     step = PlanStep(
         measurement=arguments.measurement,
         settings=settings.model_dump(mode="json"),

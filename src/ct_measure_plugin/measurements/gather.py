@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from ct_measure_plugin.physics.coverage import Rule, plane_coverage, reach_of, slices_of
+from ct_measure_plugin.physics.regions import Mask
 from ct_measure_plugin.physics.results import Caution, NotMeasured
 
 if TYPE_CHECKING:
@@ -78,6 +79,13 @@ def gather(volume: Volume, region: Region, *, rule: Rule = "area") -> Gathered |
 
     NotMeasured if the region misses the volume or nothing is left.
     """
+    deep = isinstance(region, Mask) and region.inside.ndim == 3 and len(region.inside) > 1
+    if deep and not volume.evenly_spaced:
+        return NotMeasured(
+            "a mask over several slices has even ones, and the volume's are not",
+            "measure slice by slice, or the whole map with label_statistics",
+            volume.cautions,
+        )
     slices = slices_of(region, volume, rule=rule)
     positions = volume.positions_mm
     covers = []

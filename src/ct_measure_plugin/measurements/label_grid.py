@@ -55,6 +55,8 @@ def place_labels(region: Labels, volume: Volume) -> PlacedLabels:
     [[[1, 2]]]
     """
     labels = region.labels if region.labels.ndim == 3 else region.labels[None]
+    if _own(region, labels, volume):
+        return PlacedLabels(labels, list(range(len(labels))), resampled=False, outside=0.0)
     rows, columns = (
         _nearest(
             volume.origin_mm[axis] + volume.spacing_mm[axis] * np.arange(volume.shape[axis]),
@@ -70,13 +72,20 @@ def place_labels(region: Labels, volume: Volume) -> PlacedLabels:
         slices = slices_of(region, volume)
         stack = _Axis(np.zeros(volume.shape[0], np.intp), np.ones(volume.shape[0], bool), True)
     aligned = rows.aligned and columns.aligned and stack.aligned
-    whole = aligned and labels.shape == (len(slices), *volume.shape[1:])
-    if whole and rows.inside.all() and columns.inside.all() and region.labels.ndim == 3:
-        return PlacedLabels(labels, slices, resampled=False, outside=0.0)
     picked = labels[np.ix_(stack.index[slices], rows.index, columns.index)]
     picked[:, ~rows.inside] = 0
     picked[:, :, ~columns.inside] = 0
     return PlacedLabels(picked, slices, not aligned, _outside(labels, region, volume))
+
+
+def _own(region: Labels, labels: NDArray[Any], volume: Volume) -> bool:
+    """Tell whether a map lies on the volume's very voxels, however its slices are spaced."""
+    return (
+        region.labels.ndim == 3
+        and labels.shape == volume.shape
+        and bool(np.allclose(region.spacing_mm, volume.spacing_mm, rtol=1e-6))
+        and bool(np.allclose(region.origin_mm, volume.origin_mm, rtol=0, atol=1e-4))
+    )
 
 
 @dataclass(frozen=True, slots=True, eq=False)

@@ -8,6 +8,7 @@ it must not do: measure, draw, or hold anything that identifies a patient.
 from __future__ import annotations
 
 from ct_measure_plugin.records.exchange import read_json, write_csv, write_json
+from ct_measure_plugin.records.label_file import read_labels, write_labels
 from ct_measure_plugin.records.logbook import Logbook
 from ct_measure_plugin.records.plan import Plan, PlanStep, load_plan, save_plan
 from ct_measure_plugin.records.record import Preview, Record, SourceFacts
@@ -35,6 +36,7 @@ __all__ = [
     "judge",
     "load_plan",
     "read_json",
+    "read_labels",
     "read_regions",
     "region_from_dict",
     "region_to_dict",
@@ -42,5 +44,6 @@ __all__ = [
     "save_plan",
     "write_csv",
     "write_json",
+    "write_labels",
     "write_regions",
 ]

@@ -9,9 +9,9 @@ from typing import Any
 import numpy as np
 import pytest
 import series_writer as sw
+from identities import IDENTITY, MARK, OTHERS
 from pydicom import Dataset, dcmread
 from report_walker import Node, groups_of, tree_of
-from test_written_identity import IDENTITY, MARK, OTHERS
 
 from ct_measure_plugin.dicom import read_series, scan_series
 from ct_measure_plugin.dicom.codes import Code, LabelClass

@@ -9,6 +9,7 @@ from typing import Any
 import numpy as np
 import pytest
 import series_writer as sw
+from identities import IDENTITY, MARK, OTHERS
 from mutations import mutated, sample_of
 from pydicom import dcmread
 from pydicom.config import disable_value_validation
@@ -20,30 +21,6 @@ from ct_measure_plugin.errors import SeriesError
 SHAPE = (3, 8, 8)
 STORED = sw.noise(SHAPE)
 LABELS = (STORED > 500).astype(np.uint8)
-MARK = "QUMRAKX"
-IDENTITY = {
-    "PatientName": f"{MARK}^ANN^B^Dr",
-    "PatientID": f"{MARK}-7",
-    "IssuerOfPatientID": f"{MARK} ISSUER",
-    "PatientBirthDate": "19470317",
-    "PatientSex": "O",
-    "StudyDate": "20200229",
-    "StudyTime": "010203.5",
-    "StudyID": f"{MARK}1",
-    "AccessionNumber": f"{MARK}ACC",
-    "ReferringPhysicianName": f"{MARK}^DOC",
-    "StudyDescription": f"head of {MARK}",
-}
-#: attributes of the source that belong to its own acquisition and not to patient or study
-OTHERS = {
-    "InstitutionName": f"{MARK} HOSPITAL",
-    "OperatorsName": f"{MARK}^OPERATOR",
-    "PatientAddress": f"{MARK} STREET",
-    "PatientComments": MARK,
-    "DeviceSerialNumber": MARK,
-    "SeriesDescription": MARK,
-    "ProtocolName": MARK,
-}
 
 
 def entry_of(folder: Path, **changes: Any) -> Any:

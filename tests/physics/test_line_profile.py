@@ -203,6 +203,20 @@ def test_averaging_across_a_slanted_edge_is_cautioned():
     assert found.edge_width.value > 1.08 * straight.edge_width.value
 
 
+def test_a_straight_ridge_does_not_lean_though_it_has_two_flanks():
+    """Its middle lies as far from either flank; noise must not choose between them by line."""
+    x = np.arange(120) * 0.25
+    ridge = 300 * (ndtr((x - 12) / 0.4) - ndtr((x - 18) / 0.4))
+    image = np.tile(ridge, (40, 1)) + np.random.default_rng(3).normal(0, 10, (40, 120))
+    found = line_profile(image, [(5, 2), (5, 28)], spacing_mm=(0.25, 0.25), width_mm=6.0)
+    assert found.fwhm.value == pytest.approx(6.0, abs=0.1)
+    assert "slanted-average" not in {c.code for c in found.cautions}
+    turned = np.array([np.interp(x - 0.5 * 0.25 * i, x, ridge) for i in range(40)])
+    leaning = line_profile(turned, [(5, 2), (5, 28)], spacing_mm=(0.25, 0.25), width_mm=6.0)
+    (text,) = [c.text for c in leaning.cautions if c.code == "slanted-average"]
+    assert "26.6°" in text  # half a pixel along for each pixel across
+
+
 def test_a_width_of_few_pixels_is_cautioned():
     found = line_profile(edge(10, 1.0, 0.5), across(10, 1.0, 30), spacing_mm=(1.0, 1.0))
     assert "coarse-sampling" in {c.code for c in found.cautions}

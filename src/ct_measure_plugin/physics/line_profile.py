@@ -281,12 +281,17 @@ def _lean(path: PathPoints, lines: Floats, level: float, middle: Quantity | NotM
     """Return how far the crossing moves along the path a mm across it."""
     if len(lines) < 3 or not isinstance(middle, Quantity):
         return 0.0
+    whole, _ = crossings(path.distance, lines.mean(axis=0), level)
+    if not len(whole):
+        return 0.0
+    # one flank, the same in every line: a peak's middle lies as far from its other flank
+    flank = float(whole[int(np.argmin(np.abs(whole - middle.value)))])
     offsets, places = [], []
     for offset, line in zip(path.offset, lines, strict=True):
         at, _ = crossings(path.distance, line, level)
         if len(at):
             offsets.append(float(offset))
-            places.append(float(at[int(np.argmin(np.abs(at - middle.value)))]))
+            places.append(float(at[int(np.argmin(np.abs(at - flank)))]))
     if len(places) < 0.6 * len(lines) or np.ptp(offsets) == 0:
         return 0.0
     return float(np.polynomial.polynomial.polyfit(offsets, places, 1)[1])

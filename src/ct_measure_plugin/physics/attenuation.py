@@ -15,7 +15,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 from functools import lru_cache
 from types import MappingProxyType
-from typing import TYPE_CHECKING, TypeAlias
+from typing import TYPE_CHECKING, Literal, TypeAlias
 
 import numpy as np
 
@@ -40,6 +40,9 @@ __all__ = [
 
 #: A chemical formula, or element symbol -> weight fraction.
 Composition: TypeAlias = str | Mapping[str, float]
+
+#: Which interactions are counted.
+Kind: TypeAlias = Literal["total", "photo", "incoh", "coh"]
 
 #: Energies for which the table is asked, keV. The table reaches further; CT does not.
 ENERGY_RANGE_KEV = (1.0, 500.0)
@@ -81,11 +84,11 @@ def _fractions(composition: Composition) -> tuple[tuple[str, float], ...]:
 
 
 @lru_cache(maxsize=512)
-def _element(symbol: str, energies_kev: tuple[float, ...]) -> FloatArray:
+def _element(symbol: str, energies_kev: tuple[float, ...], kind: Kind) -> FloatArray:
     import xraydb
 
     try:
-        values = xraydb.mu_elam(symbol, 1000.0 * np.asarray(energies_kev), kind="total")
+        values = xraydb.mu_elam(symbol, 1000.0 * np.asarray(energies_kev), kind=kind)
     except (ValueError, KeyError) as error:
         raise ArgumentError("composition", "must name chemical elements", symbol) from error
     found = np.asarray(values, dtype=float)
@@ -93,7 +96,9 @@ def _element(symbol: str, energies_kev: tuple[float, ...]) -> FloatArray:
     return found
 
 
-def mass_attenuation(composition: Composition, energy_kev: ArrayLike) -> FloatArray:
+def mass_attenuation(
+    composition: Composition, energy_kev: ArrayLike, *, kind: Kind = "total"
+) -> FloatArray:
     """Return the mass attenuation coefficient μ/ρ.
 
     Parameters
@@ -102,11 +107,13 @@ def mass_attenuation(composition: Composition, energy_kev: ArrayLike) -> FloatAr
         A chemical formula ("C5H8O2"), or weight fractions by element symbol.
     energy_kev : array_like
         Photon energies.
+    kind : {"total", "photo", "incoh", "coh"}
+        All interactions, or one of them: photoelectric, incoherent or coherent scattering.
 
     Returns
     -------
     ndarray, shape of `energy_kev`
-        cm²/g, total cross-section with coherent scattering.
+        cm²/g; the total includes coherent scattering.
 
     Raises
     ------
@@ -127,7 +134,7 @@ def mass_attenuation(composition: Composition, energy_kev: ArrayLike) -> FloatAr
     flat = tuple(np.ravel(energies).tolist())
     total = np.zeros(len(flat))
     for symbol, share in _fractions(composition):
-        total += share * _element(symbol, flat)
+        total += share * _element(symbol, flat, kind)
     return total.reshape(energies.shape)
 
 

@@ -103,8 +103,8 @@ def public_texts(thing: Any, depth: int = 0) -> Iterator[str]:
     elif dataclasses.is_dataclass(thing):
         yield repr(thing)
         for name in dir(thing):
-            value = getattr(thing, name)
-            if not name.startswith("_") and not callable(value):
+            value = None if name.startswith("_") else getattr(thing, name)
+            if not callable(value):
                 yield from public_texts(value, depth + 1)
 
 

@@ -17,7 +17,7 @@ import lazy_loader
 if TYPE_CHECKING:
     from ct_measure_plugin import errors, physics
     from ct_measure_plugin.dicom import read_series, scan_series
-    from ct_measure_plugin.measurements import measure, measure_each
+    from ct_measure_plugin.measurements import compare, measure, measure_each
     from ct_measure_plugin.measurements.rod_layouts import find_rods
     from ct_measure_plugin.physics import regions
     from ct_measure_plugin.physics.results import (
@@ -38,7 +38,7 @@ _load, __dir__, _ = lazy_loader.attach(
     submodules={"errors", "physics"},
     submod_attrs={
         "dicom": ["read_series", "scan_series"],
-        "measurements": ["measure", "measure_each"],
+        "measurements": ["compare", "measure", "measure_each"],
         "measurements.rod_layouts": ["find_rods"],
         "physics": ["regions"],
         "physics.results": [
@@ -64,6 +64,7 @@ __all__ = [
     "Result",
     "ResultGroup",
     "Volume",
+    "compare",
     "errors",
     "find_rods",
     "measure",

@@ -12,7 +12,7 @@ from series_writer import line, noise, save, write_series
 
 import ct_measure_plugin as ctm
 from ct_measure_plugin.cli import BAD_INPUT, DONE, NOT_MEASURABLE, TOLERANCE_FAILED, main
-from ct_measure_plugin.measurements import find
+from ct_measure_plugin.measurements import compare, find
 from ct_measure_plugin.records import write_regions
 
 WATER = "disc center=6,6 radius=4 slice=1 name=water"
@@ -121,6 +121,30 @@ def test_a_label_file_is_measured_as_a_table_or_label_by_label(capsys, folder, t
     code, _, err = run(capsys, "measure", folder, "label_statistics", *asked)
     assert code == BAD_INPUT
     assert "a.npy has 2 × 64 × 64 voxels and the volume 4 × 64 × 64" in err
+
+
+def test_two_series_are_one_table_with_their_differences(capsys, folder, tmp_path):
+    values = noise((4, 64, 64), seed=9)
+    other = write_series(tmp_path / "later", values + 25, line(4))
+    asked = ("measure", folder, "region_statistics", "--region", WATER, "--against", other)
+    code, out, err = run(capsys, *asked, "--changes", tmp_path / "a.csv")
+    assert (code, err) == (DONE, "")
+    mean = next(text for text in out.splitlines() if text.strip().startswith("Mean "))
+    disc = ctm.regions.Disc((6, 6), 4, z_mm=float(ctm.read_series(folder).positions_mm[1]))
+    [found] = compare("region_statistics", ctm.read_series(folder), ctm.read_series(other), disc)
+    assert str(found.first.mean) in mean
+    assert str(found.second.mean) in mean
+    assert f"{found.differences['mean']} (paired)" in mean
+    rows = (tmp_path / "a.csv").read_text(encoding="utf-8-sig").splitlines()
+    assert rows[0].startswith("measurement,region,quantity,first,second,difference")
+    assert rows[1].startswith("region_statistics,water,mean,")
+    _, out, _ = run(capsys, *asked, "--json")
+    data = json.loads(out)
+    assert len(data["records"]) == 2
+    assert float(data["changes"][0]["difference"]) == found.differences["mean"].value
+    code, out, err = run(capsys, *asked[:-3], "disc center=900,6 radius=4", "--against", other)
+    assert code == NOT_MEASURABLE
+    assert "first: Not measured: the region lies outside" in out
 
 
 def test_every_output_is_written(capsys, folder, tmp_path):

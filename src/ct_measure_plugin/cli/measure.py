@@ -4,10 +4,11 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING
 
+from ct_measure_plugin.cli.against import add_against_options, measure_against, series_at
 from ct_measure_plugin.cli.outputs import add_output_options, deliver
 from ct_measure_plugin.cli.region_words import HELP, region_from_words
 from ct_measure_plugin.cli.setting_words import SETTING_HELP, ListMeasurements, setting_from_words
-from ct_measure_plugin.errors import ArgumentError, SeriesChoiceError
+from ct_measure_plugin.errors import ArgumentError
 
 if TYPE_CHECKING:
     import argparse
@@ -47,6 +48,7 @@ def add_parser(commands: argparse._SubParsersAction[argparse.ArgumentParser]) ->
         help="list every measurement with its settings, and stop",
     )
     parser.add_argument("--plan", metavar="FILE", help="a YAML or JSON plan instead of the above")
+    add_against_options(parser)
     add_output_options(parser)
     parser.set_defaults(run=run)
 
@@ -59,20 +61,11 @@ def run(arguments: argparse.Namespace) -> int:
     if bool(arguments.plan) == bool(arguments.measurement):
         raise ArgumentError("measurement", "must be given, or else --plan", arguments.measurement)
     plan = load_plan(arguments.plan) if arguments.plan else None
-    volume = _volume(arguments)
+    volume = series_at(arguments.series, arguments.index)
     plan = plan or _plan(arguments, volume)
+    if arguments.against:
+        return measure_against(plan, volume, arguments)
     return deliver(run_plan(plan, volume), arguments, plan)
-
-
-def _volume(arguments: argparse.Namespace) -> Volume:
-    from ct_measure_plugin.dicom import read_series, scan_series
-
-    if arguments.index is None:
-        return read_series(arguments.series)
-    entries = scan_series(arguments.series)
-    if not 0 <= arguments.index < len(entries):
-        raise SeriesChoiceError(f"there are {len(entries)} series; --index counts from 0")
-    return read_series(entries[arguments.index])
 
 
 def _plan(arguments: argparse.Namespace, volume: Volume) -> Plan:

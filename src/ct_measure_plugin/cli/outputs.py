@@ -35,8 +35,16 @@ def add_output_options(parser: argparse.ArgumentParser) -> None:
     )
 
 
-def deliver(records: Sequence[Record], arguments: argparse.Namespace, plan: Plan | None) -> int:
-    """Print and write the records, and return the exit code that they deserve."""
+def deliver(
+    records: Sequence[Record],
+    arguments: argparse.Namespace,
+    plan: Plan | None,
+    changes: Sequence[dict[str, str]] | None = None,
+) -> int:
+    """Print and write the records, and return the exit code that they deserve.
+
+    With rows of changes between two series, JSON holds both, and words are the caller's.
+    """
     from ct_measure_plugin.records import Logbook, write_csv, write_json
 
     if arguments.csv:
@@ -51,9 +59,11 @@ def deliver(records: Sequence[Record], arguments: argparse.Namespace, plan: Plan
         with Logbook(arguments.logbook or None) as book:
             book.add(records)
     if arguments.json:
-        data = [record.model_dump(mode="json", exclude={"preview"}) for record in records]
+        data: object = [record.model_dump(mode="json", exclude={"preview"}) for record in records]
+        if changes is not None:
+            data = {"records": data, "changes": changes}
         print(json.dumps(data, indent=1, ensure_ascii=False))
-    else:
+    elif changes is None:
         print_records(records, everything=arguments.all)
     return _code(records, plan, quiet=arguments.json)
 

@@ -20,13 +20,16 @@ from ct_measure_plugin.measurements.catalogue import (
     measure,
     measure_each,
 )
+from ct_measure_plugin.measurements.comparison import Comparison, compare
 
 __all__ = [
     "DRAWN",
     "NAMES",
+    "Comparison",
     "Measurement",
     "RegionNeed",
     "Settings",
+    "compare",
     "expanded",
     "find",
     "glance_each",

@@ -14,7 +14,7 @@ if TYPE_CHECKING:
     from collections.abc import Sequence
 
     from ct_measure_plugin.physics.regions import Region
-    from ct_measure_plugin.physics.results import NotMeasured, Result
+    from ct_measure_plugin.physics.results import NotMeasured, Quantity, Result
     from ct_measure_plugin.physics.volume import Volume
 
 __all__ = ["Measurement", "RegionNeed", "Settings"]
@@ -121,6 +121,20 @@ class Measurement(ABC):
         part of its answer that leaves out uncertainties and says so; the others measure in full.
         """
         return self.measure(volume, regions, settings)
+
+    def paired(
+        self,
+        first: Volume,  # noqa: ARG002 - overridden where pixels can be paired
+        second: Volume,  # noqa: ARG002
+        regions: Sequence[Region],  # noqa: ARG002
+        settings: Settings,  # noqa: ARG002
+    ) -> dict[str, Quantity]:
+        """Return differences, second less first, known better from the pixels of both volumes.
+
+        Asked only of volumes with their voxels at the same places; by field name, with the
+        uncertainty left when what both volumes share has cancelled.
+        """
+        return {}
 
     def check_regions(self, regions: Sequence[Region]) -> None:
         """Raise RegionError if the regions are not what this measurement takes."""

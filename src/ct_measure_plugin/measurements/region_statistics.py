@@ -5,10 +5,12 @@ from __future__ import annotations
 from dataclasses import replace
 from typing import TYPE_CHECKING, ClassVar, Literal, cast
 
+import numpy as np
 from pydantic import Field
 
 from ct_measure_plugin.measurements.base import BODIES, Measurement, RegionNeed, Settings
-from ct_measure_plugin.measurements.gather import gather_enough
+from ct_measure_plugin.measurements.gather import gather, gather_enough
+from ct_measure_plugin.physics.differences import paired_mean
 from ct_measure_plugin.physics.region_glance import RegionGlance, region_glance
 from ct_measure_plugin.physics.region_statistics import RegionStatistics, region_statistics
 from ct_measure_plugin.physics.results import NotMeasured, Result
@@ -17,6 +19,7 @@ if TYPE_CHECKING:
     from collections.abc import Sequence
 
     from ct_measure_plugin.physics.regions import Region
+    from ct_measure_plugin.physics.results import Quantity
     from ct_measure_plugin.physics.volume import Volume
 
 __all__ = ["MeasureRegionStatistics", "RegionStatisticsSettings"]
@@ -114,3 +117,19 @@ class MeasureRegionStatistics(Measurement):
             found.values, found.weights, spacing_mm=found.spacing_mm, unit=volume.unit
         )
         return replace(result, cautions=(*found.cautions, *result.cautions))
+
+    def paired(
+        self, first: Volume, second: Volume, regions: Sequence[Region], settings: Settings
+    ) -> dict[str, Quantity]:
+        """Return the difference of the means, from the differences of the pixels."""
+        rule = cast("RegionStatisticsSettings", settings).coverage
+        one, other = (gather(volume, regions[0], rule=rule) for volume in (first, second))
+        if isinstance(one, NotMeasured) or isinstance(other, NotMeasured):
+            return {}
+        alike = first.unit == second.unit and np.array_equal(one.weights, other.weights)
+        if not alike or not np.isfinite(one.values - other.values)[one.weights > 0].all():
+            return {}  # pixels were left out of one of them: the means are not of the same ones
+        mean = paired_mean(
+            one.values, other.values, one.weights, spacing_mm=one.spacing_mm, unit=first.unit
+        )
+        return {"mean": mean}

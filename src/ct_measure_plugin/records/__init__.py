@@ -7,6 +7,7 @@ it must not do: measure, draw, or hold anything that identifies a patient.
 
 from __future__ import annotations
 
+from ct_measure_plugin.records.changes import change_rows, write_changes
 from ct_measure_plugin.records.exchange import read_json, write_csv, write_json
 from ct_measure_plugin.records.label_file import read_labels, write_labels
 from ct_measure_plugin.records.logbook import Logbook
@@ -33,6 +34,7 @@ __all__ = [
     "SourceFacts",
     "Tolerance",
     "Verdict",
+    "change_rows",
     "judge",
     "load_plan",
     "read_json",
@@ -42,6 +44,7 @@ __all__ = [
     "region_to_dict",
     "regions_from_text",
     "save_plan",
+    "write_changes",
     "write_csv",
     "write_json",
     "write_labels",

@@ -13,7 +13,9 @@ from ct_measure_plugin.errors import ArgumentError, UnknownNameError
 from ct_measure_plugin.measurements.materials import SHIPPED, save_materials, shipped_materials
 from ct_measure_plugin.physics.attenuation import MATERIALS
 from ct_measure_plugin.physics.results import NotMeasured
-from ct_measure_plugin.physics.volume import Volume
+from ct_measure_plugin.physics.volume import Acquisition, Volume
+from ct_measure_plugin.virtual_scanner import tube_spectrum
+from ct_measure_plugin.virtual_scanner.hardening import WaterCalibration
 
 EXACT = tuple(
     entry.model_copy(update={"density_uncertainty_g_cm3": 0.0}) for entry in shipped_materials()
@@ -162,3 +164,47 @@ def test_further_uncertainty_makes_the_energy_less_certain():
     volume = ring_of_rods(noise=2.0)
     some, more = (line(volume, materials=EXACT, further_hu=u).effective_energy for u in (1.0, 4.0))
     assert more.uncertainty > 2 * some.uncertainty
+
+
+def in_air(volume, kvp=None):
+    """The rods in a cylinder of water of 25 mm radius, air around it."""
+    y, x = (0.5 * c for c in np.mgrid[: volume.shape[1], : volume.shape[2]])
+    middle = 0.25 * (volume.shape[1] - 1)
+    outside = np.hypot(y - middle, x - middle) > 25
+    facts = (Acquisition(kvp=kvp),) * volume.shape[0]
+    return replace(volume, hu=np.where(outside, -1000, volume.hu), acquisition=facts)
+
+
+def test_the_beams_quality_predicts_an_energy_beside_the_rods():
+    """The virtual scanner's beam of 120 kV behind 7 mm of aluminium and 42 mm of water, read by
+    thin rods; 0.85 x 50 mm is the mean path through the slice."""
+    beam = WaterCalibration(tube_spectrum(120.0, aluminium_mm=7.0), path_mm=42.4)
+    read = {name: beam.thin_insert_hu(MATERIALS[name], 42.4) for name in NAMES}
+    volume = in_air(ring_of_rods(hu=read, whole=False), kvp=120.0)
+    found = line(volume, materials=EXACT, filtration_mm_al=7.0)
+    assert found.beam_energy.value == pytest.approx(found.effective_energy.value, abs=0.5)
+    assert found.beam_water_energy.value == pytest.approx(beam.effective_kev, abs=0.5)
+    assert "beam-disagrees" not in codes(found)
+    told = line(replace(volume, acquisition=()), materials=EXACT, kvp=120.0, filtration_mm_al=7.0)
+    assert told.beam_energy == found.beam_energy
+    other = line(volume, materials=EXACT, kvp=80.0, filtration_mm_al=7.0)
+    assert "beam-disagrees" in codes(other)
+
+
+def test_a_path_that_is_entered_counts():
+    volume = in_air(ring_of_rods(noise=5.0), kvp=120.0)
+    thin, thick = (
+        line(volume, hvl_mm_al=7.0, path_mm=path).beam_energy.value for path in (50.0, 300.0)
+    )
+    assert thick > thin + 5.0
+
+
+def test_a_beam_that_cannot_be_is_said_and_the_line_stands():
+    found = line(in_air(ring_of_rods(noise=5.0), kvp=80.0), hvl_mm_al=12.0)
+    assert found.beam_energy is None
+    assert "beam-unknown" in codes(found)
+
+
+def test_without_a_tube_voltage_the_beam_cannot_be_asked():
+    with pytest.raises(ArgumentError, match="'kvp' must be given, since the header does not"):
+        line(ring_of_rods(noise=5.0), hvl_mm_al=7.0)

@@ -2,32 +2,31 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import replace
 from typing import TYPE_CHECKING, Any, ClassVar, cast
 
-import numpy as np
 from pydantic import Field, field_validator
 
 from ct_measure_plugin.errors import ArgumentError
 from ct_measure_plugin.measurements.base import AREAS, Measurement, RegionNeed, Settings
-from ct_measure_plugin.measurements.gather import gather
 from ct_measure_plugin.measurements.materials import (
     MaterialEntry,
     find_material,
     load_materials,
     shipped_materials,
 )
+from ct_measure_plugin.measurements.rod_beam import beam_of, disagreement
 from ct_measure_plugin.measurements.rod_layouts import (
     FoundRods,
     RodLayout,
     find_rods,
     load_layout,
 )
+from ct_measure_plugin.measurements.rod_set import at_temperature, doubt_of, read_rods
 from ct_measure_plugin.physics.attenuation import MATERIALS, Material
+from ct_measure_plugin.physics.beam_quality import BeamQuality, Detector
 from ct_measure_plugin.physics.ct_number_line import CtNumberLine, ct_number_line
-from ct_measure_plugin.physics.results import Caution, NotMeasured, Quantity, Result
-from ct_measure_plugin.physics.rod_mean import RodMean, rod_mean
-from ct_measure_plugin.physics.water import water_density
+from ct_measure_plugin.physics.results import Caution, NotMeasured, Result
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
@@ -36,9 +35,6 @@ if TYPE_CHECKING:
     from ct_measure_plugin.physics.volume import Volume
 
 __all__ = ["CtNumberLineSettings", "MeasureCtNumberLine"]
-
-#: Fewer pixels than this are refused: a spread from so few tells nothing (common practice).
-TOO_FEW_PIXELS = 9
 
 
 class CtNumberLineSettings(Settings):
@@ -102,6 +98,40 @@ class CtNumberLineSettings(Settings):
         json_schema_extra={"step": 0.0001},
     )
 
+    hvl_mm_al: float | None = Field(
+        None,
+        gt=0.0,
+        lt=60.0,
+        title="Half-value layer (mm Al)",
+        description="of the beam in air, measured; the energy that it predicts is then compared",
+    )
+    filtration_mm_al: float | None = Field(
+        None,
+        gt=0.0,
+        lt=60.0,
+        title="Filtration (mm Al)",
+        description="total filtration of the beam, where the half-value layer is not known",
+    )
+    kvp: float | None = Field(
+        None,
+        ge=40.0,
+        le=160.0,
+        title="Tube voltage (kV)",
+        description="where the header does not tell it",
+    )
+    path_mm: float | None = Field(
+        None,
+        ge=0.0,
+        le=800.0,
+        title="Water path (mm)",
+        description="water-equivalent path through the phantom; by default from the slice",
+    )
+    detector: Detector = Field(
+        "energy integrating",
+        title="Detector",
+        description="how it weighs photons, for the energy that the beam predicts",
+    )
+
     @field_validator("materials", mode="before")
     @classmethod
     def _read(cls, given: Any) -> Any:
@@ -124,15 +154,6 @@ class CtNumberLineSettings(Settings):
     def listed(self) -> tuple[MaterialEntry, ...]:
         """The list of materials in use."""
         return self.materials or shipped_materials()
-
-
-@dataclass(frozen=True, slots=True)
-class _Rod:
-    """A region with its material and what it reads."""
-
-    name: str
-    material: Material
-    read: RodMean
 
 
 class MeasureCtNumberLine(Measurement):
@@ -171,26 +192,29 @@ class MeasureCtNumberLine(Measurement):
             return replace(placed, cautions=volume.cautions)
         if placed is not None:
             regions = placed.regions
-        rods, cautions = _read_rods(volume, regions, _materials_of(regions, wanted))
-        library = [_at_temperature(entry.material(), wanted) for entry in wanted.listed]
+        rods, cautions = read_rods(volume, regions, _materials_of(regions, wanted))
+        temperature = wanted.water_temperature_c
+        materials = [at_temperature(rod.material, temperature) for rod in rods]
         found = ct_number_line(
             [rod.read.mean.value for rod in rods],
-            [_at_temperature(rod.material, wanted) for rod in rods],
-            hu_uncertainty=[_doubt(rod.read.mean, wanted) for rod in rods],
+            materials,
+            hu_uncertainty=[doubt_of(rod.read.mean, wanted.further_hu) for rod in rods],
             names=[rod.name for rod in rods],
-            library=library,
+            library=[at_temperature(entry.material(), temperature) for entry in wanted.listed],
             water=replace(MATERIALS["water"], density_g_cm3=wanted.scale_water_g_cm3),
         )
         said = (*volume.cautions, *cautions, *found.cautions)
-        if placed is None or isinstance(found, NotMeasured):
+        if isinstance(found, NotMeasured):
             return replace(found, cautions=said)
-        return replace(
-            found,
-            layout_rotation=placed.found.rotation,
-            layout_scale=placed.found.scale,
-            places=placed.found.rods,
-            cautions=(*placed.found.cautions, *said),
-        )
+        if placed is not None:
+            found = replace(
+                found,
+                layout_rotation=placed.found.rotation,
+                layout_scale=placed.found.scale,
+                places=placed.found.rods,
+            )
+            said = (*placed.found.cautions, *said)
+        return _beside_the_beam(replace(found, cautions=said), volume, regions, materials, wanted)
 
     def marks(
         self,
@@ -230,6 +254,39 @@ def _placed(
     )
 
 
+def _beside_the_beam(
+    found: CtNumberLine,
+    volume: Volume,
+    regions: Sequence[Region],
+    materials: Sequence[Material],
+    wanted: CtNumberLineSettings,
+) -> CtNumberLine:
+    """Return the line with the energy that the beam's quality predicts, if it was given."""
+    beam = beam_of(
+        volume,
+        regions,
+        materials,
+        kvp=wanted.kvp,
+        hvl_mm=wanted.hvl_mm_al,
+        filtration_mm=wanted.filtration_mm_al,
+        path_mm=wanted.path_mm,
+        detector=wanted.detector,
+    )
+    if isinstance(beam, BeamQuality):
+        return replace(
+            found,
+            beam_energy=beam.energy,
+            beam_water_energy=beam.water_energy,
+            cautions=(*found.cautions, *disagreement(found.effective_energy, beam)),
+        )
+    if beam is None:
+        return found
+    said = Caution(
+        "beam-unknown", f"No energy from the beam's quality: {beam.reason}.", beam.remedy
+    )
+    return replace(found, cautions=(*found.cautions, said))
+
+
 def _materials_of(regions: Sequence[Region], wanted: CtNumberLineSettings) -> tuple[Material, ...]:
     names = tuple(region.name for region in regions)
     if wanted.rods and wanted.layout is None:
@@ -237,61 +294,3 @@ def _materials_of(regions: Sequence[Region], wanted: CtNumberLineSettings) -> tu
     if len(names) != len(regions):
         raise ArgumentError("rods", f"must name {len(regions)} regions", len(names))
     return tuple(find_material(name, wanted.listed) for name in names)
-
-
-def _at_temperature(material: Material, wanted: CtNumberLineSettings) -> Material:
-    """Return water at its own temperature; other materials as they are."""
-    if wanted.water_temperature_c is None or material.composition != "H2O":
-        return material
-    density = water_density(wanted.water_temperature_c)
-    return replace(
-        material,
-        density_g_cm3=density.value,
-        density_uncertainty_g_cm3=density.uncertainty or 0.0,
-    )
-
-
-def _doubt(mean: Quantity, wanted: CtNumberLineSettings) -> float:
-    """Return a reading's uncertainty; that of exact and noise-free values is not quite 0."""
-    return float(np.hypot(np.hypot(mean.uncertainty or 0.0, wanted.further_hu), 1e-3))
-
-
-def _read_rods(
-    volume: Volume, regions: Sequence[Region], materials: Sequence[Material]
-) -> tuple[list[_Rod], list[Caution]]:
-    """Return every rod that can be read, and what is to be said of the others."""
-    rods: list[_Rod] = []
-    cautions: list[Caution] = []
-    for number, (region, material) in enumerate(zip(regions, materials, strict=True), start=1):
-        called = f"Rod {number} ({region.name or material.name})"
-        found = gather(volume, region)
-        own = () if isinstance(found, NotMeasured) else found.cautions[len(volume.cautions) :]
-        why = ""
-        if isinstance(found, NotMeasured):
-            why = found.reason
-        elif any(caution.code == "clipped-values" for caution in own):
-            why = "part of its values stands at the end of the stored range"
-        elif np.count_nonzero(found.weights) < TOO_FEW_PIXELS:
-            why = f"the region holds fewer than {TOO_FEW_PIXELS} pixels"
-        if isinstance(found, NotMeasured) or why:
-            cautions.append(
-                Caution(
-                    "rod-left-out",
-                    f"{called} was left out: {why}.",
-                    "Move the region onto its rod, or take it away.",
-                )
-            )
-            continue
-        read = rod_mean(found.values, found.weights, spacing_mm=found.spacing_mm)
-        cautions += [replace(caution, text=f"{called}: {caution.text}") for caution in own]
-        if read.uneven and read.step is not None:
-            cautions.append(
-                Caution(
-                    "rod-uneven",
-                    f"{called} reads {read.step} {'more' if read.step.value > 0 else 'less'} near"
-                    " its border than in its middle.".replace(" -", " "),
-                    "Draw the region smaller, well inside the rod.",
-                )
-            )
-        rods.append(_Rod(region.name or material.name, material, read))
-    return rods, cautions

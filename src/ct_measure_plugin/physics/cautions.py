@@ -119,5 +119,6 @@ KINDS: dict[str, CautionKind] = {
     "rod-placed": _note("A rod was placed by the layout"),
     "layout-scale": _warning("Distances differ from the layout's"),
     "beam-disagrees": _warning("Rods and beam quality disagree about the energy"),
+    "beam-unknown": _note("No energy from the beam's quality"),
     "mu-scale": _note("Attenuation converted from HU at one energy"),
 }

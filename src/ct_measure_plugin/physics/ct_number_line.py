@@ -17,6 +17,7 @@ from ct_measure_plugin.errors import ArgumentError
 from ct_measure_plugin.physics.attenuation import MATERIALS, Material
 from ct_measure_plugin.physics.results import Caution, Curve, NotMeasured, Quantity, Result
 from ct_measure_plugin.physics.rod_advice import VAGUEST_ENERGY_KEV, refusal_of, too_vague
+from ct_measure_plugin.physics.rod_cautions import cautions_of, surplus_of
 from ct_measure_plugin.physics.rod_fit import (
     ENERGIES_KEV,
     LineFit,
@@ -28,7 +29,7 @@ from ct_measure_plugin.physics.rod_fit import (
     energy_interval,
 )
 from ct_measure_plugin.physics.rod_layout import PlacedRod
-from ct_measure_plugin.physics.rod_readings import Readings, RodReading, readings_of
+from ct_measure_plugin.physics.rod_readings import RodReading, readings_of
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
@@ -36,12 +37,6 @@ if TYPE_CHECKING:
     from numpy.typing import ArrayLike
 
 __all__ = ["CtNumberLine", "PlacedRod", "RodReading", "ct_number_line"]
-
-#: Leverage beyond which one rod decides the line nearly alone.
-DECIDING_LEVERAGE = 0.7
-
-#: Probability of chi-squared below which a model is said not to describe the rods.
-MISFIT_PROBABILITY = 0.01
 
 #: Points of the drawn line.
 _LINE_POINTS = 101
@@ -64,9 +59,10 @@ class CtNumberLine(Result):
     scale_energy : Quantity or None
         Energy at which the rods agree best with the definition of the HU scale, nothing else free,
         keV. Where it differs from the effective energy, the scale itself is off.
-    beam_energy : Quantity or None
-        Effective energy from the beam's quality (tube voltage with half-value layer or
-        filtration), where that was given, keV.
+    beam_energy, beam_water_energy : Quantity or None
+        What the beam's quality predicts (tube voltage with half-value layer or filtration), where
+        that was given: the effective energy of these rods, and the energy at which μ of water
+        equals its mean over the beam, keV.
     slope : Quantity
         HU per cm⁻¹; 1000/μ_w by definition.
     intercept : Quantity
@@ -107,6 +103,7 @@ class CtNumberLine(Result):
     correlation_energy: Quantity | None
     scale_energy: Quantity | None
     beam_energy: Quantity | None = None
+    beam_water_energy: Quantity | None = None
     slope: Quantity
     intercept: Quantity
     contrast_scale: Quantity
@@ -200,85 +197,8 @@ def ct_number_line(
         return too_vague(rods, listed, None if fit is None else fit.u_energy)
     readings = readings_of(rods, fit, called, listed)
     scale = best_scale(rods)
-    cautions = _cautions(rods, fit, scale, readings)
+    cautions = cautions_of(rods, fit, scale, readings)
     return _result(rods, fit, scale, readings.rods, cautions)
-
-
-def _surplus(least: float, degrees: int) -> float:
-    """Return by what uncertainties must grow: 1 unless chi-squared is too large for chance."""
-    from scipy import stats
-
-    if degrees < 1 or stats.chi2.sf(least, degrees) >= MISFIT_PROBABILITY:
-        return 1.0
-    return math.sqrt(least / degrees)
-
-
-def _cautions(
-    rods: Rods, fit: LineFit, scale: ScaleFit | None, readings: Readings
-) -> tuple[Caution, ...]:
-    found = [
-        _outlier(number, rod, readings.without)
-        for number, rod in enumerate(readings.rods, 1)
-        if rod.reads_as
-    ]
-    degrees = len(rods.hu) - 3
-    others_agree = readings.without is not None and (
-        _surplus(readings.without.least, degrees - 1) == 1
-    )
-    if _surplus(fit.least, degrees) > 1 and not others_agree:
-        found.append(_misfit(fit, degrees))
-    if scale is None or _surplus(scale.least - fit.least, 2) > 1:
-        found.append(
-            Caution(
-                "scale-off",
-                "The rods do not lie on the line that defines the HU scale"
-                + (
-                    "."
-                    if scale is None
-                    else f": chi-squared is larger by {scale.least - fit.least:.0f} with slope and"
-                    " intercept held than with both free."
-                ),
-                "See the scale factor and the CT number of water on the line; calibrate the"
-                " scanner on water, and check densities.",
-            )
-        )
-    k = int(np.argmax(fit.leverage))
-    if fit.leverage[k] > DECIDING_LEVERAGE:
-        found.append(
-            Caution(
-                "one-rod-decides",
-                f"The {readings.rods[k].name} rod decides the line nearly alone (leverage"
-                f" {fit.leverage[k]:.2f}).",
-                "Judge by the residuals, not by a correlation coefficient.",
-            )
-        )
-    return tuple(found)
-
-
-def _misfit(fit: LineFit, degrees: int) -> Caution:
-    return Caution(
-        "one-energy-fails",
-        f"No single energy describes the rods: chi-squared {fit.least:.0f} for {degrees} degree"
-        f"{'s' * (degrees != 1)} of freedom. All uncertainties were multiplied by"
-        f" {_surplus(fit.least, degrees):.1f}.",
-        "Leave out materials of high atomic number, or check densities: a beam of many energies"
-        " hardens on its way through dense rods.",
-    )
-
-
-def _outlier(number: int, rod: RodReading, without: LineFit | None) -> Caution:
-    energy = ""
-    if without is not None:
-        energy = " Without it the energy is " + str(
-            Quantity(without.energy, "keV", without.u_energy)
-        )
-    return Caution(
-        "rod-reads-as-another",
-        f"Rod {number} reads as {rod.reads_as}, entered as {rod.material}"
-        f" ({rod.sigma:+.0f} standard uncertainties from the others' line; as {rod.material} its"
-        f" density would be {rod.density_read.value:.3f} g/cm³).{energy}" + "." * bool(energy),
-        "Check which rod it is, and its density.",
-    )
 
 
 def _result(
@@ -289,7 +209,7 @@ def _result(
     cautions: tuple[Caution, ...],
 ) -> CtNumberLine:
     degrees = len(rods.hu) - 3
-    surplus = _surplus(fit.least, degrees)
+    surplus = surplus_of(fit.least, degrees)
     fit = fit.widened(surplus)
     low, high = energy_interval(fit, surplus)
     residual = rods.hu - fit.at(fit.mu)
@@ -302,7 +222,7 @@ def _result(
     axis = ("μ", "cm⁻¹")
     scale_energy = None
     if scale is not None:
-        wider = _surplus(scale.least, len(rods.hu) - 1)
+        wider = surplus_of(scale.least, len(rods.hu) - 1)
         scale_energy = Quantity(scale.energy, "keV", scale.u_energy * wider)
     return CtNumberLine(
         effective_energy=Quantity(fit.energy, "keV", fit.u_energy),

@@ -71,6 +71,7 @@ def test_two_images_give_their_rows_and_the_difference(scene, pair):
     board.look()
     one, two, difference = board.rows
     assert [row.image for row in board.rows] == ["standard", "sharp", "sharp − standard"]
+    assert [row.mark for row in board.rows] == ["1", "2", "2 − 1"]
     assert two.answer.mean == measure(NAME, pair[1], board.drawn[0].region).mean
     assert difference.answer.mean.value == two.answer.mean.value - one.answer.mean.value
     apart = math.hypot(one.answer.mean.uncertainty, two.answer.mean.uncertainty)

@@ -7,6 +7,7 @@ import csv
 import numpy as np
 import pytest
 from qtpy.QtCore import Qt
+from qtpy.QtWidgets import QApplication
 
 from ct_measure_plugin.measurements import measure
 from ct_measure_plugin.physics.regions import Disc
@@ -34,10 +35,9 @@ def scene(qtbot, viewer_model, volume):
     viewer_model.dims.set_point(0, Z)
     dock = RegionStatisticsDock(viewer_model)
     qtbot.addWidget(dock)
-    dock._image.choices = (image,)
-    dock._shapes.choices = (layer,)
     dock.choose(image, layer)
-    return viewer_model, image, layer, dock
+    yield viewer_model, image, layer, dock
+    dock.board.stop()
 
 
 def draw(layer, volume, region, name="", k=2):
@@ -52,13 +52,14 @@ def test_the_table_shows_the_number_that_python_gives(scene, volume):
     draw(layer, volume, Disc((0.0, 24.0), 6.0), "water")
     dock.refresh_now()
     [row] = dock.model.rows
-    [drawn] = dock._drawn
+    [drawn] = dock.board.drawn
     direct = measure("region_statistics", volume, drawn.region)
     assert row.answer.mean == direct.mean
     assert row.name == "water"
-    assert dock.model.heading(1) == "Mean (HU)"
+    assert dock.model.columns[:3] == ("name", "class", "mean")
+    assert dock.model.heading(2) == "Mean (HU)"
     value, doubt = direct.mean.rounded()
-    assert dock.model.text(0, 1) == f"{value} ± {doubt}"
+    assert dock.model.text(0, 2) == f"{value} ± {doubt}"
 
 
 def test_moving_a_region_changes_its_row_only(scene, volume):
@@ -92,23 +93,57 @@ def test_rows_and_shapes_are_linked_both_ways(scene, volume):
     draw(layer, volume, Disc((0.0, 18.0), 4.0), k=1)
     draw(layer, volume, Disc((0.0, 30.0), 4.0), k=4)
     dock.refresh_now()
-    dock.table.selectRow(1)
+    dock.view.selectRow(1)
     assert layer.selected_data == {1}
+    assert viewer.layers.selection.active is layer
     assert round(viewer.dims.point[0], 6) == volume.positions_mm[4]
     layer.selected_data = {0}
-    assert dock.table.chosen() == [0]
+    assert dock.view.chosen() == [0]
+    assert round(viewer.dims.point[0], 6) == volume.positions_mm[4]  # the viewer leads here
 
 
-def test_a_name_is_edited_in_the_table(scene, volume):
+def column_of(dock, name):
+    return dock.model.columns.index(name)
+
+
+def test_names_classes_and_codes_are_edited_in_the_list(scene, volume):
     _, _, layer, dock = scene
     draw(layer, volume, Disc((0.0, 18.0), 4.0))
+    draw(layer, volume, Disc((0.0, 30.0), 4.0))
+    dock.model.want(dock.model.wanted, codes=True)
     dock.refresh_now()
-    cell = dock.model.index(0, 0)
-    assert dock.model.flags(cell) & Qt.ItemFlag.ItemIsEditable
-    assert dock.model.setData(cell, "spleen")
-    assert layer.features["name"].iloc[0] == "spleen"
+    for name, text in (("name", "spleen"), ("class", "organ"), ("code", "SCT:78961009")):
+        cell = dock.model.index(0, column_of(dock, name))
+        assert dock.model.flags(cell) & Qt.ItemFlag.ItemIsEditable
+        assert dock.model.setData(cell, f" {text} ")
+        assert list(layer.features[name]) == [text, ""]
+        dock.refresh_now()
+        assert dock.model.text(0, column_of(dock, name)) == text
+    assert dock.board.drawn[0].region.group == "organ"
+    number = dock.model.index(0, column_of(dock, "mean"))
+    assert not dock.model.flags(number) & Qt.ItemFlag.ItemIsEditable
+
+
+def test_a_class_is_given_to_all_the_chosen_and_a_name_to_one(scene, volume):
+    _, _, layer, dock = scene
+    for x in (14.0, 22.0, 30.0):
+        draw(layer, volume, Disc((0.0, x), 3.0))
     dock.refresh_now()
-    assert dock.model.text(0, 0) == "spleen"
+    layer.selected_data = {0, 2}
+    dock.model.setData(dock.model.index(2, 1), "rod")
+    assert list(layer.features["class"]) == ["rod", "", "rod"]
+    dock.model.setData(dock.model.index(2, 0), "third")
+    assert list(layer.features["name"]) == ["", "", "third"]
+
+
+def test_a_code_that_is_none_is_refused_below_the_list(scene, volume):
+    _, _, layer, dock = scene
+    draw(layer, volume, Disc((0.0, 18.0), 4.0))
+    dock.model.want(dock.model.wanted, codes=True)
+    dock.refresh_now()
+    dock.model.setData(dock.model.index(0, column_of(dock, "code")), "78961009")
+    assert "must be scheme:value" in dock.message.text()
+    assert "code" not in layer.features or list(layer.features["code"]) == [""]
 
 
 def test_what_cannot_be_measured_says_so_in_its_row(scene, volume):
@@ -117,20 +152,26 @@ def test_what_cannot_be_measured_says_so_in_its_row(scene, volume):
     draw(layer, volume, Disc((300.0, 300.0), 4.0))
     draw(layer, volume, Disc((0.0, 24.0), 0.4))
     dock.refresh_now()
-    texts = [dock.model.text(i, 1) for i in range(3)]
+    texts = [dock.model.text(i, dock.model.lead) for i in range(3)]
     assert "must not cross itself" in texts[0]
     assert "outside the volume" in texts[1]
     assert "at least 9 are needed" in texts[2]
     assert all(isinstance(row.answer, NotMeasured) for row in dock.model.rows)
 
 
-def test_the_copy_is_a_table_with_units(scene, volume):
+def test_the_copy_is_a_table_of_numbers_with_units(scene, volume):
+    """A spreadsheet takes unrounded numbers, the uncertainty in a column of its own."""
     _, _, layer, dock = scene
     draw(layer, volume, Disc((0.0, 24.0), 6.0), "water")
+    layer.add(np.array([[2, 5, 5], [2, 20, 20], [2, 20, 5], [2, 5, 20]]), shape_type="polygon")
     dock.refresh_now()
-    head, line = dock.model.as_text().splitlines()
-    assert head.startswith("Region\tMean (HU)\tSD (HU)\tn (px)\tArea (mm²)")
-    assert line.startswith("water\t")
+    dock.view.copy()
+    head, line, refused = (one.split("\t") for one in QApplication.clipboard().text().splitlines())
+    assert head[:6] == ["Region", "Class", "Mean (HU)", "u(Mean (HU))", "SD (HU)", "u(SD (HU))"]
+    mean = dock.model.rows[0].answer.mean
+    assert (line[0], float(line[2]), float(line[3])) == ("water", mean.value, mean.uncertainty)
+    assert refused[2].startswith("not measured: ")
+    assert len(head) == len(line) == len(refused)
 
 
 def test_what_is_exported_is_what_is_shown(scene, volume, tmp_path):
@@ -157,8 +198,6 @@ def test_a_foreign_layer_is_asked_about_and_the_result_says_so(qtbot, viewer_mod
     layer.add(np.array([[0, 20, 20], [0, 20, 40], [0, 40, 40], [0, 40, 20]]), shape_type="ellipse")
     dock = RegionStatisticsDock(viewer_model)
     qtbot.addWidget(dock)
-    dock._image.choices = (image,)
-    dock._shapes.choices = (layer,)
     dock.choose(image, layer)
     dock.refresh_now()
     assert not dock.model.rows
@@ -178,12 +217,10 @@ def test_layers_may_go_at_any_time(scene, volume):
     draw(layer, volume, Disc((0.0, 24.0), 6.0))
     dock.refresh_now()
     viewer.layers.remove(layer)
-    dock._shapes.choices = ()
     dock.reset_choices()
     dock.refresh_now()
     assert not dock.model.rows
     viewer.layers.remove(image)
-    dock._image.choices = ()
     dock.reset_choices()
     dock.refresh_now()
     assert "Open an image first" in dock.message.text()
@@ -208,8 +245,8 @@ def test_a_real_drag_is_followed(make_napari_viewer, qtbot, volume):
     dock = RegionStatisticsDock(viewer)
     viewer.window.add_dock_widget(dock, name="Region statistics")
     dock.choose(image)
-    dock._start_drawing()
-    layer = dock._shapes.value
+    dock.start_drawing()
+    layer = dock.choice.chosen_layer()
     assert str(layer.mode) == "add_ellipse"
     canvas = viewer.window._qt_viewer.canvas.native
     centre = canvas.rect().center()

@@ -2,11 +2,14 @@
 
 from __future__ import annotations
 
+import math
+from dataclasses import replace
 from typing import TYPE_CHECKING, Any, Literal
 
 import numpy as np
 
 from ct_measure_plugin.errors import ArgumentError, CtMeasureError
+from ct_measure_plugin.physics.regions import Ellipsoid
 from ct_measure_plugin.viewer import arranging
 from ct_measure_plugin.viewer.layer_frame import LayerFrame
 from ct_measure_plugin.viewer.outlines import Outline, add_outlines, outlines_of, put
@@ -19,6 +22,7 @@ from ct_measure_plugin.viewer.region_drawing import (
 from ct_measure_plugin.viewer.region_features import (
     CLASS,
     CODE,
+    ELLIPSOID,
     HIGH,
     LOW,
     NAME,
@@ -27,6 +31,7 @@ from ct_measure_plugin.viewer.region_features import (
     Z_LOW,
     ids_on,
     set_column,
+    tags_on,
 )
 from ct_measure_plugin.viewer.region_source import LabelSource
 from ct_measure_plugin.viewer.undo import Undo, change_outlines, change_voxels
@@ -147,21 +152,63 @@ class RegionActs:
         layer = self._layer()
         layer.selected_data = set(range(len(layer.data) - len(outlines), len(layer.data)))
 
+    def reshape_chosen(self, indices: Sequence[int], region: Region) -> None:
+        """Give the one chosen region another outline, on the slice that it is on.
+
+        Raises
+        ------
+        ArgumentError
+            If none or several are chosen.
+        """
+        if len(indices) != 1:
+            raise ArgumentError("regions", "must be one, chosen in the list", len(indices))
+        now = self._board.region(indices[0])
+        if isinstance(now, Ellipsoid) and isinstance(region, Ellipsoid):
+            z = now.z_mm
+        else:
+            frame = self._frame()
+            [outline] = self._outlines(indices)
+            k = round(float(frame.voxels(outline.corners)[:, 0].mean()))
+            positions = frame.placement.volume.positions_mm
+            z = float(positions[min(max(k, 0), len(positions) - 1)])
+        self.reshape(indices[0], replace(region, z_mm=z))
+
     def reshape(self, index: int, region: Region) -> None:
         """Give a region on the layer another outline, in mm; name and class stay its own."""
+        layer = self._layer()
         new = outline_of(region, self._frame())
-        [(number, old)] = outlines_of(self._layer(), [index]).items()
-        words = {NAME: "", CLASS: "", CODE: ""}
-        kept = {name: old.features.get(name, blank) for name, blank in words.items()}
-        after = Outline(new.corners, new.kind, old.looks, {**old.features, **kept})
-        self._change(
-            f"reshape {_count([index])}", [index], lambda: put(self._layer(), {number: after})
-        )
+        [(number, old)] = outlines_of(layer, [index]).items()
+        moved = Outline(new.corners, new.kind, old.looks)
+        self._change(f"reshape {_count([index])}", [index], lambda: put(layer, {number: moved}))
+        if isinstance(region, Ellipsoid):
+            self.reach([index], new.features[Z_LOW], new.features[Z_HIGH], ELLIPSOID)
+        else:
+            set_column(layer, SWEPT, {index: ""})
 
     def reach(self, indices: Sequence[int], low_mm: float, high_mm: float, swept: str = "") -> None:
         """Let regions reach over a range of slices, as a cylinder or swept to an ellipsoid."""
         for column, value in ((Z_LOW, low_mm), (Z_HIGH, high_mm), (SWEPT, swept)):
             set_column(self._layer(), column, dict.fromkeys(indices, value))
+
+    def reach_slices(
+        self, indices: Sequence[int], first: int, last: int, *, swept: bool = False
+    ) -> None:
+        """Let regions reach from one slice to another, counted from 0."""
+        positions = self._placement().volume.positions_mm
+        low, high = sorted(min(max(k, 0), len(positions) - 1) for k in (first, last))
+        ends = float(positions[low]), float(positions[high])
+        self.reach(indices, *ends, ELLIPSOID if swept else "")
+
+    def slices_of(self, index: int) -> tuple[int, int] | None:
+        """Return the first and the last slice that a region was told to reach over, or None."""
+        tags = tags_on(self._layer())
+        low, high = tags[index].z_mm if index < len(tags) else (math.nan, math.nan)
+        if math.isnan(low) and math.isnan(high):
+            return None
+        positions = self._placement().volume.positions_mm
+        known = np.clip([low, high], positions[0], positions[-1])
+        first, last = (int(np.argmin(np.abs(positions - z))) for z in known)
+        return first, last
 
     def count(self, indices: Sequence[int], low: float, high: float) -> None:
         """Let only a range of values count within regions; NaN for an open end."""

@@ -45,8 +45,8 @@ class Row:
         What people call the region, its class, and the class as "scheme:value".
     answer : Result or NotMeasured
         What was found.
-    image : str
-        Which image; "" where there is only one.
+    image, mark : str
+        Which image, by its name and in short: "1", "2", "2 − 1"; "" where there is only one.
     complete : bool
         False while only a glance, or nothing yet, is known of where the region now is.
     difference : bool
@@ -59,6 +59,7 @@ class Row:
     code: str
     answer: Result | NotMeasured
     image: str = ""
+    mark: str = ""
     complete: bool = True
     difference: bool = False
 
@@ -238,13 +239,16 @@ class RegionBoard:
         for i in range(len(self.drawn)):
             for k, column in enumerate(columns):
                 one = self._asked[k][1][i]
-                rows.append(self._row(one, column[i], names[k] if several else ""))
+                words = (names[k], str(k + 1)) if several else ("", "")
+                rows.append(self._row(one, column[i], words))
             for k, column in enumerate(differences, start=1):
-                words = f"{names[k]} − {names[0]}"
+                words = f"{names[k]} − {names[0]}", f"{k + 1} − 1"
                 rows.append(self._row(self.drawn[i], column[i], words, difference=True))
         return rows
 
-    def _row(self, one: Drawn, ask: Ask | None, image: str, *, difference: bool = False) -> Row:
+    def _row(
+        self, one: Drawn, ask: Ask | None, image: tuple[str, str], *, difference: bool = False
+    ) -> Row:
         answer: Result | NotMeasured | None
         if ask is None:
             answer, complete = NotMeasured(one.problem or "it is no region", "draw it again"), True
@@ -252,7 +256,7 @@ class RegionBoard:
             answer, complete = self.answers.known(ask), self.answers.complete(ask)
         return Row(
             one.index, one.name, one.group, one.code,
-            _WAITING if answer is None else answer, image, complete, difference,
+            _WAITING if answer is None else answer, *image, complete, difference,
         )  # fmt: skip
 
     def _regions(self, drawn: Sequence[Drawn]) -> tuple[Region, ...]:

@@ -1,259 +1,348 @@
-"""The dock of region statistics: a live table of whatever is drawn."""
+"""The dock of region statistics: a live list of whatever is drawn, painted or typed."""
 
 from __future__ import annotations
 
 from typing import TYPE_CHECKING, Any
 
-from magicgui.widgets import create_widget
 from qtpy.QtCore import QTimer
-from qtpy.QtWidgets import QFormLayout, QHBoxLayout, QLabel, QPushButton, QWidget
+from qtpy.QtWidgets import QLabel
 
 from ct_measure_plugin.errors import CtMeasureError
-from ct_measure_plugin.measurements import find, measure_each
-from ct_measure_plugin.physics.results import NotMeasured, Result
+from ct_measure_plugin.measurements import find
 from ct_measure_plugin.viewer.docks.dock import Dock
+from ct_measure_plugin.viewer.docks.fold import Fold
 from ct_measure_plugin.viewer.docks.form import SettingsForm
+from ct_measure_plugin.viewer.docks.headline import lines_about
 from ct_measure_plugin.viewer.docks.keeping import KeepingButtons
 from ct_measure_plugin.viewer.docks.layer_questions import LayerQuestions
-from ct_measure_plugin.viewer.docks.region_table import RegionTable, Row, TableModel
-from ct_measure_plugin.viewer.shapes import Drawn, drawn_on, new_regions_layer, rename, repair
+from ct_measure_plugin.viewer.docks.region_arranging import RegionArranging
+from ct_measure_plugin.viewer.docks.region_choice import RegionChoice
+from ct_measure_plugin.viewer.docks.region_doing import RegionDoing
+from ct_measure_plugin.viewer.docks.region_files import RegionFiles
+from ct_measure_plugin.viewer.docks.region_list import CLASS, CODE, RegionListModel
+from ct_measure_plugin.viewer.docks.region_plots import RegionPlots
+from ct_measure_plugin.viewer.docks.region_typing import RegionTyping
+from ct_measure_plugin.viewer.docks.region_view import RegionView
+from ct_measure_plugin.viewer.layers import questions_for
+from ct_measure_plugin.viewer.new_layers import layer_to_draw_on
+from ct_measure_plugin.viewer.region_acts import RegionActs
+from ct_measure_plugin.viewer.region_board import RegionBoard
+from ct_measure_plugin.viewer.region_features import checked_code
+from ct_measure_plugin.viewer.region_source import LabelSource, source_of
+from ct_measure_plugin.viewer.view import bring_into_view
 
 if TYPE_CHECKING:
-    from ct_measure_plugin.physics.regions import Region
-    from ct_measure_plugin.physics.volume import Volume
+    from collections.abc import Callable
+
     from ct_measure_plugin.viewer.theme import Colours
 
 __all__ = ["RegionStatisticsDock"]
 
 _NAME = "region_statistics"
-_LAYER_EVENTS = ("set_data", "data", "features", "highlight")
 
-#: Answers kept for regions that have not moved; a drag then measures one region, not all.
-_KEPT_ANSWERS = 512
+#: Seconds of a tick in which regions are measured; the rest of its 33 ms reads and paints.
+_BUDGET = 0.018
+
+#: Milliseconds of rest before answers go into the layer's features, and between looks at work in
+#: the background.
+_REST, _LOOK_AGAIN = 250, 300
+
+#: Milliseconds for which a chosen label is shown alone, so that it is seen where it is.
+_FLASH = 700
 
 
 class RegionStatisticsDock(Dock):
-    """Statistics of every shape on a Shapes layer, followed while it is dragged."""
+    """Statistics of every region on a layer of shapes, labels or points, followed as it changes."""
 
     def __init__(self, viewer: napari.viewer.Viewer) -> None:  # type: ignore[name-defined] # noqa: F821
         super().__init__(viewer)
         self._measurement = find(_NAME)
-        self._bound: Any = None
-        self._drawn: tuple[Drawn, ...] = ()
-        self._volume: Volume | None = None
-        self._memory: dict[tuple[Any, ...], Result | NotMeasured] = {}
-        self._linking = False
+        self._told = ""
+        self._images: tuple[Any, ...] = ()
+        self.board = RegionBoard(self.session, _NAME)
+        self.board.changed.connect(self.kick)
+        self.acts = RegionActs(self.board, self.viewer)
+        self._rest = self._single_shot(_REST, self._write_features)
+        self._again = self._single_shot(_LOOK_AGAIN, self.kick)
+        self._flash = self._single_shot(_FLASH, self._end_flash)
         self._build()
         self.listen(self.viewer.dims.events.point, self.kick)
         self.listen(self.session.asked_changed, self._forget)
         self.reset_choices()
 
+    def _single_shot(self, milliseconds: int, slot: Any) -> QTimer:
+        timer = QTimer(self)
+        timer.setSingleShot(True)
+        timer.setInterval(milliseconds)
+        timer.timeout.connect(slot)
+        return timer
+
     # --- building -------------------------------------------------------------------
 
     def _build(self) -> None:
-        self._image: Any = create_widget(annotation="napari.layers.Image", label="Image")
-        self._shapes: Any = create_widget(annotation="napari.layers.Shapes", label="Regions")
-        self.body.addLayout(self._choices())
+        self.choice = RegionChoice(self.session, self)
+        self.choice.changed.connect(self._rebind)
+        self.choice.draw_asked.connect(self.start_drawing)
         self.questions = LayerQuestions(self.session, self)
         self.questions.answered.connect(self._forget)
-        self.body.addWidget(self.questions)
-        self.form = SettingsForm(self._measurement.settings_type)
-        self.form.changed.connect(self._forget)
-        self.body.addWidget(self.form.native)
-        self.model = TableModel(self._measurement.columns, self)
-        self.table = RegionTable(self.model, self)
-        self.model.renamed.connect(self._rename)
-        self.table.selectionModel().selectionChanged.connect(self._row_chosen)
-        self.body.addWidget(self.table, stretch=1)
+        self.model = RegionListModel(_offered(self._measurement), self._measurement.columns, self)
+        self.model.edited.connect(self._edited)
+        self.view = RegionView(self.model, self)
+        self.view.chosen_changed.connect(self._row_chosen)
         self.message = QLabel()
         self.message.setWordWrap(True)
-        self.message.setAccessibleName("Cautions of the chosen region")
-        self.body.addWidget(self.message)
-        self.keeping = KeepingButtons(self.session, self._question, self)
-        self.keeping.copy.connect(self._copy)
-        self.body.addWidget(self.keeping)
+        self.message.setAccessibleName("What to know about the chosen region")
+        self.notes = QLabel()
+        self.notes.setWordWrap(True)
+        self.notes.setAccessibleName("Notes about the chosen region")
+        self.plots = RegionPlots(self)
+        self.form = SettingsForm(self._measurement.settings_type)
+        self.form.changed.connect(self.kick)
+        self.typing = RegionTyping(self.do, self._here, self)
+        self.arranging = RegionArranging(self.do, self.session, self)
+        self.files = RegionFiles(self.do, self.board, self.viewer, self)
+        self.files.told.connect(self._tell)
+        self.files.opened.connect(lambda layer: self.choose(regions=layer))
+        self.keeping = KeepingButtons(self.session, self.board.questions, self)
+        self.keeping.copy.connect(self.view.copy)
+        for part in (self.choice, self.questions):
+            self.body.addWidget(part)
+        self.body.addWidget(self.view, stretch=1)
+        self.doing = RegionDoing(self.do, self.acts.undo, self.view, self)
+        for part in (self.doing, self.message, *self._folds(), self.keeping):
+            self.body.addWidget(part)
 
-    def _choices(self) -> QFormLayout:
-        rows = QFormLayout()
-        for combo in (self._image, self._shapes):
-            combo.changed.connect(self._rebind)
-            combo.native.setAccessibleName(combo.label)
-        self._draw = QPushButton("Draw")
-        self._draw.setToolTip("Add a Shapes layer on the image and draw an ellipse")
-        self._draw.clicked.connect(self._start_drawing)
-        line = QHBoxLayout()
-        line.addWidget(self._shapes.native, stretch=1)
-        line.addWidget(self._draw)
-        image = QLabel("Image")
-        image.setBuddy(self._image.native)
-        regions = QLabel("Regions")
-        regions.setBuddy(self._shapes.native)
-        rows.addRow(image, self._image.native)
-        holder = QWidget()
-        line.setContentsMargins(0, 0, 0, 0)
-        holder.setLayout(line)
-        rows.addRow(regions, holder)
-        return rows
+    def _folds(self) -> list[Fold]:
+        found = []
+        for title, inside, shown in (
+            ("Histogram and slices", self.plots, True),
+            ("Notes", self.notes, False),
+            ("Add and edit by numbers", self.typing, False),
+            ("Arrange and copy", self.arranging, False),
+            ("Settings", self.form.native, False),
+            ("Files", self.files, False),
+        ):
+            fold = Fold(title, self)
+            fold.add(inside)
+            fold.open(shown)
+            found.append(fold)
+        return found
 
     # --- following the viewer -------------------------------------------------------
 
     def reset_choices(self, event: Any = None) -> None:
         """Look at the layers again; napari calls it whenever the layer list changes."""
-        self._image.reset_choices(event)
-        self._shapes.reset_choices(event)
-        self._rebind()
+        self.choice.look()
+        self.arranging.look()
+        super().reset_choices(event)
 
-    def choose(self, image: Any = None, shapes: Any = None) -> None:
-        """Measure the regions of one layer on another."""
-        if image is not None:
-            self._image.value = image
-        if shapes is not None:
-            self._shapes.value = shapes
-        self._rebind()
+    def choose(self, images: Any = (), regions: Any = None) -> None:
+        """Measure the regions of one layer on image layers; for programs and tests."""
+        chosen = tuple(images) if isinstance(images, list | tuple) else (images,)
+        self.choice.choose(chosen, regions)
 
-    def _rebind(self, *_: Any) -> None:
-        shapes = self._shapes.value
-        if shapes is not self._bound:
-            for name in _LAYER_EVENTS:
-                if self._bound is not None:
-                    self.unlisten(self._bound.events[name], self._layer_changed)
-                if shapes is not None:
-                    self.listen(shapes.events[name], self._layer_changed)
-            self._bound = shapes
-        self.questions.ask(self._image.value)
-        self._forget()
+    def _rebind(self) -> None:
+        layer, source = self.choice.chosen_layer(), self.board.source
+        if layer is not (None if source is None else source.layer):
+            if source is not None:
+                for name in (*source.events, source.selection_event):
+                    self.unlisten(source.layer.events[name], self._layer_changed)
+                source.close()
+            self.board.source = source = None if layer is None else source_of(layer, self.viewer)
+            if source is not None:
+                source.looked_through.changed.connect(self.kick)
+                for name in (*source.events, source.selection_event):
+                    self.listen(source.layer.events[name], self._layer_changed)
+        images = self.choice.chosen_images()
+        for image in self._images:
+            self.unlisten(image.events.data, self._forget)
+        for image in images:
+            self.listen(image.events.data, self._forget)
+        self._images = self.board.images = images
+        self.questions.ask(next((one for one in images if questions_for(one)), None))
+        self.kick()
 
     def _layer_changed(self, event: Any = None) -> None:
-        if getattr(event, "type", "") == "highlight":
-            self._shape_chosen()
+        source = self.board.source
+        if source is None:
             return
-        if self._bound is not None and len(self._bound.features) != self._bound.nshapes:
-            QTimer.singleShot(0, self._repair)
+        if getattr(event, "type", "") == source.selection_event:
+            self._region_chosen()
+            return
+        source.note(event)
+        if hasattr(source.layer, "nshapes") and len(source.layer.features) != source.layer.nshapes:
+            QTimer.singleShot(0, source.mend)
         self.kick()
-
-    def _repair(self) -> None:
-        # a shape that is being drawn has its row of features only when it is finished
-        if self._bound is not None and not getattr(self._bound, "_is_creating", False):
-            repair(self._bound)
 
     def _forget(self, *_: Any) -> None:
-        self._memory.clear()
+        self.board.answers.forget()
         self.kick()
+
+    def pause(self) -> None:
+        """Stop what runs while nobody looks."""
+        self._rest.stop()
+        self._again.stop()
+        self.board.stop()
 
     # --- measuring and showing ------------------------------------------------------
 
     def refresh(self) -> None:
-        """Measure what is drawn and show it."""
-        rows, said = self._rows()
-        if self.model.show(rows):
-            self.table.fit_columns()
-        self.keeping.setEnabled(bool(rows))
-        self.session.show_answers(_NAME, tuple(row.answer for row in rows))
-        self._say(said)
+        """Measure what is drawn, all of it, and show it."""
+        self._look(None)
 
-    def _rows(self) -> tuple[tuple[Row, ...], str]:
-        image, shapes = self._image.value, self._shapes.value
-        self._drawn, self._volume = (), None
-        if image is None:
-            return (), "Open an image first."
-        if shapes is None or not shapes.nshapes:
-            return (), "Press Draw, or choose a Shapes layer that holds regions."
-        try:
-            placement = self.session.placement(image)
-        except CtMeasureError as error:
-            return (), str(error)
-        self._volume = placement.volume
-        self._drawn = drawn_on(shapes, placement, self.viewer.dims.point)
-        return tuple(Row(one.name, self._answer(one)) for one in self._drawn), ""
+    def follow(self) -> None:
+        """Measure and show what can be within a tick; the rest comes with the next ones."""
+        self._stale = False
+        left = self._look(_BUDGET)
+        if left:
+            self.kick()
+        elif self.board.busy:
+            self._again.start()
 
-    def _answer(self, drawn: Drawn) -> Result | NotMeasured:
-        if drawn.region is None or self._volume is None:
-            return NotMeasured(drawn.problem, "draw it again")
-        key = (id(self._volume.hu), self._volume.spacing_mm, self._volume.unit, drawn.region)
-        if key not in self._memory:
-            if len(self._memory) >= _KEPT_ANSWERS:
-                self._memory.clear()
-            [found] = measure_each(_NAME, self._volume, drawn.region, settings=self.form.settings)
-            self._memory[key] = found
-        return self._memory[key]
+    def _tick(self) -> None:
+        if self.isVisible():
+            self.follow()
 
-    def _say(self, said: str) -> None:
-        chosen = self.table.chosen() or ([0] if len(self.model.rows) == 1 else [])
-        lines = [said] if said else []
-        for i in chosen[:1]:
-            answer = self.model.rows[i].answer
-            if isinstance(answer, NotMeasured):
-                lines.append(str(answer))
-            lines += [f"{c.kind.level.capitalize()}: {c}" for c in dict.fromkeys(answer.cautions)]
+    def _look(self, seconds: float | None) -> int:
+        self.board.settings = self.form.settings
+        first = {*self.view.chosen(), *self.view.in_sight()}
+        left = self.board.look(first, seconds)
+        chosen = self.view.chosen()
+        if self.model.show(self.board.rows):
+            self.view.fit_columns()
+            self.view.choose(chosen)
+        self.keeping.setEnabled(bool(self.board.rows))
+        self.session.show_answers(_NAME, tuple(row.answer for row in self.board.rows))
+        self._region_chosen()
+        self._show_chosen()
+        self._rest.start()
+        return left
+
+    def _write_features(self) -> None:
+        if not self.board.write_features() and not all(row.complete for row in self.board.rows):
+            self._rest.start()
+
+    def _show_chosen(self) -> None:
+        chosen = set(self.view.chosen())
+        alone = len({row.index for row in self.board.rows}) == 1
+        rows = [row for row in self.board.rows if row.index in chosen or alone]
+        self.plots.show_rows(rows)
+        source = self.board.source
+        busy = "Looking through the labels…" if source is not None and source.busy else ""
+        lines = [line for line in (self.board.said, busy, self._told) if line]
+        about: list[str] = []
+        if self.form.problem:
+            lines.append(f"{self.form.problem}. The settings before are used.")
+        if rows:
+            answer = rows[0].answer
+            lines += [] if answer else [str(answer)]
+            about = lines_about(answer)
+            lines += [line for line in about if line.startswith("Warning")]
         self.message.setText("\n".join(lines))
         self.message.setVisible(bool(lines))
+        self.notes.setText("\n".join(line for line in about if not line.startswith("Warning")))
+
+    def _tell(self, text: str) -> None:
+        self._told = text
+        self._show_chosen()
 
     def recolour(self, colours: Colours) -> None:
         """Take up the colours of a theme."""
-        self.message.setStyleSheet(f"color: {colours.text};")
-        self.table.recolour(colours)
+        for label in (self.message, self.notes):
+            label.setStyleSheet(f"color: {colours.text};")
+        self.view.recolour(colours)
+        self.plots.recolour(colours)
 
-    # --- the table and the shapes, linked both ways ---------------------------------
+    # --- list and layer, linked both ways -------------------------------------------
 
-    def _row_chosen(self, *_: Any) -> None:
-        if self._linking or self._bound is None:
+    def _row_chosen(self) -> None:
+        source, chosen = self.board.source, self.view.chosen()
+        if source is None:
             return
-        chosen = self.table.chosen()
-        self._linking = True
-        try:
-            self._bound.selected_data = {i for i in chosen if i < self._bound.nshapes}
-            if chosen and chosen[0] < len(self._drawn):
-                self._bring_into_view(self._drawn[chosen[0]].region)
-        finally:
-            self._linking = False
-        self._say("")
+        source.select(chosen)
+        region = self.board.region(chosen[0]) if chosen else None
+        if region is not None:
+            bring_into_view(self.viewer, region, self.session.placement(self._images[0]))
+            self._fill_fields(chosen[0])
+            if isinstance(source, LabelSource):
+                source.show_alone(alone=True)
+                self._flash.start()
+        self._told = ""
+        self._show_chosen()
 
-    def _bring_into_view(self, region: Region | None) -> None:
-        if region is None or not isinstance(region.z_mm, float):
-            return
-        placement = self.session.placement(self._image.value)
-        world = placement.world_of((region.z_mm, *placement.volume.origin_mm[1:]))
-        if placement.layer.ndim > 2 and self._bound.ndim > 2:
-            self.viewer.dims.set_point(self.viewer.dims.ndim - 3, world[-3])
+    def _fill_fields(self, index: int) -> None:
+        outlined = not isinstance(self.board.source, LabelSource)
+        slices = self.acts.slices_of(index) if outlined else None
+        self.typing.show_region(self.board.region(index), slices)
 
-    def _shape_chosen(self) -> None:
-        if self._linking or self._bound is None:
-            return
-        chosen = sorted(i for i in self._bound.selected_data if i < self.model.rowCount())
-        if chosen == self.table.chosen():
-            return
-        self._linking = True
-        try:
-            self.table.clearSelection()
-            for i in chosen[:1]:
-                self.table.selectRow(i)
-        finally:
-            self._linking = False
-        self._say("")
+    def _end_flash(self) -> None:
+        if isinstance(self.board.source, LabelSource):
+            self.board.source.show_alone(alone=False)
 
-    def _rename(self, row: int, name: str) -> None:
-        if self._bound is not None and row < self._bound.nshapes:
-            rename(self._bound, row, name)
+    def _region_chosen(self) -> None:
+        """Follow what was selected in the viewer."""
+        source = self.board.source
+        if source is None:
+            return
+        selected = source.selected()
+        if selected == set(self.view.chosen()) or not self.model.rows:
+            return
+        self.view.choose(selected)
+        if selected:
+            self._fill_fields(min(selected))
+        self._show_chosen()
+
+    def _edited(self, column: str, index: int, text: str) -> None:
+        chosen = self.view.chosen()
+        several = column in (CLASS, CODE) and index in chosen
+        indices = chosen if several else [index]
+
+        def act(*_: Any) -> None:
+            value = checked_code(text) if column == CODE else text
+            if self.board.source is not None:
+                self.board.source.write(column, dict.fromkeys(indices, value))
+
+        self.do(act)
 
     # --- doing ----------------------------------------------------------------------
 
-    def _start_drawing(self) -> None:
-        image = self._image.value
-        if image is None:
+    def do(self, act: Callable[[RegionActs, list[int]], Any]) -> bool:
+        """Do something to the chosen regions; a refusal is told below the list.
+
+        Returns whether it was done.
+        """
+        self._told = ""
+        try:
+            act(self.acts, self.view.chosen())
+        except CtMeasureError as error:
+            self._told = str(error)
+        except OSError as error:
+            self._told = f"The file cannot be used: {error.strerror}."
+        done = not self._told
+        self._show_chosen()
+        self.kick()
+        return done
+
+    def start_drawing(self, kind: str = "shapes", mode: str = "add_ellipse") -> None:
+        """Choose a layer of a kind to draw on, made if there is none, and the tool."""
+        if not self._images:
+            self._tell("Open an image first.")
             return
-        if self._shapes.value is None:
-            layer = new_regions_layer(self.viewer, image)
-            self.reset_choices()
-            self._shapes.value = layer
-        self.viewer.layers.selection.active = self._shapes.value
-        self._shapes.value.mode = "add_ellipse"
+        layer = layer_to_draw_on(self.viewer, self._images[0], kind, self.choice.chosen_layer())
+        self.choice.look()
+        self.choose(regions=layer)
+        self.viewer.layers.selection.active = layer
+        layer.mode = mode
 
-    def _question(self) -> tuple[Any, ...]:
-        """Return what the records are made of: name, volume, regions and settings."""
-        regions = tuple(one.region for one in self._drawn if one.region is not None)
-        return _NAME, self._volume, regions, self.form.settings
+    def _here(self) -> float:
+        placement = self.session.placement(self._images[0])
+        point = tuple(self.viewer.dims.point)[-placement.layer.ndim :]
+        return float(placement.volume.positions_mm[placement.plane_of(point)])
 
-    def _copy(self) -> None:
-        from qtpy.QtWidgets import QApplication
 
-        QApplication.clipboard().setText(self.model.as_text())
+def _offered(measurement: Any) -> tuple[str, ...]:
+    """Return the quantities of a measurement's result, those of its columns first."""
+    from dataclasses import fields
+
+    named = [one.name for one in fields(measurement.result_type) if "Quantity" in str(one.type)]
+    return tuple(dict.fromkeys([*measurement.columns, *named]))

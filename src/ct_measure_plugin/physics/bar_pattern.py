@@ -1,0 +1,3 @@
+"""Modulation of bar patterns, from the standard deviations of regions over their groups."""
+
+from __future__ import annotations

@@ -144,6 +144,25 @@ def test_negative_labels_and_wide_ones_are_labels_too():
     assert found.mean.tolist() == [2.0, 5.0]
 
 
+KINDS = {
+    0: ("i1", "u1", "i2", "u2", "i4", "u4", "i8", "u8", "f4"),
+    10**6: ("i4", "u4", "i8", "u8", "f4"),
+    10**12: ("i8", "u8", "f8"),
+}
+
+
+@pytest.mark.parametrize(("offset", "kind"), [(o, k) for o, kinds in KINDS.items() for k in kinds])
+def test_every_type_and_size_of_number_counts_alike(kind, offset):
+    rng = np.random.default_rng(44)
+    labels = scattered(rng, 6)
+    values = rng.integers(0, 100, labels.shape) + offset
+    found = label_numbers(values.astype(kind), labels)
+    for i, label in enumerate(found.label.tolist()):
+        own = values[labels == label]
+        assert (found.minimum[i], found.maximum[i]) == (own.min(), own.max())
+        assert found.mean[i] == pytest.approx(own.mean(), rel=1e-12)
+
+
 def test_values_without_a_number_are_counted():
     values = np.array([1.0, np.nan, 3.0, np.inf, np.nan, 7.0])
     found = label_numbers(values, np.array([1, 1, 1, 1, 2, 3]))

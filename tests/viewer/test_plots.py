@@ -84,11 +84,45 @@ def test_traces_come_and_go(plot):
     plot.show_traces([Trace("a", mtf()), Trace("b", mtf(doubt=None), 1, True)])
     assert len(plot._drawn) == 2
     assert not plot._drawn[1].band.isVisible()
-    count = len(plot._plot.items)
+    count, each = len(plot._plot.items), len(plot._drawn[0]._items())
     plot.show_traces([Trace("a", mtf())])
-    assert len(plot._plot.items) == count - 4
+    assert len(plot._plot.items) == count - each
     plot.show_traces([])
     assert plot.traces == ()
+
+
+def residuals():
+    x = np.array([0.0, 0.1, 0.3])
+    return Curve(x, 2 - x, np.full(3, 0.5), "μ", "cm⁻¹", "Residual", "HU", joined=False)
+
+
+def test_samples_that_stand_for_themselves_are_not_joined(plot):
+    plot.show_traces([Trace("a", residuals())])
+    [drawn] = plot._drawn
+    assert drawn.line.getData()[0] is None or not len(drawn.line.getData()[0])
+    assert drawn.points.getData()[1].tolist() == [2.0, 1.9, 1.7]
+    assert drawn.bars.isVisible()
+    plot.show_traces([Trace("a", mtf())])
+    assert len(drawn.line.getData()[0])
+    assert not drawn.bars.isVisible()
+    assert drawn.points.getData()[0] is None or not len(drawn.points.getData()[0])
+
+
+def test_a_fitted_curve_shows_what_it_was_fitted_to(plot):
+    x = np.linspace(0, 0.3, 50)
+    line = Curve(x, 2 - x, None, "μ", "cm⁻¹", "CT number", "HU", data=residuals())
+    plot.show_traces([Trace("a", line)])
+    [drawn] = plot._drawn
+    assert len(drawn.line.getData()[0]) == 50
+    assert len(drawn.points.getData()[0]) == 3
+    assert reading(line, 0.11) == (1, "0.1 cm⁻¹: 1.90 ± 0.50 HU")
+
+
+def test_energies_are_places_on_an_axis_of_energies():
+    curve = Curve(np.array([30.0, 140.0]), np.zeros(2), None, "Energy", "keV", "Misfit", "")
+    [tick] = ticks_of(curve, [("effective_energy", Quantity(70.0, "keV", 1.0)),
+                              ("slope", Quantity(80.0, "HU cm", 1.0))])  # fmt: skip
+    assert (tick.label, tick.x) == ("Effective energy", 70.0)
 
 
 def test_unknown_doubt_in_places_leaves_the_line_whole(plot):

@@ -81,14 +81,14 @@ class CtNumberLine(Result):
         Pearson's r of CT number and μ at the correlation energy.
     reduced_chi_squared : Quantity
         Chi-squared of the line over its degrees of freedom; 1 is expected.
-    points : Curve
-        CT number read against μ at the effective energy.
     line : Curve
-        The fitted line at that energy, with its standard uncertainty.
+        The fitted line against μ at the effective energy, with its standard uncertainty; its `data`
+        are the CT numbers read.
     residuals : Curve
         Distance from the line against μ.
     energy_curve, correlation_curve : Curve
-        Chi-squared of the best line, and the correlation, at every energy.
+        Misfit of the best line (the root of chi-squared per degree of freedom), and the
+        correlation, at every energy.
     rods : tuple of RodReading
         One a rod, in the order given.
     layout_rotation, layout_scale : Quantity or None
@@ -113,7 +113,6 @@ class CtNumberLine(Result):
     largest_residual: Quantity
     correlation: Quantity | None
     reduced_chi_squared: Quantity
-    points: Curve
     line: Curve
     residuals: Curve
     energy_curve: Curve
@@ -220,6 +219,8 @@ def _result(
     rows = np.stack([np.ones_like(along), along], axis=1)
     band = np.sqrt(np.einsum("ij,jk,ik->i", rows, fit.at_energy, rows))
     axis = ("μ", "cm⁻¹")
+    named = (*axis, "CT number", "HU")
+    points = Curve(mu, rods.hu[order], sigma, *named, joined=False)
     scale_energy = None
     if scale is not None:
         wider = surplus_of(scale.least, len(rods.hu) - 1)
@@ -232,10 +233,11 @@ def _result(
         **_line_numbers(rods, fit),
         largest_residual=Quantity(abs(float(residual[worst])), "HU", float(fit.sigma[worst])),
         reduced_chi_squared=Quantity(fit.least / degrees, "", math.sqrt(2.0 / degrees)),
-        points=Curve(mu, rods.hu[order], sigma, *axis, "CT number", "HU"),
-        line=Curve(along, fit.at(along), band, *axis, "CT number", "HU"),
-        residuals=Curve(mu, residual[order], sigma, *axis, "Residual", "HU"),
-        energy_curve=Curve(ENERGIES_KEV, fit.chi2, None, "Energy", "keV", "Chi-squared", ""),
+        line=Curve(along, fit.at(along), band, *named, data=points),
+        residuals=Curve(mu, residual[order], sigma, *axis, "Residual", "HU", joined=False),
+        energy_curve=Curve(
+            ENERGIES_KEV, np.sqrt(fit.chi2 / degrees), None, "Energy", "keV", "Misfit", ""
+        ),
         **_correlation(rods),
         rods=readings,
         cautions=cautions,

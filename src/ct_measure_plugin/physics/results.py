@@ -102,6 +102,10 @@ class Curve:
         Standard uncertainty of `y`, one sigma.
     x_name, x_unit, y_name, y_unit : str
         What the axes show; frequencies are in mm⁻¹, lengths in mm.
+    joined : bool
+        False for samples that stand for themselves: drawn as points, with nothing between them.
+    data : Curve or None
+        What a fitted curve was fitted to: drawn as points over it.
     """
 
     x: FloatArray
@@ -111,6 +115,8 @@ class Curve:
     x_unit: str = ""
     y_name: str = ""
     y_unit: str = ""
+    joined: bool = True
+    data: Curve | None = None
 
     def __post_init__(self) -> None:
         if len(self.x) != len(self.y):

@@ -19,6 +19,7 @@ from ct_measure_plugin.physics.regions import (
     Disc,
     Ellipse,
     Ellipsoid,
+    Labels,
     Mask,
     Polygon,
     Region,
@@ -66,13 +67,27 @@ def curve_svg(curve: Curve) -> str:
     with rc_context(_STYLE):
         figure = Figure(figsize=(3.6, 2.4), layout="constrained")
         axes = figure.add_subplot()
-        if curve.y_uncertainty is not None:
-            low, high = curve.y - curve.y_uncertainty, curve.y + curve.y_uncertainty
-            axes.fill_between(curve.x, low, high, color=_BAND, alpha=0.5, linewidth=0)
-        axes.plot(curve.x, curve.y, color=_INK, linewidth=1.2)
+        if not curve.joined:
+            axes.axhline(0.0, color=_BAND, linewidth=1.0)
+            _points(axes, curve)
+        else:
+            if curve.y_uncertainty is not None:
+                low, high = curve.y - curve.y_uncertainty, curve.y + curve.y_uncertainty
+                axes.fill_between(curve.x, low, high, color=_BAND, alpha=0.5, linewidth=0)
+            axes.plot(curve.x, curve.y, color=_INK, linewidth=1.2)
+        if curve.data is not None:
+            _points(axes, curve.data)
         axes.set_xlabel(_named(curve.x_name, curve.x_unit))
         axes.set_ylabel(_named(curve.y_name, curve.y_unit))
         return _svg(figure)
+
+
+def _points(axes: Axes, curve: Curve) -> None:
+    """Draw samples that stand for themselves, each with its one-sigma bar."""
+    axes.errorbar(
+        curve.x, curve.y, yerr=curve.y_uncertainty, fmt="o", color=_MARK, markersize=3.5,
+        elinewidth=1.0, capsize=2.0,
+    )  # fmt: skip
 
 
 def picture_svg(picture: Picture) -> str:
@@ -133,8 +148,11 @@ def _outline(axes: Axes, region: Region) -> tuple[float, float]:
         ends = np.asarray([region.start_mm, region.end_mm])
         axes.plot(ends[:, 1], ends[:, 0], color=_MARK, linewidth=1.3)
         return float(ends[:, 0].mean()), float(ends[:, 1].mean())
-    if isinstance(region, Mask):
-        flat = region.inside if region.inside.ndim == 2 else region.inside.any(axis=0)
+    if isinstance(region, Mask | Labels):
+        pixels = region.inside if isinstance(region, Mask) else region.labels != 0
+        flat = pixels if pixels.ndim == 2 else pixels.any(axis=0)
+        if not flat.any():
+            return 0.0, 0.0
         rows = region.origin_mm[1] + region.spacing_mm[1] * np.arange(flat.shape[0])
         columns = region.origin_mm[2] + region.spacing_mm[2] * np.arange(flat.shape[1])
         if min(flat.shape) > 1:

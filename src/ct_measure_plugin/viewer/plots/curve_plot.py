@@ -16,6 +16,7 @@ if TYPE_CHECKING:
 
     from qtpy.QtWidgets import QWidget
 
+    from ct_measure_plugin.physics.results import Curve
     from ct_measure_plugin.viewer.theme import Colours
 
 __all__ = ["CurvePlot"]
@@ -34,13 +35,24 @@ class _Drawn:
         self.low, self.high = pg.PlotDataItem(), pg.PlotDataItem()
         self.band = pg.FillBetweenItem(self.low, self.high)
         self.line = pg.PlotDataItem(connect="finite", antialias=True)
-        for item, z in ((self.low, 0), (self.high, 0), (self.band, 1), (self.line, 3)):
+        self.bars, self.points = pg.ErrorBarItem(), pg.PlotDataItem(pen=None, symbol="o")
+        for item, z in zip(self._items(), (0, 0, 1, 3, 4, 5), strict=True):
             item.setZValue(z)
             plot.addItem(item)
         self.low.setPen(None)
         self.high.setPen(None)
 
+    def _items(self) -> tuple[Any, ...]:
+        return self.low, self.high, self.band, self.line, self.bars, self.points
+
     def fill(self, trace: Trace, colour: QColor) -> None:
+        alone = trace.curve if not trace.curve.joined else trace.curve.data
+        self._fill_points(alone, colour, hollow=trace.frozen)
+        if not trace.curve.joined:
+            self.band.setVisible(False)
+            for item in (self.line, self.low, self.high):
+                item.setData([], [])
+            return
         x, y = np.asarray(trace.curve.x, float), np.asarray(trace.curve.y, float)
         style = Qt.PenStyle.DashLine if trace.frozen else Qt.PenStyle.SolidLine
         self.line.setPen(pg.mkPen(colour, width=_WIDTH, style=style))
@@ -63,8 +75,22 @@ class _Drawn:
         self.low.setData(x[known], (y - u)[known])
         self.high.setData(x[known], (y + u)[known])
 
+    def _fill_points(self, curve: Curve | None, colour: QColor, *, hollow: bool) -> None:
+        """Draw samples that stand for themselves, each with its bar."""
+        self.bars.setVisible(curve is not None and curve.y_uncertainty is not None)
+        if curve is None:
+            self.points.setData([], [])
+            return
+        x, y = np.asarray(curve.x, float), np.asarray(curve.y, float)
+        self.points.setData(x, y, symbol="o", symbolSize=7, pen=None)
+        self.points.setSymbolBrush(None if hollow else colour)
+        self.points.setSymbolPen(pg.mkPen(colour, width=1))
+        if curve.y_uncertainty is not None:
+            u = np.nan_to_num(np.asarray(curve.y_uncertainty, float))
+            self.bars.setData(x=x, y=y, top=u, bottom=u, pen=pg.mkPen(colour, width=1), beam=0.0)
+
     def remove_from(self, plot: Any) -> None:
-        for item in (self.low, self.high, self.band, self.line):
+        for item in self._items():
             plot.removeItem(item)
 
 
@@ -225,7 +251,8 @@ class CurvePlot(pg.PlotWidget):
             return
         x = float(self._plot.vb.mapSceneToView(position).x())
         index, text = reading(trace.curve, x)
-        self._cursor.setValue(float(trace.curve.x[index]))
+        told = trace.curve.data or trace.curve
+        self._cursor.setValue(float(told.x[index]))
         self._cursor.setVisible(True)
         self.read.emit(text)
 

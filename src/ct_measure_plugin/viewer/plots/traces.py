@@ -21,6 +21,9 @@ __all__ = ["Tick", "Trace", "axis_text", "end_of", "reading", "ticks_of"]
 #: may be a width, which is none.
 FREQUENCY = "mm⁻¹"
 
+#: Units of axes on which quantities of the same unit are places.
+PLACES = (FREQUENCY, "keV")
+
 #: How far beyond the Nyquist frequency an axis is shown.
 _BEYOND = 1.4
 
@@ -59,14 +62,14 @@ class Tick:
 
 
 def ticks_of(curve: Curve, quantities: Iterable[tuple[str, object]]) -> tuple[Tick, ...]:
-    """Return the quantities that are places on a curve's axis: frequencies on a frequency axis."""
-    if curve.x_unit != FREQUENCY or not len(curve.x):
+    """Return the quantities that are places on a curve's axis: frequencies, or energies."""
+    if curve.x_unit not in PLACES or not len(curve.x):
         return ()
     return tuple(
         Tick(label_of(name), found.value)
         for name, found in quantities
         if isinstance(found, Quantity)
-        and found.unit == FREQUENCY
+        and found.unit == curve.x_unit
         and curve.x[0] <= found.value <= curve.x[-1]
     )
 
@@ -94,8 +97,9 @@ def axis_text(name: str, unit: str) -> str:
 def reading(curve: Curve, x: float) -> tuple[int, str]:
     """Return the sample nearest to a place, and what it says in words.
 
-    The curve must have samples.
+    The curve must have samples. Of a fitted one, what it was fitted to is told.
     """
+    curve = curve.data or curve
     index = int(np.argmin(np.abs(np.asarray(curve.x) - x)))
     doubt = None if curve.y_uncertainty is None else float(curve.y_uncertainty[index])
     if doubt is not None and not np.isfinite(doubt):

@@ -16,6 +16,7 @@ from ct_measure_plugin.physics.regions import (
     Disc,
     Ellipse,
     Ellipsoid,
+    Labels,
     Mask,
     Polygon,
     Segment,
@@ -92,6 +93,18 @@ def test_every_kind_of_region_is_drawn(tmp_path):
     drawings = re.findall(r"<svg.*?</svg>", page, flags=re.DOTALL)
     # curves are drawn too, but only a slice with its region carries the colour of regions
     assert sum("#b3261e" in drawing for drawing in drawings) == len(regions)
+
+
+def test_a_label_map_is_drawn_and_its_labels_are_a_table(tmp_path):
+    volume = Volume(np.random.default_rng(1).normal(0, 9, (3, 64, 64)), (1, 1, 1))
+    labels = np.zeros((3, 64, 64), np.uint8)
+    labels[2, 20:30, 20:40], labels[2, 40:50, 5:15] = 3, 8
+    map_ = Labels(labels, (1, 1, 1), names=((8, "plug"),))
+    page = page_of(tmp_path, run_measurement("label_statistics", volume, [map_]))
+    assert "#b3261e" in page
+    assert "Slice at z = 2.00 mm" in page
+    assert "label 3" in page
+    assert "plug" in page
 
 
 def test_a_refusal_is_shown_with_its_remedy(tmp_path):

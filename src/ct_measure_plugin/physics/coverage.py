@@ -19,6 +19,7 @@ from ct_measure_plugin.physics.regions import (
     Disc,
     Ellipse,
     Ellipsoid,
+    Labels,
     Mask,
     Polygon,
     Region,
@@ -173,8 +174,13 @@ def _own_reach(region: Region) -> tuple[float, float] | None:
     """Return the lowest and highest z of a region whose form says it."""
     if isinstance(region, Ellipsoid) and isinstance(region.z_mm, int | float):
         return region.z_mm - region.z_radius_mm, region.z_mm + region.z_radius_mm
-    if isinstance(region, Mask) and region.inside.ndim == 3:
-        used = np.flatnonzero(region.inside.any(axis=(1, 2)))
+    pixels = region.inside if isinstance(region, Mask) else None
+    if isinstance(region, Labels):
+        pixels = region.labels
+    if isinstance(region, Mask | Labels) and pixels is not None and pixels.ndim == 3:
+        used = np.flatnonzero(pixels.any(axis=(1, 2)))
+        if not len(used):
+            return None
         step = region.spacing_mm[0]
         first = region.origin_mm[0] - step / 2
         return first + float(used[0]) * step, first + float(used[-1] + 1) * step

@@ -75,7 +75,7 @@ def ends_of(distance: Floats, profile: Floats, share: float, pixel: float) -> En
 
 def _detrended(x: Floats, y: Floats) -> Floats:
     if len(x) < 4:
-        return y - y.mean()
+        return np.asarray(y - y.mean())
     line = np.polynomial.polynomial.polyfit(x - x.mean(), y, 1)
     found: Floats = y - np.polynomial.polynomial.polyval(x - x.mean(), line)
     return found

@@ -83,7 +83,7 @@ def print_records(records: Sequence[Record], *, everything: bool = False) -> Non
     from ct_measure_plugin.physics.tables import tables_of
 
     for record in records:
-        print(f"{record.title}: {record.region_names}")
+        print(": ".join(filter(None, (record.title, record.region_names))))
         answer = record.answer()
         if isinstance(answer, NotMeasured):
             print(f"  {answer}")

@@ -124,19 +124,26 @@ def draw_regions(viewer: Any, image: Any, regions: Sequence[Region], name: str =
     import numpy as np
 
     from ct_measure_plugin.physics.coverage import slices_of
+    from ct_measure_plugin.physics.regions import Segment
+    from ct_measure_plugin.viewer.layer_frame import LayerFrame
     from ct_measure_plugin.viewer.region_features import Z_HIGH, Z_LOW, set_column
     from ct_measure_plugin.viewer.session import Session
     from ct_measure_plugin.viewer.shapes import new_regions_layer, rename, shape_of
 
     placement = Session.of(viewer).placement(image)
     layer = new_regions_layer(viewer, image, name)
+    frame = LayerFrame(layer, placement, viewer.dims.point)
     stand = None
     for region in regions:
         slices = slices_of(region, placement.volume)
         z = float(placement.volume.positions_mm[slices[len(slices) // 2]])
         corners, kind = shape_of(region)
         worlds = [placement.world_of((z, float(y), float(x))) for y, x in corners]
-        layer.add([np.array([layer.world_to_data(world) for world in worlds])], shape_type=kind)
+        drawn = np.array([layer.world_to_data(world) for world in worlds])
+        looks = {}
+        if isinstance(region, Segment) and region.width_mm > 0:
+            looks["edge_width"] = region.width_mm / frame.stretch
+        layer.add([drawn], shape_type=kind, **looks)
         rename(layer, layer.nshapes - 1, region.name)
         low, high = _ends(region.z_mm)
         set_column(layer, Z_LOW, {layer.nshapes - 1: low})

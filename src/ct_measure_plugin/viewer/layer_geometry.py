@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 import math
-from typing import TYPE_CHECKING, TypeAlias
+from functools import cache
+from typing import TYPE_CHECKING, Any, TypeAlias
 
 import numpy as np
 
@@ -37,10 +38,14 @@ def world_of_layer(layer: Image) -> tuple[Floats, Floats, Floats | None]:
 
 def world_in_mm(layer: Image) -> Floats | None:
     """Return the millimetres of one world unit along the last axes, None if any is no length."""
-    units = layer.units[-3:]
-    if any("[length]" not in unit.dimensionality for unit in units):
-        return None
-    return np.array([float((1.0 * unit).to("mm").magnitude) for unit in units])
+    factors = [_in_mm(unit) for unit in layer.units[-3:]]
+    return None if None in factors else np.array(factors)
+
+
+@cache
+def _in_mm(unit: Any) -> float | None:
+    """Return the millimetres of a unit, None if it is no length; asked at every tick of a drag."""
+    return float((1.0 * unit).to("mm").magnitude) if "[length]" in unit.dimensionality else None
 
 
 def geometry_of(layer: Image, entered_mm: Spacing | None) -> tuple[Spacing, Spacing, float, bool]:

@@ -261,6 +261,12 @@ class RegionActs:
         (_, dy, dx), (_, y, x) = volume.spacing_mm, volume.origin_mm
         return y + dy * (ny - 1) / 2, x + dx * (nx - 1) / 2
 
+    def here(self) -> float:
+        """Return the z of the slice shown, mm."""
+        placement = self._placement()
+        point = tuple(self._viewer.dims.point)[-placement.layer.ndim :]
+        return float(placement.volume.positions_mm[placement.plane_of(point)])
+
     # --- inside ---------------------------------------------------------------------
 
     def _layer(self) -> Any:

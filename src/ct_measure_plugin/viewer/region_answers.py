@@ -11,7 +11,7 @@ from __future__ import annotations
 
 import math
 import time
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -22,7 +22,7 @@ from ct_measure_plugin.measurements import find
 from ct_measure_plugin.measurements.two_images import difference_between
 from ct_measure_plugin.physics.coverage import slices_of
 from ct_measure_plugin.physics.region_difference import region_difference
-from ct_measure_plugin.physics.regions import Mask, Segment
+from ct_measure_plugin.physics.regions import Ellipsoid, Mask, Segment
 from ct_measure_plugin.physics.results import NotMeasured, Result
 from ct_measure_plugin.viewer.following import Following
 from ct_measure_plugin.viewer.shapes import shape_of
@@ -71,6 +71,14 @@ class Ask:
     region: Region
     settings: Settings
     other: Ask | None = None
+    _hash: int = field(init=False, compare=False, repr=False)
+
+    def __post_init__(self) -> None:
+        found = hash((id(self.volume), self.region, self.settings, self.other))
+        object.__setattr__(self, "_hash", found)
+
+    def __hash__(self) -> int:
+        return self._hash  # asked for many times a tick
 
     @property
     def alone(self) -> Ask:
@@ -278,7 +286,8 @@ def _ends(region: Region) -> tuple[float, float]:
 
 def _guess(ask: Ask) -> float:
     """Return a first guess of a region's cost: by its slices and their pixels, in seconds."""
-    slices = max(len(slices_of(ask.region, ask.volume)), 1)
+    single = isinstance(ask.region.z_mm, float) and not isinstance(ask.region, Ellipsoid | Mask)
+    slices = 1 if single else max(len(slices_of(ask.region, ask.volume)), 1)
     return _EACH * slices + _PIXEL * _pixels(ask, slices)
 
 

@@ -186,12 +186,13 @@ class NoRegionError(Exception):
 
 
 def _region(outline: _Outline, tags: Tags, volume: Volume, name: str) -> Region:
-    slices = np.rint(outline.voxels[:, 0]).astype(int)
-    if len(set(slices.tolist())) > 1:
+    slices = {round(float(k)) for k in outline.voxels[:, 0]}
+    k = slices.pop()
+    if slices:
         raise NoRegionError("its corners lie on different slices")
-    if not 0 <= slices[0] < volume.shape[0]:
+    if not 0 <= k < volume.shape[0]:
         raise NoRegionError("it lies above or below the volume")
-    at = float(volume.positions_mm[slices[0]])
+    at = float(volume.positions_mm[k])
     words = {"z_mm": extent_of(tags, at, volume), "name": name, **tags.words()}
     step, origin = np.asarray(volume.spacing_mm[1:]), np.asarray(volume.origin_mm[1:])
     corners = outline.voxels[:, 1:] * step + origin
@@ -257,14 +258,23 @@ def _ellipse(corners: Floats, words: dict[str, Any]) -> Region:
     axes, whatever stretches the image's pixels bring.
     """
     center, u, v = _halves(corners)
-    directions, radii, _ = np.linalg.svd(np.stack([u, v], axis=1))
-    if radii[1] <= 0:
+    long, short, (y, x) = _half_axes(u, v)
+    if short <= 0:
         raise NoRegionError("it has no area")
-    if radii[0] - radii[1] <= _ROUNDING * radii[0]:
-        return Disc(center, float(radii.mean()), **words)
-    y, x = directions[:, 0]
+    if long - short <= _ROUNDING * long:
+        return Disc(center, (long + short) / 2, **words)
     angle = math.degrees(math.atan2(-y, x)) % 180.0
-    return Ellipse(center, (float(radii[1]), float(radii[0])), angle, **words)
+    return Ellipse(center, (short, long), angle, **words)
+
+
+def _half_axes(u: Floats, v: Floats) -> tuple[float, float, tuple[float, float]]:
+    """Return the longer and the shorter half axis, and the direction (y, x) of the longer one."""
+    long, short = math.hypot(*u), math.hypot(*v)
+    if abs(float(u @ v)) <= 1e-9 * long * short:  # at right angles: they are the half axes
+        (long, direction), (short, _) = sorted(((long, u), (short, v)), key=lambda one: -one[0])
+        return long, short, _pair(direction)
+    directions, radii, _ = np.linalg.svd(np.stack([u, v], axis=1))
+    return float(radii[0]), float(radii[1]), _pair(directions[:, 0])
 
 
 def _rectangle(corners: Floats, words: dict[str, Any]) -> Region:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import fields
 from typing import TYPE_CHECKING, Any
 
 from qtpy.QtCore import QAbstractTableModel, QModelIndex, Qt, Signal
@@ -10,10 +11,11 @@ from qtpy.QtGui import QColor
 from ct_measure_plugin.physics.results import NotMeasured, label_of
 
 if TYPE_CHECKING:
+    from ct_measure_plugin.measurements import Measurement
     from ct_measure_plugin.viewer.region_board import Row
     from ct_measure_plugin.viewer.theme import Colours
 
-__all__ = ["CLASS", "CODE", "IMAGE", "NAME", "RegionListModel"]
+__all__ = ["CLASS", "CODE", "IMAGE", "NAME", "RegionListModel", "offered_by"]
 
 NAME, CLASS, CODE, IMAGE = "name", "class", "code", "image"
 
@@ -26,6 +28,12 @@ _TIPS = {
 }
 
 _FLAG = Qt.ItemFlag
+
+
+def offered_by(measurement: Measurement) -> tuple[str, ...]:
+    """Return the quantities of a measurement's result, those of its columns first."""
+    named = [one.name for one in fields(measurement.result_type) if "Quantity" in str(one.type)]
+    return tuple(dict.fromkeys([*measurement.columns, *named]))
 
 
 class RegionListModel(QAbstractTableModel):
@@ -42,9 +50,12 @@ class RegionListModel(QAbstractTableModel):
     -------
     edited(column, index, text)
         Someone wrote a name, a class or a code; the index is the region's on its layer.
+    refusals_changed()
+        Other rows say why they were not measured.
     """
 
     edited = Signal(str, int, str)
+    refusals_changed = Signal()
 
     def __init__(
         self, offered: tuple[str, ...], wanted: tuple[str, ...], parent: Any = None
@@ -80,20 +91,22 @@ class RegionListModel(QAbstractTableModel):
         return sum(column not in _HEADINGS for column in self._columns)
 
     def show(self, rows: tuple[Row, ...]) -> bool:
-        """Show other rows; return whether the table's shape, or who is refused, changed."""
+        """Show other rows; return whether the table's shape changed."""
         columns = self._columns_for(rows)
         if len(rows) != len(self._rows) or columns != self._columns:
             self.beginResetModel()
             self._rows, self._columns = rows, columns
             self.endResetModel()
+            self.refusals_changed.emit()
             return True
-        changed = [i for i, row in enumerate(rows) if row != self._rows[i]]
-        refused = [i for i in changed if bool(rows[i].answer) != bool(self._rows[i].answer)]
-        self._rows = rows
+        before, self._rows = self._rows, rows
+        changed = [i for i, row in enumerate(rows) if row != before[i]]
         last = len(self._columns) - 1
-        for i in changed:
-            self.dataChanged.emit(self.index(i, 0), self.index(i, last))
-        return bool(refused)
+        for first, end in _runs(changed):
+            self.dataChanged.emit(self.index(first, 0), self.index(end, last))
+        if any(_refused(rows[i]) != _refused(before[i]) for i in changed):
+            self.refusals_changed.emit()
+        return False
 
     def want(self, columns: tuple[str, ...], *, codes: bool) -> None:
         """Show other quantities, and whether to show codes."""
@@ -241,3 +254,18 @@ class RegionListModel(QAbstractTableModel):
         if role == Qt.ItemDataRole.ToolTipRole:
             return f"{self.heading(section)}. Click to sort; right-click to choose columns."
         return self.heading(section) if role == Qt.ItemDataRole.DisplayRole else None
+
+
+def _refused(row: Row) -> bool:
+    return row.complete and not row.answer
+
+
+def _runs(numbers: list[int]) -> list[tuple[int, int]]:
+    """Return the first and last of each run of neighbours in increasing numbers."""
+    found: list[tuple[int, int]] = []
+    for number in numbers:
+        if found and found[-1][1] == number - 1:
+            found[-1] = (found[-1][0], number)
+        else:
+            found.append((number, number))
+    return found

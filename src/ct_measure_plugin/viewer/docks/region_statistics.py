@@ -19,7 +19,7 @@ from ct_measure_plugin.viewer.docks.region_arranging import RegionArranging
 from ct_measure_plugin.viewer.docks.region_choice import RegionChoice
 from ct_measure_plugin.viewer.docks.region_doing import RegionDoing
 from ct_measure_plugin.viewer.docks.region_files import RegionFiles
-from ct_measure_plugin.viewer.docks.region_list import CLASS, CODE, RegionListModel
+from ct_measure_plugin.viewer.docks.region_list import CLASS, CODE, RegionListModel, offered_by
 from ct_measure_plugin.viewer.docks.region_plots import RegionPlots
 from ct_measure_plugin.viewer.docks.region_typing import RegionTyping
 from ct_measure_plugin.viewer.docks.region_view import RegionView
@@ -47,6 +47,9 @@ _BUDGET = 0.018
 #: the background.
 _REST, _LOOK_AGAIN = 250, 300
 
+#: Milliseconds between curves while something moves.
+_CURVES = 100
+
 #: Milliseconds for which a chosen label is shown alone, so that it is seen where it is.
 _FLASH = 700
 
@@ -64,6 +67,7 @@ class RegionStatisticsDock(Dock):
         self.acts = RegionActs(self.board, self.viewer)
         self._rest = self._single_shot(_REST, self._write_features)
         self._again = self._single_shot(_LOOK_AGAIN, self.kick)
+        self._plot_soon = self._single_shot(_CURVES, self.show_chosen)
         self._flash = self._single_shot(_FLASH, self._end_flash)
         self._build()
         self.listen(self.viewer.dims.events.point, self.kick)
@@ -85,7 +89,7 @@ class RegionStatisticsDock(Dock):
         self.choice.draw_asked.connect(self.start_drawing)
         self.questions = LayerQuestions(self.session, self)
         self.questions.answered.connect(self._forget)
-        self.model = RegionListModel(_offered(self._measurement), self._measurement.columns, self)
+        self.model = RegionListModel(offered_by(self._measurement), self._measurement.columns, self)
         self.model.edited.connect(self._edited)
         self.view = RegionView(self.model, self)
         self.view.chosen_changed.connect(self._row_chosen)
@@ -98,7 +102,7 @@ class RegionStatisticsDock(Dock):
         self.plots = RegionPlots(self)
         self.form = SettingsForm(self._measurement.settings_type)
         self.form.changed.connect(self.kick)
-        self.typing = RegionTyping(self.do, self._here, self)
+        self.typing = RegionTyping(self.do, self.acts.here, self)
         self.arranging = RegionArranging(self.do, self.session, self)
         self.files = RegionFiles(self.do, self.board, self.viewer, self)
         self.files.told.connect(self._tell)
@@ -182,6 +186,7 @@ class RegionStatisticsDock(Dock):
         """Stop what runs while nobody looks."""
         self._rest.stop()
         self._again.stop()
+        self._plot_soon.stop()
         self.board.stop()
 
     # --- measuring and showing ------------------------------------------------------
@@ -214,7 +219,7 @@ class RegionStatisticsDock(Dock):
         self.keeping.setEnabled(bool(self.board.rows))
         self.session.show_answers(_NAME, tuple(row.answer for row in self.board.rows))
         self._region_chosen()
-        self._show_chosen()
+        self.show_chosen(moving=seconds is not None)
         self._rest.start()
         return left
 
@@ -222,11 +227,15 @@ class RegionStatisticsDock(Dock):
         if not self.board.write_features() and not all(row.complete for row in self.board.rows):
             self._rest.start()
 
-    def _show_chosen(self) -> None:
+    def show_chosen(self, *, moving: bool = False) -> None:
+        """Show the curves of the chosen regions and what to know about the first of them."""
         chosen = set(self.view.chosen())
         alone = len({row.index for row in self.board.rows}) == 1
         rows = [row for row in self.board.rows if row.index in chosen or alone]
-        self.plots.show_rows(rows)
+        if not moving:
+            self.plots.show_rows(rows)
+        elif not self._plot_soon.isActive():
+            self._plot_soon.start()  # ten curves a second are live enough; numbers come first
         source = self.board.source
         busy = "Looking through the labels…" if source is not None and source.busy else ""
         lines = [line for line in (self.board.said, busy, self._told) if line]
@@ -244,7 +253,7 @@ class RegionStatisticsDock(Dock):
 
     def _tell(self, text: str) -> None:
         self._told = text
-        self._show_chosen()
+        self.show_chosen()
 
     def recolour(self, colours: Colours) -> None:
         """Take up the colours of a theme."""
@@ -268,7 +277,7 @@ class RegionStatisticsDock(Dock):
                 source.show_alone(alone=True)
                 self._flash.start()
         self._told = ""
-        self._show_chosen()
+        self.show_chosen()
 
     def _fill_fields(self, index: int) -> None:
         outlined = not isinstance(self.board.source, LabelSource)
@@ -290,7 +299,7 @@ class RegionStatisticsDock(Dock):
         self.view.choose(selected)
         if selected:
             self._fill_fields(min(selected))
-        self._show_chosen()
+        self.show_chosen()
 
     def _edited(self, column: str, index: int, text: str) -> None:
         chosen = self.view.chosen()
@@ -319,7 +328,7 @@ class RegionStatisticsDock(Dock):
         except OSError as error:
             self._told = f"The file cannot be used: {error.strerror}."
         done = not self._told
-        self._show_chosen()
+        self.show_chosen()
         self.kick()
         return done
 
@@ -333,16 +342,3 @@ class RegionStatisticsDock(Dock):
         self.choose(regions=layer)
         self.viewer.layers.selection.active = layer
         layer.mode = mode
-
-    def _here(self) -> float:
-        placement = self.session.placement(self._images[0])
-        point = tuple(self.viewer.dims.point)[-placement.layer.ndim :]
-        return float(placement.volume.positions_mm[placement.plane_of(point)])
-
-
-def _offered(measurement: Any) -> tuple[str, ...]:
-    """Return the quantities of a measurement's result, those of its columns first."""
-    from dataclasses import fields
-
-    named = [one.name for one in fields(measurement.result_type) if "Quantity" in str(one.type)]
-    return tuple(dict.fromkeys([*measurement.columns, *named]))

@@ -14,7 +14,7 @@ from qtpy.QtWidgets import (
     QTableView,
 )
 
-from ct_measure_plugin.physics.results import NotMeasured, label_of
+from ct_measure_plugin.physics.results import label_of
 
 if TYPE_CHECKING:
     from collections.abc import Collection
@@ -86,26 +86,27 @@ class RegionView(QTableView):
         )
         self.setSortingEnabled(True)
         header.sortIndicatorChanged.connect(lambda *_: self._span_refusals())
+        model.refusals_changed.connect(self._span_refusals)
         self.setMinimumHeight(120)
         self.selectionModel().selectionChanged.connect(self._selection_changed)
 
     # --- what is shown --------------------------------------------------------------
 
     def fit_columns(self) -> None:
-        """Make columns as wide as what they hold; a refusal runs over the columns after it."""
-        self._span_refusals()
+        """Make columns as wide as what they hold."""
         self.resizeColumnsToContents()
         for column, name in enumerate(self._list.columns):
             if name not in self._list.offered:
                 self.setColumnWidth(column, min(self.columnWidth(column), _WIDEST))
 
     def _span_refusals(self) -> None:
+        """Let the reason why a region was not measured run over the columns after it."""
         self.clearSpans()
         lead, width = self._list.lead, self._list.numbers
         if width < 2:
             return
         for i, row in enumerate(self._list.rows):
-            if isinstance(row.answer, NotMeasured) and row.complete:
+            if row.complete and not row.answer:
                 at = self._proxy.mapFromSource(self._list.index(i, 0)).row()
                 self.setSpan(at, lead, 1, width)
 

@@ -17,7 +17,7 @@ from npe2.cli import app
 from typer.testing import CliRunner
 
 import ct_measure_plugin
-from ct_measure_plugin.measurements import NAMES
+from ct_measure_plugin.measurements import DRAWN, NAMES
 from ct_measure_plugin.virtual_scanner import samples
 
 NAME = "ct-measure-plugin"
@@ -25,9 +25,9 @@ FILE = Path(ct_measure_plugin.__file__).with_name("napari.yaml")
 
 #: How many contributions each section must hold: a misspelt section would be dropped in silence.
 COUNTS = {
-    "commands": 8 + len(samples.names()),
+    "commands": 10 + len(samples.names()),
     "readers": 1,
-    "widgets": 6,
+    "widgets": 8,
     "sample_data": len(samples.names()),
     "menus": 2,
     "configurations": 1,
@@ -117,7 +117,7 @@ def docks(written) -> list[type]:
 def test_every_measurement_has_a_dock_and_no_dock_is_empty(written):
     offered = [set(dock.names) & set(NAMES) for dock in docks(written)]
     assert all(offered)
-    assert set().union(*offered) == set(NAMES)
+    assert set().union(*offered) == set(DRAWN)
 
 
 def broken(manifest: dict, change) -> dict:
@@ -129,7 +129,7 @@ def broken(manifest: dict, change) -> dict:
 @pytest.mark.parametrize(
     ("change", "fault"),
     [
-        (lambda c: c.update(widget=c.pop("widgets")), "widgets: 0 instead of 6"),
+        (lambda c: c.update(widget=c.pop("widgets")), "widgets: 0 instead of 8"),
         (lambda c: c["widgets"][0].update(command=f"{NAME}.windw"), "undeclared command"),
         (lambda c: c["readers"][0].update(command=f"{NAME}.red"), "undeclared command"),
         (lambda c: c["menus"].update({"napari/layers/context": []}), "takes no plugins"),

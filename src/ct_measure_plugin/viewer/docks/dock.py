@@ -27,11 +27,15 @@ __all__ = ["Dock", "narrow"]
 #: Milliseconds between refreshes while something is dragged: 30 a second.
 _TICK_MS = 33
 
+#: Narrowest a box of choices becomes, pixels.
+_NARROWEST = 80
+
 
 def narrow(box: QComboBox) -> None:
     """Let a box be narrower than its longest entry, as a layer's name may be."""
     box.setSizeAdjustPolicy(QComboBox.SizeAdjustPolicy.AdjustToMinimumContentsLengthWithIcon)
     box.setMinimumContentsLength(6)
+    box.setMinimumWidth(_NARROWEST)  # Qt keeps an older hint until told a number
 
 
 class Dock(QWidget):

@@ -35,32 +35,34 @@ class RodReading:
     ----------
     name : str
         What the region was called.
-    material : str
-        The material it was entered as.
-    read, expected, residual : Quantity
-        CT number measured; on the line at the effective energy; their difference. HU.
-    mu : Quantity
-        Attenuation at the effective energy, cm⁻¹, with the density's uncertainty.
-    density : Quantity
-        As entered, g/cm³.
-    density_read : Quantity
-        The density at which the rod would lie on the line of the others, g/cm³.
+    read, residual : Quantity
+        CT number measured, and its distance from the line of all rods, HU.
     sigma : float
         Distance from the line of the others, in standard uncertainties.
+    density_read : Quantity
+        The density at which the rod would lie on the line of the others, g/cm³.
+    density : Quantity
+        As entered, g/cm³.
+    expected : Quantity
+        CT number on the line at the effective energy, HU.
+    mu : Quantity
+        Attenuation at the effective energy, cm⁻¹, with the density's uncertainty.
+    material : str
+        The material it was entered as.
     reads_as : str
         For an outlier, the listed material whose CT number it has, or "no listed material";
         else "".
     """
 
     name: str
-    material: str
     read: Quantity
-    expected: Quantity
     residual: Quantity
-    mu: Quantity
-    density: Quantity
-    density_read: Quantity
     sigma: float
+    density_read: Quantity
+    density: Quantity
+    expected: Quantity
+    mu: Quantity
+    material: str
     reads_as: str = ""
 
 

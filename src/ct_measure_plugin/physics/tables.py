@@ -69,7 +69,7 @@ def tables_of(result: Result) -> dict[str, Table]:
     >>> found = ct_number_line([rod.hu(70.0) for rod in rods], rods, hu_uncertainty=1.0)
     >>> table = tables_of(found)["rods"]
     >>> table.titles[:3], next(iter(table.cells()))[:3]
-    (('Name', 'Material', 'Read (HU)'), ('air', 'air', '-998.9 ± 1.0'))
+    (('Name', 'Read (HU)', 'Residual (HU)'), ('air', '-998.9 ± 1.0', '0.0 ± 1.0'))
     """
     found = {}
     for field in fields(result):

@@ -240,7 +240,7 @@ class MeasurementDock(Dock):
                 return (), f"{image.name}: {error}"
             regions, left_out = regions_for(
                 self._measurement.name,
-                self.sources.chosen_regions(),
+                self._regions_layer(),
                 placement,
                 self.viewer.dims.point,
                 self.sources.extent(),
@@ -258,6 +258,10 @@ class MeasurementDock(Dock):
         if any(shows_slab(image, self.viewer.dims) for image in images):
             left_out = f"{left_out} {_SLAB}".strip()
         return tuple(found), left_out
+
+    def _regions_layer(self) -> Any:
+        """Return the layer whose regions are measured, or None."""
+        return self.sources.chosen_regions()
 
     def _take(self, value: tuple[tuple[Question, ...], tuple[Answer, ...]]) -> None:
         """Show answers that arrived, unless what they are about is gone."""

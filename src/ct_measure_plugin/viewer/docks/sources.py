@@ -19,6 +19,7 @@ from qtpy.QtWidgets import (
 )
 
 from ct_measure_plugin.viewer.asking import Extent
+from ct_measure_plugin.viewer.docks.dock import narrow
 
 if TYPE_CHECKING:
     from ct_measure_plugin.measurements import RegionNeed
@@ -75,6 +76,7 @@ class Sources(QWidget):
         self.images.itemChanged.connect(self._ticked)
         self.regions = QComboBox()
         self.regions.setAccessibleName("Layer of regions")
+        narrow(self.regions)
         self.regions.currentIndexChanged.connect(self._emit)
         self.draw = QPushButton("Draw")
         self.draw.setToolTip("Draw a region; a layer for it is added if there is none.")

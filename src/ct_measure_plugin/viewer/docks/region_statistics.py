@@ -320,17 +320,16 @@ class RegionStatisticsDock(Dock):
 
         Returns whether it was done.
         """
-        self._told = ""
+        self._told, refused = "", ""
         try:
             act(self.acts, self.view.chosen())
         except CtMeasureError as error:
-            self._told = str(error)
+            refused = str(error)
         except OSError as error:
-            self._told = f"The file cannot be used: {error.strerror}."
-        done = not self._told
-        self.show_chosen()
+            refused = f"The file cannot be used: {error.strerror}."
+        self._tell(refused or self._told)
         self.kick()
-        return done
+        return not refused
 
     def start_drawing(self, kind: str = "shapes", mode: str = "add_ellipse") -> None:
         """Choose a layer of a kind to draw on, made if there is none, and the tool."""

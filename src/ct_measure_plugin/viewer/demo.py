@@ -167,16 +167,21 @@ def add_docks(viewer: Any) -> list[Any]:
     """Open every dock of the manifest, as tabs of one column; return the widgets."""
     from npe2 import PluginManager
 
+    from ct_measure_plugin.viewer.docks.dock import spell_tabs
+
     manifest = PluginManager.instance().get_manifest(PLUGIN)
-    found: list[tuple[Any, Any]] = []
+    frames: dict[str, Any] = {}
+    found = []
     for widget in manifest.contributions.widgets or ():
-        dock, inside = viewer.window.add_plugin_dock_widget(
-            PLUGIN, widget.display_name, tabify=bool(found)
+        frame, inside = viewer.window.add_plugin_dock_widget(
+            PLUGIN, widget.display_name, tabify=bool(frames)
         )
-        found.append((dock, inside))
-    if found:
-        found[-1][0].raise_()
-    return [inside for _, inside in found]
+        frames[widget.display_name] = frame
+        found.append(inside)
+    spell_tabs(frames)
+    if "Region statistics" in frames:
+        frames["Region statistics"].raise_()
+    return found
 
 
 if __name__ == "__main__":

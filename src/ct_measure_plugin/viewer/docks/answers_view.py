@@ -209,8 +209,9 @@ class AnswersView(QWidget):
         ]
         curves = [entry for entry in found if isinstance(entry[1], Curve)]
         picture, table = self._picture(), self._one_of(name, Table)
-        for widget in (self.plot, self.legend):
-            widget.setVisible(bool(curves))
+        self.plot.setVisible(bool(curves))
+        if not curves:
+            self.legend.show_traces([])
         self.picture.setVisible(picture is not None)
         self.rows.setVisible(table is not None)
         self.reading.setVisible(bool(curves) or picture is not None)

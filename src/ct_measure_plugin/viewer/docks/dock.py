@@ -12,6 +12,7 @@ from qtpy.QtWidgets import (
     QFrame,
     QScrollArea,
     QSizePolicy,
+    QTabBar,
     QVBoxLayout,
     QWidget,
 )
@@ -22,7 +23,7 @@ from ct_measure_plugin.viewer.theme import Colours, colours_of
 if TYPE_CHECKING:
     from qtpy.QtGui import QHideEvent, QShowEvent
 
-__all__ = ["Dock", "narrow"]
+__all__ = ["Dock", "narrow", "spell_tabs"]
 
 #: Milliseconds between refreshes while something is dragged: 30 a second.
 _TICK_MS = 33
@@ -36,6 +37,16 @@ def narrow(box: QComboBox) -> None:
     box.setSizeAdjustPolicy(QComboBox.SizeAdjustPolicy.AdjustToMinimumContentsLengthWithIcon)
     box.setMinimumContentsLength(6)
     box.setMinimumWidth(_NARROWEST)  # Qt keeps an older hint until told a number
+
+
+def spell_tabs(frames: dict[str, QDockWidget]) -> None:
+    """Write whole titles on the tabs of docked frames, with arrows where they do not all fit."""
+    for title, frame in frames.items():
+        frame.setWindowTitle(title)
+        direct = Qt.FindChildOption.FindDirectChildrenOnly
+        for bar in frame.window().findChildren(QTabBar, options=direct):
+            bar.setElideMode(Qt.TextElideMode.ElideNone)
+            bar.setUsesScrollButtons(True)
 
 
 class Dock(QWidget):

@@ -5,7 +5,7 @@ from __future__ import annotations
 from typing import TYPE_CHECKING, Any
 
 from qtpy.QtCore import Qt
-from qtpy.QtWidgets import QGridLayout, QLabel, QSizePolicy, QVBoxLayout, QWidget
+from qtpy.QtWidgets import QGridLayout, QHBoxLayout, QLabel, QSizePolicy, QVBoxLayout, QWidget
 
 from ct_measure_plugin.physics.results import (
     NotMeasured,
@@ -66,7 +66,7 @@ class _Tile(QWidget):
         super().__init__(parent)
         self.name, self.value, self.doubt = QLabel(), QLabel(), QLabel()
         # napari's own style sheet wins over a font
-        self.value.setStyleSheet(f"font-size: {_LARGE_PT}pt; padding: 0 0 0 3px; margin: 0;")
+        self.value.setStyleSheet(f"font-size: {_LARGE_PT}pt; padding: 0; margin: 0 0 0 2px;")
         lines = QVBoxLayout(self)
         lines.setContentsMargins(0, 0, 0, 0)
         lines.setSpacing(0)
@@ -141,10 +141,9 @@ class Headline(QWidget):
             row.setColumnStretch(place, 1)
         lines.addWidget(self._large)
         self._rest = QWidget(self)
-        self._grid = QGridLayout(self._rest)
-        self._grid.setContentsMargins(0, 0, 0, 0)
-        self._grid.setVerticalSpacing(1)
-        self._grid.setColumnStretch(0, 1)
+        self._rows = QVBoxLayout(self._rest)
+        self._rows.setContentsMargins(0, 0, 0, 0)
+        self._rows.setSpacing(1)
         self._cells: list[tuple[QLabel, QLabel]] = []
         lines.addWidget(self._rest)
         self.words = QLabel(self)
@@ -218,13 +217,7 @@ class Headline(QWidget):
             large = set(self._columns[:LARGE])
             shown |= {k: v for k, v in quantities_of(answer).items() if k not in large}
         while len(self._cells) < len(shown):
-            cells = QLabel(self._rest), QLabel(self._rest)
-            cells[0].setSizePolicy(QSizePolicy.Policy.Ignored, QSizePolicy.Policy.Preferred)
-            cells[1].setAlignment(Qt.AlignmentFlag.AlignRight)
-            for column, label in enumerate(cells):
-                label.setTextFormat(Qt.TextFormat.PlainText)
-                self._grid.addWidget(label, len(self._cells), column)
-            self._cells.append(cells)
+            self._add_row()
         for cells in self._cells[len(shown) :]:
             for label in cells:
                 label.hide()
@@ -237,3 +230,17 @@ class Headline(QWidget):
             for label in cells:
                 label.show()
         self._rest.setVisible(bool(shown))
+
+    def _add_row(self) -> None:
+        """Add a name, cut where it must be, and its number at the right."""
+        line = QHBoxLayout()
+        line.setContentsMargins(0, 0, 0, 0)
+        name, number = QLabel(self._rest), QLabel(self._rest)
+        name.setSizePolicy(QSizePolicy.Policy.Ignored, QSizePolicy.Policy.Preferred)
+        number.setAlignment(Qt.AlignmentFlag.AlignRight)
+        for label in (name, number):
+            label.setTextFormat(Qt.TextFormat.PlainText)
+        line.addWidget(name, 1)
+        line.addWidget(number)
+        self._rows.addLayout(line)
+        self._cells.append((name, number))

@@ -24,6 +24,9 @@ __all__ = ["CurvePlot"]
 _BAND_ALPHA = 60
 _WIDTH = 1.6
 
+#: Height of the horizontal axis, pixels: pyqtgraph's own cuts a label's descenders.
+_AXIS = 46
+
 #: Up to so many samples are marked singly: what lies between them was not measured.
 _FEW = 24
 
@@ -124,6 +127,7 @@ class CurvePlot(pg.PlotWidget):
         self._plot.showGrid(x=True, y=True, alpha=0.12)
         for side in ("left", "bottom"):
             self._plot.getAxis(side).enableAutoSIPrefix(False)
+        self._plot.getAxis("bottom").setHeight(_AXIS)
         self.setMinimumHeight(190)
         self.setAccessibleName("Curves")
         self.scene().sigMouseMoved.connect(self._on_mouse)

@@ -5,6 +5,7 @@ from __future__ import annotations
 from typing import TYPE_CHECKING
 
 from ct_measure_plugin.cli.against import add_against_options, measure_against, series_at
+from ct_measure_plugin.cli.dicom_report import add_dicom_options, write_dicom
 from ct_measure_plugin.cli.outputs import add_output_options, deliver
 from ct_measure_plugin.cli.region_words import HELP, region_from_words
 from ct_measure_plugin.cli.setting_words import SETTING_HELP, ListMeasurements, setting_from_words
@@ -50,6 +51,7 @@ def add_parser(commands: argparse._SubParsersAction[argparse.ArgumentParser]) ->
     parser.add_argument("--plan", metavar="FILE", help="a YAML or JSON plan instead of the above")
     add_against_options(parser)
     add_output_options(parser)
+    add_dicom_options(parser)
     parser.set_defaults(run=run)
 
 
@@ -64,8 +66,13 @@ def run(arguments: argparse.Namespace) -> int:
     volume = series_at(arguments.series, arguments.index)
     plan = plan or _plan(arguments, volume)
     if arguments.against:
+        if arguments.dicom:
+            raise ArgumentError("dicom", "cannot be combined with --against", arguments.dicom)
         return measure_against(plan, volume, arguments)
-    return deliver(run_plan(plan, volume), arguments, plan)
+    records = run_plan(plan, volume)
+    if arguments.dicom:
+        write_dicom(records, volume, arguments)
+    return deliver(records, arguments, plan)
 
 
 def _plan(arguments: argparse.Namespace, volume: Volume) -> Plan:

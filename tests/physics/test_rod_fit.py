@@ -7,7 +7,8 @@ import pytest
 
 from ct_measure_plugin.physics.attenuation import MATERIALS
 from ct_measure_plugin.physics.ct_number_line import ct_number_line
-from ct_measure_plugin.physics.rod_fit import Rods, best_line, best_scale, energy_interval, line_at
+from ct_measure_plugin.physics.rod_fit import best_line, best_scale, energy_interval, line_at
+from ct_measure_plugin.physics.rod_table import Rods
 
 NAMES = ("air", "LDPE", "polystyrene", "PMMA", "POM", "PTFE", "polycarbonate", "nylon-6")
 RODS = [MATERIALS[name] for name in NAMES]

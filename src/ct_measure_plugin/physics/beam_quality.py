@@ -19,7 +19,8 @@ from ct_measure_plugin.errors import ArgumentError
 from ct_measure_plugin.physics.attenuation import MATERIALS, Material
 from ct_measure_plugin.physics.kerma import air_kerma_weight
 from ct_measure_plugin.physics.results import NotMeasured, Quantity
-from ct_measure_plugin.physics.rod_fit import Rods, best_line
+from ct_measure_plugin.physics.rod_fit import best_line
+from ct_measure_plugin.physics.rod_table import Rods
 
 if TYPE_CHECKING:
     from collections.abc import Callable, Sequence

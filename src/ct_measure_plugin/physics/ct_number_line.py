@@ -19,9 +19,7 @@ from ct_measure_plugin.physics.results import Caution, Curve, NotMeasured, Quant
 from ct_measure_plugin.physics.rod_advice import VAGUEST_ENERGY_KEV, refusal_of, too_vague
 from ct_measure_plugin.physics.rod_cautions import cautions_of, surplus_of
 from ct_measure_plugin.physics.rod_fit import (
-    ENERGIES_KEV,
     LineFit,
-    Rods,
     ScaleFit,
     best_correlation,
     best_line,
@@ -30,6 +28,7 @@ from ct_measure_plugin.physics.rod_fit import (
 )
 from ct_measure_plugin.physics.rod_layout import PlacedRod
 from ct_measure_plugin.physics.rod_readings import RodReading, readings_of
+from ct_measure_plugin.physics.rod_table import ENERGIES_KEV, Rods
 
 if TYPE_CHECKING:
     from collections.abc import Sequence

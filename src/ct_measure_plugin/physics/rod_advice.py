@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from ct_measure_plugin.physics.results import NotMeasured
-from ct_measure_plugin.physics.rod_fit import Rods
+from ct_measure_plugin.physics.rod_table import Rods
 
 if TYPE_CHECKING:
     from collections.abc import Sequence

@@ -11,8 +11,9 @@ from scipy import stats
 from ct_measure_plugin.physics.results import Caution, Quantity
 
 if TYPE_CHECKING:
-    from ct_measure_plugin.physics.rod_fit import LineFit, Rods, ScaleFit
+    from ct_measure_plugin.physics.rod_fit import LineFit, ScaleFit
     from ct_measure_plugin.physics.rod_readings import Readings, RodReading
+    from ct_measure_plugin.physics.rod_table import Rods
 
 __all__ = ["cautions_of", "surplus_of"]
 

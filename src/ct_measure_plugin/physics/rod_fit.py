@@ -4,25 +4,27 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass, replace
-from functools import lru_cache
 from typing import TYPE_CHECKING
 
 import numpy as np
 
-from ct_measure_plugin.errors import ArgumentError
-from ct_measure_plugin.physics.attenuation import MATERIALS, Material
+from ct_measure_plugin.physics.rod_table import (
+    ENERGIES_KEV,
+    HALF_STEP_KEV,
+    Rods,
+    grid_mu,
+    log_mu_of,
+)
 
 if TYPE_CHECKING:
-    from collections.abc import Callable, Sequence
+    from collections.abc import Callable
 
     from numpy.typing import ArrayLike, NDArray
 
     FloatArray = NDArray[np.float64]
 
 __all__ = [
-    "ENERGIES_KEV",
     "LineFit",
-    "Rods",
     "ScaleFit",
     "best_correlation",
     "best_line",
@@ -30,116 +32,6 @@ __all__ = [
     "energy_interval",
     "line_at",
 ]
-
-#: Energies searched, keV: below and above what any diagnostic beam behaves as.
-ENERGIES_KEV = np.arange(30.0, 140.05, 0.5)
-
-#: The finer grid on which attenuation is tabulated once a material and interpolated, keV.
-_FINE_KEV = np.arange(ENERGIES_KEV[0] - 1.0, ENERGIES_KEV[-1] + 1.05, 0.1)
-_PER_KEV = 10.0
-
-#: Half the step of derivatives with energy, keV.
-_HALF = 0.25
-
-
-@lru_cache(maxsize=512)
-def _log_mu(entered: Material) -> FloatArray:
-    found = np.log(entered.mu(_FINE_KEV))
-    found.setflags(write=False)
-    return found
-
-
-@dataclass(frozen=True, slots=True, eq=False)
-class Rods:
-    """Rods with what they read, what they are, and their μ over energy.
-
-    Attributes
-    ----------
-    hu, u_hu : ndarray, shape (n,)
-        CT numbers and their standard uncertainties, HU.
-    density, u_density : ndarray, shape (n,)
-        g/cm³.
-    materials : tuple of Material
-        One a rod.
-    log_mu : ndarray, shape (n, m)
-        ln μ on the fine grid of energies, μ in cm⁻¹.
-    water : Material
-        What the scale takes for water.
-    """
-
-    hu: FloatArray
-    u_hu: FloatArray
-    density: FloatArray
-    u_density: FloatArray
-    materials: tuple[Material, ...]
-    log_mu: FloatArray
-    water: Material
-
-    @classmethod
-    def checked(
-        cls,
-        hu: ArrayLike,
-        materials: Sequence[Material],
-        u_hu: ArrayLike,
-        u_density: ArrayLike | None = None,
-        water: Material | None = None,
-    ) -> Rods:
-        """Return the rods with the attenuation table of each, after checking what was given."""
-        values = np.asarray(hu, dtype=float).ravel()
-        if len(values) != len(materials):
-            raise ArgumentError("materials", f"must name {len(values)} rods", len(materials))
-        if not bool(np.all(np.isfinite(values))):
-            raise ArgumentError("hu", "must be finite", hu)
-        doubt = np.broadcast_to(np.asarray(u_hu, dtype=float), values.shape)
-        if not bool(np.all((doubt > 0) & np.isfinite(doubt))):
-            raise ArgumentError("hu_uncertainty", "must be greater than 0", u_hu)
-        own = [m.density_uncertainty_g_cm3 for m in materials] if u_density is None else u_density
-        density = np.broadcast_to(np.asarray(own, dtype=float), values.shape)
-        if not bool(np.all((density >= 0) & np.isfinite(density))):
-            raise ArgumentError("density_uncertainty_g_cm3", "must not be negative", u_density)
-        table = [_log_mu(m) for m in materials]
-        return cls(
-            values,
-            doubt,
-            np.array([m.density_g_cm3 for m in materials], dtype=float),
-            density,
-            tuple(materials),
-            np.stack(table) if table else np.empty((0, len(_FINE_KEV))),
-            MATERIALS["water"] if water is None else water,
-        )
-
-    def without(self, k: int) -> Rods:
-        """Return the rods but the k-th."""
-        keep = np.arange(len(self.hu)) != k
-        return replace(
-            self,
-            hu=self.hu[keep],
-            u_hu=self.u_hu[keep],
-            density=self.density[keep],
-            u_density=self.u_density[keep],
-            materials=tuple(m for i, m in enumerate(self.materials) if i != k),
-            log_mu=self.log_mu[keep],
-        )
-
-    def mu(self, energy: float) -> FloatArray:
-        """Return μ of each rod, cm⁻¹: ln μ interpolated, within 2e-6 of the table."""
-        return _at(self.log_mu, energy)
-
-    def water_mu(self, energy: float) -> float:
-        """Return μ of the scale's water, cm⁻¹."""
-        return float(_at(_log_mu(self.water)[None], energy)[0])
-
-    def steepness(self, energy: float) -> FloatArray:
-        """Return dμ/dE of each rod, cm⁻¹ per keV."""
-        slope: FloatArray = (self.mu(energy + _HALF) - self.mu(energy - _HALF)) / (2 * _HALF)
-        return slope
-
-    def sigma(self, mu: FloatArray, slope: FloatArray | float) -> FloatArray:
-        """Return the standard uncertainty of each rod about the line, HU; energies go last."""
-        shape = (-1, *(1,) * (mu.ndim - 1))
-        share = (self.u_density / self.density).reshape(shape)
-        total: FloatArray = np.hypot(self.u_hu.reshape(shape), slope * mu * share)
-        return total
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -199,22 +91,6 @@ class ScaleFit:
     least: float
 
 
-def _at(log_mu: FloatArray, energy: float) -> FloatArray:
-    place = (energy - _FINE_KEV[0]) * _PER_KEV
-    k = min(max(int(place), 0), log_mu.shape[1] - 2)
-    share = place - k
-    found: FloatArray = np.exp((1 - share) * log_mu[:, k] + share * log_mu[:, k + 1])
-    return found
-
-
-def _table(log_mu: FloatArray) -> FloatArray:
-    """Return μ on the grid of energies, shape (n, energies)."""
-    step = round(float(ENERGIES_KEV[1] - ENERGIES_KEV[0]) * _PER_KEV)
-    first = round(float(ENERGIES_KEV[0] - _FINE_KEV[0]) * _PER_KEV)
-    columns = first + step * np.arange(len(ENERGIES_KEV))
-    return np.asarray(np.exp(log_mu[:, columns]), dtype=float)
-
-
 def line_at(rods: Rods, energy: float) -> tuple[FloatArray, FloatArray, FloatArray]:
     """Return the weighted line at one energy: (intercept, slope), residuals, sigmas."""
     mu = rods.mu(energy)
@@ -241,11 +117,11 @@ def _valley(misfit: FloatArray) -> float | None:
 def _polish(misfit: Callable[[float], float], energy: float) -> float:
     """Newton steps on the misfit around the grid's valley."""
     for _ in range(6):
-        low, mid, high = (misfit(energy + step) for step in (-_HALF, 0.0, _HALF))
+        low, mid, high = (misfit(energy + step) for step in (-HALF_STEP_KEV, 0.0, HALF_STEP_KEV))
         curve = low - 2 * mid + high
         if curve <= 0:
             break
-        step = float(np.clip(0.5 * _HALF * (low - high) / curve, -1.0, 1.0))
+        step = float(np.clip(0.5 * HALF_STEP_KEV * (low - high) / curve, -1.0, 1.0))
         energy = float(np.clip(energy + step, ENERGIES_KEV[0], ENERGIES_KEV[-1]))
         if abs(step) < 1e-4:
             break
@@ -254,8 +130,8 @@ def _polish(misfit: Callable[[float], float], energy: float) -> float:
 
 def _line_curve(rods: Rods) -> FloatArray:
     """Return the chi-squared of the best line at every energy of the grid."""
-    mu, hu = _table(rods.log_mu), rods.hu[:, None]
-    weight = 1.0 / rods.sigma(mu, 1000.0 / _table(_log_mu(rods.water)[None])) ** 2
+    mu, hu = grid_mu(rods.log_mu), rods.hu[:, None]
+    weight = 1.0 / rods.sigma(mu, 1000.0 / grid_mu(log_mu_of(rods.water)[None])) ** 2
     total = weight.sum(axis=0)
     mean_mu, mean_hu = (weight * mu).sum(axis=0) / total, (weight * hu).sum(axis=0) / total
     along = (weight * (mu - mean_mu) ** 2).sum(axis=0)
@@ -333,15 +209,18 @@ def best_scale(rods: Rods) -> ScaleFit | None:
         off: FloatArray = (rods.hu - 1000.0 * (mu / water - 1.0)) / rods.sigma(mu, 1000.0 / water)
         return off
 
-    mu, water = _table(rods.log_mu), _table(_log_mu(rods.water)[None])
+    mu, water = grid_mu(rods.log_mu), grid_mu(log_mu_of(rods.water)[None])
     off = (rods.hu[:, None] - 1000.0 * (mu / water - 1.0)) / rods.sigma(mu, 1000.0 / water)
     energy = _valley(np.sum(off**2, axis=0))
     if energy is None:
         return None
     energy = _polish(lambda e: float(np.sum(residual(e) ** 2)), energy)
     sigma = rods.sigma(rods.mu(energy), 1000.0 / rods.water_mu(energy))
-    low, high = (1000.0 * rods.mu(e) / rods.water_mu(e) for e in (energy - _HALF, energy + _HALF))
-    slope = (high - low) / (2 * _HALF) / sigma
+    low, high = (
+        1000.0 * rods.mu(e) / rods.water_mu(e)
+        for e in (energy - HALF_STEP_KEV, energy + HALF_STEP_KEV)
+    )
+    slope = (high - low) / (2 * HALF_STEP_KEV) / sigma
     total = float(np.sum(slope**2))
     if not total > 0:
         return None
@@ -361,7 +240,7 @@ def best_correlation(rods: Rods) -> tuple[float, float, FloatArray] | None:
         lost: FloatArray = ((y - slope * x) ** 2).sum(axis=0) / (y**2).sum(axis=0)
         return lost  # 1 - r², without the cancellation
 
-    curve = short_of_one(_table(rods.log_mu))
+    curve = short_of_one(grid_mu(rods.log_mu))
     energy = _valley(curve)
     if energy is None:
         return None

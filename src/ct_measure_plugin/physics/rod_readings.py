@@ -9,7 +9,8 @@ from typing import TYPE_CHECKING, NamedTuple
 import numpy as np
 
 from ct_measure_plugin.physics.results import Quantity
-from ct_measure_plugin.physics.rod_fit import LineFit, Rods, best_line
+from ct_measure_plugin.physics.rod_fit import LineFit, best_line
+from ct_measure_plugin.physics.rod_table import Rods
 
 if TYPE_CHECKING:
     from collections.abc import Sequence

@@ -8,6 +8,7 @@ from skimage.measure import regionprops
 
 from ct_measure_plugin.errors import ArgumentError
 from ct_measure_plugin.physics.label_regions import joined, label_boxes, label_mask, overlap
+from ct_measure_plugin.physics.regions import Labels, Mask
 
 
 def random_map(shape, labels, seed=3):
@@ -71,3 +72,16 @@ def test_boxes_that_only_touch_do_not_overlap():
         slice(0, 5),
         slice(0, 4),
     )
+
+
+def test_a_map_is_equal_to_itself_alone():
+    """Answers are kept by region: one that grew must not be taken for what it was."""
+    one = Mask(np.ones((3, 3), bool), (1.0, 1.0, 1.0), name="m")
+    other = Mask(np.ones((4, 4), bool), (1.0, 1.0, 1.0), name="m")
+    assert one != other
+    assert one != Mask(one.inside, one.spacing_mm, name="m")
+    assert one == one  # noqa: PLR0124
+    assert len({one, other}) == 2
+    maps = [Labels(np.full((2, 2), n), (1.0, 1.0, 1.0)) for n in (1, 2)]
+    assert maps[0] != maps[1]
+    assert len(set(maps)) == 2

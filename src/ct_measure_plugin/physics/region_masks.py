@@ -50,6 +50,13 @@ class Mask(Region):
         positive("spacing_mm", *self.spacing_mm)
         finite("origin_mm", *self.origin_mm)
 
+    # its parent compares names and slices alone; a map is equal to itself and to nothing else
+    def __eq__(self, other: object) -> bool:
+        return self is other
+
+    def __hash__(self) -> int:
+        return object.__hash__(self)
+
     @property
     def area_mm2(self) -> float:
         """Area of the pixels inside, summed over slices."""
@@ -94,6 +101,13 @@ class Labels(Region):
             raise RegionError("labels", "must be an array of whole numbers", self.labels.dtype)
         positive("spacing_mm", *self.spacing_mm)
         finite("origin_mm", *self.origin_mm)
+
+    # its parent compares names and slices alone; a map is equal to itself and to nothing else
+    def __eq__(self, other: object) -> bool:
+        return self is other
+
+    def __hash__(self) -> int:
+        return object.__hash__(self)
 
     def numbers(self) -> tuple[int, ...]:
         """Return the labels that occur, increasing."""

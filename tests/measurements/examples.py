@@ -152,6 +152,21 @@ def line_profile() -> Example:
     )
 
 
+def wire_mtf() -> Example:
+    from truth_images import HANN, disc_image
+
+    rng = np.random.default_rng(5)
+    wire = disc_image(HANN, 0.1, contrast=1.0, shape=(56, 56), spacing=(0.4, 0.4))
+    values = np.rint(wire / wire.max() * 900 + rng.normal(0, 6, (2, 56, 56)))
+    frequencies = ("f50", "f10", "f2", "nyquist")
+    return Example(
+        Volume(values.astype(np.int16), (2.0, 0.5, 0.5)),
+        (Disc((13.75, 13.75), 12.0, z_mm=0.0),),
+        settings={"object_diameter_mm": 0.0},
+        scales_with_spacing=dict.fromkeys(frequencies, -1) | {"width": 1},
+    )
+
+
 EXAMPLES: dict[str, Callable[[], Example]] = {
     "region_statistics": region_statistics,
     "region_contrast": region_contrast,
@@ -161,5 +176,6 @@ EXAMPLES: dict[str, Callable[[], Example]] = {
     "edge_mtf": edge_mtf,
     "disc_mtf": disc_mtf,
     "line_profile": line_profile,
+    "wire_mtf": wire_mtf,
     "ct_number_line": ct_number_line,
 }

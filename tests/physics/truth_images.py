@@ -5,7 +5,7 @@ rasterised or convolved on a grid:
 
     edge    E(d) = 1/2 + ∫ M(f) sin(2πfd) / (πf) df            (0 to infinity)
     disc    D(r) = 2πR ∫ M(f) J1(2πRf) J0(2πfr) df             (Hankel transform)
-    wire    the disc of the wire's radius, divided by its area
+    wire    the disc of the wire's radius
 """
 
 from __future__ import annotations
@@ -131,14 +131,6 @@ def disc_image(
     y = (np.arange(shape[0]) - (shape[0] - 1) / 2) * spacing[0] - center[0]
     x = (np.arange(shape[1]) - (shape[1] - 1) / 2) * spacing[1] - center[1]
     return low + contrast * disc_profile(kernel, radius, np.hypot(y[:, None], x[None, :]))
-
-
-def wire_image(kernel: Kernel, diameter: float, *, peak=800.0, **place) -> np.ndarray:
-    """The cross-section of a wire whose blurred peak is about `peak`."""
-    if diameter > 0:
-        image = disc_image(kernel, diameter / 2, contrast=1.0, **place)
-        return peak * image / image.max()
-    return wire_image(kernel, 1e-3, peak=peak, **place)
 
 
 def noise(rng, shape, spacing, sd: float, kernel: Kernel | None = None) -> np.ndarray:

@@ -40,6 +40,7 @@ _CLASSES: dict[str, str] = {
     "edge_mtf": "MeasureEdgeMtf",
     "disc_mtf": "MeasureDiscMtf",
     "line_profile": "MeasureLineProfile",
+    "wire_mtf": "MeasureWireMtf",
     "ct_number_line": "MeasureCtNumberLine",
 }
 

@@ -32,6 +32,7 @@ from ct_measure_plugin.physics.scan_difference import scan_difference
 from ct_measure_plugin.physics.standard_error import standard_error_from_nps
 from ct_measure_plugin.physics.uniformity import Uniformity, uniformity
 from ct_measure_plugin.physics.volume import Acquisition, HeaderWindow, Source, Volume
+from ct_measure_plugin.physics.wire_mtf import WireMtf, wire_mtf
 
 __all__ = [
     "Acquisition",
@@ -54,6 +55,7 @@ __all__ = [
     "Source",
     "Uniformity",
     "Volume",
+    "WireMtf",
     "ct_number_line",
     "disc_mtf",
     "edge_mtf",
@@ -66,4 +68,5 @@ __all__ = [
     "scan_difference",
     "standard_error_from_nps",
     "uniformity",
+    "wire_mtf",
 ]

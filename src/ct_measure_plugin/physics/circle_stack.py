@@ -17,7 +17,11 @@ from ct_measure_plugin.physics.edge_circle import (
     locate_circle,
 )
 from ct_measure_plugin.physics.edge_line import pixel_grid, rough_esf
-from ct_measure_plugin.physics.edge_noise import NoiseSpectrum, residual_spectrum
+from ct_measure_plugin.physics.edge_noise import (
+    NoiseSpectrum,
+    independent_slices,
+    residual_spectrum,
+)
 from ct_measure_plugin.physics.results import NotMeasured
 
 if TYPE_CHECKING:
@@ -77,18 +81,7 @@ class CircleStack:
 
     def independent(self) -> float:
         """Return how many independent slices these are worth, from their residuals."""
-        n = len(self.circles)
-        if n == 1:
-            return 1.0
-        stack = np.array([c.residual for c in self.circles])
-        zero = float(np.mean(stack**2))
-        factor = 1.0
-        for k in range(1, n):
-            rho = float(np.mean(stack[:-k] * stack[k:])) / zero if zero > 0 else 0.0
-            if rho < 2 / math.sqrt(stack[:-k].size):
-                break
-            factor += 2 * (1 - k / n) * rho
-        return n / factor
+        return independent_slices(np.array([c.residual for c in self.circles]))
 
 
 def locate_stack(stack: Floats, spacing_mm: tuple[float, float]) -> CircleStack | NotMeasured:

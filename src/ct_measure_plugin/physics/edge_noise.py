@@ -23,7 +23,13 @@ if TYPE_CHECKING:
 
     Floats = NDArray[np.float64]
 
-__all__ = ["NoiseSpectrum", "bin_autocovariance", "bin_covariance", "residual_spectrum"]
+__all__ = [
+    "NoiseSpectrum",
+    "bin_autocovariance",
+    "bin_covariance",
+    "independent_slices",
+    "residual_spectrum",
+]
 
 #: Share of its maximum below which the spectrum is not let fall. Weights go with its inverse, and
 #: the leakage of the tapered periodogram makes smaller values meaningless.
@@ -129,6 +135,27 @@ def _smoothed(power: Floats, count: Floats) -> Floats:
     weight = np.exp(-0.5 * ((ring - ring[:, None]) / width) ** 2) * count
     found: Floats = (weight @ power) / weight.sum(axis=1)
     return found
+
+
+def independent_slices(residuals: Floats) -> float:
+    """Return how many independent slices the residuals of n slices, shape (n, …), are worth.
+
+    ``n / (1 + 2 Σ (1 - k/n) ρ_k)`` with the correlation of slices k apart, as far as it stands out
+    from 0.
+
+    >>> white = np.random.default_rng(1).normal(size=(8, 30, 30))
+    >>> independent_slices(white), independent_slices(np.repeat(white[:2], 4, axis=0)) < 3
+    (8.0, True)
+    """
+    n = len(residuals)
+    zero = float(np.mean(residuals**2))
+    factor = 1.0
+    for k in range(1, n):
+        rho = float(np.mean(residuals[:-k] * residuals[k:])) / zero if zero > 0 else 0.0
+        if rho < 3 / math.sqrt(residuals[:-k].size):
+            break
+        factor += 2 * (1 - k / n) * rho
+    return n / factor
 
 
 def bin_autocovariance(

@@ -25,7 +25,7 @@ if TYPE_CHECKING:
 
     Floats = NDArray[np.float64]
 
-__all__ = ["Dictionary", "dictionary"]
+__all__ = ["Dictionary", "dictionary", "gauss_nodes"]
 
 #: Steepnesses of the envelope.
 STEEPNESS = (1.6, 2.0, 2.5, 3.2, 4.5, 7.0)
@@ -82,6 +82,10 @@ class Dictionary:
         found: Floats = self.slope(np.minimum(np.abs(x), REACH)) * np.sign(x)[:, None]
         return found
 
+    def end(self, member: int) -> float:
+        """Return the u beyond which a member's envelope has vanished."""
+        return _end(float(self._steepness[member]))
+
     def transfer(self, member: int, v: Floats) -> Floats:
         """Return one member's MTF shapes at v = 2πf s0, shape (n, 1 + TERMS)."""
         return _transfer(
@@ -89,6 +93,10 @@ class Dictionary:
             float(self._steepness[member]),
             self._orthogonal[member // len(RATIOS)],
         )
+
+
+def _end(steepness: float) -> float:
+    return math.sqrt(2) * 34.0 ** (1 / steepness)
 
 
 def _powers(u: Floats, steepness: float) -> Floats:
@@ -102,8 +110,8 @@ def _transfer(u: Floats, steepness: float, orthogonal: Floats) -> Floats:
     return powers
 
 
-def _nodes(top: float) -> tuple[Floats, Floats]:
-    """Gauss-Legendre nodes and weights on 0 to top, in panels that grow."""
+def gauss_nodes(top: float) -> tuple[Floats, Floats]:
+    """Return Gauss-Legendre nodes and weights on 0 to top, in panels that grow."""
     x, w = np.polynomial.legendre.leggauss(16)
     panels = top * np.linspace(0, 1, 65) ** 1.5
     half = np.diff(panels)[:, None] / 2
@@ -121,7 +129,7 @@ def dictionary() -> Dictionary:
     x = np.arange(0.0, REACH + STEP / 2, STEP)
     tables, orthogonal = [], []
     for steepness in STEEPNESS:
-        u, w = _nodes(math.sqrt(2) * 34.0 ** (1 / steepness))
+        u, w = gauss_nodes(_end(steepness))
         shapes = _powers(u, steepness)
         _, r = np.linalg.qr(shapes[:, 1:] * np.sqrt(w)[:, None])
         turn = np.linalg.inv(r) * np.sign(np.diag(r))

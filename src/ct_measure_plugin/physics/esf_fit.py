@@ -11,12 +11,12 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Protocol
 
 import numpy as np
 from scipy import linalg
 
-from ct_measure_plugin.physics.esf_basis import TERMS, Dictionary, dictionary
+from ct_measure_plugin.physics.esf_basis import TERMS, dictionary
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -25,7 +25,7 @@ if TYPE_CHECKING:
 
     Floats = NDArray[np.float64]
 
-__all__ = ["EsfFit", "fit_esf"]
+__all__ = ["EsfFit", "Part", "Solved", "averaged_transfer", "fit_esf", "solve_averaged", "whiten"]
 
 #: Prior standard deviation of the first coefficient relative to the step, and how it falls from
 #: each coefficient to the next. Chosen on simulated edges of three kernels; the benchmark
@@ -38,6 +38,14 @@ SLOPE_STANDS_OUT = 9.0
 
 #: Combinations of less weight than this are left out of the average.
 NEGLIGIBLE = 2e-3
+
+
+class Shapes(Protocol):
+    """A dictionary of shapes: of edges, or of point spread functions."""
+
+    @property
+    def columns(self) -> Floats:
+        """Each member's shapes by compressed functions, shape (r, m, 1 + TERMS)."""
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -65,7 +73,7 @@ class EsfFit:
     level: float
     gradient: float
     _mix: Floats
-    _parts: tuple[_Part, ...]
+    _parts: tuple[Part, ...]
     _nuisance: _Nuisance
 
     @property
@@ -113,29 +121,33 @@ class EsfFit:
 
     def mtf(self, frequency: Floats) -> tuple[Floats, Floats]:
         """Return the MTF and its standard uncertainty at frequencies in mm⁻¹."""
-        shapes = dictionary()
-        tables: dict[int, Floats] = {}
-        v = 2 * math.pi * self.scale * frequency
-        values, variances = [], []
-        for part in self._parts:
-            if part.member not in tables:
-                tables[part.member] = shapes.transfer(part.member, v)
-            table = tables[part.member]
-            curve = table @ (part.coefficients / part.coefficients[0])
-            # derivatives with respect to (step, coefficients) of their quotient
-            jacobian = table / part.coefficients[0]
-            jacobian[:, 0] = (table[:, 0] - curve) / part.coefficients[0]
-            values.append(curve)
-            variances.append(np.sum((jacobian @ part.covariance) * jacobian, axis=1))
-        weights = np.array([part.weight for part in self._parts])
-        stack = np.array(values)
-        mean = weights @ stack
-        variance = weights @ (np.array(variances) + (stack - mean) ** 2)
-        return mean, np.sqrt(variance)
+        return averaged_transfer(self._parts, 2 * math.pi * self.scale * frequency)
+
+
+def averaged_transfer(parts: tuple[Part, ...], v: Floats) -> tuple[Floats, Floats]:
+    """Return the MTF of averaged fits and its standard uncertainty at v = 2πf s0."""
+    shapes = dictionary()
+    tables: dict[int, Floats] = {}
+    values, variances = [], []
+    for part in parts:
+        if part.member not in tables:
+            tables[part.member] = shapes.transfer(part.member, v)
+        table = tables[part.member]
+        curve = table @ (part.coefficients / part.coefficients[0])
+        # derivatives with respect to (step, coefficients) of their quotient
+        jacobian = table / part.coefficients[0]
+        jacobian[:, 0] = (table[:, 0] - curve) / part.coefficients[0]
+        values.append(curve)
+        variances.append(np.sum((jacobian @ part.covariance) * jacobian, axis=1))
+    weights = np.array([part.weight for part in parts])
+    stack = np.array(values)
+    mean = weights @ stack
+    variance = weights @ (np.array(variances) + (stack - mean) ** 2)
+    return mean, np.sqrt(variance)
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class _Part:
+class Part:
     """One combination of envelope and prior: its weight and posterior."""
 
     member: int
@@ -185,9 +197,11 @@ def fit_esf(bins: EdgeBins, scale: float, covariance: Floats) -> EsfFit:
     edges = shapes.edges(x) + 0.5 * spread * shapes.slopes(x)
     ramp = bins.distance / float(np.abs(bins.distance).max())
     design = np.column_stack([np.ones_like(x), np.exp(-0.5 * x * x), ramp, edges, bins.value])
-    white = _whiten(design, covariance)
-    level = _solved(shapes, np.delete(white, 2, axis=1), 2)
-    best = _solved(shapes, white, 3) if _slope_gain(level, white) > SLOPE_STANDS_OUT else level
+    white = whiten(design, covariance)
+    level = solve_averaged(shapes, np.delete(white, 2, axis=1), 2)
+    best = (
+        solve_averaged(shapes, white, 3) if _slope_gain(level, white) > SLOPE_STANDS_OUT else level
+    )
     contrast = float(sum(p.weight * p.coefficients[0] for p in best.parts))
     reach = float(np.abs(bins.distance).max())
     slope = float(best.free[2]) / reach if len(best.free) > 2 else 0.0
@@ -206,10 +220,10 @@ def fit_esf(bins: EdgeBins, scale: float, covariance: Floats) -> EsfFit:
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class _Solved:
+class Solved:
     """Averaged shapes, coefficients of the nuisance columns, and what is left of the data."""
 
-    parts: tuple[_Part, ...]
+    parts: tuple[Part, ...]
     mix: Floats
     free: Floats
     misfit: float
@@ -217,7 +231,7 @@ class _Solved:
     coupling: Floats
 
 
-def _slope_gain(level: _Solved, white: Floats) -> float:
+def _slope_gain(level: Solved, white: Floats) -> float:
     """Return by how much a common slope would lower the sum of squares of a fit without one."""
     edge = white[:, 3:-1] @ level.mix
     fixed = np.column_stack([white[:, :2], edge])
@@ -227,12 +241,12 @@ def _slope_gain(level: _Solved, white: Floats) -> float:
     return float((both[:, 0] @ both[:, 1]) ** 2 / (both[:, 0] @ both[:, 0]))
 
 
-def _solved(shapes: Dictionary, white: Floats, k: int) -> _Solved:
+def solve_averaged(shapes: Shapes, white: Floats, k: int, strengths: Floats = STRENGTHS) -> Solved:
     """Average over the shapes; the first k columns are nuisance, the last one the data."""
     (r,) = linalg.qr(white, mode="r", check_finite=False)
     r = r[: white.shape[1]]
     core, data = r[k:-1, k:-1], r[k:-1, -1]
-    parts = _average(shapes, core, data)
+    parts = _average(shapes, core, data, strengths)
     mix = sum(
         (p.weight * (shapes.columns[:, p.member, :] @ p.coefficients) for p in parts),
         start=np.zeros(shapes.columns.shape[0]),
@@ -240,10 +254,11 @@ def _solved(shapes: Dictionary, white: Floats, k: int) -> _Solved:
     misfit = float(np.sum((data - core @ mix) ** 2)) + float(r[-1, -1] ** 2)
     inverse: Floats = linalg.solve_triangular(r[:k, :k], np.eye(k), check_finite=False)
     free = inverse @ (r[:k, -1] - r[:k, k:-1] @ mix)
-    return _Solved(parts, mix, free, misfit, inverse, r[:k, k:-1])
+    return Solved(parts, mix, free, misfit, inverse, r[:k, k:-1])
 
 
-def _whiten(design: Floats, covariance: Floats) -> Floats:
+def whiten(design: Floats, covariance: Floats) -> Floats:
+    """Return columns, shape (n, p), as if the noise of their rows were independent and 1."""
     if covariance.ndim == 1:
         out: Floats = design / np.sqrt(covariance)[:, None]
         return out
@@ -252,7 +267,7 @@ def _whiten(design: Floats, covariance: Floats) -> Floats:
     return found
 
 
-def _average(shapes: Dictionary, core: Floats, data: Floats) -> tuple[_Part, ...]:
+def _average(shapes: Shapes, core: Floats, data: Floats, strengths: Floats) -> tuple[Part, ...]:
     r, m, n = shapes.columns.shape
     table = (core @ shapes.columns.reshape(r, m * n)).reshape(len(core), m, n).transpose(1, 0, 2)
     gram = table.transpose(0, 2, 1) @ table
@@ -262,7 +277,7 @@ def _average(shapes: Dictionary, core: Floats, data: Floats) -> tuple[_Part, ...
     inner = gram[:, 1:, 1:] - cross[:, :, None] * gram[:, None, 0, 1:]
     pull = right[:, 1:] - cross * right[:, :1]
     gain = right[:, 0] * step  # what the step alone explains
-    prior = np.abs(step)[:, None, None] * STRENGTHS[None, :, None] * FALL  # (m, t, n - 1)
+    prior = np.abs(step)[:, None, None] * strengths[None, :, None] * FALL  # (m, t, n - 1)
     system = prior[..., :, None] * inner[:, None] * prior[..., None, :]
     system += np.eye(n - 1)
     scaled = prior * pull[:, None]
@@ -281,5 +296,5 @@ def _average(shapes: Dictionary, core: Floats, data: Floats) -> tuple[_Part, ...
         precision[index, index] += 1.0 / prior[i, t] ** 2
         covariance = np.linalg.inv(precision)
         coefficients = covariance @ right[i]
-        parts.append(_Part(int(i), float(weight[i, t]), coefficients, covariance))
+        parts.append(Part(int(i), float(weight[i, t]), coefficients, covariance))
     return tuple(parts)

@@ -95,6 +95,22 @@ def stage(viewer, dock):
     wait(0.6)
 
 
+def compare_kernels(viewer, dock):
+    """Measure one edge on two kernels of the same raw data."""
+    from ct_measure_plugin.viewer import demo
+
+    (standard,) = dock.sources.chosen_images()
+    layer = dock.sources.chosen_regions()
+    standard.name = "Standard kernel"
+    (sharp,) = viewer.open_sample(demo.PLUGIN, "sharp")
+    viewer.layers.move(viewer.layers.index(sharp), 1)
+    sharp.name = "Sharp kernel"
+    layer.selected_data = {1}
+    layer.remove_selected()
+    dock.choose(standard, sharp, regions=layer)
+    stage(viewer, dock)
+
+
 def save(viewer, path):
     """Write a picture of the whole window."""
     from PIL import Image
@@ -124,7 +140,7 @@ def main():
             size = f"{file.stat().st_size / 1000:.0f} kB"
             print(f"{file.name}: {shape[1]} × {shape[0]}, {size}")  # noqa: T201
     viewer.theme = "dark"
-    stage(viewer, docks["MTF"])
+    compare_kernels(viewer, docks["MTF"])
     save(viewer, given.folder / "overview.png")
     viewer.close()
 

@@ -90,9 +90,9 @@ def test_answers_are_those_of_python_each_with_its_label(volume, statistics):
     second = Question("region_statistics", "CT 2", volume, (DISC,), statistics)
     both = Memory().answer((question, second))
     assert [(one.label, one.layer) for one in both] == [
-        ("a, CT 1", 0),
-        ("b, CT 1", 0),
-        ("a, CT 2", 1),
+        ("CT 1: a", 0),
+        ("CT 1: b", 0),
+        ("CT 2", 1),
     ]
 
 

@@ -204,3 +204,9 @@ def test_asking_the_reader_imports_nothing_heavy():
 
 def test_a_heavy_import_would_be_seen():
     assert "pydicom" in loaded_after("import pydicom")
+
+
+def test_every_dock_has_its_section_in_the_docs(written):
+    page = (FILE.parents[2] / "docs/measurement_docks.md").read_text(encoding="utf-8")
+    titles = [dock.title for dock in docks(written) if dock.title != "All measurements"]
+    assert [title for title in titles if f"\n## {title}\n" not in page] == []

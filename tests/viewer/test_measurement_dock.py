@@ -197,8 +197,8 @@ def test_several_layers_share_the_region(edge):
     dock.choose(image, second, regions=layer)
     dock.measure_now()
     found = {answer.label: answer.result for answer in dock.answers.answers()}
-    assert set(found) == {"region 1, CT 1", "region 1, CT 2"}
-    assert found["region 1, CT 2"].f50.value < 0.95 * found["region 1, CT 1"].f50.value
+    assert set(found) == {"CT 1", "CT 2"}
+    assert found["CT 2"].f50.value < 0.95 * found["CT 1"].f50.value
     assert [trace.label for trace in dock.answers.plot.traces] == dock.answers.legend.texts()
     assert len(dock.keeping.records()) == 2
 

@@ -147,7 +147,7 @@ def _label(question: Question, regions: tuple[Region, ...], *, alone: bool) -> s
     where = ", ".join(names[:3]) + (f" and {len(names) - 3} more" if len(names) > 3 else "")
     if alone:
         return where or question.title
-    return f"{where}, {question.title}" if where else question.title
+    return f"{question.title}: {where}" if where and len(question.parts()) > 1 else question.title
 
 
 def question_of(

@@ -24,11 +24,19 @@ __all__ = ["CurvePlot"]
 _BAND_ALPHA = 60
 _WIDTH = 1.6
 
-#: Height of the horizontal axis, pixels: pyqtgraph's own cuts a label's descenders.
-_AXIS = 46
+#: Pixels by which pyqtgraph hangs a label out of the horizontal axis, so that it is cut.
+_HANGS = 5
 
 #: Up to so many samples are marked singly: what lies between them was not measured.
 _FEW = 24
+
+
+class _BottomAxis(pg.AxisItem):
+    """A horizontal axis whose label is seen whole."""
+
+    def resizeEvent(self, event: Any = None) -> None:  # noqa: N802 - pyqtgraph's name
+        super().resizeEvent(event)
+        self.label.moveBy(0, -_HANGS)
 
 
 class _Drawn:
@@ -109,7 +117,7 @@ class CurvePlot(pg.PlotWidget):
     read = Signal(str)
 
     def __init__(self, parent: QWidget | None = None) -> None:
-        super().__init__(parent, background=None)
+        super().__init__(parent, background=None, axisItems={"bottom": _BottomAxis("bottom")})
         self._plot = self.getPlotItem()
         self._drawn: list[_Drawn] = []
         self._traces: tuple[Trace, ...] = ()
@@ -127,7 +135,6 @@ class CurvePlot(pg.PlotWidget):
         self._plot.showGrid(x=True, y=True, alpha=0.12)
         for side in ("left", "bottom"):
             self._plot.getAxis(side).enableAutoSIPrefix(False)
-        self._plot.getAxis("bottom").setHeight(_AXIS)
         self.setMinimumHeight(190)
         self.setAccessibleName("Curves")
         self.scene().sigMouseMoved.connect(self._on_mouse)

@@ -185,3 +185,22 @@ def test_labels_are_rows_with_their_names(scene, pair):
     board.write_features()
     stored = layer.features.set_index("index")
     assert stored.loc[7, "ct_n"] == np.count_nonzero(data == 7)
+
+
+def test_a_region_that_moves_faster_than_it_is_measured_keeps_its_last_number(scene, pair):
+    """Marked as such, and gone as soon as the new one is known."""
+    _, images, board = scene
+    board.images = (images[0],)
+    layer = draw(scene, pair[0], Disc((0.0, 18.0), 4.0))
+    board.look()
+    before = board.rows[0].answer
+    layer.data = [np.asarray(layer.data[0]) + np.array([0.0, 0.0, 9.0])]
+    assert board.look(seconds=0.0) == 1
+    [row] = board.rows
+    assert row.answer is before
+    assert row.stale
+    assert not row.complete
+    board.look()
+    [row] = board.rows
+    assert row.answer.mean.value != before.mean.value
+    assert not row.stale

@@ -240,7 +240,7 @@ def test_a_moving_regions_old_numbers_never_reach_the_features(scene, qtbot):
     dock.show()
     add(dock, Disc((0.0, 18.0), 4.0, z_mm=-15.0))
     for _step in range(8):
-        layer.data = [[*np.asarray(layer.data[0]), 0, 0, 1]]
+        layer.data = [np.asarray(layer.data[0]) + np.array([0, 0, 1])]
         qtbot.wait(20)
     qtbot.waitUntil(lambda: "ct_mean" in layer.features, timeout=3000)
     dock.refresh_now()

@@ -134,6 +134,15 @@ def test_what_is_still_moving_is_paler_and_says_nothing_false(listed):
     assert model.index(0, 2).data(Qt.ItemDataRole.ForegroundRole) is None
 
 
+def test_a_number_of_where_the_region_was_is_never_copied(listed):
+    model, _ = listed
+    model.show((replace(ROWS[0], complete=False, stale=True), ROWS[1]))
+    assert model.text(0, 2) != ""
+    first, second = (line.split("\t") for line in model.as_text().splitlines()[1:])
+    assert first[2:] == ["being measured", *[""] * (len(first) - 3)]
+    assert float(second[2]) == ROWS[1].answer.mean.value
+
+
 def test_ctrl_c_copies_the_chosen_rows_and_delete_asks(listed, qtbot):
     _, view = listed
     view.show()

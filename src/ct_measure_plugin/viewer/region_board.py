@@ -51,6 +51,8 @@ class Row:
         False while only a glance, or nothing yet, is known of where the region now is.
     difference : bool
         True for a difference.
+    stale : bool
+        True if the answer is that of where the region was: nothing is known yet of where it is.
     """
 
     index: int
@@ -62,6 +64,7 @@ class Row:
     mark: str = ""
     complete: bool = True
     difference: bool = False
+    stale: bool = False
 
     def quantity(self, column: str) -> Quantity | None:
         """Return one of the answer's quantities, None if it has none of that name."""
@@ -101,6 +104,7 @@ class RegionBoard:
         self.said = ""
         self.drawn: tuple[Drawn, ...] = ()
         self._asked: list[tuple[Placement, tuple[Drawn, ...]]] = []
+        self._last: dict[tuple[int, str], Result | NotMeasured] = {}
         self.answers = RegionAnswers(name)
         self.answers.changed.connect(self.changed.emit)
 
@@ -135,6 +139,9 @@ class RegionBoard:
         asks = [ask for i in order for column in every if (ask := column[i]) is not None]
         left = self.answers.find(asks, seconds)
         self.rows = tuple(self._lay_out(columns, differences))
+        if len(self._last) > 2 * len(self.rows):
+            kept = {(row.index, row.mark) for row in self.rows}
+            self._last = {key: found for key, found in self._last.items() if key in kept}
         return left
 
     @property
@@ -250,13 +257,18 @@ class RegionBoard:
         self, one: Drawn, ask: Ask | None, image: tuple[str, str], *, difference: bool = False
     ) -> Row:
         answer: Result | NotMeasured | None
+        stale = False
         if ask is None:
             answer, complete = NotMeasured(one.problem or "it is no region", "draw it again"), True
         else:
             answer, complete = self.answers.known(ask), self.answers.complete(ask)
+        if answer is None:
+            answer, stale = self._last.get((one.index, image[1]), _WAITING), True
+        else:
+            self._last[one.index, image[1]] = answer
         return Row(
             one.index, one.name, one.group, one.code,
-            _WAITING if answer is None else answer, *image, complete, difference,
+            answer, *image, complete, difference, stale,
         )  # fmt: skip
 
     def _regions(self, drawn: Sequence[Drawn]) -> tuple[Region, ...]:

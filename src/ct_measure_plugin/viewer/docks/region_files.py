@@ -59,7 +59,7 @@ class RegionFiles(QWidget):
         self._viewer = viewer
         lines = QVBoxLayout(self)
         lines.setContentsMargins(0, 0, 0, 0)
-        self.anonymous = QCheckBox("Leave the patient out of DICOM files")
+        self.anonymous = QCheckBox("No patient in DICOM files")
         self.anonymous.setToolTip(
             "A DICOM object repeats patient and study of its images, unless this is ticked."
         )
@@ -70,12 +70,12 @@ class RegionFiles(QWidget):
             ),
             (
                 button(
-                    "Open segmentation…",
+                    "Open labels…",
                     "Open a DICOM segmentation as labels",
                     self._ask_segmentation,
                 ),
                 button(
-                    "Save segmentation…",
+                    "Save labels…",
                     "Write the labels as a DICOM segmentation of the image's series",
                     self._ask_save_segmentation,
                 ),

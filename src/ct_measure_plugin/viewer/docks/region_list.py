@@ -157,11 +157,15 @@ class RegionListModel(QAbstractTableModel):
                     text = self._rows[row].image if name == IMAGE else self.text(row, column)
                     line.append(" ".join(text.split()))
                 continue
-            found = [self._rows[row].quantity(name) for row in chosen]
+            found = [
+                None if self._rows[row].stale else self._rows[row].quantity(name) for row in chosen
+            ]
             doubtful = any(one is not None and one.uncertainty for one in found)
             heads += [self.heading(column), *([f"u({self.heading(column)})"] if doubtful else [])]
             for line, one, row in zip(lines, found, chosen, strict=True):
                 refusal = self.text(row, column) if one is None else ""
+                if self._rows[row].stale:
+                    refusal = "being measured" if column == self.lead else ""
                 line.append(refusal if one is None else repr(one.value))
                 if doubtful:
                     line.append(repr(one.uncertainty) if one and one.uncertainty else "")
@@ -225,6 +229,8 @@ class RegionListModel(QAbstractTableModel):
             return _TIPS[name]
         if name == IMAGE:
             return line.image
+        if line.stale:
+            return "It has changed and is being measured; the number is the one before."
         said = [str(line.answer)] if isinstance(line.answer, NotMeasured) else []
         return "\n".join([*said, *(str(caution) for caution in line.answer.cautions)])
 

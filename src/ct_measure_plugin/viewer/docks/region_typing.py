@@ -44,6 +44,7 @@ class RegionTyping(QWidget):
         form = QFormLayout(self)
         form.setContentsMargins(0, 0, 0, 0)
         form.setFieldGrowthPolicy(QFormLayout.FieldGrowthPolicy.AllNonFixedFieldsGrow)
+        form.setRowWrapPolicy(QFormLayout.RowWrapPolicy.WrapLongRows)
         self._form = form
         self._place(form)
         self._reach(form)
@@ -59,7 +60,7 @@ class RegionTyping(QWidget):
         self.depth = mm("Length along z", 20.0, least=0.0)
         self.angle = mm("Angle, counter-clockwise", suffix="°")
         form.addRow("Kind", self.kind)
-        form.addRow("Middle y, x", beside(self.y, self.x))
+        form.addRow("At y, x", beside(self.y, self.x))
         self._size = beside(self.height, self.width)
         form.addRow("Diameter", self._size)
         form.addRow("Along z", self.depth)
@@ -77,11 +78,12 @@ class RegionTyping(QWidget):
         self.over.currentIndexChanged.connect(self._over_chosen)
         self.first = whole("First slice, counted from 0", 0, 0, 9999)
         self.last = whole("Last slice, counted from 0", 0, 0, 9999)
-        self.swept = QCheckBox("Ellipsoid")
+        self.swept = QCheckBox("an ellipsoid")
         self.swept.setToolTip("Sweep a disc or an ellipse to an ellipsoid, not to a cylinder")
-        self._ends = beside(self.first, "to", self.last, self.swept)
+        self._ends = beside(self.first, "to", self.last)
         form.addRow("Over", beside(self.over, button("Set", "Set for the chosen", self._set_reach)))
         form.addRow("Slices", self._ends)
+        form.addRow("Swept to", self.swept)
         self._over_chosen()
 
     def _values(self, form: QFormLayout) -> None:
@@ -89,6 +91,7 @@ class RegionTyping(QWidget):
         for field, name in ((self.low, "Lowest value"), (self.high, "Highest value")):
             field.setValidator(QDoubleValidator(field))
             field.setPlaceholderText("any")
+            field.setMinimumWidth(40)
             field.setAccessibleName(f"{name} that counts")
             field.setToolTip(f"{name} that counts within the chosen regions; empty for any")
         set_values = button("Set", "Set for the chosen", self._set_values)
@@ -148,7 +151,8 @@ class RegionTyping(QWidget):
         self._form.setRowVisible(self.angle, kind != "disc")
 
     def _over_chosen(self, *_: Any) -> None:
-        self._form.setRowVisible(self._ends, self.over.currentText() == _RANGE)
+        for row in (self._ends, self.swept):
+            self._form.setRowVisible(row, self.over.currentText() == _RANGE)
 
     def _add(self) -> None:
         self._do(lambda acts, _chosen: acts.add([region_of(self.typed(), self._here())]))

@@ -90,7 +90,7 @@ def test_a_dock_of_the_demo_finds_what_the_record_says(qtbot, viewer_model):
     dock = AllMeasurementsDock(viewer_model)
     qtbot.addWidget(dock)
     for name, layer in layers.items():
-        demo.aim([dock], image, {name: layer})
+        demo.aim([dock], image, {name: layer}, records)
         dock.measure_now()
         kept = [record.answer() for record in records if record.measurement == name]
         found = [one.result for one in dock.answers.answers()]

@@ -68,7 +68,7 @@ def fill(viewer: Any, folder: Path, records: Sequence[Record] = ()) -> None:
     for record in records:
         session.keep(record)
     layers = draw_records(viewer, image, records)
-    aim(add_docks(viewer), image, layers)
+    aim(add_docks(viewer), image, layers, records)
     viewer.canvas.overlays.scale_bar.visible = True
     viewer.reset_view()
 
@@ -101,8 +101,14 @@ def draw_records(viewer: Any, image: Any, records: Sequence[Record]) -> dict[str
     return found
 
 
-def aim(docks: Iterable[Any], image: Any, layers: dict[str, Any]) -> None:
-    """Let each dock measure the regions that were drawn for one of its measurements."""
+def aim(
+    docks: Iterable[Any], image: Any, layers: dict[str, Any], records: Sequence[Record] = ()
+) -> None:
+    """Let each dock measure the regions that were drawn for one of its measurements.
+
+    It takes the settings of the first record of that measurement.
+    """
+    from ct_measure_plugin.measurements.catalogue import settings_for
     from ct_measure_plugin.viewer.docks.measurement import MeasurementDock
     from ct_measure_plugin.viewer.docks.region_statistics import RegionStatisticsDock
 
@@ -111,6 +117,9 @@ def aim(docks: Iterable[Any], image: Any, layers: dict[str, Any]) -> None:
             name = next((one for one in dock.names if one in layers), None)
             if name is not None:
                 dock.choose_measurement(name)
+                kept = next((one.settings for one in records if one.measurement == name), None)
+                if kept is not None:
+                    dock.form.show(settings_for(name, kept))
                 dock.choose(image, regions=layers[name])
         elif isinstance(dock, RegionStatisticsDock) and "region_statistics" in layers:
             dock.choose(image, layers["region_statistics"])

@@ -317,6 +317,50 @@ def test_a_layer_that_says_nothing_is_asked_about(qtbot, viewer_model):
 
 
 @pytest.mark.canvas
+@pytest.mark.parametrize("title", ["MTF", "HU window"])
+def test_a_closed_dock_is_gone(make_napari_viewer, qtbot, title):
+    """Nothing holds it: neither Qt, nor the viewer, nor a closure of its own."""
+    import gc
+    import weakref
+
+    viewer = make_napari_viewer(show=True)
+    open_volume(viewer, EXAMPLES["edge_mtf"]().volume)
+    outer, dock = viewer.window.add_plugin_dock_widget("ct-measure-plugin", title)
+    gone = weakref.ref(dock)
+    qtbot.waitUntil(lambda: gone().awake, timeout=3000)
+    viewer.window.remove_dock_widget(outer)
+    del outer, dock
+
+    def is_gone():
+        gc.collect()
+        return gone() is None
+
+    qtbot.waitUntil(is_gone, timeout=3000)
+
+
+def test_a_volume_does_not_outlive_its_layer(qtbot, viewer_model):
+    """A dock keeps answers by Volume, but of no Volume that it is not asked about."""
+    import gc
+    import weakref
+
+    dock = MtfDock(viewer_model)
+    qtbot.addWidget(dock)
+    volume = EXAMPLES["edge_mtf"]().volume
+    image = open_volume(viewer_model, volume)
+    layer = draw_regions(viewer_model, image, EXAMPLES["edge_mtf"]().regions)
+    dock.choose(image, regions=layer)
+    dock.measure_now()
+    dock.pause()
+    gone = weakref.ref(volume.hu)
+    viewer_model.layers.remove(image)
+    dock.reset_choices()
+    del volume, image
+    viewer_model.add_image(np.zeros((3, 4, 5)))  # the viewer itself keeps the last active layer
+    gc.collect()
+    assert gone() is None
+
+
+@pytest.mark.canvas
 def test_in_a_real_window_the_box_is_dragged_and_the_number_follows(make_napari_viewer, qtbot):
     viewer = make_napari_viewer(show=True)
     viewer.window.resize(1280, 800)

@@ -185,7 +185,7 @@ class Dock(QWidget):
         self._behind = False
         if frame is not None:
             frame.visibilityChanged.connect(self._on_frame)
-            QTimer.singleShot(0, self, self._look_behind)  # when the tabs are laid out
+            QTimer.singleShot(0, self._look_behind)  # when the tabs are laid out
 
     def _look_behind(self) -> None:
         """See where the frame stands already: that it fell behind may have been told before."""

@@ -4,7 +4,9 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from pathlib import Path
+from types import MethodType
 from typing import TYPE_CHECKING, Any
+from weakref import WeakMethod
 
 from qtpy.QtCore import Signal
 from qtpy.QtWidgets import QFileDialog, QHBoxLayout, QPushButton, QWidget
@@ -46,19 +48,20 @@ class KeepingButtons(QWidget):
     ) -> None:
         super().__init__(parent)
         self._session = session
-        self._question = question
+        # weakly: Qt holds this child, and through it would hold a closed dock for good
+        self._question = _weak(question)
         line = QHBoxLayout(self)
         line.setContentsMargins(0, 0, 0, 0)
         line.setSpacing(4)
         for text, tip, slot in (
-            ("Copy", "Copy the table to the clipboard", self.copy.emit),
+            ("Copy", "Copy the table to the clipboard", self._copy),
             ("Export…", "Write the records as CSV or JSON", self._export),
             ("Record", "Add the records to the logbook", self._record),
             ("Report…", "Write a one-page HTML report", self._report),
         ):
             button = QPushButton(text)
             button.setToolTip(tip)
-            button.clicked.connect(lambda _checked=False, act=slot: act())
+            button.clicked.connect(slot)
             line.addWidget(button)
 
     def records(self) -> tuple[Record, ...]:
@@ -99,19 +102,22 @@ class KeepingButtons(QWidget):
 
     # --- the buttons ----------------------------------------------------------------
 
-    def _export(self) -> None:
+    def _copy(self, *_: Any) -> None:
+        self.copy.emit()
+
+    def _export(self, *_: Any) -> None:
         path, _ = QFileDialog.getSaveFileName(
             self, "Export records", "records.csv", "Table (*.csv);;Records (*.json)"
         )
         if path:
             self._tell(lambda: f"Exported to {self.export_to(path).name}")
 
-    def _report(self) -> None:
+    def _report(self, *_: Any) -> None:
         path, _ = QFileDialog.getSaveFileName(self, "Report", "report.html", "Page (*.html)")
         if path:
             self._tell(lambda: f"Report written to {self.report_to(path).name}")
 
-    def _record(self) -> None:
+    def _record(self, *_: Any) -> None:
         def act() -> str:
             if self._session.logbook is None:
                 self._session.logbook = Logbook()
@@ -128,6 +134,19 @@ class KeepingButtons(QWidget):
             show_error(str(error))
         except OSError as error:
             show_error(f"The file cannot be written: {error.strerror}")
+
+
+def _weak(question: Callable[[], Any]) -> Callable[[], Any]:
+    """Return a method that does not keep its object alive; other functions as they are."""
+    if not isinstance(question, MethodType):
+        return question
+    method = WeakMethod(question)
+
+    def ask() -> Any:
+        found = method()
+        return [] if found is None else found()
+
+    return ask
 
 
 def _whole(question: tuple[Any, ...]) -> bool:

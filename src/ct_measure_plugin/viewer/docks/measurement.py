@@ -93,7 +93,7 @@ class MeasurementDock(Dock):
         self.busy = BusyLine(self._following, self)
         self.headline = Headline((), self)
         self.answers = AnswersView(self)
-        self.answers.chosen.connect(lambda _index: self._tell())
+        self.answers.chosen.connect(self._tell)
         self.answers.picture_wanted.connect(self._open_picture)
         self.keeping = KeepingButtons(self.session, self._questions_kept, self)
         self.keeping.copy.connect(self._copy)
@@ -111,9 +111,7 @@ class MeasurementDock(Dock):
         self.which.setAccessibleName("Measurement")
         for name in self._offered:
             self.which.addItem(find(name).title, name)
-        self.which.currentIndexChanged.connect(
-            lambda index: self.choose_measurement(self.which.itemData(index))
-        )
+        self.which.currentIndexChanged.connect(self._choose_at)
         label = QLabel("&Measure")
         label.setBuddy(self.which)
         form.addRow(label, self.which)
@@ -130,7 +128,7 @@ class MeasurementDock(Dock):
         self.on_image = QCheckBox("Draw on the image")
         self.on_image.setToolTip("Draw what was found, or where was looked, over the image.")
         self.on_image.setChecked(True)
-        self.on_image.toggled.connect(lambda _on: self._draw_marks())
+        self.on_image.toggled.connect(self._draw_marks)
         line.addWidget(self.all_numbers)
         line.addWidget(self.on_image)
         return holder
@@ -141,6 +139,9 @@ class MeasurementDock(Dock):
     def form(self) -> SettingsForm:
         """The form of the present measurement."""
         return self._forms[self._measurement.name]
+
+    def _choose_at(self, index: int) -> None:
+        self.choose_measurement(self.which.itemData(index))
 
     def choose_measurement(self, name: str) -> None:
         """Turn to another of the measurements offered."""
@@ -183,6 +184,8 @@ class MeasurementDock(Dock):
                     self.listen(shapes.events[name], self._layer_changed)
             self._bound = shapes
         images = self.sources.chosen_images()
+        if not self.awake:  # other layers than those that the answers kept are about
+            self._memory.forget()
         self.questions.ask(next((one for one in images if questions_for(one)), None))
         self.kick()
 
@@ -298,7 +301,7 @@ class MeasurementDock(Dock):
 
     # --- drawing --------------------------------------------------------------------
 
-    def _draw_marks(self) -> None:
+    def _draw_marks(self, *_: Any) -> None:
         images = self.sources.chosen_images()
         marks = [mark for one in self._shown if one.layer == 0 for mark in one.marks]
         if not (marks and images and self.on_image.isChecked()):

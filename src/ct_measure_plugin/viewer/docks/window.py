@@ -131,7 +131,12 @@ class WindowDock(Dock):
         for digit in range(1, _SHORTCUTS + 1):
             keys = QShortcut(QKeySequence(f"Ctrl+Alt+{digit}"), self)
             keys.setContext(Qt.ShortcutContext.WindowShortcut)
-            keys.activated.connect(lambda at=digit - 1: self._pick_at(at))
+            keys.setProperty("place", digit - 1)
+            keys.activated.connect(self._pick)
+
+    def _pick(self) -> None:
+        """Pick the preset whose keys were pressed; no closure, which would keep a closed dock."""
+        self._pick_at(int(self.sender().property("place")))
 
     def _pick_at(self, place: int) -> None:
         names = self.presets.names()

@@ -167,6 +167,19 @@ def wire_mtf() -> Example:
     )
 
 
+def slice_profile() -> Example:
+    rng = np.random.default_rng(5)
+    y, x = (np.mgrid[:40, :40] - np.array([19.3, 20.4])[:, None, None]) * 0.5
+    z = np.arange(30) * 0.4
+    bead = np.exp(-(y**2 + x**2) / 0.7) * np.exp(-((z - 5.7) ** 2) / 1.6)[:, None, None]
+    values = np.rint(900 * bead + rng.normal(0, 6, bead.shape)).astype(np.int16)
+    return Example(
+        Volume(values, (0.4, 0.5, 0.5)),
+        (Box((9.75, 9.75), (19.0, 19.0)),),
+        settings={"object_size_mm": 0.5},
+    )
+
+
 EXAMPLES: dict[str, Callable[[], Example]] = {
     "region_statistics": region_statistics,
     "region_contrast": region_contrast,
@@ -177,5 +190,6 @@ EXAMPLES: dict[str, Callable[[], Example]] = {
     "disc_mtf": disc_mtf,
     "line_profile": line_profile,
     "wire_mtf": wire_mtf,
+    "slice_profile": slice_profile,
     "ct_number_line": ct_number_line,
 }

@@ -41,6 +41,7 @@ _CLASSES: dict[str, str] = {
     "disc_mtf": "MeasureDiscMtf",
     "line_profile": "MeasureLineProfile",
     "wire_mtf": "MeasureWireMtf",
+    "slice_profile": "MeasureSliceProfile",
     "ct_number_line": "MeasureCtNumberLine",
 }
 

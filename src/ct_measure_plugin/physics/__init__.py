@@ -29,6 +29,7 @@ from ct_measure_plugin.physics.results import (
     ResultGroup,
 )
 from ct_measure_plugin.physics.scan_difference import scan_difference
+from ct_measure_plugin.physics.slice_profile import SliceProfile, slice_profile
 from ct_measure_plugin.physics.standard_error import standard_error_from_nps
 from ct_measure_plugin.physics.uniformity import Uniformity, uniformity
 from ct_measure_plugin.physics.volume import Acquisition, HeaderWindow, Source, Volume
@@ -52,6 +53,7 @@ __all__ = [
     "RegionStatistics",
     "Result",
     "ResultGroup",
+    "SliceProfile",
     "Source",
     "Uniformity",
     "Volume",
@@ -66,6 +68,7 @@ __all__ = [
     "region_statistics",
     "regions",
     "scan_difference",
+    "slice_profile",
     "standard_error_from_nps",
     "uniformity",
     "wire_mtf",

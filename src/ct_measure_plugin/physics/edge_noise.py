@@ -120,6 +120,8 @@ def residual_spectrum(
     # are real and imaginary part of each conjugate pair
     independent = count[used] / 2 / 2.25
     mean = float(np.sum(power * independent) / independent.sum())
+    if mean <= 0:  # nothing but zeros
+        return NoiseSpectrum(frequency, np.zeros_like(power), spacing_mm)
     misfit = float(np.sum(independent * (power / mean - 1) ** 2))
     n = len(power)
     if misfit < n + 3 * math.sqrt(2 * n):  # white noise explains it

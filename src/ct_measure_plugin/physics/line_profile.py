@@ -225,7 +225,7 @@ def _shape(
         base = (background.low + background.high) / 2
         doubt = math.hypot(peak.height.uncertainty or 0.0, background.doubt) / 2
         edge = NotMeasured("both ends of the profile are alike", "draw it across one edge")
-        shape = {"fwhm": peak.fwhm, "height": peak.height, "middle": peak.middle}
+        shape = {"fwhm": peak.width, "height": peak.height, "middle": peak.middle}
         return shape | {"edge_width": edge}, Quantity(base + peak.height.value / 2, unit, doubt)
     half = Quantity((plateaus.low + plateaus.high) / 2, unit, plateaus.doubt / math.sqrt(2))
     found = edge_width(d, profile, plateaus)

@@ -21,6 +21,7 @@ __all__ = ["Ends", "Peak", "crossings", "edge_width", "ends_of", "peak_width"]
 #: Chance at which noise alone may pass for a step or peak at one point of a profile: 4 standard
 #: deviations where the noise is well known, more (by Student's t) where short ends tell it.
 FALSE_ALARM = 3e-5
+MOST_FACTOR = 12.0
 
 #: Edges: share of the profile at either end that is plateau. Peaks: share that is background.
 PLATEAU, BACKGROUND = 0.2, 0.15
@@ -54,7 +55,8 @@ class Ends:
     @property
     def least(self) -> float:
         """What a step or peak has to exceed to stand out from the noise."""
-        return float(special.stdtrit(self.freedom, 1 - FALSE_ALARM)) * self.noise
+        factor = float(special.stdtrit(self.freedom, 1 - FALSE_ALARM))
+        return min(factor, MOST_FACTOR) * self.noise
 
 
 def ends_of(distance: Floats, profile: Floats, share: float, pixel: float) -> Ends:
@@ -147,18 +149,26 @@ def _steady(distance: Floats, profile: Floats, at: float, slope: float) -> float
 
 @dataclass(frozen=True, slots=True)
 class Peak:
-    """A peak: full width at half maximum, height over the background, middle of the width."""
+    """A peak: width at a share of its height, height over the background, middle of the width."""
 
-    fwhm: Quantity
+    width: Quantity
     height: Quantity
     middle: Quantity
 
 
-def peak_width(distance: Floats, profile: Floats, ends: Ends, unit: str) -> Peak | NotMeasured:
-    """Return the full width at half maximum of the highest or deepest place between equal ends.
+def peak_width(
+    distance: Floats,
+    profile: Floats,
+    ends: Ends,
+    unit: str,
+    share: float = 0.5,
+    *,
+    summit: float = 0.85,
+) -> Peak | NotMeasured:
+    """Return the full width, at a share of its height, of the peak or trough between equal ends.
 
-    The background is the mean of both ends, the top a parabola through the points above 85 %
-    of the highest one.
+    The background is the mean of both ends, the top a parabola through the points above the share
+    `summit` of the highest one.
     """
     base = (ends.low + ends.high) / 2
     i = int(np.argmax(np.abs(profile - base)))
@@ -173,8 +183,8 @@ def peak_width(distance: Floats, profile: Floats, ends: Ends, unit: str) -> Peak
             f"the ends of the profile differ by {abs(ends.high - ends.low):.3g}: it shows a step",
             "draw it from background to background",
         )
-    height, top = _top(distance, profile - base, i)
-    at, slope = crossings(distance, profile - base, height / 2)
+    height, top = _top(distance, profile - base, i, summit)
+    at, slope = crossings(distance, profile - base, share * height)
     left = at[at < top]
     if len(left) == 0 or len(left) == len(at):
         return NotMeasured("the peak reaches an end of the profile", "draw it longer")
@@ -182,19 +192,20 @@ def peak_width(distance: Floats, profile: Floats, ends: Ends, unit: str) -> Peak
     width, middle = float(at[first] - at[last]), float(at[first] + at[last]) / 2
     steep = np.abs(slope[[last, first]])
     crossing = float(np.sum((ends.noise / steep) ** 2))
-    base = ends.doubt / math.sqrt(2)
-    summit = ends.noise * math.sqrt(min(1.0, ends.correlation / (0.2 * width)))
-    level = math.hypot(summit, base) / 2 * float(np.sum(1 / steep))
+    floor = ends.doubt / math.sqrt(2)
+    crown = 1.03 * math.sqrt(1 - summit) * width  # of a Gaussian, above the summit's share
+    peak = ends.noise * math.sqrt(min(1.0, 2 * ends.correlation / crown))
+    level = math.hypot(share * peak, (1 - share) * floor) * float(np.sum(1 / steep))
     return Peak(
         Quantity(width, "mm", math.hypot(math.sqrt(crossing), level)),
-        Quantity(height, unit, math.hypot(summit, base)),
+        Quantity(height, unit, math.hypot(peak, floor)),
         Quantity(middle, "mm", math.sqrt(crossing) / 2),
     )
 
 
-def _top(distance: Floats, profile: Floats, i: int) -> tuple[float, float]:
+def _top(distance: Floats, profile: Floats, i: int, summit: float) -> tuple[float, float]:
     """Return height and place of the parabola about the highest point."""
-    level = 0.85 * profile[i]
+    level = summit * profile[i]
     n = len(profile)
     low = high = i
     while low > 0 and profile[low - 1] / level > 1:

@@ -1,0 +1,260 @@
+"""Samples of the slice sensitivity profile from what crosses the slices."""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+from scipy import interpolate
+
+from ct_measure_plugin.physics.edge_line import pixel_grid
+from ct_measure_plugin.physics.edge_noise import NoiseSpectrum, residual_spectrum
+from ct_measure_plugin.physics.regions import direction
+from ct_measure_plugin.physics.results import NotMeasured
+from ct_measure_plugin.physics.wire_trace import trace_wire
+from ct_measure_plugin.physics.wire_transform import sum_variance
+
+if TYPE_CHECKING:
+    from numpy.typing import NDArray
+
+    Floats = NDArray[np.float64]
+
+__all__ = ["Ramp", "SspSamples", "bead_samples", "find_ramp", "ramp_samples"]
+
+#: A bead's signal is gathered within this many sigma of its spot; the background lies beyond the
+#: second and within the third.
+WITHIN, BEYOND, UPTO = 3.0, 4.0, 8.0
+
+#: Share of a ramp's width that is averaged: its ends, blurred by the slice's own resolution, stay
+#: out.
+KEPT_WIDTH = 0.6
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class SspSamples:
+    """A sampled slice profile.
+
+    Attributes
+    ----------
+    z, value : ndarray, shape (n,)
+        Evenly spaced distances along the slice normal, mm, and the profile there.
+    step : float
+        Distance between independent samples, mm: the slice increment, or the pixels' projection.
+    noise : float or None
+        SD of each sample, where it is known from the pixels.
+    scale_doubt : float
+        Relative standard uncertainty of the common scale of all samples.
+    """
+
+    z: Floats
+    value: Floats
+    step: float
+    noise: float | None = None
+    scale_doubt: float = 0.0
+
+
+def bead_samples(
+    stack: Floats, spacing_mm: tuple[float, float], gap: float
+) -> tuple[SspSamples, tuple[float, float]] | NotMeasured:
+    """Return a bead's signal slice by slice, and its place (y, x) in mm from pixel (0, 0).
+
+    The spot's shape comes from the mean of all slices; in each slice its height over a ring about
+    it is fitted. Fitting a shape is summing with weights: where the bead lies between the pixels
+    does not matter.
+    """
+    mean = stack.mean(axis=0)
+    found = trace_wire(mean[None], spacing_mm)
+    if isinstance(found, NotMeasured):
+        return NotMeasured("no bead was found in the box", "draw it around one bead")
+    y, x = pixel_grid((mean.shape[0], mean.shape[1]), spacing_mm)
+    cy, cx = (float(v) for v in found.centers[0])
+    radius = np.hypot(y - cy, x - cx) / found.sigma
+    if UPTO * found.sigma > min(float(y[-1, 0]) - abs(cy), float(x[0, -1]) - abs(cx)):
+        return NotMeasured(
+            f"less than {UPTO:g} sigma of the bead's spot lie clear of the border of the box",
+            "centre the box on the bead, or draw it larger",
+        )
+    spot = np.exp(-0.5 * radius**2) * (radius <= WITHIN)
+    ring = (radius >= BEYOND) & (radius <= UPTO)
+    level = np.array([np.median(plane[ring]) for plane in stack])
+    flat = stack - level[:, None, None]
+    weights = spot / float(np.sum(spot**2))
+    heights = np.tensordot(flat, weights, 2)
+    parts = [
+        residual_spectrum(np.where(ring, p, 0.0), spacing_mm, ring.astype(float)) for p in flat
+    ]
+    spectrum = NoiseSpectrum(
+        parts[0].frequency, np.mean([p.power for p in parts], axis=0), spacing_mm
+    )
+    noise = math.sqrt(float(sum_variance(weights[None], spectrum)[0]))
+    z = np.arange(len(stack), dtype=np.float64) * gap
+    place = cy - float(y[0, 0]), cx - float(x[0, 0])
+    # the spot's width was fitted with its height, which makes that twice as uncertain
+    mean_height = abs(float(heights.mean()))
+    doubt = 2 * noise / math.sqrt(len(stack)) / mean_height if mean_height > 0 else 0.0
+    return SspSamples(z, heights, gap, noise, doubt), place
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Ramp:
+    """A plate or wire that climbs through the slices.
+
+    Attributes
+    ----------
+    climb : (float, float)
+        Unit vector (y, x) in the slice towards which it climbs.
+    tangent, tangent_doubt : float
+        Height gained per mm in the slice, and its standard uncertainty; the doubt is 0 if given.
+    centers : ndarray, shape (k, 2)
+        Where it crosses the slices that show all of it, (y, x) from the middle of the box, mm.
+    slices : ndarray of int, shape (k,)
+        Those slices.
+    """
+
+    climb: tuple[float, float]
+    tangent: float
+    tangent_doubt: float
+    centers: Floats
+    slices: NDArray[np.intp]
+
+
+def level_stack(stack: Floats) -> Floats:
+    """Return slices less a plane fitted to the pixels that do not depart from it."""
+    ny, nx = stack.shape[1:]
+    y, x = np.mgrid[-1 : 1 : ny * 1j, -1 : 1 : nx * 1j]
+    columns = np.stack([np.ones(ny * nx), y.ravel(), x.ravel()], axis=1)
+    flat = []
+    for plane in stack:
+        v = plane.ravel()
+        kept = np.abs(v - np.median(v)) <= 4 * 1.4826 * np.median(np.abs(v - np.median(v)))
+        mix = np.zeros(3)
+        for _ in range(3):
+            if int(kept.sum()) < 10:
+                break
+            mix = np.linalg.lstsq(columns[kept], v[kept], rcond=None)[0]
+            left = v - columns @ mix
+            spread = 1.4826 * float(np.median(np.abs(left[kept])))
+            kept = np.abs(left) <= 3.5 * spread if spread > 0 else kept
+        flat.append((v - columns @ mix).reshape(ny, nx))
+    return np.array(flat)
+
+
+def find_ramp(
+    level: Floats,
+    spacing_mm: tuple[float, float],
+    gap: float,
+    angle_deg: float | None,
+    climb_deg: float | None,
+) -> Ramp | NotMeasured:
+    """Return how a ramp climbs, from where its middle lies in each slice.
+
+    Parameters
+    ----------
+    level : ndarray, shape (nz, ny, nx)
+        Slices with the background taken out.
+    spacing_mm : (float, float)
+        dy, dx.
+    gap : float
+        Distance between slices, mm.
+    angle_deg : float, optional
+        Angle between ramp and slice; found from the slices if not given.
+    climb_deg : float, optional
+        Direction in the slice along which it climbs, for fewer than three slices; by default the
+        one along which it is longest, which is right for a wire.
+    """
+    y, x = pixel_grid((level.shape[1], level.shape[2]), spacing_mm)
+    signal = level * np.sign(np.sum(level[np.abs(level) > 0.5 * np.abs(level).max()]))
+    floor = 0.25 * float(np.quantile(signal, 0.999))
+    inside = np.maximum(signal - floor, 0.0)
+    total = inside.sum(axis=(1, 2))
+    border = np.concatenate(
+        [inside[:, 0], inside[:, -1], inside[:, :, 0], inside[:, :, -1]], axis=1
+    ).sum(axis=1)
+    whole = np.flatnonzero(
+        (total > 0.8 * np.median(total[total > 0.5 * total.max()])) & (border < 0.02 * total)
+    )
+    if len(whole) < (1 if angle_deg is not None else 3):
+        return NotMeasured(
+            f"only {len(whole)} slices show the whole of a ramp or wire within the box"
+            + ("" if angle_deg is not None else "; 3 are needed to find its angle"),
+            "draw the box larger, take more slices, or enter the angle",
+        )
+    weights = inside[whole] / total[whole][:, None, None]
+    centers = np.stack([np.sum(weights * y, axis=(1, 2)), np.sum(weights * x, axis=(1, 2))], axis=1)
+    if len(whole) < 3:
+        if climb_deg is None:
+            climb = _long_axis(weights.mean(axis=0), y, x)
+        else:
+            climb = direction(climb_deg)
+        return Ramp(climb, math.tan(math.radians(angle_deg or 0.0)), 0.0, centers, whole)
+    z = (whole - whole.mean()) * gap
+    shift = z @ centers / float(z @ z)  # mm in the slice per mm of height
+    left = centers - centers.mean(axis=0) - z[:, None] * shift
+    doubt = math.sqrt(float(np.sum(left**2)) / max(2 * len(whole) - 4, 1) / float(z @ z))
+    length = float(np.hypot(*shift))
+    if length < 0.2:
+        return NotMeasured(
+            f"it moves only {length * gap:.2g} mm from slice to slice: too steep for a ramp",
+            "measure it as a wire within the slice, or choose a bead",
+        )
+    climb = float(shift[0]) / length, float(shift[1]) / length
+    if angle_deg is not None:
+        return Ramp(climb, math.tan(math.radians(angle_deg)), 0.0, centers, whole)
+    return Ramp(climb, 1 / length, doubt / length**2, centers, whole)
+
+
+def _long_axis(weights: Floats, y: Floats, x: Floats) -> tuple[float, float]:
+    """Return the direction along which weights spread most, pointing to +x."""
+    my, mx = float(np.sum(weights * y)), float(np.sum(weights * x))
+    v, u = y - my, x - mx
+    yy, xx, xy = (float(np.sum(weights * w)) for w in (v * v, u * u, v * u))
+    turn = 0.5 * math.atan2(2 * xy, xx - yy)
+    return math.sin(turn), math.cos(turn)
+
+
+def ramp_samples(
+    level: Floats, ramp: Ramp, spacing_mm: tuple[float, float], gap: float
+) -> tuple[SspSamples, float]:
+    """Return the profile along a ramp, all slices pooled, and the ramp's width in the slice, mm.
+
+    Every pixel lies at some height of the ramp above or below its slice; pixels are averaged in
+    steps of that height.
+    """
+    y, x = pixel_grid((level.shape[1], level.shape[2]), spacing_mm)
+    cy, cx = ramp.climb
+    middle = ramp.centers.mean(axis=0)
+    reference = float(ramp.slices.mean())
+    along = (y - middle[0]) * cy + (x - middle[1]) * cx
+    across = (x - middle[1]) * cy - (y - middle[0]) * cx
+    pixel = min(spacing_mm)
+    half, width = _across(level[ramp.slices], across, pixel)
+    used = np.abs(across - half) <= KEPT_WIDTH * width / 2
+    heights, values = [], []
+    for k, plane in enumerate(level):
+        heights.append((along * ramp.tangent - (k - reference) * gap)[used])
+        values.append(plane[used])
+    z, v = np.concatenate(heights), np.concatenate(values)
+    step = max(pixel * ramp.tangent / 2, 1e-3)
+    index = np.rint(z / step).astype(np.intp)
+    low = int(index.min())
+    count = np.bincount(index - low)
+    filled = np.flatnonzero(count >= 0.15 * np.median(count[count > 0]))
+    mean = np.bincount(index - low, v)[filled] / count[filled]
+    even = np.arange(filled[0], filled[-1] + 1)
+    curve = interpolate.Akima1DInterpolator(filled.astype(float), mean, method="makima")
+    profile = np.asarray(curve(even), dtype=np.float64)
+    return SspSamples((even + low) * step, profile, pixel * ramp.tangent), width
+
+
+def _across(level: Floats, across: Floats, pixel: float) -> tuple[float, float]:
+    """Return middle and full width at half maximum of a ramp across its climb, mm."""
+    index = np.rint(across / pixel).astype(np.intp)
+    low = int(index.min())
+    mean = level.mean(axis=0)
+    sums = np.bincount((index - low).ravel(), mean.ravel())
+    sums = sums * np.sign(sums[np.argmax(np.abs(sums))])
+    high = np.flatnonzero(sums > 0.5 * sums.max())
+    middle = (float(high[0] + high[-1]) / 2 + low) * pixel
+    return middle, float(high[-1] - high[0] + 1) * pixel

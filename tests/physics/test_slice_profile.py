@@ -1,0 +1,258 @@
+"""Slice profiles of beads, ramps and wires whose profile along z is given in closed form."""
+
+from __future__ import annotations
+
+import numpy as np
+import pytest
+from scipy.special import ndtr
+
+from ct_measure_plugin.errors import ArgumentError
+from ct_measure_plugin.physics.results import NotMeasured
+from ct_measure_plugin.physics.slice_profile import slice_profile
+from ct_measure_plugin.physics.ssp_blur import Blur, blur_transfer
+
+PIXEL = 0.5
+
+
+def gauss(z, sigma=0.9):
+    return np.exp(-0.5 * (z / sigma) ** 2)
+
+
+def trapezoid(z, width=2.5, flank=1.0):
+    return np.clip((width / 2 + flank / 2 - np.abs(z)) / flank, 0, 1)
+
+
+def bead(shape, gap, *, count=None, offset=0.37, height=500.0, sigma=0.55):
+    """A bead that is a point: the slice's profile times a Gaussian spot."""
+    count = count or int(14 / gap) + 1
+    z = (np.arange(count) - (count - 1) / 2) * gap
+    y, x = (np.mgrid[:41, :41] - 20) * PIXEL
+    spot = np.exp(-((y - 0.13) ** 2 + (x + 0.21) ** 2) / (2 * sigma**2))
+    return height * shape(z - offset)[:, None, None] * spot, z
+
+
+def climbing(shape, gap, *, angle=25.0, turn=0.0, count=9, width=10.0, sigma=0.0, thick=0.0):
+    """A plate: every pixel shows the profile at the height of the ramp there.
+
+    The resolution within the slice and the plate's thickness are applied along the climb, exactly
+    for a Gaussian profile and numerically for others.
+    """
+    z = (np.arange(count) - (count - 1) / 2) * gap
+    y, x = (np.mgrid[:60, :80] - np.array([29.5, 39.5])[:, None, None]) * PIXEL
+    t = np.radians(turn)
+    along, across = np.cos(t) * x - np.sin(t) * y, np.sin(t) * x + np.cos(t) * y
+    tangent = np.tan(np.radians(angle))
+    offsets, weights = [0.0], [1.0]
+    if sigma or thick:
+        nodes = np.linspace(-4, 4, 81)
+        plate = np.linspace(-0.5, 0.5, 41) * thick / np.cos(np.radians(angle))
+        blur = np.exp(-(nodes**2) / 2)
+        offsets = (nodes[:, None] * sigma * tangent + plate).ravel()
+        weights = np.repeat(blur / blur.sum() / len(plate), len(plate))
+    window = ndtr((width / 2 - np.abs(across)) / max(sigma, 0.4))
+    stack = np.zeros((count, *x.shape))
+    for k, at in enumerate(z):
+        for offset, weight in zip(offsets, weights, strict=True):
+            stack[k] += weight * shape(along * tangent - at - offset)
+    return 300 * stack * window, z
+
+
+@pytest.mark.parametrize(
+    ("shape", "fwhm", "fwtm"),
+    [(gauss, 2.354820 * 0.9, 4.291932 * 0.9), (trapezoid, 2.5, 3.3)],
+    ids=["gauss", "trapezoid"],
+)
+@pytest.mark.parametrize("offset", [0.0, 0.11, 0.2])
+def test_a_beads_widths_are_the_profiles(shape, fwhm, fwtm, offset):
+    """An increment of a fifth of the width; a corner between two samples costs 2 % of the FWTM."""
+    stack, z = bead(shape, 0.4, offset=offset)
+    found = slice_profile(stack, spacing_mm=(PIXEL, PIXEL), positions_mm=z, object_size_mm=0.0)
+    assert found.fwhm.value == pytest.approx(fwhm, rel=5e-3)
+    assert found.fwtm.value == pytest.approx(fwtm, rel=0.003 if shape is gauss else 0.025)
+    assert found.middle.value == pytest.approx(offset - z[0], abs=0.01)
+    assert found.center_mm == pytest.approx((10.13, 9.79), abs=5e-3)
+    assert found.angle is None
+
+
+def test_a_beads_area_and_tails():
+    stack, z = bead(gauss, 0.3)
+    found = slice_profile(stack, spacing_mm=(PIXEL, PIXEL), positions_mm=z, object_size_mm=0.0)
+    assert found.equivalent_width.value == pytest.approx(np.sqrt(2 * np.pi) * 0.9, rel=5e-3)
+    assert found.outside.value == pytest.approx(2 * ndtr(-2.354820), abs=2e-3)
+
+
+def test_the_resolution_along_z_is_the_profiles_transform():
+    """Gaussian: 0.187391/σ, 0.341541/σ. Box T with flanks b: sinc(fT) sinc(fb)."""
+    stack, z = bead(gauss, 0.3)
+    found = slice_profile(stack, spacing_mm=(PIXEL, PIXEL), positions_mm=z, object_size_mm=0.0)
+    assert found.f50.value == pytest.approx(0.187391 / 0.9, rel=5e-3)
+    assert found.f10.value == pytest.approx(0.341541 / 0.9, rel=5e-3)
+    stack, z = bead(trapezoid, 0.25)
+    found = slice_profile(stack, spacing_mm=(PIXEL, PIXEL), positions_mm=z, object_size_mm=0.0)
+    truth = np.sinc(2.5 * found.mtf.x) * np.sinc(found.mtf.x)
+    np.testing.assert_allclose(found.mtf.y, truth, atol=0.01)
+
+
+@pytest.mark.parametrize("angle", [10.0, 23.0, 45.0])
+@pytest.mark.parametrize("turn", [0.0, 37.0, 205.0])
+def test_a_ramps_angle_and_width_are_found(angle, turn):
+    stack, z = climbing(gauss, 0.5, angle=angle, turn=turn, count=9 if angle > 15 else 5)
+    found = slice_profile(
+        stack,
+        spacing_mm=(PIXEL, PIXEL),
+        positions_mm=z,
+        target="ramp",
+        object_size_mm=0.0,
+        in_plane_fwhm_mm=0.0,
+    )
+    assert found.angle.value == pytest.approx(angle, abs=0.1)
+    assert found.fwhm.value == pytest.approx(2.354820 * 0.9, rel=6e-3)
+
+
+@pytest.mark.parametrize("count", [1, 7])
+def test_a_wire_at_a_small_angle_serves_too(count):
+    """0.3 mm thick, blurred to 0.5 mm sigma across; one slice tells the direction by its length."""
+    stack, z = climbing(gauss, 0.5, angle=15.0, turn=37.0, width=0.3, count=count)
+    found = slice_profile(
+        stack,
+        spacing_mm=(PIXEL, PIXEL),
+        positions_mm=z,
+        target="wire",
+        angle_deg=15.0 if count == 1 else None,
+        object_size_mm=0.0,
+        in_plane_fwhm_mm=0.0,
+    )
+    assert found.fwhm.value == pytest.approx(2.354820 * 0.9, rel=0.01)
+    assert found.angle.value == pytest.approx(15.0, abs=0.1)
+
+
+def test_a_given_angle_serves_one_slice():
+    """tan 23° = 0.42447; an angle wrong by a factor 1.1 in its tangent is a width wrong by that."""
+    stack, z = climbing(trapezoid, 2.5, angle=23.0, count=1)
+    for tangent, factor in ((0.42447, 1.0), (0.42447 * 1.1, 1.1)):
+        found = slice_profile(
+            stack,
+            spacing_mm=(PIXEL, PIXEL),
+            positions_mm=z,
+            target="ramp",
+            angle_deg=float(np.degrees(np.arctan(tangent))),
+            climb_deg=0.0,
+            object_size_mm=0.0,
+            in_plane_fwhm_mm=0.0,
+        )
+        assert found.fwhm.value == pytest.approx(2.5 * factor, rel=0.01)
+
+
+@pytest.mark.parametrize(
+    ("shape", "truth"), [(gauss, 2.354820 * 0.9), (trapezoid, 2.5)], ids=["gauss", "trapezoid"]
+)
+def test_blur_within_the_slice_and_thickness_are_taken_out(shape, truth):
+    """FWHM 1.4 mm in the slice at 25° adds a Gaussian of 0.28 mm, the plate a box of 0.44 mm."""
+    stack, z = climbing(shape, 0.5, angle=25.0, sigma=0.6, thick=0.4)
+    options = {"spacing_mm": (PIXEL, PIXEL), "positions_mm": z, "target": "ramp"}
+    known = slice_profile(stack, object_size_mm=0.4, in_plane_fwhm_mm=2.354820 * 0.6, **options)
+    assert known.fwhm.value == pytest.approx(truth, rel=0.01)
+    assert {c.code for c in known.cautions} == {"object-size"}
+    unknown = slice_profile(stack, **options)
+    assert "object-size-unknown" in {c.code for c in unknown.cautions}
+    if shape is gauss:
+        tangent, cosine = np.tan(np.radians(25)), np.cos(np.radians(25))
+        variance = 0.81 + (0.6 * tangent) ** 2 + (0.4 / cosine) ** 2 / 12
+        assert unknown.fwhm.value == pytest.approx(2.354820 * np.sqrt(variance), rel=0.01)
+        assert known.f50.value == pytest.approx(0.187391 / 0.9, rel=0.01)
+
+
+def test_the_blur_of_each_object():
+    f = np.array([0.0, 0.7])
+    ball = blur_transfer(Blur("bead", 0.5, None, 3.0), f)
+    x = np.pi * 0.5 * 0.7
+    assert ball[1] == pytest.approx(3 * (np.sin(x) - x * np.cos(x)) / x**3)
+    plate = blur_transfer(Blur("ramp", 0.3, 1.0, 0.0), f)
+    assert plate[1] == pytest.approx(np.sinc(0.7 * 0.3 * np.sqrt(2)))
+    both = blur_transfer(Blur("ramp", 0.3, 1.0, 2.354820), f)
+    assert both[1] == pytest.approx(plate[1] * np.exp(-2 * (np.pi * 0.7) ** 2))
+
+
+def test_a_beads_size_is_taken_out():
+    """A sphere of 1.5 mm has the variance D²/20 along z."""
+    shape = lambda z: gauss(z, np.sqrt(0.81 + 1.5**2 / 20))  # noqa: E731
+    stack, z = bead(shape, 0.3)
+    found = slice_profile(stack, spacing_mm=(PIXEL, PIXEL), positions_mm=z, object_size_mm=1.5)
+    # to first order in the blur's variance, which is a seventh of the profile's: 0.3 %
+    assert found.fwhm.value == pytest.approx(2.354820 * 0.9, rel=8e-3)
+    assert found.raw_fwhm.value > 1.05 * found.fwhm.value
+    assert found.f50.value == pytest.approx(0.187391 / 0.9, rel=8e-3)
+
+
+@pytest.mark.parametrize("target", ["bead", "ramp"])
+def test_stated_uncertainties_are_the_scatter(target):
+    """60 repeats fix a scatter to 9 %."""
+    rng = np.random.default_rng(13)
+    rows = []
+    make = bead if target == "bead" else climbing
+    clean, z = make(gauss, 0.5)
+    for _ in range(60):
+        found = slice_profile(
+            clean + rng.normal(0, 15, clean.shape),
+            spacing_mm=(PIXEL, PIXEL),
+            positions_mm=z,
+            target=target,
+            object_size_mm=0.0,
+            in_plane_fwhm_mm=0.0,
+        )
+        rows.append([(q.value, q.uncertainty) for q in (found.fwhm, found.f50, found.height)])
+    rows = np.array(rows)
+    ratio = np.median(rows[..., 1], axis=0) / rows[..., 0].std(axis=0, ddof=1)
+    assert np.all(ratio > 0.65), ratio
+    assert np.all(ratio < 1.8), ratio
+
+
+REFUSALS = {
+    "not evenly spaced": {"positions_mm": lambda z: np.where(np.arange(len(z)) > 20, z + 1.0, z)},
+    "samples wide": {"every": 4},
+    "clear of the border": {"crop": np.s_[:, 12:32, 12:26]},
+    "no profile was found": {"weak": True},
+}
+
+
+@pytest.mark.parametrize("words", REFUSALS)
+def test_what_cannot_be_measured_is_refused_in_words(words):
+    stack, z = bead(gauss, 0.35)
+    case = REFUSALS[words]
+    stack, z = stack[:: case.get("every", 1)], z[:: case.get("every", 1)]
+    stack = stack[case.get("crop", np.s_[:])]
+    if "weak" in case:
+        rng = np.random.default_rng(1)
+        stack = stack * 0.01 + rng.normal(0, 30, stack.shape)
+    z = case.get("positions_mm", lambda v: v)(z)
+    found = slice_profile(stack, spacing_mm=(PIXEL, PIXEL), positions_mm=z)
+    assert isinstance(found, NotMeasured)
+    if words != "no profile was found":  # noise may also be taken for a bead at the border
+        assert words in found.reason
+    assert found.remedy
+
+
+def test_a_coarse_increment_is_cautioned():
+    stack, z = bead(gauss, 0.8)
+    found = slice_profile(stack, spacing_mm=(PIXEL, PIXEL), positions_mm=z, object_size_mm=0.0)
+    assert "coarse-sampling" in {c.code for c in found.cautions}
+
+
+def test_two_slices_do_not_tell_an_angle():
+    stack, z = climbing(gauss, 0.5, count=2)
+    found = slice_profile(stack, spacing_mm=(PIXEL, PIXEL), positions_mm=z, target="ramp")
+    assert isinstance(found, NotMeasured)
+    assert "fewer than 3 slices" in found.reason
+
+
+def test_misuse_is_named():
+    stack, z = bead(gauss, 0.5)
+    for changes, words in (
+        ({"positions_mm": z[:-1]}, "'positions_mm' must be"),
+        ({"target": "disc"}, "'target' must be"),
+        ({"object_size_mm": -1.0}, "'object_size_mm' must not"),
+        ({"angle_deg": 90.0, "target": "ramp"}, "'angle_deg' must lie"),
+    ):
+        options = {"spacing_mm": (PIXEL, PIXEL), "positions_mm": z} | changes
+        with pytest.raises(ArgumentError, match=words):
+            slice_profile(stack, **options)

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import time
+
 import pytest
 from napari.utils._proxies import PublicOnlyProxy
 
@@ -38,10 +40,12 @@ def test_many_kicks_are_few_refreshes_but_not_none(dock, qtbot):
     dock.show()
     qtbot.waitUntil(lambda: dock.refreshed == 1, timeout=2000)
     before = dock.refreshed
+    began = time.perf_counter()
     for _ in range(30):
         dock.kick()
         qtbot.wait(10)
-    assert 3 <= dock.refreshed - before <= 12  # 0.3 s at 30 a second is 9
+    at_most = 30 * (time.perf_counter() - began) + 3  # 30 a second; a timer may be early by a tick
+    assert 3 <= dock.refreshed - before <= at_most
 
 
 def test_a_hidden_dock_does_nothing_until_shown(dock, qtbot):

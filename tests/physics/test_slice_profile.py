@@ -49,7 +49,8 @@ def climbing(shape, gap, *, angle=25.0, turn=0.0, count=9, width=10.0, sigma=0.0
         blur = np.exp(-(nodes**2) / 2)
         offsets = (nodes[:, None] * sigma * tangent + plate).ravel()
         weights = np.repeat(blur / blur.sum() / len(plate), len(plate))
-    window = ndtr((width / 2 - np.abs(across)) / max(sigma, 0.4))
+    edges = np.array([width / 2, -width / 2])[:, None, None]
+    window = np.subtract(*ndtr((edges - across) / max(sigma, 0.5)))
     stack = np.zeros((count, *x.shape))
     for k, at in enumerate(z):
         for offset, weight in zip(offsets, weights, strict=True):
@@ -111,7 +112,7 @@ def test_a_ramps_angle_and_width_are_found(angle, turn):
 
 @pytest.mark.parametrize("count", [1, 7])
 def test_a_wire_at_a_small_angle_serves_too(count):
-    """0.3 mm thick, blurred to 0.5 mm sigma across; one slice tells the direction by its length."""
+    """0.3 mm thick, blurred by 0.5 mm across; one slice tells the direction by its length."""
     stack, z = climbing(gauss, 0.5, angle=15.0, turn=37.0, width=0.3, count=count)
     found = slice_profile(
         stack,

@@ -270,7 +270,7 @@ def _sampled(
             " measured",
             "choose another object",
         )
-    samples, _ = ramp_samples(level, ramp, steps, gap)
+    samples = ramp_samples(level, ramp, steps, gap, thin=target == "wire")
     middle = ramp.centers[len(ramp.centers) // 2]
     ny, nx = stack.shape[1:]
     place = (

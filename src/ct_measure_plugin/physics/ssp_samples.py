@@ -31,6 +31,9 @@ WITHIN, BEYOND, UPTO = 3.0, 4.0, 8.0
 #: out.
 KEPT_WIDTH = 0.6
 
+#: Widths of a wire that are averaged: all of it.
+WIRE_WIDTH = 3.0
+
 
 @dataclass(frozen=True, slots=True, eq=False)
 class SspSamples:
@@ -215,12 +218,12 @@ def _long_axis(weights: Floats, y: Floats, x: Floats) -> tuple[float, float]:
 
 
 def ramp_samples(
-    level: Floats, ramp: Ramp, spacing_mm: tuple[float, float], gap: float
-) -> tuple[SspSamples, float]:
-    """Return the profile along a ramp, all slices pooled, and the ramp's width in the slice, mm.
+    level: Floats, ramp: Ramp, spacing_mm: tuple[float, float], gap: float, *, thin: bool
+) -> SspSamples:
+    """Return the profile along a ramp or, if thin, a wire, all slices pooled.
 
     Every pixel lies at some height of the ramp above or below its slice; pixels are averaged in
-    steps of that height.
+    steps of that height. Of a wire, whose height varies across, a Gaussian's height is fitted.
     """
     y, x = pixel_grid((level.shape[1], level.shape[2]), spacing_mm)
     cy, cx = ramp.climb
@@ -230,22 +233,28 @@ def ramp_samples(
     across = (x - middle[1]) * cy - (y - middle[0]) * cx
     pixel = min(spacing_mm)
     half, width = _across(level[ramp.slices], across, pixel)
-    used = np.abs(across - half) <= KEPT_WIDTH * width / 2
-    heights, values = [], []
-    for k, plane in enumerate(level):
-        heights.append((along * ramp.tangent - (k - reference) * gap)[used])
-        values.append(plane[used])
-    z, v = np.concatenate(heights), np.concatenate(values)
+    used = np.abs(across - half) <= (WIRE_WIDTH if thin else KEPT_WIDTH) * width / 2
+    shape = np.ones_like(across)
+    if thin:
+        mean = level[ramp.slices].mean(axis=0)[used]
+        half = float(mean @ across[used]) / float(mean.sum())
+        variance = float(mean @ (across[used] - half) ** 2) / float(mean.sum())
+        shape = np.exp(-((across - half) ** 2) / (2 * variance))
+    z = np.concatenate(
+        [(along * ramp.tangent - (k - reference) * gap)[used] for k in range(len(level))]
+    )
+    v, g = np.concatenate([p[used] for p in level]), np.tile(shape[used], len(level))
     step = max(pixel * ramp.tangent / 2, 1e-3)
     index = np.rint(z / step).astype(np.intp)
     low = int(index.min())
-    count = np.bincount(index - low)
+    count = np.bincount(index - low, g * g)
     filled = np.flatnonzero(count >= 0.15 * np.median(count[count > 0]))
-    mean = np.bincount(index - low, v)[filled] / count[filled]
-    even = np.arange(filled[0], filled[-1] + 1)
-    curve = interpolate.Akima1DInterpolator(filled.astype(float), mean, method="makima")
-    profile = np.asarray(curve(even), dtype=np.float64)
-    return SspSamples((even + low) * step, profile, pixel * ramp.tangent), width
+    mean = np.bincount(index - low, v * g)[filled] / count[filled]
+    place = np.bincount(index - low, z * g * g)[filled] / count[filled]
+    even = np.arange(filled[0] + 1, filled[-1]) + low
+    curve = interpolate.Akima1DInterpolator(place, mean, method="makima")
+    profile = np.asarray(curve(even * step), dtype=np.float64)
+    return SspSamples(even * step, profile, pixel * ramp.tangent)
 
 
 def _across(level: Floats, across: Floats, pixel: float) -> tuple[float, float]:

@@ -216,21 +216,24 @@ def rod_trial(
             f"another edge lies {inner:.2g} mm inside its edge; {needed:.2g} mm are needed",
             _ALONE,
         )
-    deep = outside < 0
+    outer = float(others[others > 0].min(initial=math.inf))
+    room = min(outer - MARGIN_FWHM * fwhm, _to_border(scene, one.center) - one.radius)
+    wanted = max(WANTED_FWHM * fwhm, 8 * pixel)
     half = box_about(
-        space.without(own | deep),
+        space.without(own | (outside < 0)),
         one.center,
-        wanted_mm=one.radius + max(WANTED_FWHM * fwhm, 8 * pixel),
+        wanted_mm=one.radius + wanted,
         least_mm=one.radius + needed,
         margin_mm=MARGIN_FWHM * fwhm,
     )
+    if half is None and room >= needed:
+        half = one.radius + min(room, wanted)  # others lie only in the corners of its square
     if half is None:
-        outer = float(others[others > 0].min(initial=math.inf))
-        room = _to_border(scene, one.center) - one.radius
-        near = "the border of the image" if room < outer else "another edge"
+        border = _to_border(scene, one.center) - one.radius
+        near = "the border of the image" if border < outer else "another edge"
         return trial.refused(
             scene,
-            f"{near} lies {min(room, outer):.2g} mm outside its edge;"
+            f"{near} lies {min(border, outer):.2g} mm outside its edge;"
             f" {needed + MARGIN_FWHM * fwhm:.2g} mm are needed",
             _ALONE,
         )

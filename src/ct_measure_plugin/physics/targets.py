@@ -115,9 +115,9 @@ def find_targets(
     -----
     Edge points clear of the noise (Canny's, at two scales) are gathered into circles and straight
     pieces; spots are peaks of a difference of Gaussians. About each, the largest box is sought
-    that no other edge enters. The candidates that noise would trouble least (by the Cramér-Rao
-    bound of a Gaussian blur) are then measured with the measurements' own default methods, so a
-    box that is proposed does measure, and a reason is the measurement's own.
+    that no other edge enters. Of each kind, the candidates that noise would trouble least (by the
+    Cramér-Rao bound of a Gaussian blur) are then measured with the measurements' own default
+    methods, so a box that is proposed does measure, and a reason is the measurement's own.
 
     Examples
     --------
@@ -136,7 +136,7 @@ def find_targets(
     candidates = list(_candidates(scene, inside))
     trials = [one for one in candidates if isinstance(one, Trial)]
     refused = [one for one in candidates if isinstance(one, Unsuitable)]
-    trials.sort(key=lambda one: one.doubt)
+    trials = _by_turns(trials)
     refused += [
         one.refused(
             scene,
@@ -213,6 +213,15 @@ def _circles(scales: Sequence[EdgePoints], pixel: float) -> list[tuple[Round, Ed
     """Return the circles of several scales, the best seen first, with the points they rest on."""
     found = [(one, points) for points in scales for one in round_objects(points, pixel)]
     return sorted(found, key=lambda pair: -pair[0].seen)
+
+
+def _by_turns(trials: list[Trial]) -> list[Trial]:
+    """Return the most promising of each kind by turns, so that none crowds the others out."""
+    place: list[tuple[int, float, Trial]] = []
+    for kind in ("rod", "edge", "wire"):
+        own = sorted((one for one in trials if one.kind == kind), key=lambda one: one.doubt)
+        place += [(turn, one.doubt, one) for turn, one in enumerate(own)]
+    return [one for _, _, one in sorted(place, key=lambda row: row[:2])]
 
 
 def _away_from_spots(points: EdgePoints, spots: list[Spot], pixel: float) -> EdgePoints:

@@ -25,7 +25,7 @@ if TYPE_CHECKING:
     from ct_measure_plugin.measurements import RegionNeed
     from ct_measure_plugin.viewer.session import Session
 
-__all__ = ["Sources"]
+__all__ = ["ALL_SLICES", "Sources"]
 
 #: napari's drawing mode for each kind of region that can be drawn, and what it is called.
 _TOOLS = {
@@ -36,7 +36,7 @@ _TOOLS = {
     "segment": ("add_line", "Line"),
 }
 
-_DRAWN, _AROUND, _ALL = "As drawn", "Slices around it", "All slices"
+_DRAWN, _AROUND, ALL_SLICES = "As drawn", "Slices around it", "All slices"
 
 #: Rows of the list of images before it scrolls, and pixels of one.
 _ROWS, _ROW = 4, 20
@@ -83,7 +83,7 @@ class Sources(QWidget):
         self.draw.clicked.connect(self._draw_first)
         self.slices = QComboBox()
         self.slices.setAccessibleName("Slices")
-        self.slices.addItems([_DRAWN, _AROUND, _ALL])
+        self.slices.addItems([_DRAWN, _AROUND, ALL_SLICES])
         self.slices.setToolTip("Regions that state their own slices keep them.")
         self.slices.currentIndexChanged.connect(self._slices_chosen)
         self.around = QSpinBox()

@@ -68,6 +68,17 @@ def _edge_width(truth):
     return 2.0 * float(np.interp(0.9, rise, x))
 
 
+def _along_z(truth):
+    """Return widths and f50 of a slice profile of unit area, by its transform."""
+    width = truth.slice_fwhm_mm
+    z = (np.arange(4000) + 0.5) / 2000 * width - width
+    profile = truth.slice_profile(z)
+    f = np.linspace(0.0, 1.0 / width, 1001)
+    transform = np.cos(2 * np.pi * np.outer(f, z)) @ profile / profile.sum()
+    f50 = np.interp(-0.5, -transform, f)
+    return {"fwhm": width, "equivalent_width": profile.sum() * width / 2000, "f50": f50}
+
+
 def _promises(truth):
     """Return the true values of the demo's answers, by measurement and first region."""
     ptfe = truth.hu(material("PTFE"))
@@ -96,6 +107,7 @@ def _promises(truth):
         ("uniformity", "water cylinder"): flat | {"sd": truth.noise_sd((0.0, 15.0))},
         ("disc_mtf", "PTFE rod"): mtf | {"radius": 5.5},
         ("wire_mtf", "copper wire"): mtf | {"lean": bench.WIRE_TILT_DEG},
+        ("slice_profile", "aluminium ramp"): {"angle": bench.RAMP_DEG} | _along_z(truth),
         ("line_profile", "edge of the PTFE block"): {
             "edge_width": _edge_width(truth),
             "step": -ptfe,
@@ -229,6 +241,26 @@ def test_the_wire_and_the_beads_have_the_mtf_that_was_put_in(name):
         for got, level in ((found.f50, 0.5), (found.f10, 0.1)):
             off = abs(got.value - truth.frequency_at(level))
             assert off < 4.0 * got.uncertainty, (region, level)
+
+
+def test_beads_and_ramps_have_the_slice_profile_that_was_put_in():
+    """A trapezoid in steps of 0.5 mm: widths and f50 along z within 4 standard uncertainties."""
+    volume, promised = _series("thin-steps"), _along_z(_truth("thin-steps"))
+    beads = [
+        (ctm.regions.Disc(place[1:], 7.0), {"object_size_mm": bench.BEAD_DIAMETER_MM})
+        for place in bench.BEADS_MM
+    ]
+    strip = {"target": "ramp", "object_size_mm": bench.RAMP_THICKNESS_MM, "in_plane_fwhm_mm": 1.04}
+    ramps = [
+        (ctm.regions.Box(middle, (18.0, 44.0), z_mm=(46.0, 54.0)), strip)
+        for middle in ((8.0, 10.0), (32.0, 14.0))
+    ]
+    for region, settings in beads + ramps:
+        found = ctm.measure("slice_profile", volume, region, **settings)
+        assert found, (region, found)
+        for name, value in promised.items():
+            got = getattr(found, name)
+            assert abs(got.value - value) < 4.0 * got.uncertainty, (region, name)
 
 
 def test_the_whole_mtf_of_a_strong_edge_lies_on_the_true_curve():

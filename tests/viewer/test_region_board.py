@@ -204,3 +204,29 @@ def test_a_region_that_moves_faster_than_it_is_measured_keeps_its_last_number(sc
     [row] = board.rows
     assert row.answer.mean.value != before.mean.value
     assert not row.stale
+
+
+def test_ten_thousand_labels_are_rows_that_are_looked_up_not_made_anew(viewer_model):
+    """A stroke then costs the labels it touches, and a look at the others."""
+    rng = np.random.default_rng(2)
+    hu = np.round(rng.normal(40, 10, (1, 400, 400))).astype(np.int16)
+    data, attributes, _ = layer_of(Volume(hu, (1.0, 1.0, 1.0)), "many")
+    image = viewer_model.add_image(data, **attributes)
+    numbers = np.arange(10_000, dtype=np.uint16).reshape(100, 100)
+    labels = np.kron(numbers, np.ones((4, 4), np.uint16))[None]
+    layer = viewer_model.add_labels(labels, scale=image.scale, translate=image.translate)
+    board = RegionBoard(Session.of(viewer_model), NAME)
+    board.settings = find(NAME).settings_type()
+    board.images, board.source = (image,), source_of(layer, viewer_model)
+    board.look(seconds=0.0)
+    assert len(board.rows) == 9_999
+    before = board.rows
+    layer.events.paint.connect(board.source.note)
+    layer.data_setitem((np.array([0]), np.array([4]), np.array([4])), 7)
+    board.look(first={101, 7}, seconds=0.05)
+    changed = [row.index for row, old in zip(board.rows, before, strict=True) if row is not old]
+    assert set(changed) >= {7, 101}
+    assert len(changed) < 200
+    n = {row.index: row.answer.n.value for row in board.rows if row.index in (7, 101)}
+    assert n == {7: 17.0, 101: 15.0}
+    board.stop()

@@ -10,12 +10,12 @@ import pytest
 from ct_measure_plugin.errors import ArgumentError
 from ct_measure_plugin.physics.region_statistics import region_statistics
 from ct_measure_plugin.physics.results import NotMeasured
+from ct_measure_plugin.viewer.answer_columns import write_answers
 from ct_measure_plugin.viewer.region_features import (
     checked_code,
     ids_on,
     set_column,
     tags_on,
-    write_answers,
 )
 
 SQUARE = np.array([[1, 5, 5], [1, 5, 25], [1, 25, 25], [1, 25, 5]], float)
@@ -45,6 +45,18 @@ def test_answers_are_columns_that_other_plugins_can_read(shapes):
     assert list(features["ct_not_measured"]) == ["", "too small"]
     assert list(features["ct_image"]) == ["CT", "CT"]
     assert list(features["foreign"]) == [3.5, 4.5]
+
+
+def test_numbers_of_an_answer_that_is_gone_do_not_stay(shapes):
+    """Moved off the image: its old mean must not stand beside the reason."""
+    write_answers(shapes, {0: answer(), 1: answer()}, image="CT")
+    write_answers(shapes, {0: answer(), 1: answer()}, image="second", suffix="_2")
+    gone = NotMeasured("the region lies outside the volume", "move it")
+    write_answers(shapes, {0: gone, 1: gone}, image="CT")
+    features = shapes.features
+    assert features[["ct_mean", "ct_mean_u", "ct_p10", "ct_n"]].isna().all().all()
+    assert features["ct_mean_2"].notna().all()
+    assert set(features["ct_not_measured"]) == {gone.reason}
 
 
 def test_writing_the_same_again_touches_nothing(shapes):

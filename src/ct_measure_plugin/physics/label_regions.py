@@ -113,7 +113,10 @@ def overlap(one: Index, other: Index) -> bool:
     >>> overlap((slice(0, 2),), (slice(2, 4),)), overlap((slice(0, 3),), (slice(2, 4),))
     (False, True)
     """
-    return all(a.start < b.stop and b.start < a.stop for a, b in zip(one, other, strict=True))
+    for a, b in zip(one, other, strict=True):
+        if a.start >= b.stop or b.start >= a.stop:
+            return False
+    return True
 
 
 def joined(one: Index, other: Index) -> Index:

@@ -19,7 +19,7 @@ from ct_measure_plugin.physics.label_regions import joined, label_boxes, label_m
 from ct_measure_plugin.viewer.drawn import Drawn
 from ct_measure_plugin.viewer.following import Following
 from ct_measure_plugin.viewer.label_grid import Grid, NoGrid, grid_of
-from ct_measure_plugin.viewer.region_features import tags_on
+from ct_measure_plugin.viewer.region_features import Tags, tags_on
 
 if TYPE_CHECKING:
     from collections.abc import Iterator, Sequence
@@ -77,6 +77,8 @@ class LabelRegions:
         self._all_dirty = True
         self._stand: tuple[float, ...] = ()
         self._quiet = False
+        self._tags: tuple[int, dict[int, Tags]] = (0, {})
+        self._drawn: dict[int, Drawn] = {}
         self._following = Following("Finding labels")
         self._following.answered.connect(self._found)
 
@@ -177,52 +179,95 @@ class LabelRegions:
             self._all_dirty = True
         data = grid.data_of(self.layer)
         dirty = [grid.inside(box) for box in self._dirty]
-        if self._all_dirty or sum(_size(box) for box in dirty if box) > _LARGE_STROKE:
-            known, boxes, count = self._known, None, data.size
-        else:
-            known, boxes = self._known, [box for box in dirty if box]
-            count = _work(known, boxes)
+        known, change, count = self._known, None, data.size
+        if not self._all_dirty and sum(_size(box) for box in dirty if box) <= _LARGE_STROKE:
+            change = _Change.of(known, [box for box in dirty if box])
+            count = change.count
         self._dirty, self._all_dirty = [], False
         if wait or (isinstance(data, np.ndarray) and count <= SOON):
-            self._known = _look_through(data, grid, known, boxes)
+            self._known = _look_through(data, grid, known, change)
         else:
-            self._following.start(lambda _work: _look_through(data, grid, known, boxes))
+            self._following.start(lambda _work: _look_through(data, grid, known, change))
 
     def _found(self, known: _Known) -> None:
         self._known = known
         self.changed.emit()
 
     def _named(self, grid: Grid) -> tuple[Drawn, ...]:
-        labels = sorted(self._known.masks)
-        found = []
-        for label, tags in zip(labels, tags_on(self.layer, labels), strict=True):
-            name = tags.name or f"label {label}"
-            mask, problem = self._known.masks[label], ""
-            words = {"name": name, "z_mm": grid.z_mm, **tags.words()}
-            try:
-                if any(getattr(mask, word) != value for word, value in words.items()):
-                    self._known.masks[label] = mask = replace(mask, **words)
-            except CtMeasureError as error:
-                problem = str(error)
-            region = None if problem else mask
-            found.append(Drawn(label, name, region, problem, tags.group, tags.code))
-        return tuple(found)
+        """Return the labels with their names; those of which nothing has changed as they were."""
+        masks = self._known.masks
+        labels = sorted(masks)
+        features = id(self.layer.features)
+        if features != self._tags[0] or any(label not in self._tags[1] for label in labels):
+            tags = zip(labels, tags_on(self.layer, labels), strict=True)
+            self._tags, self._drawn = (features, dict(tags)), {}
+        before, self._drawn = self._drawn, {}
+        for label in labels:
+            known = before.get(label)
+            same = known is not None and known.region is masks[label]
+            if known is None or not same or masks[label].z_mm != grid.z_mm:
+                known = self._one(label, self._tags[1][label], grid)
+            self._drawn[label] = known
+        return tuple(self._drawn.values())
+
+    def _one(self, label: int, tags: Tags, grid: Grid) -> Drawn:
+        name, mask = tags.name or f"label {label}", self._known.masks[label]
+        words = {"name": name, "z_mm": grid.z_mm, **tags.words()}
+        try:
+            if any(getattr(mask, word) != value for word, value in words.items()):
+                self._known.masks[label] = mask = replace(mask, **words)
+        except CtMeasureError as error:
+            return Drawn(label, name, None, str(error), tags.group, tags.code)
+        return Drawn(label, name, mask, "", tags.group, tags.code)
 
 
-def _look_through(data: Any, grid: Grid, known: _Known, dirty: list[Index] | None) -> _Known:
+@dataclass(frozen=True, slots=True)
+class _Change:
+    """Where a map was edited, and how many voxels must be looked at for it.
+
+    Each place is a box and the labels that have been near it.
+    """
+
+    places: list[tuple[Index, set[int]]]
+    count: int
+
+    @classmethod
+    def of(cls, known: _Known, dirty: list[Index]) -> _Change:
+        places = []
+        for box in _merged(dirty):
+            near = {label for label, own in known.boxes.items() if overlap(own, box)}
+            places.append((box, near))
+        touched: set[int] = set().union(*(near for _, near in places))
+        count = sum(_size(known.boxes[label]) for label in touched)
+        return cls(places, count + sum(_size(box) for box, _ in places))
+
+
+def _merged(boxes: list[Index]) -> list[Index]:
+    """Return boxes of which none overlap: the parts of a stroke become one."""
+    found: list[Index] = []
+    for box in boxes:
+        merged, apart = box, []
+        for other in found:
+            if overlap(merged, other):
+                merged = joined(merged, other)
+            else:
+                apart.append(other)
+        found = [*apart, merged]
+    return found
+
+
+def _look_through(data: Any, grid: Grid, known: _Known, change: _Change | None) -> _Known:
     """Return what is known after a change, from the map alone; fit for any thread."""
     labels = np.asarray(data)
     boxes, masks = dict(known.boxes), dict(known.masks)
-    touched: set[int]
-    if dirty is None:
+    touched: set[int] = set()
+    if change is None:
         boxes = label_boxes(labels)
         touched = set(boxes)
         masks = {label: mask for label, mask in masks.items() if label in boxes}
     else:
-        touched = set()
-        for box in dirty:
-            present = {int(n) for n in np.unique(labels[box]) if n != 0}
-            present |= {label for label, own in boxes.items() if overlap(own, box)}
+        for box, near in change.places:
+            present = near | {int(n) for n in np.unique(labels[box]) if n != 0}
             for label in present:
                 boxes[label] = joined(boxes[label], box) if label in boxes else box
             touched |= present
@@ -248,14 +293,6 @@ def _same(one: Mask, other: Mask | None) -> bool:
         and one.origin_mm == other.origin_mm
         and np.array_equal(one.inside, other.inside)
     )
-
-
-def _work(known: _Known, dirty: list[Index]) -> int:
-    """Return how many voxels must be looked at after a change."""
-    touched = {
-        label for label, own in known.boxes.items() if any(overlap(own, box) for box in dirty)
-    }
-    return sum(_size(known.boxes[label]) for label in touched) + sum(map(_size, dirty))
 
 
 def _size(box: Index) -> int:

@@ -104,6 +104,8 @@ class RegionBoard:
         self.said = ""
         self.drawn: tuple[Drawn, ...] = ()
         self._asked: list[tuple[Placement, tuple[Drawn, ...]]] = []
+        self._known_asks: dict[tuple[int, int], Ask] = {}
+        self._known_rows: dict[tuple[int, str], Row] = {}
         self._last: dict[tuple[int, str], Result | NotMeasured] = {}
         self.answers = RegionAnswers(name)
         self.answers.changed.connect(self.changed.emit)
@@ -129,7 +131,9 @@ class RegionBoard:
         self.said = self._read(wait=seconds is None)
         if not self._asked:
             return 0
+        self._asks_now: dict[tuple[int, int], Ask] = {}
         columns = [self._asks(*asked) for asked in self._asked]
+        self._known_asks = self._asks_now
         differences = [
             [_difference(one, two) for one, two in zip(columns[0], column, strict=True)]
             for column in columns[1:]
@@ -139,6 +143,7 @@ class RegionBoard:
         asks = [ask for i in order for column in every if (ask := column[i]) is not None]
         left = self.answers.find(asks, seconds)
         self.rows = tuple(self._lay_out(columns, differences))
+        self._known_rows = {(row.index, row.mark): row for row in self.rows}
         if len(self._last) > 2 * len(self.rows):
             kept = {(row.index, row.mark) for row in self.rows}
             self._last = {key: found for key, found in self._last.items() if key in kept}
@@ -229,13 +234,22 @@ class RegionBoard:
         return ""
 
     def _asks(self, placement: Placement, drawn: Sequence[Drawn]) -> list[Ask | None]:
-        settings = self.settings
+        """Return the questions; those of regions that are the same objects as before stay, too."""
+        settings, volume = self.settings, placement.volume
         if settings is None:
             return [None] * len(drawn)
-        return [
-            None if one.region is None else Ask(placement.volume, one.region, settings)
-            for one in drawn
-        ]
+        found: list[Ask | None] = []
+        for one in drawn:
+            if one.region is None:
+                found.append(None)
+                continue
+            key = id(one.region), id(volume)
+            ask = self._known_asks.get(key)
+            if ask is None or ask.settings is not settings:
+                ask = Ask(volume, one.region, settings)
+            self._asks_now[key] = ask
+            found.append(ask)
+        return found
 
     def _lay_out(
         self, columns: list[list[Ask | None]], differences: list[list[Ask | None]]
@@ -266,6 +280,14 @@ class RegionBoard:
             answer, stale = self._last.get((one.index, image[1]), _WAITING), True
         else:
             self._last[one.index, image[1]] = answer
+        known = self._known_rows.get((one.index, image[1]))
+        if (
+            known is not None
+            and known.answer is answer
+            and (known.name, known.group, known.code) == (one.name, one.group, one.code)
+            and (known.image, known.complete, known.stale) == (image[0], complete, stale)
+        ):
+            return known
         return Row(
             one.index, one.name, one.group, one.code,
             answer, *image, complete, difference, stale,

@@ -13,12 +13,9 @@ from typing import TYPE_CHECKING, Any
 
 from ct_measure_plugin.errors import ArgumentError
 from ct_measure_plugin.physics.regions import LONGEST_CODE
-from ct_measure_plugin.physics.results import NotMeasured, quantities_of
 
 if TYPE_CHECKING:
     from collections.abc import Mapping, Sequence
-
-    from ct_measure_plugin.physics.results import Result
 
 __all__ = [
     "CLASS",
@@ -26,6 +23,7 @@ __all__ = [
     "ELLIPSOID",
     "HIGH",
     "ID",
+    "INDEX",
     "LOW",
     "NAME",
     "PREFIX",
@@ -33,11 +31,13 @@ __all__ = [
     "Z_HIGH",
     "Z_LOW",
     "Tags",
+    "blank_defaults",
     "checked_code",
+    "count_of",
     "ids_on",
     "set_column",
     "tags_on",
-    "write_answers",
+    "with_labels",
 ]
 
 NAME, CLASS, CODE = "name", "class", "code"
@@ -100,7 +100,7 @@ def tags_on(layer: Any, keys: Sequence[int] | None = None) -> list[Tags]:
         The labels of a Labels layer, whose features name the label of each row.
     """
     features = layer.features
-    count = _count(layer) if keys is None else len(keys)
+    count = count_of(layer) if keys is None else len(keys)
     if not len(features.columns):
         return [Tags()] * count
     rows = range(count) if keys is None else _rows_of_labels(layer, keys)
@@ -139,7 +139,7 @@ def ids_on(layer: Any) -> list[int]:
 
     A pasted shape brings the number of the one it was copied from and gets a new one.
     """
-    count = _count(layer)
+    count = count_of(layer)
     known = _column(layer.features, ID)
     found: list[int] = []
     used: set[int] = set()
@@ -154,54 +154,6 @@ def ids_on(layer: Any) -> list[int]:
     if found != [_finite(n) for n in known[:count]]:
         set_column(layer, ID, dict(enumerate(found)))
     return found
-
-
-def write_answers(
-    layer: Any,
-    answers: Mapping[int, Result | NotMeasured],
-    *,
-    image: str = "",
-    suffix: str = "",
-    keys: Sequence[int] | None = None,
-) -> bool:
-    """Write answers into the features, a column a quantity and one for its uncertainty.
-
-    Parameters
-    ----------
-    layer : napari layer
-        Shapes, Points or Labels.
-    answers : mapping of int to Result or NotMeasured
-        By row, or by label.
-    image : str
-        The layer that was measured; kept beside the numbers.
-    suffix : str
-        Added to the columns' names, for a second image measured with the same regions.
-    keys : sequence of int, optional
-        The labels of a Labels layer.
-
-    Returns
-    -------
-    bool
-        Whether anything changed; features that already say it are left alone.
-    """
-    columns: dict[str, dict[int, Any]] = {}
-
-    def put(name: str, row: int, value: Any) -> None:
-        columns.setdefault(f"{PREFIX}{name}{suffix}", {})[row] = value
-
-    for row, answer in answers.items():
-        put("image", row, image)
-        put("not_measured", row, "" if answer else str(getattr(answer, "reason", "")))
-        if isinstance(answer, NotMeasured):
-            continue
-        for name, quantity in quantities_of(answer).items():
-            put(name, row, quantity.value)
-            if quantity.uncertainty:
-                put(f"{name}_u", row, quantity.uncertainty)
-    for values in columns.values():
-        for row in answers:
-            values.setdefault(row, math.nan)
-    return _set_columns(layer, columns, keys)
 
 
 def checked_code(text: str) -> str:
@@ -232,7 +184,8 @@ def checked_code(text: str) -> str:
     return f"{scheme}:{value}"
 
 
-def _count(layer: Any) -> int:
+def count_of(layer: Any) -> int:
+    """Return how many shapes or points a layer has."""
     return int(layer.nshapes) if hasattr(layer, "nshapes") else len(layer.data)
 
 
@@ -241,12 +194,12 @@ def _set_columns(
 ) -> bool:
     features = layer.features.copy()
     if keys is None:
-        count = _count(layer)
+        count = count_of(layer)
         rows = {row: row for row in range(count)}
         if len(features) not in (0, count):
             return False  # a shape is being drawn: it has its row only when it is finished
     else:
-        features = _with_labels(features, keys)
+        features = with_labels(features, keys)
         rows = {int(label): row for row, label in enumerate(features[INDEX])}
         count = len(features)
     changed = keys is not None and len(features) != len(layer.features)
@@ -263,11 +216,11 @@ def _set_columns(
         return False
     layer.features = features
     if keys is None and hasattr(layer, "feature_defaults"):
-        _blank_defaults(layer)
+        blank_defaults(layer)
     return True
 
 
-def _blank_defaults(layer: Any) -> None:
+def blank_defaults(layer: Any) -> None:
     """Let the next region start without the last one's name, number and answers.
 
     It keeps the last one's class: who annotates draws many of one class in a row.
@@ -280,7 +233,7 @@ def _blank_defaults(layer: Any) -> None:
     layer.feature_defaults = defaults
 
 
-def _with_labels(features: Any, keys: Sequence[int]) -> Any:
+def with_labels(features: Any, keys: Sequence[int]) -> Any:
     """Return the features of a Labels layer with a row for every label."""
     import pandas as pd
 

@@ -11,9 +11,10 @@ from typing import TYPE_CHECKING, Any, ClassVar
 
 from psygnal import Signal
 
+from ct_measure_plugin.viewer.answer_columns import write_answers
 from ct_measure_plugin.viewer.labels import LabelRegions
 from ct_measure_plugin.viewer.points import points_on
-from ct_measure_plugin.viewer.region_features import set_column, write_answers
+from ct_measure_plugin.viewer.region_features import set_column
 from ct_measure_plugin.viewer.shapes import drawn_on, repair
 
 if TYPE_CHECKING:

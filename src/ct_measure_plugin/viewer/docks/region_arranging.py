@@ -58,9 +58,10 @@ class RegionArranging(QWidget):
             "Direction", [("left ↔ right", "vertical"), ("up ↔ down", "horizontal")]
         )
         self.about = choice("About", [("image's middle", "image"), ("their middle", "regions")])
-        self.keep = QCheckBox("Keep the originals")
+        self.keep = QCheckBox("Keep originals")
         self.keep.setChecked(True)
-        form.addRow("Mirror", beside(self.across, self.about))
+        form.addRow("Mirror", self.across)
+        form.addRow("about", self.about)
         form.addRow(
             "", beside(self.keep, button("Mirror", "Mirror the chosen regions", self._mirror))
         )

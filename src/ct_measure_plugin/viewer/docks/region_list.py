@@ -100,7 +100,7 @@ class RegionListModel(QAbstractTableModel):
             self.refusals_changed.emit()
             return True
         before, self._rows = self._rows, rows
-        changed = [i for i, row in enumerate(rows) if row != before[i]]
+        changed = [i for i, row in enumerate(rows) if row is not before[i] and row != before[i]]
         last = len(self._columns) - 1
         for first, end in _runs(changed):
             self.dataChanged.emit(self.index(first, 0), self.index(end, last))

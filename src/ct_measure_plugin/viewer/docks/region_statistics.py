@@ -5,7 +5,7 @@ from __future__ import annotations
 from typing import TYPE_CHECKING, Any
 
 from qtpy.QtCore import QTimer
-from qtpy.QtWidgets import QLabel
+from qtpy.QtWidgets import QLabel, QSizePolicy
 
 from ct_measure_plugin.errors import CtMeasureError
 from ct_measure_plugin.measurements import find
@@ -129,6 +129,7 @@ class RegionStatisticsDock(Dock):
             fold = Fold(title, self)
             fold.add(inside)
             fold.open(shown)
+            fold.setSizePolicy(QSizePolicy.Policy.Preferred, QSizePolicy.Policy.Maximum)
             found.append(fold)
         return found
 

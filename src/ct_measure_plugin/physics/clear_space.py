@@ -159,27 +159,26 @@ def _half(normal: float, length: float, width: float) -> tuple[float, float]:
     return max(up, width / abs(math.sin(normal)) + 0.2 * up), beside
 
 
-def _chord(normal: float, half: tuple[float, float], d: float) -> float:
-    """Return the length of the line at distance d from a box's middle that lies in the box."""
-    low, high = -math.inf, math.inf
+def _chord(normal: float, half: tuple[float, float], d: Floats) -> Floats:
+    """Return the lengths of the lines at distances d from a box's middle that lie in the box."""
+    low, high = np.full_like(d, -math.inf), np.full_like(d, math.inf)
     sides = ((math.sin(normal), math.cos(normal)), (math.cos(normal), -math.sin(normal)))
     for (across, along), size in zip(sides, half, strict=True):
         if abs(along) < 1e-9:
-            if abs(d * across) > size:
-                return 0.0
+            low = np.where(np.abs(d * across) > size, math.inf, low)
             continue
-        ends = sorted(((-size - d * across) / along, (size - d * across) / along))
-        low, high = max(low, ends[0]), min(high, ends[1])
-    return max(0.0, high - low)
+        first, last = (-size - d * across) / along, (size - d * across) / along
+        low = np.maximum(low, np.minimum(first, last))
+        high = np.minimum(high, np.maximum(first, last))
+    found: Floats = np.maximum(0.0, high - low)
+    return found
 
 
 def _reach(normal: float, half: tuple[float, float]) -> float:
     """Return up to which distance from the edge a box holds at least 0.6 of the edge's length."""
-    whole = _chord(normal, half, 0.0)
-    for d in np.linspace(math.hypot(*half), 0.0, 60):
-        if min(_chord(normal, half, float(d)), _chord(normal, half, -float(d))) >= 0.6 * whole:
-            return float(d)
-    return 0.0
+    d = np.linspace(0.0, math.hypot(*half), 60)
+    chord = np.minimum(_chord(normal, half, d), _chord(normal, half, -d))
+    return float(d[chord >= 0.6 * chord[0]][-1])
 
 
 def box_about(

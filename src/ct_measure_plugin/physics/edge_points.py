@@ -109,16 +109,12 @@ def find_edge_points(
     Canny 1986, IEEE Trans. PAMI 8:679, with thresholds in terms of the noise: the gradient of
     noise has Rayleigh's distribution, and its low values in blocks of 32 pixels tell its SD.
     """
-    gradient = [
-        ndimage.gaussian_filter(image, scale_px, order=order, mode="nearest") / step
-        for order, step in zip(((1, 0), (0, 1)), spacing_mm, strict=True)
-    ]
+    smooth = ndimage.gaussian_filter(image, scale_px, mode="nearest")
+    gradient = list(np.gradient(smooth, *spacing_mm))
     size = np.hypot(*gradient)
     floor = LEAST_SHARE * float(size.max(initial=0.0)) or 1.0
     noise = np.maximum(level_in_blocks(size, mask) / RAYLEIGH_LOW, floor)
-    ridge = feature.canny(
-        image, scale_px, low_threshold=0.0, high_threshold=0.0, mask=mask, mode="nearest"
-    )
+    ridge = feature.canny(smooth, 0.0, low_threshold=0.0, high_threshold=0.0, mask=mask)
     row, column = np.nonzero(ridge & (size > POSSIBLE * noise))
     points = EdgePoints(
         *_refined(size, gradient, row, column, spacing_mm),
@@ -149,9 +145,16 @@ def level_in_blocks(size: Floats, mask: Flags | None = None) -> Floats:
     typical = float(np.median(lows[known]))
     level = ndimage.median_filter(np.where(known, lows, typical), 3, mode="nearest")
     level = np.clip(lows, 0.5 * level, level)
-    zoom = [n / m for n, m in zip(size.shape, level.shape, strict=True)]
-    found: Floats = ndimage.zoom(level, zoom, order=1, grid_mode=True, mode="nearest")
+    down, right = (_between(n, m) for n, m in zip(size.shape, level.shape, strict=True))
+    found: Floats = down @ level @ right.T
     return found
+
+
+def _between(pixels: int, blocks: int) -> Floats:
+    """Return the weights, shape (pixels, blocks), of linear interpolation between blocks."""
+    place = np.clip((np.arange(pixels) + 0.5) * blocks / pixels - 0.5, 0, blocks - 1)
+    weights: Floats = np.maximum(0.0, 1 - np.abs(place[:, None] - np.arange(blocks)))
+    return weights
 
 
 def _low(block: Floats) -> float:

@@ -256,10 +256,15 @@ def test_two_series_ask_which_one(capsys, tmp_path):
     words = "disc center=0,0 radius=3"
     code, _, err = run(capsys, "measure", tmp_path, "region_statistics", "--region", words)
     assert code == BAD_INPUT
-    code, _, err = run(
-        capsys, "measure", tmp_path, "region_statistics", "--region", words, "--index", 1
-    )
-    assert (code, err) == (DONE, "")
+    assert "--index" in err
+    _, out, _ = run(capsys, "series", tmp_path, "--json")
+    digest = json.loads(out)["series"][1]["digest"]
+    asked = ("measure", tmp_path, "region_statistics", "--region", words, "--json", "--index")
+    for which in (1, digest, digest[:12]):
+        code, out, err = run(capsys, *asked, which)
+        assert (code, err) == (DONE, "")
+        assert json.loads(out)[0]["source"]["series_digest"] == digest
+    assert run(capsys, *asked, "0123456789ab")[0] == BAD_INPUT
 
 
 @pytest.mark.parametrize(

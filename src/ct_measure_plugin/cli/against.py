@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING
 
+from ct_measure_plugin.cli.choosing import series_at
 from ct_measure_plugin.cli.outputs import deliver
 
 if TYPE_CHECKING:
@@ -23,9 +24,7 @@ def add_against_options(parser: argparse.ArgumentParser) -> None:
         metavar="SERIES",
         help="measure the same regions on a second series, and tell what changed",
     )
-    parser.add_argument(
-        "--against-index", type=int, metavar="N", help="which one, where that holds several"
-    )
+    parser.add_argument("--against-index", metavar="N", help="which one, where that holds several")
     parser.add_argument("--changes", metavar="FILE", help="write the changes as CSV")
 
 
@@ -48,25 +47,6 @@ def measure_against(plan: Plan, first: Volume, arguments: argparse.Namespace) ->
             for one in found:
                 _print_change(name, one, everything=arguments.all)
     return deliver(records, arguments, None, rows)
-
-
-def series_at(place: str, index: int | None) -> Volume:
-    """Read a series; of several, the one with an index.
-
-    Raises
-    ------
-    SeriesError
-        If there is none, or several and no valid index.
-    """
-    from ct_measure_plugin.dicom import read_series, scan_series
-    from ct_measure_plugin.errors import SeriesChoiceError
-
-    if index is None:
-        return read_series(place)
-    entries = scan_series(place)
-    if not 0 <= index < len(entries):
-        raise SeriesChoiceError(f"there are {len(entries)} series; an index counts from 0")
-    return read_series(entries[index])
 
 
 def _print_change(name: str, one: Comparison, *, everything: bool) -> None:

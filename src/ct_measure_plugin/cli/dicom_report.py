@@ -9,7 +9,6 @@ if TYPE_CHECKING:
     from collections.abc import Sequence
 
     from ct_measure_plugin.dicom import MeasuredRegion, SeriesEntry
-    from ct_measure_plugin.physics.volume import Volume
     from ct_measure_plugin.records import Record
 
 __all__ = ["add_dicom_options", "write_dicom"]
@@ -29,25 +28,14 @@ def add_dicom_options(parser: argparse.ArgumentParser) -> None:
     )
 
 
-def write_dicom(records: Sequence[Record], volume: Volume, arguments: argparse.Namespace) -> None:
+def write_dicom(
+    records: Sequence[Record], entry: SeriesEntry, arguments: argparse.Namespace
+) -> None:
     """Write the records' numbers, a group for each region, for the series they were read on."""
     from ct_measure_plugin.dicom import write_structured_report
 
     measured = [_measured(record) for record in records]
-    entry = _entry_of(volume, arguments)
     write_structured_report(arguments.dicom, entry, measured, anonymous=arguments.anonymous)
-
-
-def _entry_of(volume: Volume, arguments: argparse.Namespace) -> SeriesEntry:
-    from ct_measure_plugin.dicom import scan_series
-
-    entries = scan_series(arguments.series)
-    found: SeriesEntry
-    if arguments.index is not None:
-        found = entries[arguments.index]
-    else:
-        found = next(one for one in entries if one.digest == volume.source.series_digest)
-    return found
 
 
 def _measured(record: Record) -> MeasuredRegion:

@@ -4,9 +4,10 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING
 
-from ct_measure_plugin.cli.against import add_against_options, measure_against, series_at
+from ct_measure_plugin.cli.against import add_against_options, measure_against
+from ct_measure_plugin.cli.choosing import entry_at
 from ct_measure_plugin.cli.dicom_report import add_dicom_options, write_dicom
-from ct_measure_plugin.cli.outputs import add_output_options, deliver
+from ct_measure_plugin.cli.outputs import add_logbook_option, add_output_options, deliver
 from ct_measure_plugin.cli.region_words import HELP, region_from_words
 from ct_measure_plugin.cli.setting_words import SETTING_HELP, ListMeasurements, setting_from_words
 from ct_measure_plugin.errors import ArgumentError
@@ -27,7 +28,9 @@ def add_parser(commands: argparse._SubParsersAction[argparse.ArgumentParser]) ->
     parser.add_argument("series", help="a folder, a DICOMDIR, or one file of the series")
     parser.add_argument("measurement", nargs="?", help="its name, for example region_statistics")
     parser.add_argument(
-        "--index", type=int, help="which series, as `ct-measure series` counts them"
+        "--index",
+        metavar="N",
+        help="which series: its number in the list of `ct-measure series`, or its key",
     )
     parser.add_argument("--region", action="append", default=[], metavar="WORDS", help=HELP)
     parser.add_argument(
@@ -51,19 +54,22 @@ def add_parser(commands: argparse._SubParsersAction[argparse.ArgumentParser]) ->
     parser.add_argument("--plan", metavar="FILE", help="a YAML or JSON plan instead of the above")
     add_against_options(parser)
     add_output_options(parser)
+    add_logbook_option(parser)
     add_dicom_options(parser)
     parser.set_defaults(run=run)
 
 
 def run(arguments: argparse.Namespace) -> int:
     """Measure."""
+    from ct_measure_plugin.dicom import read_series
     from ct_measure_plugin.records import load_plan
     from ct_measure_plugin.run import run_plan
 
     if bool(arguments.plan) == bool(arguments.measurement):
         raise ArgumentError("measurement", "must be given, or else --plan", arguments.measurement)
     plan = load_plan(arguments.plan) if arguments.plan else None
-    volume = series_at(arguments.series, arguments.index)
+    entry = entry_at(arguments.series, arguments.index)
+    volume = read_series(entry)
     plan = plan or _plan(arguments, volume)
     if arguments.against:
         if arguments.dicom:
@@ -71,7 +77,7 @@ def run(arguments: argparse.Namespace) -> int:
         return measure_against(plan, volume, arguments)
     records = run_plan(plan, volume)
     if arguments.dicom:
-        write_dicom(records, volume, arguments)
+        write_dicom(records, entry, arguments)
     return deliver(records, arguments, plan)
 
 

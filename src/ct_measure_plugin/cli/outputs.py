@@ -16,7 +16,7 @@ if TYPE_CHECKING:
     from ct_measure_plugin.physics.tables import Table
     from ct_measure_plugin.records import Plan, Record
 
-__all__ = ["add_output_options", "deliver", "print_records"]
+__all__ = ["add_logbook_option", "add_output_options", "deliver", "print_records"]
 
 
 def add_output_options(parser: argparse.ArgumentParser) -> None:
@@ -26,6 +26,10 @@ def add_output_options(parser: argparse.ArgumentParser) -> None:
     parser.add_argument("--csv", metavar="FILE", help="write a table, one row a quantity")
     parser.add_argument("--save", metavar="FILE", help="write the records as JSON")
     parser.add_argument("--report", metavar="FILE", help="write a one-page HTML report")
+
+
+def add_logbook_option(parser: argparse.ArgumentParser) -> None:
+    """Add the option that keeps records in a logbook."""
     parser.add_argument(
         "--logbook",
         metavar="PLACE",
@@ -55,7 +59,7 @@ def deliver(
         from ct_measure_plugin.report import write_report
 
         write_report(records, arguments.report)
-    if arguments.logbook is not None:
+    if getattr(arguments, "logbook", None) is not None:
         with Logbook(arguments.logbook or None) as book:
             book.add(records)
     if arguments.json:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 from functools import cache
 from pathlib import Path
 
@@ -19,7 +20,8 @@ from ct_measure_plugin.virtual_scanner.truth import Truth
 
 SPACING = (0.8, 0.8)
 CENTER, RADIUS = (95.3, 96.1), 80.0
-WATER = Path(__file__).parents[3] / "shared/data/water_cylinder"
+#: Real slices of a water cylinder, where somebody has them: see DEVELOPERS.md.
+WATER = Path(os.environ.get("CT_MEASURE_REAL_DATA", "no real data")) / "water_cylinder"
 
 
 def bowl(cup=20.0, slope=0.05, *, shape=(240, 240), center=CENTER, spacing=SPACING):

@@ -45,6 +45,8 @@ class Rescale:
         --------
         >>> Rescale(2.0, -1024.0).of(0, 200)
         (-1024.0, -624.0)
+        >>> Rescale(-1.0, 0.0).of(0, 200)
+        (-200.0, 0.0)
         """
         ends = self.slope * low + self.intercept, self.slope * high + self.intercept
         return min(ends), max(ends)

@@ -335,7 +335,7 @@ def test_a_closed_dock_is_gone(make_napari_viewer, qtbot, title):
         gc.collect()
         return gone() is None
 
-    qtbot.waitUntil(is_gone, timeout=3000)
+    qtbot.waitUntil(is_gone, timeout=20000)  # collecting a whole suite's heap takes its time
 
 
 def test_a_volume_does_not_outlive_its_layer(qtbot, viewer_model):

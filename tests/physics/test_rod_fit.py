@@ -85,3 +85,26 @@ def test_derived_numbers_scatter_as_they_say():
         values = [getattr(one, name) for one in found]
         stated = np.mean([value.uncertainty for value in values])
         assert np.std([value.value for value in values]) == pytest.approx(stated, rel=0.15), name
+
+
+def test_more_scatter_than_stated_widens_every_uncertainty_alike():
+    """The root of the reduced chi-squared multiplies all of them (the docs page says so).
+
+    Readings that scatter by a pattern k times as large have a chi-squared k² times as large: from
+    where it exceeds its degrees of freedom, uncertainties grow in proportion to k. The pattern is
+    orthogonal to a line's own columns, so that the fit stays where it is.
+    """
+    energy = 70.0
+    exact = np.array([float(rod.hu(energy)) for rod in RODS])
+    mu = np.array([float(rod.mu(energy)) for rod in RODS])
+    own = np.stack([np.ones_like(mu), mu, mu**2], axis=1)
+    pattern = np.random.default_rng(3).standard_normal(len(RODS))
+    pattern -= own @ np.linalg.lstsq(own, pattern, rcond=None)[0]
+    pattern *= 10.0 / np.abs(pattern).max()
+    few, many = (
+        ct_number_line(exact + k * pattern, RODS, hu_uncertainty=1.0, density_uncertainty_g_cm3=0.0)
+        for k in (1.0, 2.0)
+    )
+    for name in ("effective_energy", "slope", "intercept"):
+        ratio = getattr(many, name).uncertainty / getattr(few, name).uncertainty
+        assert ratio == pytest.approx(2.0, rel=0.05), name  # the energy moves a little with k

@@ -47,6 +47,8 @@ def test_the_tree_keeps_the_contract():
         ("physics", "import pydicom", "physics knows numpy"),
         ("measurements", "import pydicom", "pydicom stays"),
         ("records", "import qtpy", "napari and Qt stay"),
+        ("cli", "import napari", "napari and Qt stay"),
+        ("viewer", "import qtpy", "Qt only in docks"),
         ("records", "import matplotlib", "matplotlib and jinja2"),
         ("cli", "from ct_measure_plugin import viewer", "rooms import one way"),
     ],

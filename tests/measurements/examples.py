@@ -110,6 +110,15 @@ def ct_number_line() -> Example:
     )
 
 
+def noise_map() -> Example:
+    return Example(
+        _noise(),
+        (Disc((15.75, 15.75), 15.0),),
+        settings={"window_px": 7, "low_hu": -500.0, "high_hu": 500.0},
+        scales_with_spacing={"window": 1},
+    )
+
+
 def uniformity() -> Example:
     y, x = np.mgrid[:96, :96]
     inside = np.hypot(y - 47.3, x - 48.1) < 40
@@ -180,12 +189,23 @@ def slice_profile() -> Example:
     )
 
 
+def ring_artefact() -> Example:
+    noise = np.rint(np.random.default_rng(13).normal(20, 12, (1, 96, 96)))
+    return Example(
+        Volume(noise.astype(np.int16), (2.0, 0.5, 0.5)),
+        (Disc((23.75, 23.75), 22.0),),
+        scales_with_spacing={"worst_radius": 1},
+    )
+
+
 EXAMPLES: dict[str, Callable[[], Example]] = {
     "region_statistics": region_statistics,
     "region_contrast": region_contrast,
     "label_statistics": label_statistics,
     "noise_power": noise_power,
+    "noise_map": noise_map,
     "uniformity": uniformity,
+    "ring_artefact": ring_artefact,
     "edge_mtf": edge_mtf,
     "disc_mtf": disc_mtf,
     "line_profile": line_profile,

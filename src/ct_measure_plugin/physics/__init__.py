@@ -16,6 +16,8 @@ from ct_measure_plugin.physics.disc_mtf import DiscMtf, disc_mtf
 from ct_measure_plugin.physics.edge_mtf import EdgeMtf, edge_mtf
 from ct_measure_plugin.physics.label_statistics import LabelStatistics, label_statistics
 from ct_measure_plugin.physics.line_profile import LineProfile, line_profile
+from ct_measure_plugin.physics.local_sd import local_sd
+from ct_measure_plugin.physics.noise_map import NoiseMap, noise_map
 from ct_measure_plugin.physics.noise_power import NoisePower, noise_power
 from ct_measure_plugin.physics.region_contrast import RegionContrast, region_contrast
 from ct_measure_plugin.physics.region_statistics import RegionStatistics, region_statistics
@@ -28,6 +30,7 @@ from ct_measure_plugin.physics.results import (
     Result,
     ResultGroup,
 )
+from ct_measure_plugin.physics.ring_artefact import RingArtefact, ring_artefact
 from ct_measure_plugin.physics.scan_difference import scan_difference
 from ct_measure_plugin.physics.slice_profile import SliceProfile, slice_profile
 from ct_measure_plugin.physics.standard_error import standard_error_from_nps
@@ -45,6 +48,7 @@ __all__ = [
     "HeaderWindow",
     "LabelStatistics",
     "LineProfile",
+    "NoiseMap",
     "NoisePower",
     "NotMeasured",
     "Picture",
@@ -53,6 +57,7 @@ __all__ = [
     "RegionStatistics",
     "Result",
     "ResultGroup",
+    "RingArtefact",
     "SliceProfile",
     "Source",
     "Uniformity",
@@ -63,10 +68,13 @@ __all__ = [
     "edge_mtf",
     "label_statistics",
     "line_profile",
+    "local_sd",
+    "noise_map",
     "noise_power",
     "region_contrast",
     "region_statistics",
     "regions",
+    "ring_artefact",
     "scan_difference",
     "slice_profile",
     "standard_error_from_nps",

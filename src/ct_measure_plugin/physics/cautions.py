@@ -107,8 +107,11 @@ KINDS: dict[str, CautionKind] = {
     "repeat-difference": _note("Repeat scans were subtracted"),
     "slice-difference": _note("Neighbouring slices were subtracted"),
     "peak-at-end": _note("The spectrum peaks at the end of its range"),
+    "few-windows": _warning("Few windows"),
+    "several-noise-levels": _warning("More than one noise level"),
     # --- a cylinder of one material --------------------------------------------------
     "slices-left-out": _warning("Slices do not show the cylinder"),
+    "rings-found": _warning("Rings stand out of the noise"),
     # --- the CT-number scale --------------------------------------------------------
     "rod-reads-as-another": _warning("A rod reads as another material"),
     "one-energy-fails": _warning("No single energy describes the rods"),

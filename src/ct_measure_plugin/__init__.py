@@ -19,6 +19,7 @@ if TYPE_CHECKING:
     from ct_measure_plugin.dicom import read_series, scan_series
     from ct_measure_plugin.measurements import compare, measure, measure_each
     from ct_measure_plugin.measurements.rod_layouts import find_rods
+    from ct_measure_plugin.measurements.targets import targets_on
     from ct_measure_plugin.physics import regions
     from ct_measure_plugin.physics.results import (
         Caution,
@@ -40,6 +41,7 @@ _load, __dir__, _ = lazy_loader.attach(
         "dicom": ["read_series", "scan_series"],
         "measurements": ["compare", "measure", "measure_each"],
         "measurements.rod_layouts": ["find_rods"],
+        "measurements.targets": ["targets_on"],
         "physics": ["regions"],
         "physics.results": [
             "Caution",
@@ -73,4 +75,5 @@ __all__ = [
     "read_series",
     "regions",
     "scan_series",
+    "targets_on",
 ]

@@ -8,8 +8,9 @@ import numpy as np
 import pytest
 
 from ct_measure_plugin.cli.region_words import region_from_words
+from ct_measure_plugin.cli.words_of_regions import words_of
 from ct_measure_plugin.errors import RegionError
-from ct_measure_plugin.physics.regions import Disc, Ellipsoid, Polygon, Segment
+from ct_measure_plugin.physics.regions import Disc, Ellipsoid, Mask, Polygon, Segment
 from ct_measure_plugin.physics.volume import Volume
 
 VOLUME = Volume(np.zeros((5, 64, 64)), (2.0, 1.0, 1.0), origin_mm=(10.0, 0.0, 0.0))
@@ -51,3 +52,21 @@ def test_words_are_regions(words):
 def test_words_that_are_none_say_why(words, message):
     with pytest.raises(RegionError, match=message):
         region_from_words(words, VOLUME)
+
+
+@pytest.mark.parametrize("region", WORDS.values(), ids=lambda region: region.kind)
+def test_words_written_are_the_region_read(region):
+    assert region_from_words(words_of(region), VOLUME) == region
+
+
+def test_numbers_are_written_to_the_last_bit():
+    region = Disc((0.1 + 0.2, -1 / 3), 1e-5, z_mm=14.0)
+    assert region_from_words(words_of(region), VOLUME) == region
+
+
+def test_what_no_words_describe_is_refused():
+    with pytest.raises(RegionError, match="'name' must be one word, got 'left rod'"):
+        words_of(Disc((0, 0), 1, name="left rod"))
+    mask = Mask(np.ones((2, 2), bool), (1.0, 1.0))
+    with pytest.raises(RegionError, match="must be of a kind that words describe, got 'mask'"):
+        words_of(mask)

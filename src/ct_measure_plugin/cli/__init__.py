@@ -22,7 +22,8 @@ __all__ = ["BAD_INPUT", "DONE", "NOT_MEASURABLE", "TOLERANCE_FAILED", "main"]
 DONE, TOLERANCE_FAILED, BAD_INPUT, NOT_MEASURABLE = 0, 1, 2, 3
 
 _COMMANDS = (
-    *("demo", "series", "measure", "materials", "convert", "report", "logbook", "simulate"),
+    *("demo", "series", "targets", "measure", "materials", "convert", "report", "logbook"),
+    "simulate",
 )
 
 

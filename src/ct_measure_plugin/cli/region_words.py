@@ -10,7 +10,7 @@ if TYPE_CHECKING:
     from ct_measure_plugin.physics.regions import Region
     from ct_measure_plugin.physics.volume import Volume
 
-__all__ = ["HELP", "region_from_words"]
+__all__ = ["FIELDS", "HELP", "TEXTS", "region_from_words"]
 
 HELP = (
     "a region in words: KIND then NAME=VALUE, lengths in mm, points as y,x. "
@@ -21,7 +21,7 @@ HELP = (
     "values=LOW:HIGH for the range of values that counts, an end of which may be left out"
 )
 
-_FIELDS = {
+FIELDS = {
     "center": "center_mm",
     "radius": "radius_mm",
     "radii": "radii_mm",
@@ -35,7 +35,7 @@ _FIELDS = {
 }
 
 #: Words that are kept as text.
-_TEXTS = {"name": "name", "class": "group", "code": "code"}
+TEXTS = {"name": "name", "class": "group", "code": "code"}
 
 
 def region_from_words(words: str, volume: Volume) -> Region:
@@ -66,8 +66,8 @@ def region_from_words(words: str, volume: Volume) -> Region:
             raise RegionError(
                 "region", "must be KIND NAME=VALUE ..., without spaces in a value", part
             )
-        if name in _TEXTS:
-            found[_TEXTS[name]] = value
+        if name in TEXTS:
+            found[TEXTS[name]] = value
         elif name == "diameter":
             found["radius_mm"] = _number(name, value) / 2
         elif name == "values":
@@ -78,10 +78,10 @@ def region_from_words(words: str, volume: Volume) -> Region:
             found["z_mm"] = _slice(value, volume)
         elif name == "vertices":
             found["vertices_mm"] = [_point(name, point) for point in value.split(";")]
-        elif name in _FIELDS:
-            found[_FIELDS[name]] = _value(name, value)
+        elif name in FIELDS:
+            found[FIELDS[name]] = _value(name, value)
         else:
-            known = ", ".join((*_FIELDS, "diameter", "z", "slice", *_TEXTS, "values"))
+            known = ", ".join((*FIELDS, "diameter", "z", "slice", *TEXTS, "values"))
             raise RegionError("region", f"must use the names {known}", name)
     return region_from_dict(found)
 

@@ -28,6 +28,8 @@ class Example:
     rests_on_zero: tuple[str, ...] = ()
     #: Directions in the image: they turn with it, counter-clockwise, modulo 180°.
     turns_with_image: tuple[str, ...] = ()
+    #: True if larger pixels are another question: a setting is in mm and would have to follow.
+    keeps_pixel_size: bool = False
     #: Power of the pixel size that each Quantity scales with; others do not change.
     scales_with_spacing: dict[str, int] = field(default_factory=dict)
 
@@ -189,6 +191,23 @@ def slice_profile() -> Example:
     )
 
 
+def bar_pattern() -> Example:
+    from truth_images import GAUSS, bars
+
+    values = np.zeros((160, 160))
+    values[:80, :80] = bars(GAUSS, 0.3, shape=(80, 80), spacing=(0.5, 0.5))
+    values[:80, 80:] = bars(GAUSS, 0.5, shape=(80, 80), spacing=(0.5, 0.5))
+    values[80:, :80], values[80:, 80:] = 100, -100
+    values = np.rint(values + np.random.default_rng(5).normal(0, 8, values.shape))
+    middles = [(20.0, 20.0), (20.0, 60.0), (60.0, 20.0), (60.0, 60.0)]
+    return Example(
+        Volume(values[None].astype(np.int16), (2.0, 0.5, 0.5)),
+        tuple(Box((y - 0.25, x - 0.25), (32.0, 32.0)) for y, x in middles),
+        settings={"frequencies": (0.3, 0.5)},
+        keeps_pixel_size=True,
+    )
+
+
 def ring_artefact() -> Example:
     noise = np.rint(np.random.default_rng(13).normal(20, 12, (1, 96, 96)))
     return Example(
@@ -211,5 +230,6 @@ EXAMPLES: dict[str, Callable[[], Example]] = {
     "line_profile": line_profile,
     "wire_mtf": wire_mtf,
     "slice_profile": slice_profile,
+    "bar_pattern": bar_pattern,
     "ct_number_line": ct_number_line,
 }

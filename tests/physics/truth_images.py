@@ -18,7 +18,17 @@ from functools import cache
 import numpy as np
 from scipy import fft, integrate, interpolate, optimize, special
 
-__all__ = ["EDGE", "GAUSS", "HANN", "KERNELS", "Kernel", "disc_image", "edge_image", "noise"]
+__all__ = [
+    "EDGE",
+    "GAUSS",
+    "HANN",
+    "KERNELS",
+    "Kernel",
+    "bars",
+    "disc_image",
+    "edge_image",
+    "noise",
+]
 
 
 @dataclass(frozen=True)
@@ -131,6 +141,22 @@ def disc_image(
     y = (np.arange(shape[0]) - (shape[0] - 1) / 2) * spacing[0] - center[0]
     x = (np.arange(shape[1]) - (shape[1] - 1) / 2) * spacing[1] - center[1]
     return low + contrast * disc_profile(kernel, radius, np.hypot(y[:, None], x[None, :]))
+
+
+def bars(
+    kernel, frequency, *, angle=8.0, shape=(80, 120), spacing=(0.25, 0.25), phase=0.3, height=200.0
+):
+    """Square bars from -height/2 to height/2: 4/π Σ sin(2πkfu)/k over odd k, through the MTF."""
+    y, x = np.mgrid[: shape[0], : shape[1]].astype(float)
+    turn = np.radians(angle)
+    u = np.cos(turn) * x * spacing[1] + np.sin(turn) * y * spacing[0]
+    total = np.zeros(shape)
+    for k in range(1, 200, 2):
+        if k * frequency > kernel.limit:
+            break
+        gain = float(kernel.mtf(k * frequency))
+        total += gain * np.sin(2 * np.pi * (k * frequency * u + k * phase)) / k
+    return height / 2 * 4 / np.pi * total
 
 
 def noise(rng, shape, spacing, sd: float, kernel: Kernel | None = None) -> np.ndarray:

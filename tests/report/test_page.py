@@ -11,6 +11,7 @@ import pytest
 from examples import EXAMPLES
 
 from ct_measure_plugin.measurements import NAMES
+from ct_measure_plugin.measurements.catalogue import settings_for
 from ct_measure_plugin.physics.regions import (
     Box,
     Disc,
@@ -34,7 +35,8 @@ def page_of(tmp_path, records, **more) -> str:
 @pytest.mark.parametrize("name", NAMES)
 def test_every_number_stands_on_the_page(tmp_path, name):
     example = EXAMPLES[name]()
-    records = run_measurement(name, example.volume, example.regions)
+    settings = settings_for(name, example.settings)
+    records = run_measurement(name, example.volume, example.regions, settings)
     page = page_of(tmp_path, records)
     for quantity in quantities_of(records[0].answer()).values():
         assert f">{quantity.rounded()[0]}<" in page

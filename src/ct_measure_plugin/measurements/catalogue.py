@@ -44,6 +44,7 @@ _CLASSES: dict[str, str] = {
     "line_profile": "MeasureLineProfile",
     "wire_mtf": "MeasureWireMtf",
     "slice_profile": "MeasureSliceProfile",
+    "bar_pattern": "MeasureBarPattern",
     "ct_number_line": "MeasureCtNumberLine",
 }
 

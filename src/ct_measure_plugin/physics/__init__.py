@@ -11,6 +11,7 @@ Each measurement's function has the measurement's name and lives in the file of 
 from __future__ import annotations
 
 from ct_measure_plugin.physics import regions
+from ct_measure_plugin.physics.bar_pattern import BarPattern, bar_pattern
 from ct_measure_plugin.physics.ct_number_line import CtNumberLine, ct_number_line
 from ct_measure_plugin.physics.disc_mtf import DiscMtf, disc_mtf
 from ct_measure_plugin.physics.edge_mtf import EdgeMtf, edge_mtf
@@ -40,6 +41,7 @@ from ct_measure_plugin.physics.wire_mtf import WireMtf, wire_mtf
 
 __all__ = [
     "Acquisition",
+    "BarPattern",
     "Caution",
     "CtNumberLine",
     "Curve",
@@ -63,6 +65,7 @@ __all__ = [
     "Uniformity",
     "Volume",
     "WireMtf",
+    "bar_pattern",
     "ct_number_line",
     "disc_mtf",
     "edge_mtf",

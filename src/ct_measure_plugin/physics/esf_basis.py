@@ -96,7 +96,7 @@ class Dictionary:
 
 
 def _end(steepness: float) -> float:
-    return math.sqrt(2) * 34.0 ** (1 / steepness)
+    return math.sqrt(2) * math.pow(34.0, 1 / steepness)
 
 
 def _powers(u: Floats, steepness: float) -> Floats:

@@ -128,9 +128,9 @@ def _background(
     must not tilt the background.
     """
     kept = ring
-    mix = np.zeros(3)
+    mix: Floats = np.zeros(3)
     for _ in range(4):
-        mix = np.linalg.lstsq(planes[:, kept].T, plane[kept], rcond=None)[0]
+        mix = np.asarray(np.linalg.lstsq(planes[:, kept].T, plane[kept], rcond=None)[0])
         left = plane - np.tensordot(mix, planes, 1)
         middle = float(np.median(left[ring]))
         spread = 1.4826 * float(np.median(np.abs(left[ring] - middle)))

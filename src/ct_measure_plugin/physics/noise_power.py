@@ -160,11 +160,11 @@ def noise_power(
 
     Notes
     -----
-    NPS(f) = dx dy / Σw² · ⟨|Σ w ΔI exp(−2πi f·x)|²⟩, in unit² mm² (mm³ with dz), whose integral
-    over all frequencies is the variance [1]_, [2]_. A ring's mean has a relative variance of twice
-    the double sum of κ over the ring's bins (see `patch_independence`), ν = 2 over it degrees of
-    freedom, and the stated uncertainty is the standard deviation of the true value given the
-    measured one, S ν/(ν − 2) √(2/(ν − 4)), which is S √(2/ν) for large ν.
+    ``NPS(f) = dx dy / Σw² · ⟨|Σ w ΔI exp(−2πi f·x)|²⟩``, in unit² mm² (mm³ with dz), whose
+    integral over all frequencies is the variance [1]_, [2]_. A ring's mean has a relative variance
+    of twice the double sum of κ over the ring's bins (see `patch_independence`), ν = 2 over it
+    degrees of freedom, and the stated uncertainty is the standard deviation of the true value given
+    the measured one, S ν/(ν − 2) √(2/(ν − 4)), which is S √(2/ν) for large ν.
 
     Examples
     --------

@@ -49,8 +49,8 @@ def standard_error_from_nps(coverage: Coverage | ArrayLike, noise: NoisePower) -
 
     Notes
     -----
-    Var(mean) = ∬ S(f) |W(f)|² df with W the transform of the weights over their sum [1]_. Below the
-    lowest usable frequency S is continued as :func:`.spectrum_low.continuation` says.
+    ``Var(mean) = ∬ S(f) |W(f)|² df`` with W the transform of the weights over their sum [1]_. Below
+    the lowest usable frequency S is continued as :func:`.spectrum_low.continuation` says.
 
     Examples
     --------

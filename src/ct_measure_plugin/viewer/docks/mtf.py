@@ -24,7 +24,7 @@ class MtfDock(MeasurementDock):
     """Resolution from whatever the phantom offers."""
 
     title: ClassVar[str] = "MTF"
-    names: ClassVar[tuple[str, ...]] = ("edge_mtf", "disc_mtf", "wire_mtf")
+    names: ClassVar[tuple[str, ...]] = ("edge_mtf", "disc_mtf", "wire_mtf", "bar_pattern")
 
     _found: TargetsFound | None = None
     _place: Placement | None = None

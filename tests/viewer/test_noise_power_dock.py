@@ -1,0 +1,61 @@
+"""Repeat scans are subtracted in the dock: the object goes, the noise of one scan stays."""
+
+from __future__ import annotations
+
+import numpy as np
+import pytest
+
+from ct_measure_plugin.physics.regions import Disc
+from ct_measure_plugin.physics.volume import Volume
+from ct_measure_plugin.viewer.demo import draw_regions
+from ct_measure_plugin.viewer.docks.noise_power import NoisePowerDock
+from ct_measure_plugin.viewer.layers import layer_of
+
+NOISE = 10.0
+
+
+def scan(seed: int, shape=(6, 96, 96)) -> Volume:
+    """White noise over a steep slope that no polynomial of second degree takes out."""
+    y, x = np.mgrid[: shape[1], : shape[2]]
+    clean = 60 * np.sin(x / 5.0) * np.cos(y / 7.0)
+    noise = np.random.default_rng(seed).normal(0, NOISE, shape)
+    return Volume((clean + noise).astype(np.float32), (2.0, 0.5, 0.5))
+
+
+@pytest.fixture
+def dock(qtbot, viewer_model):
+    for seed in (1, 2):
+        data, attributes, _ = layer_of(scan(seed), f"scan {seed}")
+        viewer_model.add_image(data, **attributes)
+    layer = draw_regions(viewer_model, viewer_model.layers[0], [Disc((23.75, 23.75), 23)])
+    made = NoisePowerDock(viewer_model)
+    qtbot.addWidget(made)
+    made.form.show(made.form.settings.model_copy(update={"patch_px": 32}))
+    made.choose(viewer_model.layers[0], regions=layer)
+    return made
+
+
+def test_the_object_goes_and_the_noise_of_one_scan_stays(dock, viewer_model):
+    dock.measure_now()
+    [before] = dock.answers.answers()
+    assert not dock.subtract_button.isEnabled()
+    dock.choose(viewer_model.layers[0], viewer_model.layers[1])
+    assert dock.subtract_button.isEnabled()
+    dock.subtract_button.click()
+    layer = viewer_model.layers["(scan 2 − scan 1)/√2"]
+    assert dock.sources.chosen_images() == (layer,)
+    assert dock.form.settings.detrend == "mean"
+    np.testing.assert_allclose(layer.scale, viewer_model.layers[0].scale)
+    dock.measure_now()
+    [after] = dock.answers.answers()
+    assert "structure" in str(before.result), str(before.result)
+    assert abs(after.result.sd.value - NOISE) < 3 * after.result.sd.uncertainty
+
+
+def test_scans_of_different_grids_are_refused_in_words(dock, viewer_model):
+    data, attributes, _ = layer_of(scan(3, shape=(6, 96, 90)), "narrower")
+    viewer_model.add_image(data, **attributes)
+    dock.reset_choices()
+    dock.choose(viewer_model.layers["narrower"], viewer_model.layers["scan 1"])
+    assert dock.subtract() is None
+    assert "must have the shape" in dock.headline.words.text()

@@ -27,14 +27,16 @@ def blur(direction, *, wide, narrow, along, r=0.0, facing=0.0, gantry=0.0):
     return F50_SIGMA / math.sqrt(square)
 
 
-def place(direction, f50, u=0.001, r=0.0, facing=0.0, half=0.0, name=""):
-    return IsotropyPlace(
-        name,
+def place(direction, f50, u=0.001, r=0.0, facing=0.0, half=0.0):
+    """A place at a distance, so turned about the isocentre that the direction faces it so."""
+    turn = math.radians(direction - facing)
+    return IsotropyPlace.at(
+        (20.0 - r * math.sin(turn), -30.0 + r * math.cos(turn)),
         Quantity(direction, "°", 0.1),
-        Quantity(r, "mm", 0.05),
-        Quantity(facing, "°", 0.1),
         Quantity(f50, "mm⁻¹", u),
-        half,
+        isocentre_mm=(20.0, -30.0),
+        doubt_mm=0.05,
+        half_width_deg=half,
     )
 
 
@@ -83,10 +85,10 @@ def test_a_turning_gantry_blurs_across_the_radius():
     assert found.far_radial.value == pytest.approx(F50_SIGMA / 0.6, rel=1e-5)
     azimuthal = F50_SIGMA / math.hypot(0.6, 100 * 0.004)
     assert found.far_azimuthal.value == pytest.approx(azimuthal, rel=1e-5)
-    assert found.largest_distance.value == 100.0
+    assert found.largest_distance.value == pytest.approx(100.0)
     assert found.isotropy.value == pytest.approx(1.0, abs=1e-5)
     assert isinstance(found.sharpest_direction, NotMeasured)
-    assert found.radial.x.tolist() == [20.0, 60.0, 100.0]
+    assert found.radial.x == pytest.approx([20.0, 60.0, 100.0])
     assert found.azimuthal.y[-1] == pytest.approx(azimuthal)
     assert len(found.by_distance.x) == 9
 
@@ -122,6 +124,20 @@ def test_uncertainties_cover_the_truth():
     # 95 ± 0.8 % (1 sigma); a little more, as scatter widens intervals and never narrows them
     assert (share > 0.93).all(), share
     assert (share < 0.975).all(), share
+
+
+def test_a_place_knows_how_it_faces_the_isocentre():
+    one = place(70.0, 0.3, r=50.0, facing=30.0)
+    assert one.distance.value == pytest.approx(50.0)
+    assert one.facing.value == pytest.approx(30.0)
+    # of a direction known to 0.1° and a place known to 0.05 mm at 50 mm
+    assert one.facing.uncertainty == pytest.approx(math.hypot(0.1, math.degrees(0.001)))
+    assert place(70.0, 0.3, r=50.0, facing=-80.0).facing.value == pytest.approx(80.0)
+    center = place(70.0, 0.3, r=0.5)
+    assert (center.facing.value, center.facing.uncertainty) == (
+        45.0,
+        pytest.approx(25.98, abs=0.01),
+    )
 
 
 def test_terms_that_cannot_be_told_are_left_out():

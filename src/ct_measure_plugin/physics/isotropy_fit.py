@@ -13,7 +13,7 @@ if TYPE_CHECKING:
 
     Floats = NDArray[np.float64]
 
-__all__ = ["Fit", "fit_places"]
+__all__ = ["AT_CENTER", "Fit", "fit_places"]
 
 #: Terms are left out from this condition index of the scaled columns (Belsley et al. 1980).
 MOST_CONDITION = 30.0

@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from ct_measure_plugin.errors import ArgumentError
-from ct_measure_plugin.physics.isotropy_fit import Fit, fit_places
+from ct_measure_plugin.physics.isotropy_fit import AT_CENTER, Fit, fit_places
 from ct_measure_plugin.physics.results import Caution, Curve, NotMeasured, Quantity, Result
 
 if TYPE_CHECKING:
@@ -36,12 +36,15 @@ class IsotropyPlace:
     ----------
     name : str
         What people call the place.
+    y, x : Quantity
+        Where it lies, mm in the image frame.
     direction : Quantity
         Direction in which f50 was measured, degrees counter-clockwise on the screen from +x.
     distance : Quantity
         From the isocentre, mm.
     facing : Quantity
-        Angle of the direction to the line from the isocentre: 0° radial, 90° azimuthal.
+        Angle of the direction to the line from the isocentre: 0° radial, 90° azimuthal. Within
+        1 mm of the isocentre there is no such line: 45°, uncertain by all that it could be.
     f50 : Quantity
         mm⁻¹.
     half_width_deg : float
@@ -49,11 +52,49 @@ class IsotropyPlace:
     """
 
     name: str
+    y: Quantity
+    x: Quantity
     direction: Quantity
     distance: Quantity
     facing: Quantity
     f50: Quantity
     half_width_deg: float = 0.0
+
+    @classmethod
+    def at(
+        cls,
+        place_mm: tuple[float, float],
+        direction: Quantity,
+        f50: Quantity,
+        *,
+        isocentre_mm: tuple[float, float] = (0.0, 0.0),
+        doubt_mm: float = 0.0,
+        half_width_deg: float = 0.0,
+        name: str = "",
+    ) -> IsotropyPlace:
+        """Return a place with its distance from the isocentre and its angle to the radius.
+
+        >>> one = IsotropyPlace.at((-30.0, 40.0), Quantity(36.87, "°", 0.0), Quantity(0.4, "mm⁻¹"))
+        >>> one.distance.value, round(one.facing.value, 2)
+        (50.0, 0.0)
+        """
+        down, right = (c - o for c, o in zip(place_mm, isocentre_mm, strict=True))
+        r = math.hypot(down, right)
+        facing = Quantity(45.0, "°", 90.0 / math.sqrt(12.0))
+        if r > AT_CENTER:
+            off = direction.value - math.degrees(math.atan2(-down, right))
+            doubt = math.hypot(direction.uncertainty or 0.0, math.degrees(doubt_mm / r))
+            facing = Quantity(abs((off + 90.0) % 180.0 - 90.0), "°", doubt)
+        return cls(
+            name=name,
+            y=Quantity(place_mm[0], "mm", doubt_mm),
+            x=Quantity(place_mm[1], "mm", doubt_mm),
+            direction=direction,
+            distance=Quantity(r, "mm", doubt_mm),
+            facing=facing,
+            f50=f50,
+            half_width_deg=half_width_deg,
+        )
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -138,14 +179,13 @@ def mtf_isotropy(
 
     Examples
     --------
-    >>> def at(angle, f50):
-    ...     where = Quantity(0.0, "mm", 0.0)
-    ...     facing = Quantity(0.0, "°", 0.0)
-    ...     return IsotropyPlace(
-    ...         "", Quantity(angle, "°", 0.0), where, facing, Quantity(f50, "mm⁻¹", 0.0005)
-    ...     )
     >>> sigma = {0: 0.6, 45: math.hypot(0.6, 0.7) / math.sqrt(2), 90: 0.7}
-    >>> ring = [at(angle, 0.187391 / s) for angle, s in sigma.items()]
+    >>> ring = [
+    ...     IsotropyPlace.at(
+    ...         (0, 0), Quantity(angle, "°", 0.0), Quantity(0.187391 / s, "mm⁻¹", 0.0005)
+    ...     )
+    ...     for angle, s in sigma.items()
+    ... ]
     >>> found = mtf_isotropy([*ring, ring[1]])
     >>> round(found.isotropy.value, 3), round(0.6 / 0.7, 3), found.sharpest_direction.value
     (0.857, 0.857, 0.0)
@@ -168,7 +208,6 @@ def mtf_isotropy(
     free = len(places) - 1
     ratio = math.sqrt(float(np.sum(weights * (f50 - mean) ** 2)) / free)
     doubt = max(ratio, 1.0) / math.sqrt(float(weights.sum()))
-    folded = np.abs((facing + 90.0) % 180.0 - 90.0)
     farthest = int(np.argmax(distance))
     r = float(distance[farthest])
     return MtfIsotropy(
@@ -183,8 +222,8 @@ def mtf_isotropy(
         largest_distance=Quantity(r, "mm", places[farthest].distance.uncertainty),
         by_angle=_by_angle(fit, direction, f50, u),
         by_distance=_points(distance, f50, u, np.ones(len(f50), dtype=bool)),
-        radial=_some(distance, f50, u, folded <= RADIAL_DEG),
-        azimuthal=_some(distance, f50, u, folded >= 90.0 - RADIAL_DEG),
+        radial=_some(distance, f50, u, facing <= RADIAL_DEG),
+        azimuthal=_some(distance, f50, u, facing >= 90.0 - RADIAL_DEG),
         places=tuple(places),
         cautions=tuple(cautions),
     )

@@ -25,9 +25,9 @@ FILE = Path(ct_measure_plugin.__file__).with_name("napari.yaml")
 
 #: How many contributions each section must hold: a misspelt section would be dropped in silence.
 COUNTS = {
-    "commands": 11 + len(samples.names()),
+    "commands": 12 + len(samples.names()),
     "readers": 1,
-    "widgets": 9,
+    "widgets": 10,
     "sample_data": len(samples.names()),
     "menus": 2,
     "configurations": 1,
@@ -129,7 +129,7 @@ def broken(manifest: dict, change) -> dict:
 @pytest.mark.parametrize(
     ("change", "fault"),
     [
-        (lambda c: c.update(widget=c.pop("widgets")), "widgets: 0 instead of 9"),
+        (lambda c: c.update(widget=c.pop("widgets")), "widgets: 0 instead of 10"),
         (lambda c: c["widgets"][0].update(command=f"{NAME}.windw"), "undeclared command"),
         (lambda c: c["readers"][0].update(command=f"{NAME}.red"), "undeclared command"),
         (lambda c: c["menus"].update({"napari/layers/context": []}), "takes no plugins"),

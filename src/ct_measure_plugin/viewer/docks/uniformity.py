@@ -1,4 +1,4 @@
-"""The dock of uniformity."""
+"""The dock of uniformity: of the CT numbers, and of their noise."""
 
 from __future__ import annotations
 
@@ -10,10 +10,10 @@ __all__ = ["UniformityDock"]
 
 
 class UniformityDock(MeasurementDock):
-    """Whether a water cylinder reads the same everywhere, live."""
+    """Whether a water cylinder reads, and is noisy, the same everywhere, live."""
 
     title: ClassVar[str] = "Uniformity"
-    names: ClassVar[tuple[str, ...]] = ("uniformity",)
+    names: ClassVar[tuple[str, ...]] = ("uniformity", "noise_map")
 
     def __init__(self, viewer: napari.viewer.Viewer) -> None:  # type: ignore[name-defined] # noqa: F821
         super().__init__(viewer)

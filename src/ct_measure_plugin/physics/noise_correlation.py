@@ -5,7 +5,8 @@ the noise, `R` the autocorrelation of the weights and `W` their sum: the same in
 ``∬ S |W(f)|² df`` over the noise power spectrum `S`. Here `S` is judged from the region itself:
 every spectrum of a library is weighed by how well it explains the region's periodogram, and the
 variances that the spectra give are averaged with these weights. What the region cannot decide
-widens the standard error by the factor of Student's distribution.
+widens the standard error by the factor of Student's distribution. A small region's periodogram
+says next to nothing; :mod:`ct_measure_plugin.physics.small_regions` takes its place there.
 """
 
 from __future__ import annotations
@@ -19,6 +20,7 @@ import numpy as np
 from scipy import fft, stats
 
 from ct_measure_plugin.physics.noise_spectra import Geometry, geometry, library
+from ct_measure_plugin.physics.small_regions import doubt_of_few
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -35,8 +37,10 @@ FLOOR = 0.05
 #: lose their vote first, since no spectrum of the library fits them to the last percent.
 VOTES = 600.0
 
-#: Below so many pixels the noise is taken as independent.
-FEWEST = 16.0
+#: Coverage of a slice, in pixels, up to which exact likelihoods of the pixels are used, and from
+#: which the periodogram is: in between one passes into the other, so that nothing jumps. A
+#: periodogram of fewer has no more than a handful of independent values.
+SMALL, LARGE = 64.0, 128.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -139,13 +143,52 @@ def doubt_of_mean(values: Floats, weights: Floats, spacing_mm: tuple[float, ...]
     white = independent_doubt(values[inside], weights[inside])
     if np.ptp(values[inside]) == 0:  # equal values: rounding must not invent a spread
         return replace(white, variance_of_mean=0.0)
-    if white.variance_of_mean == 0 or total < FEWEST:
+    if white.variance_of_mean == 0:
         return white
     residual = np.where(cover > 0, stack - float(np.sum(cover * stack)) / total, 0.0)
     signal = cover * residual
-    slices, slice_power = _between_slices(signal, cover)
+    shared = _between_slices(signal, cover)
+    finest = min(spacing_mm[-2:])
+    part = math.log(total / np.count_nonzero(cover.any(axis=(1, 2))) / SMALL)
+    part = min(max(part / math.log(LARGE / SMALL), 0.0), 1.0)
+    few = many = None
+    if part < 1:
+        stretch = (spacing_mm[-2] / finest, spacing_mm[-1] / finest)
+        small = doubt_of_few(residual, cover, stretch, shared)
+        few = MeanDoubt(*small[:2], small.reach * finest, small.freedom)
+    if part > 0 or few is None:
+        many = _doubt_of_many(signal, cover, spacing_mm, white.power_samples, shared)
+    if few is None or many is None:
+        return few or many or white
+    return _between(few, many, part)
+
+
+def _between(few: MeanDoubt, many: MeanDoubt, part: float) -> MeanDoubt:
+    """Return the doubt so far from one to the other, on a logarithmic scale."""
+
+    def mixed(a: float, b: float) -> float:
+        return math.exp((1 - part) * math.log(a) + part * math.log(b))
+
+    return MeanDoubt(
+        mixed(few.variance_of_mean, many.variance_of_mean),
+        mixed(few.power_samples, many.power_samples),
+        few.reach * (1 - part) + many.reach * part,
+        mixed(few.freedom, many.freedom),
+    )
+
+
+def _doubt_of_many(
+    signal: Floats,
+    cover: Floats,
+    spacing_mm: tuple[float, ...],
+    samples: float,
+    shared: tuple[float, float],
+) -> MeanDoubt:
+    """Return what the periodogram says; `samples` if the pixels were independent."""
+    total = float(cover.sum())
+    slices, slice_power = shared
     seen = _observe(signal, cover, spacing_mm[-2:])
-    dof = white.power_samples / slice_power
+    dof = samples / slice_power
     weight, variance, level = _weigh(seen, dof, slices / total**2)
     log_variance = np.log(variance)
     middle = float(weight @ log_variance)

@@ -21,7 +21,7 @@ if TYPE_CHECKING:
 
     Floats = NDArray[np.float64]
 
-__all__ = ["Geometry", "Library", "geometry", "library"]
+__all__ = ["Geometry", "Library", "geometry", "library", "ring_frequencies"]
 
 #: Roll-off lengths s in pixels (noise white to the eye, to blobs ten pixels across) and powers p
 #: with their prior weights.
@@ -75,11 +75,21 @@ class Library:
 
 
 @cache
-def library() -> Library:
-    """Return the library; made once."""
+def ring_frequencies() -> tuple[Floats, Floats]:
+    """Return the table's frequencies in cycles per pixel and the areas of their rings.
+
+    >>> round(float(ring_frequencies()[1].sum()), 3)  # the square of resolved frequencies
+    1.0
+    """
     ring = 2 * np.pi * _F * (_F[1] - _F[0])
     beyond = np.minimum(0.5 / _F, 1.0)  # the ring's part inside the square of resolved frequencies
-    ring = ring * (1 - 4 / np.pi * np.arccos(beyond))
+    return _F, ring * (1 - 4 / np.pi * np.arccos(beyond))
+
+
+@cache
+def library() -> Library:
+    """Return the library; made once."""
+    ring = ring_frequencies()[1]
     spectra, weights = [], []
     for s in LENGTHS:
         for (b, k), shape_weight in SHAPES.items():

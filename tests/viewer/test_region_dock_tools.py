@@ -143,7 +143,7 @@ def test_buttons_of_arranging_make_copies_that_undo_takes_back(scene, volume):
     arranging.columns.setValue(3)
     arranging.step_y.setValue(9.0)
     arranging.step_x.setValue(8.0)
-    press(arranging.step_y.parentWidget(), "Array")
+    press(arranging, "Array")
     assert len(regions(dock)) == 6
     assert dock.doing.undo_button.toolTip() == "Undo: array 1 region"
     dock.doing.undo_button.click()
@@ -159,7 +159,7 @@ def test_buttons_of_arranging_make_copies_that_undo_takes_back(scene, volume):
     dock.doing.undo_button.click()
     arranging.first.setValue(0)
     arranging.last.setValue(5)
-    press(arranging.first.parentWidget(), "Copy")
+    press(arranging, "Copy to slices")
     assert sorted(one.z_mm for one in regions(dock)) == list(volume.positions_mm)
     dock.doing.undo_button.click()
     press(arranging, "Mirror")

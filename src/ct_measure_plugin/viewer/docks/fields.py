@@ -25,10 +25,11 @@ __all__ = ["beside", "button", "choice", "mm", "whole"]
 _FAR = 10_000.0
 
 
-def mm(
-    name: str, value: float = 0.0, *, least: float = -_FAR, suffix: str = " mm"
-) -> QDoubleSpinBox:
-    """Return a field for a length or a place in mm, with a name for those who cannot see it."""
+def mm(name: str, value: float = 0.0, *, least: float = -_FAR, suffix: str = "") -> QDoubleSpinBox:
+    """Return a field for a length or a place in mm, with a name for those who cannot see it.
+
+    Two in a line leave no room for a unit in each: their label says it.
+    """
     box = QDoubleSpinBox()
     box.setRange(least, _FAR)
     box.setDecimals(2)
@@ -36,6 +37,7 @@ def mm(
     box.setSuffix(suffix)
     box.setValue(value)
     box.setKeyboardTracking(False)
+    name = name if suffix else f"{name} (mm)"
     box.setAccessibleName(name)
     box.setToolTip(name)
     _may_shrink(box)
@@ -87,5 +89,5 @@ def beside(*parts: QWidget | str) -> QWidget:
 
 
 def _may_shrink(box: QWidget) -> None:
-    box.setMinimumWidth(56)
+    box.setStyleSheet("min-width: 44px;")  # napari's style asks for more than two in a line have
     box.setSizePolicy(QSizePolicy.Policy.Expanding, QSizePolicy.Policy.Fixed)

@@ -43,17 +43,14 @@ class RegionArranging(QWidget):
         form = QFormLayout(self)
         form.setContentsMargins(0, 0, 0, 0)
         form.setFieldGrowthPolicy(QFormLayout.FieldGrowthPolicy.AllNonFixedFieldsGrow)
-        form.setRowWrapPolicy(QFormLayout.RowWrapPolicy.WrapLongRows)
         self._moving(form)
         self._repeating(form)
         self._copying(form)
 
     def _moving(self, form: QFormLayout) -> None:
         self.by_y, self.by_x = mm("Down by"), mm("Right by")
-        form.addRow(
-            "Move y, x",
-            beside(self.by_y, self.by_x, button("Move", "Move the chosen regions", self._move)),
-        )
+        form.addRow("y, x, mm", beside(self.by_y, self.by_x))
+        form.addRow("", button("Move", "Move the chosen regions", self._move))
         self.across = choice(
             "Direction", [("left ↔ right", "vertical"), ("up ↔ down", "horizontal")]
         )
@@ -62,43 +59,35 @@ class RegionArranging(QWidget):
         self.keep.setChecked(True)
         form.addRow("Mirror", self.across)
         form.addRow("about", self.about)
-        form.addRow(
-            "", beside(self.keep, button("Mirror", "Mirror the chosen regions", self._mirror))
-        )
+        form.addRow("", self.keep)
+        form.addRow("", button("Mirror", "Mirror the chosen regions", self._mirror))
 
     def _repeating(self, form: QFormLayout) -> None:
         self.rows = whole("Rows", 2, 1, 200)
         self.columns = whole("Columns", 2, 1, 200)
         self.step_y, self.step_x = mm("From row to row", 30.0), mm("From column to column", 30.0)
-        form.addRow("Array", beside(self.rows, "×", self.columns))
-        form.addRow(
-            "Steps y, x",
-            beside(
-                self.step_y,
-                self.step_x,
-                button("Array", "Copy the chosen regions to rows and columns", self._array),
-            ),
-        )
+        form.addRow("Array", beside(self.rows, self.columns))
+        form.addRow("Steps, mm", beside(self.step_y, self.step_x))
+        make = "Copy the chosen regions to rows and columns"
+        form.addRow("", button("Array", make, self._array))
         self.places = whole("Places in the ring", 8, 2, 200)
         self.ring_y, self.ring_x = mm("Ring's middle, y"), mm("Ring's middle, x")
         self.turned = QCheckBox("Turn them")
         self.turned.setToolTip("Turn each copy with its place in the ring")
         self.turned.setChecked(True)
         middle = button("Image's middle", "Take the image's middle", self.take_middle)
-        form.addRow("Ring of", beside(self.places, self.turned))
-        form.addRow("About y, x", beside(self.ring_y, self.ring_x))
-        form.addRow(
-            "",
-            beside(middle, button("Ring", "Copy the chosen regions to a ring", self._ring)),
-        )
+        form.addRow("Ring of", self.places)
+        form.addRow("", self.turned)
+        form.addRow("About, mm", beside(self.ring_y, self.ring_x))
+        form.addRow("", middle)
+        form.addRow("", button("Ring", "Copy the chosen regions to a ring", self._ring))
 
     def _copying(self, form: QFormLayout) -> None:
         self.first = whole("From slice, counted from 0", 0, 0, 9999)
         self.last = whole("To slice, counted from 0", 0, 0, 9999)
-        form.addRow(
-            "To slices",
-            beside(self.first, "to", self.last, button("Copy", "Copy to slices", self._to_slices)),
-        )
+        form.addRow("To slices", beside(self.first, self.last))
+        copy = "Copy the chosen regions to the slices from the first to the last"
+        form.addRow("", button("Copy to slices", copy, self._to_slices))
         self.layer = choice("Layer to copy to", [])
         form.addRow(
             "To layer",

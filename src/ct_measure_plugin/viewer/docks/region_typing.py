@@ -44,7 +44,6 @@ class RegionTyping(QWidget):
         form = QFormLayout(self)
         form.setContentsMargins(0, 0, 0, 0)
         form.setFieldGrowthPolicy(QFormLayout.FieldGrowthPolicy.AllNonFixedFieldsGrow)
-        form.setRowWrapPolicy(QFormLayout.RowWrapPolicy.WrapLongRows)
         self._form = form
         self._place(form)
         self._reach(form)
@@ -60,10 +59,10 @@ class RegionTyping(QWidget):
         self.depth = mm("Length along z", 20.0, least=0.0)
         self.angle = mm("Angle, counter-clockwise", suffix="°")
         form.addRow("Kind", self.kind)
-        form.addRow("At y, x", beside(self.y, self.x))
+        form.addRow("y, x, mm", beside(self.y, self.x))
         self._size = beside(self.height, self.width)
-        form.addRow("Diameter", self._size)
-        form.addRow("Along z", self.depth)
+        form.addRow("Size, mm", self._size)
+        form.addRow("Along z, mm", self.depth)
         form.addRow("Angle", self.angle)
         form.addRow(
             beside(
@@ -80,7 +79,7 @@ class RegionTyping(QWidget):
         self.last = whole("Last slice, counted from 0", 0, 0, 9999)
         self.swept = QCheckBox("an ellipsoid")
         self.swept.setToolTip("Sweep a disc or an ellipse to an ellipsoid, not to a cylinder")
-        self._ends = beside(self.first, "to", self.last)
+        self._ends = beside(self.first, self.last)
         form.addRow("Over", beside(self.over, button("Set", "Set for the chosen", self._set_reach)))
         form.addRow("Slices", self._ends)
         form.addRow("Swept to", self.swept)
@@ -144,9 +143,8 @@ class RegionTyping(QWidget):
     def _kind_chosen(self, *_: Any) -> None:
         kind = self.kind.currentData()
         self.height.setVisible(kind != "disc")
-        self._form.labelForField(self._size).setText(
-            "Diameter" if kind == "disc" else "Height, width"
-        )
+        self.width.setToolTip("Diameter (mm)" if kind == "disc" else "Width (mm)")
+        self.width.setAccessibleName(self.width.toolTip())
         self._form.setRowVisible(self.depth, kind == "ellipsoid")
         self._form.setRowVisible(self.angle, kind != "disc")
 

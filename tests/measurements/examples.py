@@ -217,6 +217,21 @@ def ring_artefact() -> Example:
     )
 
 
+def mtf_isotropy() -> Example:
+    from truth_images import HANN, edge_image
+
+    tiles = [edge_image(HANN, shape=(48, 48), angle=a, contrast=900) for a in (5, 52, 95, 140)]
+    noise = np.random.default_rng(8).normal(0, 12, (1, 96, 96))
+    values = np.rint(np.block([tiles[:2], tiles[2:]]) + noise)
+    frequencies = ("f50", "center", "far", "far_radial", "far_azimuthal")
+    return Example(
+        Volume(values.astype(np.int16), (2.0, 0.5, 0.5)),
+        tuple(Box((y, x), (20.0, 20.0)) for y in (11.75, 35.75) for x in (11.75, 35.75)),
+        turns_with_image=("sharpest_direction",),
+        scales_with_spacing=dict.fromkeys(frequencies, -1) | {"largest_distance": 1},
+    )
+
+
 EXAMPLES: dict[str, Callable[[], Example]] = {
     "region_statistics": region_statistics,
     "region_contrast": region_contrast,
@@ -229,6 +244,7 @@ EXAMPLES: dict[str, Callable[[], Example]] = {
     "disc_mtf": disc_mtf,
     "line_profile": line_profile,
     "wire_mtf": wire_mtf,
+    "mtf_isotropy": mtf_isotropy,
     "slice_profile": slice_profile,
     "bar_pattern": bar_pattern,
     "ct_number_line": ct_number_line,

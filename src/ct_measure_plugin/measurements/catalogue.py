@@ -43,6 +43,7 @@ _CLASSES: dict[str, str] = {
     "disc_mtf": "MeasureDiscMtf",
     "line_profile": "MeasureLineProfile",
     "wire_mtf": "MeasureWireMtf",
+    "mtf_isotropy": "MeasureMtfIsotropy",
     "slice_profile": "MeasureSliceProfile",
     "bar_pattern": "MeasureBarPattern",
     "ct_number_line": "MeasureCtNumberLine",

@@ -18,6 +18,7 @@ from ct_measure_plugin.physics.edge_mtf import EdgeMtf, edge_mtf
 from ct_measure_plugin.physics.label_statistics import LabelStatistics, label_statistics
 from ct_measure_plugin.physics.line_profile import LineProfile, line_profile
 from ct_measure_plugin.physics.local_sd import local_sd
+from ct_measure_plugin.physics.mtf_isotropy import MtfIsotropy, mtf_isotropy
 from ct_measure_plugin.physics.noise_map import NoiseMap, noise_map
 from ct_measure_plugin.physics.noise_power import NoisePower, noise_power
 from ct_measure_plugin.physics.region_contrast import RegionContrast, region_contrast
@@ -50,6 +51,7 @@ __all__ = [
     "HeaderWindow",
     "LabelStatistics",
     "LineProfile",
+    "MtfIsotropy",
     "NoiseMap",
     "NoisePower",
     "NotMeasured",
@@ -72,6 +74,7 @@ __all__ = [
     "label_statistics",
     "line_profile",
     "local_sd",
+    "mtf_isotropy",
     "noise_map",
     "noise_power",
     "region_contrast",

@@ -99,6 +99,7 @@ KINDS: dict[str, CautionKind] = {
     "coarse-sampling": _warning("Few samples across the width"),
     "resampled-profile": _note("A profile between pixels is interpolated"),
     "slanted-average": _warning("The profile is averaged across a slanted edge"),
+    "place-left-out": _warning("A place could not be measured"),
     # --- noise ----------------------------------------------------------------------
     "few-patches": _warning("Few patches"),
     "nonstationary-noise": _warning("The noise is not the same everywhere"),

@@ -117,7 +117,10 @@ def _conventional(data: EsfData, unit: str) -> tuple[Spread, Shape]:
     )
     covariance = bin_covariance(full, data.spectrum, data.normals, data.length)
     frequency = np.linspace(0, min(data.top, 0.25 / width), FREQUENCY_STEPS)
-    spread = conventional_mtf(middles, esf, covariance, half=half, frequency=frequency)
+    averaged = bins.averaged(2 * data.fwhm)
+    spread = conventional_mtf(
+        middles, esf, covariance, half=half, frequency=frequency, averaged=averaged
+    )
     shape = conventional_shape(middles, esf, covariance, half=half, fwhm=data.fwhm, unit=unit)
     return spread, shape
 

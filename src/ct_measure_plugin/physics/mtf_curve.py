@@ -138,6 +138,7 @@ def conventional_mtf(
     *,
     half: float,
     frequency: Floats,
+    averaged: float | None = None,
 ) -> Spread:
     """Bin, differentiate, window, transform, correct: the textbook route.
 
@@ -151,6 +152,8 @@ def conventional_mtf(
         Half-width of the window in mm.
     frequency : ndarray
         Where to evaluate, mm⁻¹.
+    averaged : float, optional
+        Width over which pixels are averaged in each bin, mm; the bins' own by default.
 
     Returns
     -------
@@ -186,7 +189,8 @@ def conventional_mtf(
     spectrum = operator @ esf / contrast
     modulus = np.abs(spectrum)
     correction = np.maximum(np.sinc(2 * frequency * step), 1 / MOST_CORRECTION)
-    correction = correction * np.maximum(np.sinc(frequency * step), 1 / MOST_CORRECTION)
+    box = np.sinc(frequency * (step if averaged is None else averaged))
+    correction = correction * np.maximum(box, 1 / MOST_CORRECTION)
     mtf = modulus / correction
     phase = np.where(modulus > 0, spectrum.conj() / np.maximum(modulus, 1e-300), 1.0)
     weights = (phase[:, None] * operator).real / contrast - modulus[:, None] * plateau / contrast

@@ -103,7 +103,8 @@ def mode_of(blocks: Floats, bins: Bins, draws: int = DRAWS) -> Mode:
     --------
     >>> rng = np.random.default_rng(1)
     >>> bins = Bins.around(12.0)
-    >>> parts = [np.histogram(rng.normal(12, 1, 4000), bins.count, (0, 60))[0] for _ in range(20)]
+    >>> reach = (0, bins.count * bins.width)
+    >>> parts = [np.histogram(rng.normal(12, 1, 4000), bins.count, reach)[0] for _ in range(20)]
     >>> found = mode_of(np.array(parts, float), bins)
     >>> abs(found.value - 12) < 4 * found.doubt < 0.2, round(found.lower_sd, 1)
     (True, 1.0)

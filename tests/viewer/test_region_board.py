@@ -226,7 +226,8 @@ def test_ten_thousand_labels_are_rows_that_are_looked_up_not_made_anew(viewer_mo
     board.look(first={101, 7}, seconds=0.05)
     changed = [row.index for row, old in zip(board.rows, before, strict=True) if row is not old]
     assert set(changed) >= {7, 101}
-    assert len(changed) < 200
+    # 0.05 s measure some hundreds on any machine; rows made anew would be all 9,999
+    assert len(changed) < len(before) / 2
     n = {row.index: row.answer.n.value for row in board.rows if row.index in (7, 101)}
     assert n == {7: 17.0, 101: 15.0}
     board.stop()

@@ -68,6 +68,35 @@ class NoiseSpectrum:
         power = self.at(np.hypot(fy[:, None], fx[None, :]))
         return ny * nx * float(power.mean()) ** 2 / float(np.mean(power**2))
 
+    def variance_of_sums(self, weights: Floats) -> Floats:
+        """Return the variances of sums of pixels with weights of shape (n, ny, nx).
+
+        The noise power times the squared transform of the weights, over the grid's frequencies.
+        """
+        square = np.abs(fft.rfft2(weights)) ** 2
+        found: Floats = (square * self._half_plane(weights.shape)).sum(axis=(1, 2))
+        return found
+
+    def covariance_of_sums(self, weights: Floats) -> Floats:
+        """Return the covariance matrix, (n, n), of sums of pixels with weights (n, ny, nx)."""
+        wave = fft.rfft2(weights) * np.sqrt(self._half_plane(weights.shape))
+        flat = wave.reshape(len(weights), -1)
+        found: Floats = flat.real @ flat.real.T + flat.imag @ flat.imag.T
+        return found
+
+    def _half_plane(self, shape: tuple[int, ...]) -> Floats:
+        """Return what the real transform's squares are weighted by, both halves counted."""
+        ny, nx = shape[-2:]
+        dy, dx = self.spacing_mm
+        fy, fx = fft.fftfreq(ny, dy), fft.rfftfreq(nx, dx)
+        twice = np.full(len(fx), 2.0)
+        twice[0] = 1.0
+        if nx % 2 == 0:
+            twice[-1] = 1.0
+        power = self.at(np.hypot(fy[:, None], fx[None, :]))
+        found: Floats = power * twice / (ny * nx * dy * dx)
+        return found
+
     def along(self, frequency: Floats, normals: Floats, blur: float) -> Floats:
         """Return the power along edge normals, averaged over them, folded by the pixel grid.
 

@@ -141,14 +141,8 @@ def jacobian_doubt(jacobian: Floats, spectrum: NoiseSpectrum) -> Floats:
     times the squared transform of the weights.
     """
     flat = jacobian.reshape(len(jacobian), -1)
-    weights = np.linalg.solve(flat @ flat.T, flat).reshape(jacobian.shape)
-    ny, nx = jacobian.shape[1:]
-    dy, dx = spectrum.spacing_mm
-    fy, fx = np.fft.fftfreq(ny, dy), np.fft.fftfreq(nx, dx)
-    power = spectrum.at(np.hypot(fy[:, None], fx[None, :])) / (dy * dx)
-    square = np.abs(np.fft.fft2(weights)) ** 2
-    variance = (square * power).sum(axis=(1, 2)) / (ny * nx)
-    found: Floats = np.sqrt(variance)
+    weights: Floats = np.asarray(np.linalg.solve(flat @ flat.T, flat)).reshape(jacobian.shape)
+    found: Floats = np.sqrt(spectrum.variance_of_sums(weights))
     return found
 
 

@@ -12,7 +12,6 @@ from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 import numpy as np
-from scipy import fft
 
 from ct_measure_plugin.physics.esf_fit import Part, averaged_transfer, solve_averaged, whiten
 from ct_measure_plugin.physics.psf_basis import radial_dictionary
@@ -133,27 +132,11 @@ def _covariance(rings: _Rings, sections: list[Section], spectrum: NoiseSpectrum)
         weights = np.zeros((n, *inside.shape))
         rows, columns = np.nonzero(inside)
         weights[rings.index[k], rows, columns] = 1.0
-        total += _products(weights, spectrum)
+        total += spectrum.covariance_of_sums(weights)
     total *= len(sections) / len(used)
     found: Floats = total / np.outer(rings.count, rings.count)
     # a ring that the chosen slices leave out has the noise of independent pixels
     white = float(spectrum.power.mean()) / (spectrum.spacing_mm[0] * spectrum.spacing_mm[1])
     empty = np.diag(found) <= 0
     found[empty, empty] = white / rings.count[empty]
-    return found
-
-
-def _products(weights: Floats, spectrum: NoiseSpectrum) -> Floats:
-    """Return the covariance matrix of sums of pixels with the given weights, (n, ny, nx)."""
-    ny, nx = weights.shape[1:]
-    dy, dx = spectrum.spacing_mm
-    fy, fx = fft.fftfreq(ny, dy), fft.rfftfreq(nx, dx)
-    power = spectrum.at(np.hypot(fy[:, None], fx[None, :]))
-    twice = np.full(len(fx), 2.0)
-    twice[0] = 1.0
-    if nx % 2 == 0:
-        twice[-1] = 1.0
-    wave = fft.rfft2(weights) * np.sqrt(power * twice / (ny * nx * dy * dx))
-    flat = wave.reshape(len(weights), -1)
-    found: Floats = flat.real @ flat.real.T + flat.imag @ flat.imag.T
     return found

@@ -14,7 +14,6 @@ from ct_measure_plugin.physics.edge_noise import NoiseSpectrum, residual_spectru
 from ct_measure_plugin.physics.regions import direction
 from ct_measure_plugin.physics.results import NotMeasured
 from ct_measure_plugin.physics.wire_trace import trace_wire
-from ct_measure_plugin.physics.wire_transform import sum_variance
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -91,7 +90,7 @@ def bead_samples(
     spectrum = NoiseSpectrum(
         parts[0].frequency, np.mean([p.power for p in parts], axis=0), spacing_mm
     )
-    noise = math.sqrt(float(sum_variance(weights[None], spectrum)[0]))
+    noise = math.sqrt(float(spectrum.variance_of_sums(weights[None])[0]))
     z = np.arange(len(stack), dtype=np.float64) * gap
     place = cy - float(y[0, 0]), cx - float(x[0, 0])
     # the spot's width was fitted with its height, which makes that twice as uncertain

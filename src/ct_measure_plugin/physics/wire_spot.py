@@ -10,7 +10,6 @@ import numpy as np
 from ct_measure_plugin.physics.mtf_curve import level_frequency
 from ct_measure_plugin.physics.results import Curve, Quantity
 from ct_measure_plugin.physics.wire_trace import CORE as FITTED
-from ct_measure_plugin.physics.wire_transform import sum_variance
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -71,7 +70,7 @@ def _doubts(
     core = section.radius < CORE * fwhm
     weights = np.zeros((len(rows), *core.shape))
     weights[:, core] = rows @ np.linalg.pinv(_even(section.radius[core] / fwhm), rcond=1e-6)
-    found: Floats = np.sqrt(sum_variance(section.effective(weights), spectrum) / slices)
+    found: Floats = np.sqrt(spectrum.variance_of_sums(section.effective(weights)) / slices)
     return found
 
 
@@ -88,7 +87,7 @@ def place_doubts(
     spot = height * np.exp(-0.5 * (section.radius / trace.sigma) ** 2) * near / trace.sigma**2
     columns = np.stack([spot * section.down, spot * section.right])
     weights = columns / np.sum(columns**2, axis=(1, 2))[:, None, None]
-    one = math.sqrt(float(sum_variance(weights, spectrum).max()))
+    one = math.sqrt(float(spectrum.variance_of_sums(weights).max()))
     n = len(trace.centers)
     index = np.arange(n) - (n - 1) / 2
     along = one / math.sqrt(float(index @ index)) * math.sqrt(n / slices) if n > 1 else 0.0

@@ -11,7 +11,7 @@ from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 import numpy as np
-from scipy import fft, special
+from scipy import special
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -26,7 +26,6 @@ __all__ = [
     "cut_sections",
     "object_transfer",
     "phase_weights",
-    "sum_variance",
     "transform",
 ]
 
@@ -222,24 +221,9 @@ class Sums:
         section, share = self._sections[k], self._shares[k]
         waves = _wave(frequency[:, None, None] * _place(section, direction_deg), direction_deg)
         weights = section.effective((waves - mtf[:, None, None]) * share) / self._total
-        variance = sum_variance(weights, self._spectrum)
+        variance = self._spectrum.variance_of_sums(weights)
         found: Floats = np.sqrt(variance * float(np.sum((self._each / self._each[k]) ** 2)))
         return found
-
-
-def sum_variance(weights: Floats, spectrum: NoiseSpectrum) -> Floats:
-    """Return the variances of weighted sums of pixels, weights (k, ny, nx), in coloured noise."""
-    ny, nx = weights.shape[1:]
-    dy, dx = spectrum.spacing_mm
-    fy, fx = fft.fftfreq(ny, dy), fft.rfftfreq(nx, dx)
-    power = spectrum.at(np.hypot(fy[:, None], fx[None, :]))
-    twice = np.full(len(fx), 2.0)
-    twice[0] = 1.0
-    if nx % 2 == 0:
-        twice[-1] = 1.0
-    square = np.abs(fft.rfft2(weights)) ** 2 * (power * twice)
-    found: Floats = square.sum(axis=(1, 2)) / (ny * nx * dy * dx)
-    return found
 
 
 def _place(section: Section, direction_deg: float | None) -> Floats:

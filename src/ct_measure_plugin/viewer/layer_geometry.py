@@ -16,7 +16,7 @@ if TYPE_CHECKING:
 
     Floats = NDArray[np.float64]
 
-__all__ = ["geometry_of", "world_in_mm", "world_of_layer"]
+__all__ = ["geometry_of", "lying_like", "world_in_mm", "world_of_layer"]
 
 Spacing: TypeAlias = tuple[float, float, float]
 
@@ -34,6 +34,12 @@ def world_of_layer(layer: Image) -> tuple[Floats, Floats, Floats | None]:
     columns = [np.asarray(layer.data_to_world(np.eye(n)[i]), dtype=float) - zero for i in range(n)]
     last = slice(max(0, n - 3), n)
     return np.stack(columns, axis=1)[last, last], zero[last], world_in_mm(layer)
+
+
+def lying_like(layer: Any) -> dict[str, Any]:
+    """Return what a new layer is given to lie just where another lies."""
+    names = ("scale", "translate", "rotate", "shear", "affine", "units", "axis_labels")
+    return {name: getattr(layer, name) for name in names}
 
 
 def world_in_mm(layer: Image) -> Floats | None:

@@ -13,6 +13,7 @@ import numpy as np
 
 from ct_measure_plugin.physics.coverage import slices_of
 from ct_measure_plugin.physics.regions import Disc, Ellipse, Segment, direction
+from ct_measure_plugin.viewer.layer_geometry import lying_like
 from ct_measure_plugin.viewer.shapes import shape_of
 
 if TYPE_CHECKING:
@@ -136,13 +137,7 @@ class Marks:
         self._layer = self._viewer.add_vectors(
             strokes,
             name=self._name,
-            scale=image.scale,
-            translate=image.translate,
-            rotate=image.rotate,
-            shear=image.shear,
-            affine=image.affine,
-            units=image.units,
-            axis_labels=image.axis_labels,
+            **lying_like(image),
             edge_color=COLOUR,
             edge_width=0.7,
             vector_style="line",

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from typing import Any
 
+from ct_measure_plugin.viewer.layer_geometry import lying_like
 from ct_measure_plugin.viewer.region_drawing import new_labels_layer
 from ct_measure_plugin.viewer.shapes import new_regions_layer
 
@@ -19,13 +20,7 @@ def new_points_layer(viewer: Any, image: Any, name: str = "Points") -> Any:
         ndim=image.ndim,
         name=name,
         size=_DIAMETER,
-        scale=image.scale,
-        translate=image.translate,
-        rotate=image.rotate,
-        shear=image.shear,
-        affine=image.affine,
-        units=image.units,
-        axis_labels=image.axis_labels,
+        **lying_like(image),
         face_color="transparent",
         border_color="#ffb000",
     )

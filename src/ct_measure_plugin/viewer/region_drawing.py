@@ -13,6 +13,7 @@ from ct_measure_plugin.physics.regions import Disc, Ellipsoid, Mask, Region, Seg
 from ct_measure_plugin.physics.results import NotMeasured
 from ct_measure_plugin.physics.threshold import threshold_mask
 from ct_measure_plugin.viewer.label_grid import NoGrid, grid_of
+from ct_measure_plugin.viewer.layer_geometry import lying_like
 from ct_measure_plugin.viewer.outlines import Outline, sort_of
 from ct_measure_plugin.viewer.region_features import (
     CLASS,
@@ -128,13 +129,7 @@ def new_labels_layer(viewer: Any, image: Any, name: str = "Labels") -> Any:
     return viewer.add_labels(
         np.zeros(data.shape, np.uint16),
         name=name,
-        scale=image.scale,
-        translate=image.translate,
-        rotate=image.rotate,
-        shear=image.shear,
-        affine=image.affine,
-        units=image.units,
-        axis_labels=image.axis_labels,
+        **lying_like(image),
     )
 
 

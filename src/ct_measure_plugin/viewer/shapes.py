@@ -25,6 +25,7 @@ from ct_measure_plugin.physics.regions import (
 )
 from ct_measure_plugin.viewer.drawn import Drawn
 from ct_measure_plugin.viewer.layer_frame import LayerFrame
+from ct_measure_plugin.viewer.layer_geometry import lying_like
 from ct_measure_plugin.viewer.region_features import ELLIPSOID, NAME, Tags, set_column, tags_on
 
 if TYPE_CHECKING:
@@ -110,13 +111,7 @@ def new_regions_layer(viewer: Any, image: Any, name: str = "Regions") -> Any:
     return viewer.add_shapes(
         ndim=image.ndim,
         name=name,
-        scale=image.scale,
-        translate=image.translate,
-        rotate=image.rotate,
-        shear=image.shear,
-        affine=image.affine,
-        units=image.units,
-        axis_labels=image.axis_labels,
+        **lying_like(image),
         face_color="transparent",
         edge_color="#ffb000",
         edge_width=1,

@@ -4,20 +4,19 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING, Any
 
-from qtpy.QtCore import QSignalBlocker, QSize, Qt, Signal
+from qtpy.QtCore import QSignalBlocker, Qt, Signal
 from qtpy.QtWidgets import (
     QComboBox,
     QFormLayout,
     QHBoxLayout,
     QLabel,
-    QListWidget,
-    QListWidgetItem,
     QMenu,
     QPushButton,
     QWidget,
 )
 
 from ct_measure_plugin.viewer.docks.dock import narrow
+from ct_measure_plugin.viewer.docks.image_ticks import ImageTicks
 from ct_measure_plugin.viewer.region_source import kinds
 
 if TYPE_CHECKING:
@@ -36,8 +35,8 @@ TOOLS = (
     ("Paint labels", "labels", "paint"),
 )
 
-#: Rows of the list of images before it scrolls, and pixels of one.
-_ROWS, _ROW = 3, 20
+#: Rows of the list of images before it scrolls.
+_ROWS = 3
 
 
 class RegionChoice(QWidget):
@@ -57,18 +56,15 @@ class RegionChoice(QWidget):
     def __init__(self, session: Session, parent: QWidget | None = None) -> None:
         super().__init__(parent)
         self._session = session
-        self._images: list[Any] = []
         self._layers: list[Any] = []
-        self._wanted: list[Any] = []
         form = QFormLayout(self)
         form.setContentsMargins(0, 0, 0, 0)
         form.setFieldGrowthPolicy(QFormLayout.FieldGrowthPolicy.AllNonFixedFieldsGrow)
-        self.images = QListWidget()
-        self.images.setAccessibleName("Image layers to measure")
+        self.images = ImageTicks(session, _ROWS, numbered=True)
         self.images.setToolTip(
             "Tick several to measure the same regions on each. Differences are to the first ticked."
         )
-        self.images.itemChanged.connect(self._ticked)
+        self.images.ticked.connect(self._ticked)
         self.regions = QComboBox()
         narrow(self.regions)
         self.regions.setAccessibleName("Layer of regions")
@@ -103,7 +99,7 @@ class RegionChoice(QWidget):
 
     def chosen_images(self) -> tuple[Any, ...]:
         """Return the image layers ticked, in the order in which they were."""
-        return tuple(one for one in self._wanted if any(one is known for known in self._images))
+        return self.images.chosen
 
     def chosen_layer(self) -> Any:
         """Return the layer of regions, or None."""
@@ -117,10 +113,7 @@ class RegionChoice(QWidget):
         viewer = self._session.viewer
         layers = () if viewer is None else tuple(viewer.layers)
         before, region = self.chosen_images(), self.chosen_layer()
-        self._images = list(self._session.images())
-        self._wanted = [one for one in self._wanted if any(one is k for k in self._images)]
-        if not self._wanted and self._images:
-            self._wanted = list(self._session.chosen_images()[:1]) or self._images[:1]
+        self.images.look()
         self._layers = [one for one in reversed(layers) if isinstance(one, kinds())]
         self._fill(region)
         after = self.chosen_images()
@@ -131,7 +124,7 @@ class RegionChoice(QWidget):
     def choose(self, images: tuple[Any, ...] = (), regions: Any = None) -> None:
         """Choose layers; for programs and tests."""
         if images:
-            self._wanted = list(images)
+            self.images.tick(images)
         self._fill(self.chosen_layer() if regions is None else regions)
         self.changed.emit()
 
@@ -139,18 +132,8 @@ class RegionChoice(QWidget):
 
     def _fill(self, region: Any) -> None:
         """Write the lists anew without telling anyone."""
-        blockers = [QSignalBlocker(one) for one in (self.images, self.regions)]
-        self.images.clear()
-        for layer in self._images:
-            place = next((i for i, one in enumerate(self._wanted, 1) if one is layer), 0)
-            several = place and len(self._wanted) > 1
-            item = QListWidgetItem(f"{place}: {layer.name}" if several else layer.name)
-            item.setFlags(Qt.ItemFlag.ItemIsEnabled | Qt.ItemFlag.ItemIsUserCheckable)
-            item.setCheckState(Qt.CheckState.Checked if place else Qt.CheckState.Unchecked)
-            item.setToolTip(layer.name)
-            item.setSizeHint(QSize(0, _ROW))
-            self.images.addItem(item)
-        self.images.setFixedHeight(min(max(len(self._images), 1), _ROWS) * _ROW + 4)
+        self.images.fill()
+        blocker = QSignalBlocker(self.regions)
         self.regions.clear()
         for layer in self._layers:
             self.regions.addItem(layer.name)
@@ -158,12 +141,8 @@ class RegionChoice(QWidget):
             self.regions.setItemData(self.regions.count() - 1, tip, Qt.ItemDataRole.ToolTipRole)
         place = next((i for i, one in enumerate(self._layers) if one is region), 0)
         self.regions.setCurrentIndex(place if self._layers else -1)
-        del blockers
+        del blocker
 
-    def _ticked(self, item: QListWidgetItem) -> None:
-        layer = self._images[self.images.row(item)]
-        self._wanted = [one for one in self._wanted if one is not layer]
-        if item.checkState() == Qt.CheckState.Checked:
-            self._wanted.append(layer)
+    def _ticked(self) -> None:
         self._fill(self.chosen_layer())
         self.changed.emit()

@@ -4,14 +4,12 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING, Any
 
-from qtpy.QtCore import QSignalBlocker, QSize, Qt, Signal
+from qtpy.QtCore import QSignalBlocker, Signal
 from qtpy.QtWidgets import (
     QComboBox,
     QFormLayout,
     QHBoxLayout,
     QLabel,
-    QListWidget,
-    QListWidgetItem,
     QMenu,
     QPushButton,
     QSpinBox,
@@ -20,6 +18,7 @@ from qtpy.QtWidgets import (
 
 from ct_measure_plugin.viewer.asking import Extent
 from ct_measure_plugin.viewer.docks.dock import narrow
+from ct_measure_plugin.viewer.docks.image_ticks import ImageTicks
 
 if TYPE_CHECKING:
     from ct_measure_plugin.measurements import RegionNeed
@@ -38,8 +37,8 @@ _TOOLS = {
 
 _DRAWN, _AROUND, ALL_SLICES = "As drawn", "Slices around it", "All slices"
 
-#: Rows of the list of images before it scrolls, and pixels of one.
-_ROWS, _ROW = 4, 20
+#: Rows of the list of images before it scrolls.
+_ROWS = 4
 
 
 class Sources(QWidget):
@@ -59,9 +58,7 @@ class Sources(QWidget):
     def __init__(self, session: Session, parent: QWidget | None = None) -> None:
         super().__init__(parent)
         self._session = session
-        self._images: list[Any] = []
         self._shapes: list[Any] = []
-        self._wanted: list[Any] = []
         self._build()
 
     # --- building -------------------------------------------------------------------
@@ -70,10 +67,9 @@ class Sources(QWidget):
         form = QFormLayout(self)
         form.setContentsMargins(0, 0, 0, 0)
         form.setFieldGrowthPolicy(QFormLayout.FieldGrowthPolicy.AllNonFixedFieldsGrow)
-        self.images = QListWidget()
-        self.images.setAccessibleName("Image layers to measure")
+        self.images = ImageTicks(self._session, _ROWS)
         self.images.setToolTip("Tick several to measure the same regions on each.")
-        self.images.itemChanged.connect(self._ticked)
+        self.images.ticked.connect(self.changed)
         self.regions = QComboBox()
         self.regions.setAccessibleName("Layer of regions")
         narrow(self.regions)
@@ -103,7 +99,7 @@ class Sources(QWidget):
 
     def chosen_images(self) -> tuple[Any, ...]:
         """Return the image layers ticked, in the order of the list."""
-        return tuple(one for one in self._images if any(one is known for known in self._wanted))
+        return self.images.chosen
 
     def chosen_regions(self) -> Any:
         """Return the Shapes layer, or None."""
@@ -124,10 +120,7 @@ class Sources(QWidget):
         viewer = self._session.viewer
         layers = () if viewer is None else tuple(viewer.layers)
         before, region = self.chosen_images(), self.chosen_regions()
-        self._images = list(self._session.images())
-        self._wanted = [one for one in self._wanted if any(one is k for k in self._images)]
-        if not self._wanted and self._images:
-            self._wanted = list(self._session.chosen_images()[:1]) or self._images[:1]
+        self.images.look()
         self._shapes = [one for one in reversed(layers) if isinstance(one, Shapes)]
         self._fill(region)
         if [id(one) for one in before] != [id(one) for one in self.chosen_images()] or (
@@ -138,7 +131,7 @@ class Sources(QWidget):
     def choose(self, images: tuple[Any, ...] = (), regions: Any = None) -> None:
         """Choose layers; for programs and tests."""
         if images:
-            self._wanted = list(images)
+            self.images.tick(images)
         self._fill(self.chosen_regions() if regions is None else regions)
         self.changed.emit()
 
@@ -160,34 +153,16 @@ class Sources(QWidget):
 
     def _fill(self, region: Any) -> None:
         """Write the lists anew without telling anyone."""
-        blockers = [QSignalBlocker(one) for one in (self.images, self.regions)]
-        self.images.clear()
-        for layer in self._images:
-            item = QListWidgetItem(layer.name)
-            item.setFlags(Qt.ItemFlag.ItemIsEnabled | Qt.ItemFlag.ItemIsUserCheckable)
-            ticked = any(layer is one for one in self._wanted)
-            item.setCheckState(Qt.CheckState.Checked if ticked else Qt.CheckState.Unchecked)
-            item.setToolTip(layer.name)
-            item.setSizeHint(QSize(0, _ROW))
-            self.images.addItem(item)
-        rows = min(max(len(self._images), 1), _ROWS)
-        self.images.setFixedHeight(rows * _ROW + 4)
+        self.images.fill()
+        blocker = QSignalBlocker(self.regions)
         self.regions.clear()
         for layer in self._shapes:
             self.regions.addItem(layer.name)
         place = next((i for i, one in enumerate(self._shapes) if one is region), 0)
         self.regions.setCurrentIndex(place if self._shapes else -1)
-        deep = any(layer.ndim > 2 for layer in self._images)
+        deep = any(layer.ndim > 2 for layer in self.images.offered)
         self._form.setRowVisible(self.slices.parentWidget(), deep)
-        del blockers
-
-    def _ticked(self, item: QListWidgetItem) -> None:
-        row = self.images.row(item)
-        layer = self._images[row]
-        self._wanted = [one for one in self._wanted if one is not layer]
-        if item.checkState() == Qt.CheckState.Checked:
-            self._wanted.append(layer)
-        self.changed.emit()
+        del blocker
 
     def _slices_chosen(self, *_: Any) -> None:
         self.around.setVisible(self.slices.currentText() == _AROUND)

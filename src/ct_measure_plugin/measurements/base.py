@@ -4,9 +4,9 @@ from __future__ import annotations
 
 from abc import ABC, abstractmethod
 from dataclasses import dataclass
-from typing import TYPE_CHECKING, ClassVar
+from typing import TYPE_CHECKING, Any, ClassVar
 
-from pydantic import BaseModel, ConfigDict
+from pydantic import BaseModel, ConfigDict, Field
 
 from ct_measure_plugin.errors import RegionError
 
@@ -17,7 +17,7 @@ if TYPE_CHECKING:
     from ct_measure_plugin.physics.results import NotMeasured, Quantity, Result
     from ct_measure_plugin.physics.volume import Volume
 
-__all__ = ["Measurement", "RegionNeed", "Settings"]
+__all__ = ["Measurement", "RegionNeed", "Settings", "further_levels"]
 
 
 class Settings(BaseModel):
@@ -28,6 +28,16 @@ class Settings(BaseModel):
     """
 
     model_config = ConfigDict(frozen=True, extra="forbid")
+
+
+def further_levels(curve: str = "MTF") -> Any:
+    """Return the field of a setting that asks for the frequencies of more levels of a curve."""
+    return Field(
+        (),
+        title="Further levels",
+        description=f"levels of the {curve} between 0 and 1, besides 50, 10 and 2 %, whose"
+        " frequencies are wanted",
+    )
 
 
 @dataclass(frozen=True, slots=True)

@@ -3,14 +3,14 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
-from typing import TYPE_CHECKING
+from dataclasses import dataclass, replace
+from typing import TYPE_CHECKING, TypeVar
 
 import numpy as np
 
 from ct_measure_plugin.physics.coverage import slices_of
 from ct_measure_plugin.physics.regions import Box, Disc, Region
-from ct_measure_plugin.physics.results import Caution, NotMeasured
+from ct_measure_plugin.physics.results import Caution, NotMeasured, Result
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -18,6 +18,9 @@ if TYPE_CHECKING:
     from ct_measure_plugin.physics.volume import Volume
 
 __all__ = ["Boxed", "cut_box"]
+
+
+_Answer = TypeVar("_Answer", bound=Result | NotMeasured)
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -40,6 +43,15 @@ class Boxed:
     slices: list[int]
     origin_mm: tuple[float, float]
     cautions: tuple[Caution, ...]
+
+    def told(self, found: _Answer) -> _Answer:
+        """Return an answer about these pixels with what is to be known of them."""
+        return replace(found, cautions=(*self.cautions, *found.cautions))
+
+    def shifted(self, place_mm: tuple[float, float]) -> tuple[float, float]:
+        """Return a place in the box, y and x, as a place in the image frame."""
+        (y, x), (oy, ox) = place_mm, self.origin_mm
+        return y + oy, x + ox
 
 
 def cut_box(volume: Volume, region: Region, *, least: int) -> Boxed | NotMeasured:

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, ClassVar, Literal, cast
 
 from pydantic import Field
 
-from ct_measure_plugin.measurements.base import Measurement, RegionNeed, Settings
+from ct_measure_plugin.measurements.base import Measurement, RegionNeed, Settings, further_levels
 from ct_measure_plugin.measurements.boxes import cut_box
 from ct_measure_plugin.measurements.isocentre import isocentre
 from ct_measure_plugin.physics.disc_mtf import DiscMtf, disc_mtf
@@ -58,12 +58,7 @@ class DiscMtfSettings(Settings):
         description="where the isocentre lies in the image frame; from the header or the middle of"
         " the image if not set",
     )
-    levels: tuple[float, ...] = Field(
-        (),
-        title="Further levels",
-        description="levels of the MTF between 0 and 1, besides 50, 10 and 2 %, whose frequencies"
-        " are wanted",
-    )
+    levels: tuple[float, ...] = further_levels()
 
 
 class MeasureDiscMtf(Measurement):
@@ -89,20 +84,21 @@ class MeasureDiscMtf(Measurement):
         sector = _sector(volume, region, box.slices[0], wanted)
         if isinstance(sector, NotMeasured):
             return replace(sector, cautions=box.cautions)
-        found = disc_mtf(
-            box.values,
-            spacing_mm=volume.spacing_mm[1:],
-            method=wanted.method,
-            sector_deg=sector,
-            slice_gap_mm=volume.spacing_mm[0] if volume.evenly_spaced else None,
-            unit=volume.unit,
-            limits=volume.representable_hu,
-            levels=wanted.levels,
+        found = box.told(
+            disc_mtf(
+                box.values,
+                spacing_mm=volume.spacing_mm[1:],
+                method=wanted.method,
+                sector_deg=sector,
+                slice_gap_mm=volume.spacing_mm[0] if volume.evenly_spaced else None,
+                unit=volume.unit,
+                limits=volume.representable_hu,
+                levels=wanted.levels,
+            )
         )
         if isinstance(found, NotMeasured):
-            return replace(found, cautions=(*box.cautions, *found.cautions))
-        (y, x), (oy, ox) = found.center_mm, box.origin_mm
-        return replace(found, center_mm=(y + oy, x + ox), cautions=(*box.cautions, *found.cautions))
+            return found
+        return replace(found, center_mm=box.shifted(found.center_mm))
 
     def marks(
         self,

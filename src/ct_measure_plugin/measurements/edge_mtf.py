@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, ClassVar, Literal, cast
 
 from pydantic import Field
 
-from ct_measure_plugin.measurements.base import Measurement, RegionNeed, Settings
+from ct_measure_plugin.measurements.base import Measurement, RegionNeed, Settings, further_levels
 from ct_measure_plugin.measurements.boxes import cut_box
 from ct_measure_plugin.physics.edge_mtf import EdgeMtf, edge_mtf
 from ct_measure_plugin.physics.regions import Segment
@@ -33,12 +33,7 @@ class EdgeMtfSettings(Settings):
         description="fitted: the edge spread function is composed of flexible shapes, as smooth as"
         " the noise asks; conventional: bin, differentiate, window, transform",
     )
-    levels: tuple[float, ...] = Field(
-        (),
-        title="Further levels",
-        description="levels of the MTF between 0 and 1, besides 50, 10 and 2 %, whose frequencies"
-        " are wanted",
-    )
+    levels: tuple[float, ...] = further_levels()
 
 
 class MeasureEdgeMtf(Measurement):
@@ -60,23 +55,20 @@ class MeasureEdgeMtf(Measurement):
         box = cut_box(volume, regions[0], least=LEAST_PIXELS)
         if isinstance(box, NotMeasured):
             return box
-        found = edge_mtf(
-            box.values,
-            spacing_mm=volume.spacing_mm[1:],
-            method=wanted.method,
-            unit=volume.unit,
-            limits=volume.representable_hu,
-            levels=wanted.levels,
+        found = box.told(
+            edge_mtf(
+                box.values,
+                spacing_mm=volume.spacing_mm[1:],
+                method=wanted.method,
+                unit=volume.unit,
+                limits=volume.representable_hu,
+                levels=wanted.levels,
+            )
         )
         if isinstance(found, NotMeasured):
-            return replace(found, cautions=(*box.cautions, *found.cautions))
-        (y0, x0), (y1, x1) = found.ends_mm
-        oy, ox = box.origin_mm
-        return replace(
-            found,
-            ends_mm=((y0 + oy, x0 + ox), (y1 + oy, x1 + ox)),
-            cautions=(*box.cautions, *found.cautions),
-        )
+            return found
+        first, last = map(box.shifted, found.ends_mm)
+        return replace(found, ends_mm=(first, last))
 
     def marks(
         self,

@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, ClassVar, Literal, cast
 
 from pydantic import Field
 
-from ct_measure_plugin.measurements.base import Measurement, RegionNeed, Settings
+from ct_measure_plugin.measurements.base import Measurement, RegionNeed, Settings, further_levels
 from ct_measure_plugin.measurements.boxes import cut_box
 from ct_measure_plugin.physics.regions import Disc
 from ct_measure_plugin.physics.results import NotMeasured, Result
@@ -62,12 +62,7 @@ class SliceProfileSettings(Settings):
         description="full width at half maximum of the point spread within the slice, which widens"
         " the profile of a ramp or wire; taken out",
     )
-    levels: tuple[float, ...] = Field(
-        (),
-        title="Further levels",
-        description="levels of the MTF along z between 0 and 1, besides 50, 10 and 2 %, whose"
-        " frequencies are wanted",
-    )
+    levels: tuple[float, ...] = further_levels("MTF along z")
 
 
 class MeasureSliceProfile(Measurement):
@@ -103,22 +98,23 @@ class MeasureSliceProfile(Measurement):
                     "reconstruct with an extended CT-number range, or use a smaller bead",
                     box.cautions,
                 )
-        found = slice_profile(
-            box.values,
-            spacing_mm=volume.spacing_mm[1:],
-            positions_mm=volume.positions_mm[box.slices],
-            target=wanted.target,
-            object_size_mm=wanted.object_size_mm,
-            angle_deg=wanted.angle_deg,
-            climb_deg=wanted.climb_deg,
-            in_plane_fwhm_mm=wanted.in_plane_fwhm_mm,
-            unit=volume.unit,
-            levels=wanted.levels,
+        found = box.told(
+            slice_profile(
+                box.values,
+                spacing_mm=volume.spacing_mm[1:],
+                positions_mm=volume.positions_mm[box.slices],
+                target=wanted.target,
+                object_size_mm=wanted.object_size_mm,
+                angle_deg=wanted.angle_deg,
+                climb_deg=wanted.climb_deg,
+                in_plane_fwhm_mm=wanted.in_plane_fwhm_mm,
+                unit=volume.unit,
+                levels=wanted.levels,
+            )
         )
         if isinstance(found, NotMeasured):
-            return replace(found, cautions=(*box.cautions, *found.cautions))
-        (y, x), (oy, ox) = found.center_mm, box.origin_mm
-        return replace(found, center_mm=(y + oy, x + ox), cautions=(*box.cautions, *found.cautions))
+            return found
+        return replace(found, center_mm=box.shifted(found.center_mm))
 
     def marks(
         self,

@@ -5,10 +5,9 @@ from __future__ import annotations
 from dataclasses import replace
 from typing import TYPE_CHECKING, ClassVar, Literal, cast
 
-import numpy as np
 from pydantic import Field
 
-from ct_measure_plugin.measurements.base import Measurement, RegionNeed, Settings
+from ct_measure_plugin.measurements.base import Measurement, RegionNeed, Settings, further_levels
 from ct_measure_plugin.measurements.boxes import cut_box
 from ct_measure_plugin.physics.regions import Disc, Segment
 from ct_measure_plugin.physics.results import NotMeasured, Result
@@ -49,12 +48,7 @@ class WireMtfSettings(Settings):
         description="direction of the MTF for the method 'transform', counter-clockwise from +x;"
         " the mean over all directions if not set",
     )
-    levels: tuple[float, ...] = Field(
-        (),
-        title="Further levels",
-        description="levels of the MTF between 0 and 1, besides 50, 10 and 2 %, whose frequencies"
-        " are wanted",
-    )
+    levels: tuple[float, ...] = further_levels()
 
 
 class MeasureWireMtf(Measurement):
@@ -76,29 +70,25 @@ class MeasureWireMtf(Measurement):
         box = cut_box(volume, regions[0], least=LEAST_PIXELS)
         if isinstance(box, NotMeasured):
             return box
-        found = wire_mtf(
-            box.values,
-            spacing_mm=volume.spacing_mm[1:],
-            object_diameter_mm=wanted.object_diameter_mm,
-            shape=wanted.shape,
-            method=wanted.method,
-            direction_deg=wanted.direction_deg if wanted.method == "transform" else None,
-            slice_gap_mm=volume.spacing_mm[0] if volume.evenly_spaced else None,
-            slice_thickness_mm=_thickness(volume, box.slices[0]),
-            unit=volume.unit,
-            limits=volume.representable_hu,
-            levels=wanted.levels,
+        found = box.told(
+            wire_mtf(
+                box.values,
+                spacing_mm=volume.spacing_mm[1:],
+                object_diameter_mm=wanted.object_diameter_mm,
+                shape=wanted.shape,
+                method=wanted.method,
+                direction_deg=wanted.direction_deg if wanted.method == "transform" else None,
+                slice_gap_mm=volume.spacing_mm[0] if volume.evenly_spaced else None,
+                slice_thickness_mm=_thickness(volume, box.slices[0]),
+                unit=volume.unit,
+                limits=volume.representable_hu,
+                levels=wanted.levels,
+            )
         )
         if isinstance(found, NotMeasured):
-            return replace(found, cautions=(*box.cautions, *found.cautions))
-        moved = np.array([found.center_mm, *found.ends_mm]) + box.origin_mm
-        center, first, last = ((float(y), float(x)) for y, x in moved)
-        return replace(
-            found,
-            center_mm=center,
-            ends_mm=(first, last),
-            cautions=(*box.cautions, *found.cautions),
-        )
+            return found
+        first, last = map(box.shifted, found.ends_mm)
+        return replace(found, center_mm=box.shifted(found.center_mm), ends_mm=(first, last))
 
     def marks(
         self,

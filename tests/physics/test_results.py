@@ -20,6 +20,9 @@ from ct_measure_plugin.physics.results import Caution, Curve, NotMeasured, Quant
         (Quantity(-0.00412, "HU", 0.000987), "-0.00412 ± 0.00099 HU"),
         (Quantity(74.0, "px", 0.0), "74 px"),
         (Quantity(0.5, ""), "0.5"),
+        (Quantity(1.0, "", 3e-17), "1"),  # lost in the value's own rounding: no digits of nothing
+        (Quantity(2.1e-14, "", 1e-15), "2.10e-14 ± 0.10e-14"),
+        (Quantity(-3e-20, "", 5e-20), "-3.0e-20 ± 5.0e-20"),
     ],
 )
 def test_value_and_uncertainty_are_rounded_together(quantity, text):

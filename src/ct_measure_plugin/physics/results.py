@@ -39,6 +39,12 @@ __all__ = [
 _T = TypeVar("_T")
 
 
+#: Below this share of its value an uncertainty is no more than the rounding of floating point.
+_LOST = 1e-13
+#: With more decimals than this a number is written with a power of ten.
+_MOST_DECIMALS = 12
+
+
 @dataclass(frozen=True, slots=True)
 class Quantity:
     """A measured number.
@@ -76,12 +82,18 @@ class Quantity:
 
         The uncertainty keeps two significant digits and the value as many decimals (JCGM
         100:2008, 7.2.6). Without an uncertainty the value keeps five significant digits, and the
-        second text is empty, as it is for an exact number.
+        second text is empty, as it is for an exact number, and for an uncertainty that is lost in
+        the rounding of the value itself.
         """
-        if not self.uncertainty:
+        if not self.uncertainty or self.uncertainty < _LOST * abs(self.value):
             return f"{self.value:.5g}", ""
         decimals = max(0, 1 - math.floor(math.log10(self.uncertainty)))
-        decimals = min(decimals, 12)
+        if decimals > _MOST_DECIMALS:
+            power = math.floor(math.log10(max(abs(self.value), self.uncertainty)))
+            decimals = max(0, decimals + power)
+            tens = 10.0**-power
+            texts = (f"{one * tens:.{decimals}f}e{power}" for one in (self.value, self.uncertainty))
+            return next(texts), next(texts)
         return f"{self.value:.{decimals}f}", f"{self.uncertainty:.{decimals}f}"
 
     def __str__(self) -> str:

@@ -9,7 +9,7 @@ import numpy as np
 from pydantic import Field
 
 from ct_measure_plugin.measurements.base import AREAS, Measurement, RegionNeed, Settings
-from ct_measure_plugin.physics.coverage import plane_coverage, slices_of
+from ct_measure_plugin.physics.coverage import centres_inside, slices_of
 from ct_measure_plugin.physics.noise_power import NoisePower, noise_power
 from ct_measure_plugin.physics.patch_layout import lay_patches
 from ct_measure_plugin.physics.regions import Box
@@ -129,14 +129,7 @@ def _stacks(slices: list[int], depth: int) -> list[int]:
 
 
 def _in_plane(volume: Volume, region: Region, settings: NoisePowerSettings, k: int) -> Whole:
-    cover = plane_coverage(
-        region,
-        volume.shape[1:],
-        spacing_mm=volume.spacing_mm[1:],
-        origin_mm=volume.origin_mm[1:],
-        rule="center",
-        z_mm=float(volume.positions_mm[k]),
-    )
+    cover = centres_inside(region, volume, k)
     size = settings.patch_px
     if settings.layout != "by hand":
         return lay_patches(

@@ -6,7 +6,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from ct_measure_plugin.physics.coverage import plane_coverage, slices_of
+from ct_measure_plugin.physics.coverage import centres_inside, slices_of
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
@@ -40,14 +40,7 @@ def pixels_inside(
     for region in regions:
         own = np.full(shape, bool(slices))
         for k in slices if region.kind == "mask" else slices[:1]:
-            cover = plane_coverage(
-                region,
-                shape,
-                spacing_mm=(volume.spacing_mm[1], volume.spacing_mm[2]),
-                origin_mm=(volume.origin_mm[1], volume.origin_mm[2]),
-                rule="center",
-                z_mm=float(volume.positions_mm[k]),
-            )
+            cover = centres_inside(region, volume, k)
             here = np.zeros(shape, dtype=bool)
             here[cover.rows, cover.columns] = cover.weights > 0
             own &= here

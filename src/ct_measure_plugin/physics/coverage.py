@@ -36,7 +36,7 @@ if TYPE_CHECKING:
 
     Floats = NDArray[np.float64]
 
-__all__ = ["Coverage", "Rule", "plane_coverage", "reach_of", "slices_of"]
+__all__ = ["Coverage", "Rule", "centres_inside", "plane_coverage", "reach_of", "slices_of"]
 
 Rule: TypeAlias = Literal["area", "center"]
 
@@ -127,6 +127,24 @@ def plane_coverage(
         return _mask(region, grid, rule, (z_mm, slab_mm))
     kinds = "disc, ellipse, ellipsoid, box, polygon, segment or mask"
     raise RegionError("region", f"must be a {kinds}", region)
+
+
+def centres_inside(region: Region, volume: Volume, k: int) -> Coverage:
+    """Return the pixels of a volume's slice whose centres lie in a region, each of weight 1.
+
+    >>> from ct_measure_plugin.physics.volume import Volume
+    >>> volume = Volume(np.zeros((6, 4, 4)), spacing_mm=(2.0, 1.0, 1.0))
+    >>> float(centres_inside(Disc((1, 1), 1), volume, 2).weights.sum())
+    5.0
+    """
+    return plane_coverage(
+        region,
+        (volume.shape[1], volume.shape[2]),
+        spacing_mm=volume.spacing_mm[1:],
+        origin_mm=volume.origin_mm[1:],
+        rule="center",
+        z_mm=float(volume.positions_mm[k]),
+    )
 
 
 def slices_of(region: Region, volume: Volume, *, rule: Rule = "area") -> list[int]:

@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from ct_measure_plugin.errors import ArgumentError
-from ct_measure_plugin.physics.coverage import plane_coverage, slices_of
+from ct_measure_plugin.physics.coverage import centres_inside, slices_of
 from ct_measure_plugin.physics.regions import Mask
 from ct_measure_plugin.physics.results import NotMeasured
 
@@ -84,14 +84,7 @@ def threshold_mask(
 
 
 def _plane(volume: Volume, region: Region, k: int, low: float, high: float) -> NDArray[np.bool_]:
-    cover = plane_coverage(
-        region,
-        volume.shape[1:],
-        spacing_mm=volume.spacing_mm[1:],
-        origin_mm=volume.origin_mm[1:],
-        rule="center",
-        z_mm=float(volume.positions_mm[k]),
-    )
+    cover = centres_inside(region, volume, k)
     values = np.asarray(volume.hu[k, cover.rows, cover.columns])
     counts = (cover.weights > 0) & (values >= low) & (values <= high)
     padding = volume.padding(k, values)

@@ -138,6 +138,10 @@ def _section(record: Record) -> _Section:
 
 def _short(value: object) -> str:
     """Return a setting or a region's value as text, numbers to a thousandth of a millimetre."""
+    if value is None:
+        return "none"
+    if isinstance(value, bool):
+        return "yes" if value else "no"
     if isinstance(value, float):
         return f"{value:.3f}".rstrip("0").rstrip(".")
     if isinstance(value, dict):

@@ -205,10 +205,11 @@ def test_what_cannot_be_measured_says_why(capsys, folder):
 @pytest.mark.parametrize(
     ("arguments", "sentence"),
     [
-        (["series", "no such folder"], "there is no such folder or file"),
+        (["series", "no such folder"], "there is no folder or file 'no such folder'"),
+        (["measure", "gone", "uniformity"], "there is no folder or file 'gone'"),
         (["measure", "{folder}"], "'measurement' must be given"),
         (["measure", "{folder}", "edge", "--region", WATER], "no measurement is called 'edge'"),
-        (["measure", "{folder}", "region_statistics"], "'regions' must hold at least 1"),
+        (["measure", "{folder}", "region_statistics"], "'region' must be given for"),
         (["measure", "{folder}", "region_statistics", "--region", "blob"], "'kind' must be one of"),
         (["measure", "{folder}", "region_statistics", "--region", "disc center=1 radius=2"],
          "'center' must be two numbers y,x"),

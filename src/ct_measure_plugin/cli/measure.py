@@ -85,13 +85,20 @@ def _plan(arguments: argparse.Namespace, volume: Volume) -> Plan:
     from ct_measure_plugin.measurements.catalogue import find, settings_for
     from ct_measure_plugin.records import Plan, PlanStep, read_labels, region_to_dict
 
-    kind = find(arguments.measurement).settings_type
-    given = dict(setting_from_words(words, kind) for words in arguments.set)
+    asked = find(arguments.measurement)
+    given = dict(setting_from_words(words, asked.settings_type) for words in arguments.set)
     settings = settings_for(arguments.measurement, given)
     regions = [region_from_words(words, volume) for words in arguments.region]
     for file in arguments.regions:
         regions += _regions_of(file, volume)
     regions += [read_labels(file, volume) for file in arguments.labels]
+    if not regions and asked.regions.at_least:
+        raise ArgumentError(
+            "region",
+            f"must be given for {asked.name} ({' or '.join(asked.regions.kinds)}), in words, or a "
+            "file by --regions or --labels",
+            "none",
+        )
     step = PlanStep(
         measurement=arguments.measurement,
         settings=settings.model_dump(mode="json"),

@@ -16,7 +16,8 @@ HELP = (
     "a region in words: KIND then NAME=VALUE, lengths in mm, points as y,x. "
     "disc center=0,0 radius=20 (or diameter=40) | ellipse center= radii= angle= | "
     "ellipsoid center= radii= z-radius= z= | box center= size= angle= | "
-    "polygon vertices=y,x;y,x;y,x | segment start= end= width= ; each with z=MM, z=LOW:HIGH or "
+    "polygon vertices=y,x;y,x;y,x | segment start= end= width= | "
+    "path vertices=y,x;y,x;y,x width= ; each with z=MM, z=LOW:HIGH or "
     "slice=K or slice=K:L (counted from 0), name=WORD, class=WORD, code=SCHEME:VALUE, and "
     "values=LOW:HIGH for the range of values that counts, an end of which may be left out"
 )

@@ -7,6 +7,7 @@ import os
 from typing import TYPE_CHECKING, Any
 
 from ct_measure_plugin.cli import DONE
+from ct_measure_plugin.cli.choosing import must_exist
 
 if TYPE_CHECKING:
     import argparse
@@ -29,6 +30,7 @@ def run(arguments: argparse.Namespace) -> int:
     """List the series."""
     from ct_measure_plugin.dicom import scan_folder
 
+    must_exist(arguments.folder)
     scan = scan_folder(arguments.folder)
     if arguments.json:
         series = [_facts(i, entry) for i, entry in enumerate(scan.entries)]

@@ -3,13 +3,14 @@
 from __future__ import annotations
 
 from dataclasses import replace
-from typing import TYPE_CHECKING, ClassVar, Literal, cast
+from typing import TYPE_CHECKING, Any, ClassVar, Literal, cast
 
 import numpy as np
-from pydantic import Field
+from pydantic import Field, field_validator
 
 from ct_measure_plugin.measurements.base import BODIES, Measurement, RegionNeed, Settings
 from ct_measure_plugin.measurements.gather import gather, gather_enough
+from ct_measure_plugin.measurements.noise_spectrum import NoiseSpectrum, spectrum_from
 from ct_measure_plugin.physics.differences import paired_mean
 from ct_measure_plugin.physics.region_glance import RegionGlance, region_glance
 from ct_measure_plugin.physics.region_statistics import RegionStatistics, region_statistics
@@ -60,6 +61,20 @@ class RegionStatisticsSettings(Settings):
         title="Curves along z",
         description="mean and SD of every slice of a region on several slices",
     )
+    noise_spectrum: NoiseSpectrum | None = Field(
+        None,
+        title="Noise spectrum",
+        description="a record of a noise power spectrum from the same series, material and distance"
+        " from the centre, saved as JSON: the standard error of the mean is then from it, and not"
+        " from the region's own pixels",
+        json_schema_extra={"file": "noise spectrum"},
+    )
+
+    @field_validator("noise_spectrum", mode="before")
+    @classmethod
+    def _read_spectrum(cls, given: Any) -> Any:
+        """Take a measured spectrum, or read the file that holds it."""
+        return spectrum_from(given)
 
 
 class MeasureRegionStatistics(Measurement):
@@ -102,6 +117,7 @@ class MeasureRegionStatistics(Measurement):
             percentiles=wanted.percentiles,
             ranges=wanted.ranges,
             positions_mm=volume.positions_mm[found.slices] if curves else None,
+            noise=None if wanted.noise_spectrum is None else wanted.noise_spectrum.spectrum(),
         )
         return replace(result, cautions=(*found.cautions, *result.cautions))
 

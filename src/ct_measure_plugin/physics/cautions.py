@@ -82,6 +82,9 @@ KINDS: dict[str, CautionKind] = {
     # --- the numbers ----------------------------------------------------------------
     "no-uncertainty": _note("A number without a stated uncertainty"),
     "correlated-noise": _note("Noise correlation estimated from the region"),
+    "spectrum-used": _note("The standard error is from a measured noise spectrum"),
+    "spectrum-not-used": _warning("The noise spectrum does not fit the pixels"),
+    "spectrum-of-other-noise": _warning("The noise spectrum is that of other noise"),
     "independence-assumed": _note("Independent pixels were assumed"),
     "independent-images": _note("Two images were taken as independent"),
     "few-independent-samples": _warning("Few independent samples"),
@@ -99,6 +102,7 @@ KINDS: dict[str, CautionKind] = {
     "coarse-sampling": _warning("Few samples across the width"),
     "resampled-profile": _note("A profile between pixels is interpolated"),
     "slanted-average": _warning("The profile is averaged across a slanted edge"),
+    "turn-within-width": _warning("The path turns within the edge or peak"),
     "place-left-out": _warning("A place could not be measured"),
     # --- noise ----------------------------------------------------------------------
     "few-patches": _warning("Few patches"),

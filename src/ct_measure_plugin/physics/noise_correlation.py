@@ -27,7 +27,14 @@ if TYPE_CHECKING:
 
     Floats = NDArray[np.float64]
 
-__all__ = ["MeanDoubt", "doubt_of_mean", "doubt_of_samples", "independent_doubt"]
+__all__ = [
+    "MeanDoubt",
+    "between_slices",
+    "doubt_of_mean",
+    "doubt_of_samples",
+    "independent_doubt",
+    "student_factor",
+]
 
 #: A known white floor, in units of the region's variance, added to data and model alike: it keeps
 #: frequencies at which there is next to no noise from outvoting those that decide the mean.
@@ -77,7 +84,7 @@ def _student_table() -> tuple[Floats, Floats]:
     return np.log(freedom), factor
 
 
-def _student(freedom: float) -> float:
+def student_factor(freedom: float) -> float:
     """Return t(0.975, freedom)/1.96; freedom below 2 counts as 2."""
     return float(np.interp(math.log(freedom), *_student_table()))
 
@@ -96,7 +103,7 @@ def independent_doubt(values: Floats, weights: Floats) -> MeanDoubt:
     samples = total**2 / squares
     freedom = max(samples - 1, 1.0)
     variance = spread / (total**2 - squares)
-    return MeanDoubt(variance * _student(freedom) ** 2, samples, 0.0, freedom)
+    return MeanDoubt(variance * student_factor(freedom) ** 2, samples, 0.0, freedom)
 
 
 def doubt_of_samples(variance: float, count: float) -> MeanDoubt:
@@ -106,7 +113,7 @@ def doubt_of_samples(variance: float, count: float) -> MeanDoubt:
     2000.0
     """
     freedom = max(count - 1, 1.0)
-    return MeanDoubt(variance / count * _student(freedom) ** 2, count, 0.0, freedom)
+    return MeanDoubt(variance / count * student_factor(freedom) ** 2, count, 0.0, freedom)
 
 
 def doubt_of_mean(values: Floats, weights: Floats, spacing_mm: tuple[float, ...]) -> MeanDoubt:
@@ -147,7 +154,7 @@ def doubt_of_mean(values: Floats, weights: Floats, spacing_mm: tuple[float, ...]
         return white
     residual = np.where(cover > 0, stack - float(np.sum(cover * stack)) / total, 0.0)
     signal = cover * residual
-    shared = _between_slices(signal, cover)
+    shared = between_slices(signal, cover)
     finest = min(spacing_mm[-2:])
     part = math.log(total / np.count_nonzero(cover.any(axis=(1, 2))) / SMALL)
     part = min(max(part / math.log(LARGE / SMALL), 0.0), 1.0)
@@ -196,7 +203,7 @@ def _doubt_of_many(
     freedom = 2.0 / spread
     power, reach = _correlation(seen, weight * level, total**2)
     return MeanDoubt(
-        math.exp(middle) * _student(freedom) ** 2,
+        math.exp(middle) * student_factor(freedom) ** 2,
         max(power / slice_power, 1.0),
         reach * min(spacing_mm[-2:]),
         freedom,
@@ -263,7 +270,7 @@ def _correlation(seen: _Seen, share: Floats, squared_total: float) -> tuple[floa
     return power, float(correlated.max(initial=0.0))
 
 
-def _between_slices(signal: Floats, cover: Floats) -> tuple[float, float]:
+def between_slices(signal: Floats, cover: Floats) -> tuple[float, float]:
     """Return by which factors slice correlation raises the variance and lowers the samples."""
     n = len(signal)
     factor, power = 1.0, 1.0

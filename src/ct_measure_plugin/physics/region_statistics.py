@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from functools import partial
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -14,9 +15,15 @@ from ct_measure_plugin.physics.noise_correlation import MeanDoubt, doubt_of_mean
 from ct_measure_plugin.physics.quantisation import resolution_of
 from ct_measure_plugin.physics.region_numbers import Choices, mean_and_sd, numbers_of
 from ct_measure_plugin.physics.results import Caution, Curve, NotMeasured, Quantity, Result
+from ct_measure_plugin.physics.slice_spectrum import SliceSpectrum
+from ct_measure_plugin.physics.spectrum_doubt import doubt_from_spectrum, misfit, unfit
 
 if TYPE_CHECKING:
+    from collections.abc import Callable
+
     from numpy.typing import ArrayLike, NDArray
+
+    from ct_measure_plugin.physics.noise_power import NoisePower
 
     Floats = NDArray[np.float64]
 
@@ -127,6 +134,7 @@ def region_statistics(  # noqa: PLR0913 - choices, each with its default and giv
     ranges: tuple[tuple[float, float], ...] = (),
     positions_mm: ArrayLike | None = None,
     resolution: float | None = None,
+    noise: NoisePower | SliceSpectrum | None = None,
 ) -> RegionStatistics | NotMeasured:
     """Return mean, spread, extremes and shape of the values in a region.
 
@@ -153,6 +161,9 @@ def region_statistics(  # noqa: PLR0913 - choices, each with its default and giv
     resolution : float, optional
         Step in which the values are stored, 0 for values that were not rounded. Default 1 if all
         are whole numbers, else 0.
+    noise : NoisePower or SliceSpectrum, optional
+        A spectrum measured in the same material and place; the standard error of the mean is then
+        from it, and not from the region's own pixels.
 
     Returns
     -------
@@ -198,18 +209,24 @@ def region_statistics(  # noqa: PLR0913 - choices, each with its default and giv
         )
     step = resolution_of(v) if resolution is None else float(resolution)
     choices = Choices(unit, bin_width, bin_edge, tuple(percentiles), tuple(ranges), step)
+    spectrum, unusable = _spectrum(noise, steps if data.ndim > 1 else (), unit)
+    cautions += unusable
+    judge = doubt_of_mean if spectrum is None else partial(doubt_from_spectrum, noise=spectrum)
     if data.ndim > 1 and len(steps) == data.ndim:
-        doubt = doubt_of_mean(data, cover, steps)
+        doubt = judge(data, cover, steps)
     else:
         doubt = independent_doubt(v, w)
         cautions.append(
             Caution("independence-assumed", "The pixels were taken as independent samples.")
         )
-    cautions += _sample_cautions(v.size, doubt)
+    cautions += _sample_cautions(v.size, doubt, known=spectrum is not None)
     size = float(w.sum()) * math.prod(steps)
+    numbers = numbers_of(v, w, doubt, choices)
+    if spectrum is not None and (other := misfit(spectrum, numbers["sd"])) is not None:
+        cautions.append(other)
     return RegionStatistics(
-        **numbers_of(v, w, doubt, choices),
-        **_along_z(data, cover, steps, positions_mm, choices),
+        **numbers,
+        **_along_z(data, cover, steps, positions_mm, choices, judge),
         area=Quantity(size, "mm²", 0.0) if len(steps) == 2 else None,
         volume=Quantity(size, "mm³", 0.0) if len(steps) == 3 else None,
         cautions=(
@@ -249,7 +266,18 @@ def _finite(data: Floats, cover: Floats) -> tuple[Floats, Floats, list[Caution]]
     return np.where(finite, data, 0.0), np.where(finite, cover, 0.0), [caution]
 
 
-def _sample_cautions(n: int, doubt: MeanDoubt) -> list[Caution]:
+def _spectrum(
+    noise: NoisePower | SliceSpectrum | None, steps: tuple[float, ...], unit: str
+) -> tuple[SliceSpectrum | None, list[Caution]]:
+    """Return a spectrum that fits the pixels, or none and why."""
+    if noise is None:
+        return None, []
+    found = SliceSpectrum.of(noise)
+    why = unfit(found, steps, unit)
+    return (found, []) if why is None else (None, [why])
+
+
+def _sample_cautions(n: int, doubt: MeanDoubt, *, known: bool) -> list[Caution]:
     found = []
     if n < FEW_PIXELS:
         found.append(
@@ -259,7 +287,14 @@ def _sample_cautions(n: int, doubt: MeanDoubt) -> list[Caution]:
                 "Draw the region larger or use more slices.",
             )
         )
-    if doubt.reach > 0:
+    if known:
+        found.append(
+            Caution(
+                "spectrum-used",
+                "The standard error of the mean is from a noise power spectrum measured elsewhere.",
+            )
+        )
+    elif doubt.reach > 0:
         found.append(
             Caution(
                 "correlated-noise",
@@ -285,6 +320,7 @@ def _along_z(
     steps: tuple[float, ...],
     positions: ArrayLike | None,
     choices: Choices,
+    judge: Callable[[Floats, Floats, tuple[float, ...]], MeanDoubt],
 ) -> dict[str, Any]:
     """Return the curves of a region on several slices."""
     if positions is None or data.ndim != 3 or len(steps) != 3:
@@ -297,7 +333,7 @@ def _along_z(
         inside = own > 0
         if np.count_nonzero(inside) < 2:
             continue
-        doubt = doubt_of_mean(plane, own, steps[1:])
+        doubt = judge(plane, own, steps[1:])
         found = moments(plane[inside], own[inside])
         pixels = int(np.count_nonzero(inside))
         rows.append((z[k], *mean_and_sd(found, pixels, doubt, choices.resolution)))

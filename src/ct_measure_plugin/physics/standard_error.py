@@ -12,6 +12,7 @@ from ct_measure_plugin.errors import ArgumentError
 from ct_measure_plugin.physics.coverage import Coverage
 from ct_measure_plugin.physics.radial import rings
 from ct_measure_plugin.physics.results import Quantity
+from ct_measure_plugin.physics.slice_spectrum import SliceSpectrum
 from ct_measure_plugin.physics.spectrum_low import RINGS, continuation
 
 if TYPE_CHECKING:
@@ -27,14 +28,16 @@ __all__ = ["standard_error_from_nps"]
 FINENESS = 4
 
 
-def standard_error_from_nps(coverage: Coverage | ArrayLike, noise: NoisePower) -> Quantity:
+def standard_error_from_nps(
+    coverage: Coverage | ArrayLike, noise: NoisePower | SliceSpectrum
+) -> Quantity:
     """Return the standard error of a region's mean on one slice.
 
     Parameters
     ----------
     coverage : Coverage or array, shape (ny, nx)
         The region's weights, on the pixel grid on which the spectrum was measured.
-    noise : NoisePower
+    noise : NoisePower or SliceSpectrum
         The spectrum of patches on one slice, from the same material and distance from the centre.
 
     Returns
@@ -70,8 +73,7 @@ def standard_error_from_nps(coverage: Coverage | ArrayLike, noise: NoisePower) -
     )
     if weights.ndim != 2 or not weights.sum() > 0:
         raise ArgumentError("coverage", "must hold the weights of one slice", weights.shape)
-    if noise.axial is not None:
-        raise ArgumentError("noise", "must come from patches on one slice", "deep patches")
+    noise = SliceSpectrum.of(noise)
     usable = noise.radial.x >= noise.lowest_frequency.value - 1e-12
     x, y = noise.radial.x[usable], noise.radial.y[usable]
     share = np.zeros(len(y))
@@ -88,7 +90,7 @@ def standard_error_from_nps(coverage: Coverage | ArrayLike, noise: NoisePower) -
     return Quantity(error, noise.sd.unit, spread / (2 * error) if error > 0 else 0.0)
 
 
-def _on_a_fine_grid(weights: Floats, noise: NoisePower) -> tuple[Floats, Floats, Floats]:
+def _on_a_fine_grid(weights: Floats, noise: SliceSpectrum) -> tuple[Floats, Floats, Floats]:
     """Return the spectrum, |f| and |W|² df over a half plane of finely spaced frequencies."""
     values, steps = noise.spectrum.values, noise.spectrum.spacing
     spacing = [1.0 / (n * s) for n, s in zip(values.shape, steps, strict=True)]
@@ -106,7 +108,7 @@ def _on_a_fine_grid(weights: Floats, noise: NoisePower) -> tuple[Floats, Floats,
     return fine, np.hypot(fy, fx), response
 
 
-def _without_smear(noise: NoisePower) -> Floats:
+def _without_smear(noise: SliceSpectrum) -> Floats:
     """Return the spectrum, frequency 0 first, with its smear divided out."""
     power: Floats = fft.ifftshift(noise.spectrum.values).copy()
     shape = (power.shape[0], power.shape[1])

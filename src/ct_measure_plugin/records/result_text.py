@@ -6,7 +6,6 @@ that a file names is ever imported or run.
 
 from __future__ import annotations
 
-import base64
 import sys
 import zlib
 from dataclasses import fields, is_dataclass
@@ -15,6 +14,7 @@ from typing import Any
 import numpy as np
 
 from ct_measure_plugin.errors import RecordError
+from ct_measure_plugin.measurements.packed_arrays import packed, unpacked
 from ct_measure_plugin.physics.results import Caution, Curve, NotMeasured, Picture, Quantity, Result
 
 __all__ = ["answer_from_dict", "answer_to_dict"]
@@ -62,7 +62,7 @@ def _encode(value: Any) -> Any:
         parts = {field.name: _encode(getattr(value, field.name)) for field in fields(value)}
         return {"is": type(value).__name__, **parts}
     if isinstance(value, np.ndarray):
-        return _encode_array(value)
+        return packed(value)
     if isinstance(value, tuple | list):
         return [_encode(part) for part in value]
     if isinstance(value, np.generic):
@@ -76,30 +76,10 @@ def _decode(given: Any, module: Any) -> Any:
     if not isinstance(given, dict):
         return given
     if given.get("is") == "array":
-        return _decode_array(given)
+        return unpacked(given)
     name = given["is"]
     kind = _SHARED.get(name) or getattr(module, name)
     if not (isinstance(kind, type) and is_dataclass(kind)):
         raise TypeError(name)
     parts = {key: _decode(value, module) for key, value in given.items() if key != "is"}
     return kind(**parts)
-
-
-def _encode_array(array: np.ndarray[Any, Any]) -> dict[str, Any]:
-    """Short finite arrays stay readable; others are packed."""
-    head = {"is": "array", "dtype": array.dtype.str, "shape": list(array.shape)}
-    if array.ndim == 1 and array.size <= 4096 and bool(np.all(np.isfinite(array))):
-        return {**head, "values": array.tolist()}
-    packed = zlib.compress(np.ascontiguousarray(array).tobytes(), 6)
-    return {**head, "packed": base64.b64encode(packed).decode()}
-
-
-def _decode_array(given: dict[str, Any]) -> np.ndarray[Any, Any]:
-    dtype, shape = np.dtype(str(given["dtype"])), tuple(int(n) for n in given["shape"])
-    if dtype.kind not in "iufb":
-        raise TypeError(str(dtype))
-    if "values" in given:
-        return np.asarray(given["values"], dtype=dtype).reshape(shape)
-    size = int(np.prod(shape, dtype=object)) * dtype.itemsize
-    data = zlib.decompressobj().decompress(base64.b64decode(given["packed"]), size + 1)
-    return np.frombuffer(data, dtype=dtype).reshape(shape).copy()

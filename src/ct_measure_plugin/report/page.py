@@ -32,6 +32,10 @@ if TYPE_CHECKING:
 __all__ = ["write_report"]
 
 
+#: A longer text, or list of numbers, of the settings is told and not written out.
+_LONGEST, _MANY = 400, 16
+
+
 @dataclass(frozen=True, slots=True)
 class _Row:
     name: str
@@ -148,8 +152,11 @@ def _short(value: object) -> str:
         told = {k: f"{v:g}" if isinstance(v, float) else _short(v) for k, v in value.items() if v}
         return "(" + ", ".join(f"{key} {text}" for key, text in told.items()) + ")"
     if isinstance(value, list | tuple):
+        if len(value) > _MANY and all(isinstance(part, float) for part in value):
+            return f"{len(value)} numbers from {min(value):.4g} to {max(value):.4g}"
         return ", ".join(_short(part) for part in value) or "none"
-    return str(value)
+    text = str(value)
+    return text if len(text) <= _LONGEST else f"{text[:12]}… ({len(text)} characters)"
 
 
 def _rows_of(label: str, curve: Curve) -> tuple[_Row, ...]:

@@ -10,7 +10,7 @@ import pytest
 from ct_measure_plugin.cli.region_words import region_from_words
 from ct_measure_plugin.cli.words_of_regions import words_of
 from ct_measure_plugin.errors import RegionError
-from ct_measure_plugin.physics.regions import Disc, Ellipsoid, Mask, Polygon, Segment
+from ct_measure_plugin.physics.regions import Disc, Ellipsoid, Mask, Path, Polygon, Segment
 from ct_measure_plugin.physics.volume import Volume
 
 VOLUME = Volume(np.zeros((5, 64, 64)), (2.0, 1.0, 1.0), origin_mm=(10.0, 0.0, 0.0))
@@ -28,6 +28,7 @@ WORDS = {
     "segment start=0,0 end=3,4 width=2 values=:7": Segment(
         (0, 0), (3, 4), 2, values=(-math.inf, 7.0)
     ),
+    "path vertices=0,0;0,9;9,9 width=1.5 slice=0": Path(((0, 0), (0, 9), (9, 9)), 1.5, z_mm=10.0),
 }
 
 

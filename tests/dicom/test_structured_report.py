@@ -18,6 +18,7 @@ from ct_measure_plugin.dicom.codes import Code, LabelClass
 from ct_measure_plugin.dicom.segmentation import read_segmentation, write_segmentation
 from ct_measure_plugin.dicom.structured_report import MeasuredRegion, write_structured_report
 from ct_measure_plugin.errors import ArgumentError, SeriesError
+from ct_measure_plugin.physics import regions as regions_in_mm
 from ct_measure_plugin.physics.coverage import plane_coverage
 from ct_measure_plugin.physics.region_statistics import region_statistics
 from ct_measure_plugin.physics.regions import (
@@ -190,8 +191,11 @@ def test_outlines_lie_where_the_regions_lie_in_the_patient(tmp_path, kind):
         Box((y, x), (3.0, 4.0), angle_deg=-35.0, z_mm=z),
         Polygon(((y, x), (y + 3, x), (y + 1, x + 1), (y, x + 4)), z_mm=z),
         Segment((y - 1, x - 2), (y + 2, x + 1), width_mm=1.5, z_mm=z),
+        regions_in_mm.Path(((y - 1, x - 2), (y + 2, x + 1), (y + 2, x + 3)), 1.0, z_mm=z),
     ]
-    areas = [r.length_mm * r.width_mm if isinstance(r, Segment) else r.area_mm2 for r in regions]
+    areas = [r.length_mm * r.width_mm if isinstance(r, Segment)
+             else r.strip().area_mm2 if isinstance(r, regions_in_mm.Path) else r.area_mm2
+             for r in regions]  # fmt: skip
     images = sources_of(tmp_path / "s")
     file = write_structured_report(
         tmp_path / "sr", entry, [one(r) for r in regions], quantities=("mean",)

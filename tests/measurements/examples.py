@@ -11,7 +11,7 @@ from typing import Any
 
 import numpy as np
 
-from ct_measure_plugin.physics.regions import Box, Disc, Labels, Region, Segment
+from ct_measure_plugin.physics.regions import Box, Disc, Labels, Path, Region
 from ct_measure_plugin.physics.volume import Volume
 
 __all__ = ["EXAMPLES", "Example"]
@@ -157,7 +157,7 @@ def line_profile() -> Example:
     lengths = ("edge_width", "middle", "length")
     return Example(
         Volume(values.astype(np.int16), (2.0, 0.5, 0.5)),
-        (Segment((14.2, 4.0), (13.1, 24.0), width_mm=3.0),),
+        (Path(((14.2, 3.0), (13.1, 23.0), (9.0, 25.5)), width_mm=3.0),),
         moves_with_level=("mean", "minimum", "maximum", "level"),
         scales_with_spacing=dict.fromkeys(lengths, 1),
     )

@@ -17,6 +17,7 @@ from ct_measure_plugin.physics.regions import (
     Disc,
     Ellipse,
     Labels,
+    Path,
     Polygon,
     Region,
     Segment,
@@ -142,7 +143,7 @@ def turned(region: Region, side_mm: float) -> Region:
     if isinstance(region, Segment):
         ends = {"start_mm": point(region.start_mm), "end_mm": point(region.end_mm)}
         return replace(region, **ends)
-    if isinstance(region, Polygon):
+    if isinstance(region, Path | Polygon):
         return replace(region, vertices_mm=tuple(point(p) for p in region.vertices_mm))
     if isinstance(region, Labels):
         return replace(region, labels=np.rot90(region.labels, axes=(1, 2)).copy())
@@ -170,13 +171,14 @@ def doubled(region: Region) -> Region:
         dz, dy, dx = region.spacing_mm
         return replace(region, spacing_mm=(dz, 2 * dy, 2 * dx))
     names = {"center_mm", "radius_mm", "size_mm", "start_mm", "end_mm", "width_mm"}
+    names |= {"vertices_mm"} if isinstance(region, Path) else set()
     held = {f.name: getattr(region, f.name) for f in fields(region) if f.name in names}
     assert held
     return replace(region, **{name: _twice(value) for name, value in held.items()})
 
 
 def _twice(value):
-    return tuple(2 * v for v in value) if isinstance(value, tuple) else 2 * value
+    return tuple(map(_twice, value)) if isinstance(value, tuple) else 2 * value
 
 
 def test_larger_pixels_scale_lengths_only(example):

@@ -10,7 +10,7 @@ import pytest
 
 from ct_measure_plugin.errors import ArgumentError, RegionError
 from ct_measure_plugin.measurements import measure
-from ct_measure_plugin.physics.regions import Box, Disc, Ellipsoid, Mask, Polygon, Segment
+from ct_measure_plugin.physics.regions import Box, Disc, Ellipsoid, Mask, Path, Polygon, Segment
 from ct_measure_plugin.physics.results import NotMeasured
 from ct_measure_plugin.physics.volume import Volume
 
@@ -116,12 +116,23 @@ def test_what_cannot_be_measured_says_why(region, reason):
         (lambda: Polygon(((0, 0), (0, 4), (0, 9))), "must enclose an area"),
         (lambda: Mask(np.zeros((3, 3), bool), (1, 1, 1)), "must hold at least one pixel"),
         (lambda: Segment((0, 0), (9, 9)), "must be greater than 0 to enclose pixels"),
+        (lambda: Path(((0, 0), (9, 9))), "must be greater than 0 to enclose pixels"),
     ],
-    ids=["self-crossing", "zero area", "empty label", "line without width"],
+    ids=["self-crossing", "zero area", "empty label", "line without width", "path without width"],
 )
 def test_regions_that_are_none_are_refused_by_name(make, message):
     with pytest.raises(RegionError, match=message):
         measure(NAME, noise(), make())
+
+
+def test_along_a_path_the_pixels_within_its_width_count():
+    """The same as in the polygon around them, which the path says."""
+    volume = noise()
+    path = Path(((8.0, 5.0), (8.0, 25.0), (24.0, 25.0)), 5.0, z_mm=0.0)
+    along, around = measure(NAME, volume, path), measure(NAME, volume, path.strip())
+    assert along.mean == around.mean
+    # length times width, less half of the overlap's square: the outer corner is cut off
+    assert along.area.value == pytest.approx(36 * 5 - 2.5**2 / 2, rel=1e-9)
 
 
 def test_a_range_of_values_counts_only_what_lies_within():

@@ -11,6 +11,7 @@ import numpy as np
 import pytest
 
 from ct_measure_plugin.errors import RegionFileError
+from ct_measure_plugin.physics import regions
 from ct_measure_plugin.physics.regions import (
     Box,
     Disc,
@@ -32,6 +33,7 @@ REGIONS = (
     Box((1, 2), (3, 4), values=(5.0, 6.0)),
     Polygon(((0, 0), (0, 5), (5, 1.25))),
     Segment((0, 0), (3, 4), 1.5),
+    regions.Path(((0, 0), (0, 5.5), (3, 4)), 1.5, z_mm=2.0, name="bend"),
 )
 
 AXES = np.array([[0.0, 0.0, 1.0], [0.0, 1.0, 0.0], [1.0, 0.0, 0.0]])

@@ -16,6 +16,7 @@ from ct_measure_plugin.physics.regions import (
     Ellipsoid,
     Labels,
     Mask,
+    Path,
     Polygon,
     Segment,
 )
@@ -27,6 +28,7 @@ REGIONS = [
     Box((1, 2), (3, 4)),
     Polygon(((0, 0), (0, 5), (5, 1.25))),
     Segment((0, 0), (3, 4), 1.5, name="ä ± µ"),
+    Path(((0, 0), (0, 5.5), (3, 4)), 1.5),
     Ellipsoid((1, 2), (3, 4), 5.5, 20.0, z_mm=7.0, group="rod", code="99LAB:ROD-1"),
     Disc((1, 2), 3, values=(-math.inf, 30.0), name="below"),
 ]

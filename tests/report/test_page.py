@@ -19,6 +19,7 @@ from ct_measure_plugin.physics.regions import (
     Ellipsoid,
     Labels,
     Mask,
+    Path,
     Polygon,
     Segment,
 )
@@ -90,6 +91,7 @@ def test_every_kind_of_region_is_drawn(tmp_path):
         Disc((32, 32), 9), Ellipse((32, 32), (5, 9), 30.0), Box((32, 32), (8, 12), 20.0),
         Polygon(((10, 10), (10, 30), (30, 20))), Segment((5, 5), (50, 40), 4.0),
         Mask(inside, (1, 1, 1)), Ellipsoid((32, 32), (9, 9), 9, z_mm=0.0),
+        Path(((5, 5), (5, 40), (50, 50)), 4.0),
     ]  # fmt: skip
     page = page_of(tmp_path, run_measurement("region_statistics", volume, regions))
     drawings = re.findall(r"<svg.*?</svg>", page, flags=re.DOTALL)

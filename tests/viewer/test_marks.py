@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 import pytest
 
-from ct_measure_plugin.physics.regions import Box, Disc, Mask, Segment
+from ct_measure_plugin.physics.regions import Box, Disc, Mask, Path, Segment
 from ct_measure_plugin.viewer.layers import layer_of
 from ct_measure_plugin.viewer.marks import MOST, Marks, outline_of, strokes_of
 from ct_measure_plugin.viewer.session import Session
@@ -51,10 +51,14 @@ def test_a_circle_is_round_in_mm_whatever_the_pixels(viewer_model, volume):
     assert set(np.round(world[:, 0], 6)) == {-15.0}
 
 
-def test_a_box_closes_and_a_mask_has_no_outline():
+def test_a_box_closes_a_path_does_not_and_a_mask_has_no_outline():
     points, closed = outline_of(Box((0.0, 0.0), (2.0, 4.0)))
     assert closed
     assert len(points) == 4
+    path = Path(((0.0, 0.0), (0.0, 2.0), (3.0, 4.0)))
+    points, closed = outline_of(path)
+    assert not closed
+    assert points.tolist() == [list(corner) for corner in path.vertices_mm]
     mask = Mask(np.ones((3, 3), bool), spacing_mm=(1.0, 1.0, 1.0))
     assert len(outline_of(mask)[0]) == 0
 

@@ -9,7 +9,7 @@ import pytest
 
 from ct_measure_plugin.errors import ArgumentError
 from ct_measure_plugin.measurements import find, measure
-from ct_measure_plugin.physics.regions import Box, Disc, Ellipsoid, Mask, Polygon, Segment
+from ct_measure_plugin.physics.regions import Box, Disc, Ellipsoid, Mask, Path, Polygon, Segment
 from ct_measure_plugin.viewer.layers import layer_of
 from ct_measure_plugin.viewer.region_acts import RegionActs
 from ct_measure_plugin.viewer.region_board import RegionBoard
@@ -61,6 +61,7 @@ def scene(viewer_model, volume):
         Box((1.0, 20.0), (4.0, 9.0), 30.0, z_mm=(-17.5, -10.0), name="b"),
         Polygon(((0.0, 10.0), (5.0, 20.0), (-4.0, 22.0)), z_mm=None, name="c"),
         Segment((0.0, 10.0), (5.0, 30.0), 2.0, z_mm=-10.0, name="d"),
+        Path(((0.0, 10.0), (5.0, 30.0), (-4.0, 22.0)), 2.0, z_mm=-10.0, name="p"),
         Ellipsoid((0.0, 24.0), (3.0, 5.0), 5.0, 40.0, z_mm=-12.5, name="e"),
     ],
     ids=lambda region: region.kind,

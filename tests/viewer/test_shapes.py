@@ -7,7 +7,7 @@ import math
 import numpy as np
 import pytest
 
-from ct_measure_plugin.physics.regions import Box, Disc, Ellipse, Ellipsoid, Polygon, Segment
+from ct_measure_plugin.physics.regions import Box, Disc, Ellipse, Ellipsoid, Path, Polygon, Segment
 from ct_measure_plugin.viewer.layers import layer_of, placement_of
 from ct_measure_plugin.viewer.shapes import (
     drawn_on,
@@ -83,7 +83,7 @@ def test_a_polygon_keeps_its_corners(scene):
     ("corners", "kind", "problem"),
     [
         (on_slice(1, [(5, 5), (25, 25), (25, 5), (5, 25)]), "polygon", "must not cross itself"),
-        (on_slice(1, [(5, 5), (25, 25), (5, 30)]), "path", "a path has no area"),
+        (on_slice(1, [(5, 5), (5, 5)]), "path", "must have at least 2 corners"),
         ([[1, 5, 5], [2, 5, 25], [1, 30, 15]], "polygon", "lie on different slices"),
         (on_slice(9, [(5, 5), (5, 25), (30, 15)]), "polygon", "above or below the volume"),
     ],
@@ -182,6 +182,20 @@ def test_a_line_is_the_strip_that_its_edge_covers(scene):
     assert found.region.width_mm == pytest.approx(2.1, abs=FLOAT32)
     assert found.region.start_mm == pytest.approx((-14 + 3.5, 7 + 3.5), abs=FLOAT32)
     assert found.region.length_mm == pytest.approx(20 * math.sqrt(2) * 0.7, abs=FLOAT32)
+
+
+def test_a_path_keeps_its_corners_and_the_width_of_its_edge(scene):
+    """A double click draws the last corner twice; it counts once."""
+    corners = [(5, 5), (25, 25), (5, 30), (5, 30)]
+    [found] = add(scene, on_slice(1, corners), "path", edge_width=3)
+    assert isinstance(found.region, Path)
+    assert found.region.width_mm == pytest.approx(2.1, abs=FLOAT32)
+    drawn = np.asarray(found.region.vertices_mm)
+    expected = np.asarray(corners[:3]) * 0.7 + (-14, 7)
+    np.testing.assert_allclose(drawn, expected, atol=FLOAT32)
+    kept, kind = shape_of(found.region)
+    assert kind == "path"
+    np.testing.assert_array_equal(kept, drawn)
 
 
 def test_the_width_of_a_line_is_in_its_own_layers_units(scene):

@@ -17,6 +17,7 @@ from ct_measure_plugin.physics.regions import (
     Disc,
     Ellipse,
     Ellipsoid,
+    Path,
     Polygon,
     Region,
     Segment,
@@ -59,7 +60,7 @@ class Outline:
 def outlines_of(region: Region, volume: Volume) -> list[Outline]:
     """Return a region's outline on every slice it lies on; empty where it has none to draw.
 
-    Masks and lines without a width have no outline.
+    Masks, and lines and paths without a width, have no outline.
     """
     found = []
     for index in slices_of(region, volume):
@@ -77,6 +78,8 @@ def _outline(region: Region, volume: Volume, index: int) -> Outline | None:
         form = Ellipse(form.center_mm, (form.radius_mm, form.radius_mm))
     if isinstance(form, Segment) and form.width_mm > 0:
         form = _band(form)
+    if isinstance(form, Path) and form.width_mm > 0:
+        form = form.strip()
     if isinstance(form, Ellipse):
         return _ellipse(form, volume, index)
     if isinstance(form, Box | Polygon):

@@ -64,7 +64,7 @@ class RegionNeed:
 
 
 #: Kinds that enclose pixels on a slice, and these with the kinds that only a stack of slices has.
-AREAS = ("disc", "ellipse", "box", "polygon", "segment", "mask")
+AREAS = ("disc", "ellipse", "box", "polygon", "segment", "path", "mask")
 BODIES = (*AREAS, "ellipsoid")
 
 

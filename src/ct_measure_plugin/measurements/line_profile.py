@@ -1,4 +1,4 @@
-"""The profile along each segment, or along each polygon's outline."""
+"""The profile along each segment or path, or along each polygon's outline."""
 
 from __future__ import annotations
 
@@ -12,7 +12,7 @@ from pydantic import Field
 from ct_measure_plugin.measurements.base import Measurement, RegionNeed, Settings
 from ct_measure_plugin.physics.coverage import slices_of
 from ct_measure_plugin.physics.line_profile import LineProfile, line_profile
-from ct_measure_plugin.physics.regions import Polygon, Segment
+from ct_measure_plugin.physics.regions import Path, Polygon, Segment
 from ct_measure_plugin.physics.results import NotMeasured, Result
 
 if TYPE_CHECKING:
@@ -43,8 +43,8 @@ class LineProfileSettings(Settings):
         None,
         ge=0,
         title="Width (mm)",
-        description="width across the line over which values are averaged; the segment's own width"
-        " if not set",
+        description="width across the line over which values are averaged; the line's own width if"
+        " not set",
     )
     step_mm: float | None = Field(
         None,
@@ -59,22 +59,22 @@ class LineProfileSettings(Settings):
 
 
 class MeasureLineProfile(Measurement):
-    """Values along a line, and the width of the edge or peak that it crosses."""
+    """Values along a line or path, and the width of the edge or peak that it crosses."""
 
     name: ClassVar[str] = "line_profile"
     title: ClassVar[str] = "Line profile"
     summary: ClassVar[str] = "Values along a line, with the width of the edge or peak it crosses."
     settings_type: ClassVar[type[Settings]] = LineProfileSettings
     result_type: ClassVar[type[Result]] = LineProfile
-    regions: ClassVar[RegionNeed] = RegionNeed(("segment", "polygon"))
+    regions: ClassVar[RegionNeed] = RegionNeed(("segment", "path", "polygon"))
     columns: ClassVar[tuple[str, ...]] = ("edge_width", "fwhm", "height", "step", "length")
 
     def measure(
         self, volume: Volume, regions: Sequence[Region], settings: Settings
     ) -> LineProfile | NotMeasured:
-        """Measure along one segment or outline; its slices are averaged."""
+        """Measure along one segment, path or outline; its slices are averaged."""
         wanted = cast("LineProfileSettings", settings)
-        region = cast("Segment | Polygon", regions[0])
+        region = cast("Segment | Path | Polygon", regions[0])
         points, own_width = _path(region)
         width = own_width if wanted.width_mm is None else wanted.width_mm
         slices = slices_of(region, volume)
@@ -111,8 +111,10 @@ class MeasureLineProfile(Measurement):
         return replace(found, cautions=(*volume.cautions, *found.cautions))
 
 
-def _path(region: Segment | Polygon) -> tuple[list[tuple[float, float]], float]:
-    """Return the corners and the width of a segment, or of a polygon's closed outline."""
+def _path(region: Segment | Path | Polygon) -> tuple[list[tuple[float, float]], float]:
+    """Return the corners and the width of a line or path, or of a polygon's closed outline."""
+    if isinstance(region, Path):
+        return list(region.vertices_mm), region.width_mm
     if isinstance(region, Segment):
         return [region.start_mm, region.end_mm], region.width_mm
     return [*region.vertices_mm, region.vertices_mm[0]], 0.0

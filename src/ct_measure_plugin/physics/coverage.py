@@ -21,6 +21,7 @@ from ct_measure_plugin.physics.regions import (
     Ellipsoid,
     Labels,
     Mask,
+    Path,
     Polygon,
     Region,
     Segment,
@@ -76,7 +77,7 @@ def plane_coverage(
     Parameters
     ----------
     region : Region
-        Disc, Ellipse, Ellipsoid, Box, Polygon, Segment with a width, or Mask.
+        Disc, Ellipse, Ellipsoid, Box, Polygon, Segment or Path with a width, or Mask.
     shape : (int, int)
         Rows and columns of the image.
     spacing_mm, origin_mm : (float, float)
@@ -98,7 +99,8 @@ def plane_coverage(
     Raises
     ------
     RegionError
-        For a Segment without width, which has no area.
+        For a Segment or a Path without width, which has no area, and for a Path whose strip
+        overlaps itself.
 
     Examples
     --------
@@ -114,6 +116,8 @@ def plane_coverage(
         region = Ellipse(region.center_mm, (region.radius_mm, region.radius_mm))
     if isinstance(region, Segment):
         region = _as_box(region)
+    if isinstance(region, Path):
+        region = region.strip()
     if isinstance(region, Ellipsoid):
         section = region.section(z_mm, slab_mm if rule == "area" else 0.0)
         if section is None:
@@ -125,7 +129,7 @@ def plane_coverage(
         return _polygon(np.asarray(region.vertices_mm, float), region.area_mm2, grid, rule)
     if isinstance(region, Mask):
         return _mask(region, grid, rule, (z_mm, slab_mm))
-    kinds = "disc, ellipse, ellipsoid, box, polygon, segment or mask"
+    kinds = "disc, ellipse, ellipsoid, box, polygon, segment, path or mask"
     raise RegionError("region", f"must be a {kinds}", region)
 
 

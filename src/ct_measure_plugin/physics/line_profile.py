@@ -10,7 +10,7 @@ import numpy as np
 
 from ct_measure_plugin.errors import ArgumentError
 from ct_measure_plugin.physics.mtf_curve import checked_spacing, checked_stack
-from ct_measure_plugin.physics.profile_samples import PathPoints, path_points, sample
+from ct_measure_plugin.physics.profile_samples import PathPoints, path_points, sample, together
 from ct_measure_plugin.physics.profile_widths import (
     BACKGROUND,
     PLATEAU,
@@ -122,7 +122,7 @@ def line_profile(
     Returns
     -------
     LineProfile or NotMeasured
-        NotMeasured if the path leaves the image or is too short.
+        NotMeasured if the path leaves the image, is too short, or turns too sharply for its width.
 
     Raises
     ------
@@ -158,8 +158,15 @@ def line_profile(
             "draw it longer",
         )
     values, inside = sample(stack, path.place, steps, order)
-    if not inside.all():
-        share = 100 * float(np.mean(~inside))
+    own = path.own
+    if 2 * int(own.sum(axis=0).min()) < len(own):
+        return NotMeasured(
+            f"the path turns too sharply for a width of {width_mm:.3g} mm: beside a short piece,"
+            " less than half of the width is its own",
+            "draw it less wide, or with longer pieces",
+        )
+    if not inside[own].all():
+        share = 100 * float(np.mean(~inside[own]))
         return NotMeasured(
             f"{share:.0f} % of the path, or of the width beside it, lie outside the image",
             "draw it within the image",
@@ -193,13 +200,16 @@ def _numbers(
     pixel: float,
     unit: str,
 ) -> dict[str, Any]:
-    d, profile = path.distance, values.mean(axis=(0, 1))
+    d = path.distance
+    profile, sd = together(values, path.own)
     plateaus = ends_of(d, profile, PLATEAU, pixel)
     shape, half = _shape(d, profile, plateaus, ends_of(d, profile, BACKGROUND, pixel), unit)
     at, slope = crossings(d, profile, half.value if level is None else level)
     noise = plateaus.noise
     count = max(float(d[-1]) / plateaus.correlation, 1.0)
-    sd = values.std(axis=(0, 1), ddof=1) if values.shape[0] * values.shape[1] > 1 else None
+    # fewer lines count beside a corner, so that less of the noise is averaged away
+    count_of = path.own.sum(axis=0)
+    doubts = noise * np.sqrt(count_of.max() / count_of)
     return shape | {
         "step": Quantity(plateaus.high - plateaus.low, unit, math.sqrt(2) * plateaus.doubt),
         "mean": Quantity(float(profile.mean()), unit, noise / math.sqrt(count)),
@@ -207,7 +217,7 @@ def _numbers(
         "maximum": Quantity(float(profile.max()), unit, noise),
         "length": Quantity(float(d[-1]), "mm", 0.0),
         "noise": Quantity(noise, unit, noise / math.sqrt(2 * plateaus.freedom)),
-        "profile": Curve(d, profile, np.full_like(d, noise), "distance", "mm", "value", unit),
+        "profile": Curve(d, profile, doubts, "distance", "mm", "value", unit),
         "sd": None if sd is None else Curve(d, sd, None, "distance", "mm", "SD", unit),
         "crossings": Curve(
             np.arange(1.0, len(at) + 1), at, noise / np.abs(slope), "crossing", "", "distance", "mm"
@@ -250,9 +260,18 @@ def _cautions(
                 "Use cubic interpolation for widths.",
             )
         )
-    width = numbers["edge_width"] or numbers["fwhm"]
+    width, middle = numbers["edge_width"] or numbers["fwhm"], numbers["middle"]
     if not isinstance(width, Quantity):
         return found
+    if isinstance(middle, Quantity) and _turns_within(path, middle.value, width.value):
+        found.append(
+            Caution(
+                "turn-within-width",
+                "The path turns within the edge or peak, so that its width is that of two"
+                " directions.",
+                "Draw the path so that one straight piece crosses the edge or peak.",
+            )
+        )
     if width.value < 2 * pixel:
         found.append(
             Caution(
@@ -261,7 +280,7 @@ def _cautions(
                 "Reconstruct with smaller pixels, or measure the MTF of a slanted edge.",
             )
         )
-    lean = _lean(path, values.mean(axis=0), numbers["level"].value, numbers["middle"])
+    lean = _lean(path, values.mean(axis=0), numbers["level"].value, middle)
     across = abs(lean) * float(np.ptp(path.offset))
     # an average over a shift b adds b²/12 to the variance; 10-90 % is 2.56 sigma, FWHM 2.35
     wider = 100 * (across / (width.value / 2.45)) ** 2 / 24
@@ -275,6 +294,10 @@ def _cautions(
             )
         )
     return found
+
+
+def _turns_within(path: PathPoints, middle: float, width: float) -> bool:
+    return bool((np.abs(path.corner - middle) < path.reach + width).any())
 
 
 def _lean(path: PathPoints, lines: Floats, level: float, middle: Quantity | NotMeasured) -> float:

@@ -8,12 +8,14 @@ from typing import TYPE_CHECKING
 import numpy as np
 from scipy import ndimage
 
+from ct_measure_plugin.physics.path_pieces import pieces_of
+
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     Floats = NDArray[np.float64]
 
-__all__ = ["PathPoints", "path_points", "sample"]
+__all__ = ["PathPoints", "path_points", "sample", "together"]
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -28,11 +30,21 @@ class PathPoints:
         Distance of the parallel lines from the path, mm; to the left when walking along it.
     place : ndarray, shape (m, n, 2)
         y and x in mm.
+    own : ndarray of bool, shape (m, n)
+        False where a point beside a corner lies on the other piece's side of the line that halves
+        the corner, and so counts there.
+    corner : ndarray, shape (k,)
+        Arc length of the corners between start and end, mm.
+    reach : ndarray, shape (k,)
+        How far along the path a corner is felt at the outermost lines, mm.
     """
 
     distance: Floats
     offset: Floats
     place: Floats
+    own: NDArray[np.bool_]
+    corner: Floats
+    reach: Floats
 
 
 def path_points(points: Floats, *, step: float, width: float, line_step: float) -> PathPoints:
@@ -49,8 +61,8 @@ def path_points(points: Floats, *, step: float, width: float, line_step: float) 
 
     Notes
     -----
-    At a corner the lines beside the path turn with it: they are offset along the normal of the
-    piece that each point lies on.
+    The lines beside the path are offset along the normal of the piece that each point lies on; on
+    the inner side of a corner, where two pieces' lines overlap, each piece keeps its own half.
 
     Examples
     --------
@@ -61,20 +73,20 @@ def path_points(points: Floats, *, step: float, width: float, line_step: float) 
     array([2., 3.])
     """
     corners = np.asarray(points, dtype=np.float64)
-    pieces = np.diff(corners, axis=0)
-    lengths = np.hypot(pieces[:, 0], pieces[:, 1])
-    ends = np.concatenate([[0.0], np.cumsum(lengths)])
+    pieces = pieces_of(corners)
+    ends = np.concatenate([[0.0], np.cumsum(pieces.length)])
     total = float(ends[-1])
     count = max(int(np.ceil(total / step - 1e-9)), 1)
     distance = np.linspace(0.0, total, count + 1)
-    piece = np.clip(np.searchsorted(ends, distance, side="right") - 1, 0, len(pieces) - 1)
-    along = pieces[piece] / lengths[piece, None]
-    middle = corners[piece] + along * (distance - ends[piece])[:, None]
+    piece = np.clip(np.searchsorted(ends, distance, side="right") - 1, 0, len(corners) - 2)
+    at = distance - ends[piece]
+    middle = pieces.start[piece] + pieces.along[piece] * at[:, None]
     lines = 1 if width <= 0 else max(int(np.ceil(width / line_step - 1e-9)), 1) + 1
     offset = np.zeros(1) if lines == 1 else np.linspace(-width / 2, width / 2, lines)
-    # a quarter turn counter-clockwise on the screen, where y points down
-    left = np.stack([-along[:, 1], along[:, 0]], axis=1)
-    return PathPoints(distance, offset, middle + offset[:, None, None] * left)
+    place = middle + offset[:, None, None] * pieces.left[piece]
+    own = pieces.holds(piece, at, offset[:, None])
+    reach = float(offset[-1]) * np.abs(pieces.lean[1:-1])
+    return PathPoints(distance, offset, place, own, ends[1:-1], reach)
 
 
 def sample(
@@ -99,3 +111,32 @@ def sample(
         ndimage.map_coordinates(plane, coordinates, order=order, mode="reflect") for plane in stack
     ]
     return np.asarray(planes, dtype=np.float64), inside
+
+
+def together(values: Floats, own: NDArray[np.bool_]) -> tuple[Floats, Floats | None]:
+    """Return the mean over slices and lines at each point of a path, and the SD over them.
+
+    Parameters
+    ----------
+    values : ndarray, shape (nz, m, n)
+        At every point.
+    own : ndarray of bool, shape (m, n)
+        Which of them count; one at least at every distance.
+
+    Returns
+    -------
+    mean, sd : ndarray, shape (n,)
+        No SD where a single value stands at some distance.
+
+    Examples
+    --------
+    >>> values = np.array([[[1.0, 2.0], [3.0, 9.0]]])
+    >>> together(values, np.array([[True, True], [True, False]]))
+    (array([2., 2.]), None)
+    """
+    count = own.sum(axis=0) * len(values)
+    mean = np.where(own, values, 0.0).sum(axis=(0, 1)) / count
+    if count.min() < 2:
+        return mean, None
+    square = (np.where(own, values - mean, 0.0) ** 2).sum(axis=(0, 1))
+    return mean, np.sqrt(square / (count - 1))

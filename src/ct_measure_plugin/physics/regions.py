@@ -10,6 +10,7 @@ Angles are degrees counter-clockwise as seen on the screen, from +x, with +y poi
 
 from __future__ import annotations
 
+import itertools
 import math
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, ClassVar
@@ -17,6 +18,7 @@ from typing import TYPE_CHECKING, ClassVar
 import numpy as np
 
 from ct_measure_plugin.errors import RegionError
+from ct_measure_plugin.physics.path_pieces import pieces_of
 from ct_measure_plugin.physics.region_base import (
     LONGEST_CODE,
     Point,
@@ -39,6 +41,7 @@ __all__ = [
     "Ellipsoid",
     "Labels",
     "Mask",
+    "Path",
     "Polygon",
     "Region",
     "Segment",
@@ -304,6 +307,75 @@ class Segment(Region):
     def length_mm(self) -> float:
         """Distance between the ends."""
         return math.dist(self.start_mm, self.end_mm)
+
+
+@dataclass(frozen=True, slots=True)
+class Path(Region):
+    """A line of straight pieces, with a width across which a profile is averaged.
+
+    Attributes
+    ----------
+    vertices_mm : tuple of (float, float)
+        Its corners as (y, x), from start to end, each different from the next.
+    width_mm : float
+        Full width across the line; 0 for the line itself.
+
+    Examples
+    --------
+    >>> path = Path(((0, 0), (0, 10), (10, 10)), width_mm=2.0)
+    >>> path.length_mm, path.strip().area_mm2  # the outer corner is cut off: half of 1 by 1
+    (20.0, 39.5)
+    """
+
+    kind: ClassVar[str] = "path"
+
+    vertices_mm: tuple[Point, ...]
+    width_mm: float = 0.0
+
+    def __post_init__(self) -> None:
+        Region.__post_init__(self)
+        corners = tuple(as_point("vertices_mm", vertex) for vertex in self.vertices_mm)
+        object.__setattr__(self, "vertices_mm", corners)
+        if len(corners) < 2:
+            raise RegionError("vertices_mm", "must have at least 2 corners", len(corners))
+        if any(a == b for a, b in itertools.pairwise(corners)):
+            raise RegionError("vertices_mm", "must each differ from the next", corners)
+        finite("width_mm", self.width_mm)
+        if self.width_mm < 0:
+            raise RegionError("width_mm", "must not be negative", self.width_mm)
+
+    @property
+    def length_mm(self) -> float:
+        """Length from start to end along its pieces."""
+        return sum(math.dist(a, b) for a, b in itertools.pairwise(self.vertices_mm))
+
+    def strip(self) -> Polygon:
+        """Return what lies within half the width of the path, on the same slices.
+
+        It ends squarely where the path does; outer corners are cut off straight.
+
+        Raises
+        ------
+        RegionError
+            If the path has no width, turns too sharply for it, or comes within it of itself.
+        """
+        if self.width_mm <= 0:
+            raise RegionError("width_mm", "must be greater than 0 to enclose pixels", self.width_mm)
+        pieces = pieces_of(np.asarray(self.vertices_mm, dtype=float))
+        if self.width_mm > pieces.narrowest():
+            raise RegionError(
+                "width_mm",
+                f"must be at most {pieces.narrowest():.3g} mm where the path turns so sharply",
+                self.width_mm,
+            )
+        corners = tuple((float(y), float(x)) for y, x in pieces.strip(self.width_mm))
+        if _crosses_itself(corners):
+            raise RegionError(
+                "vertices_mm", "must stay clear of itself by its width to enclose pixels",
+                f"a width of {self.width_mm:.3g} mm",
+            )  # fmt: skip
+        held = {name: getattr(self, name) for name in ("z_mm", "name", "group", "code", "values")}
+        return Polygon(corners, **held)
 
 
 def _crosses_itself(vertices: tuple[Point, ...]) -> bool:

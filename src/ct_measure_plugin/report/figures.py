@@ -21,6 +21,7 @@ from ct_measure_plugin.physics.regions import (
     Ellipsoid,
     Labels,
     Mask,
+    Path,
     Polygon,
     Region,
     Segment,
@@ -145,7 +146,9 @@ def _outline(axes: Axes, region: Region) -> tuple[float, float]:
         axes.add_patch(PolygonPatch(corners[:, ::-1], closed=True, **line))
         return float(corners[:, 0].mean()), float(corners[:, 1].mean())
     if isinstance(region, Segment):
-        ends = np.asarray([region.start_mm, region.end_mm])
+        region = Path((region.start_mm, region.end_mm))
+    if isinstance(region, Path):
+        ends = np.asarray(region.vertices_mm)
         axes.plot(ends[:, 1], ends[:, 0], color=_MARK, linewidth=1.3)
         return float(ends[:, 0].mean()), float(ends[:, 1].mean())
     if isinstance(region, Mask | Labels):

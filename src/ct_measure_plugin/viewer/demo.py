@@ -133,7 +133,7 @@ def draw_regions(viewer: Any, image: Any, regions: Sequence[Region], name: str =
     import numpy as np
 
     from ct_measure_plugin.physics.coverage import slices_of
-    from ct_measure_plugin.physics.regions import Segment
+    from ct_measure_plugin.physics.regions import Path, Segment
     from ct_measure_plugin.viewer.layer_frame import LayerFrame
     from ct_measure_plugin.viewer.region_features import Z_HIGH, Z_LOW, set_column
     from ct_measure_plugin.viewer.session import Session
@@ -150,7 +150,7 @@ def draw_regions(viewer: Any, image: Any, regions: Sequence[Region], name: str =
         worlds = [placement.world_of((z, float(y), float(x))) for y, x in corners]
         drawn = np.array([layer.world_to_data(world) for world in worlds])
         looks = {}
-        if isinstance(region, Segment) and region.width_mm > 0:
+        if isinstance(region, Segment | Path) and region.width_mm > 0:
             looks["edge_width"] = region.width_mm / frame.stretch
         layer.add([drawn], shape_type=kind, **looks)
         rename(layer, layer.nshapes - 1, region.name)

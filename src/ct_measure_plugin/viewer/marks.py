@@ -12,7 +12,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from ct_measure_plugin.physics.coverage import slices_of
-from ct_measure_plugin.physics.regions import Disc, Ellipse, Segment, direction
+from ct_measure_plugin.physics.regions import Disc, Ellipse, Path, Segment, direction
 from ct_measure_plugin.viewer.layer_geometry import lying_like
 from ct_measure_plugin.viewer.shapes import shape_of
 
@@ -45,6 +45,8 @@ def outline_of(region: Region) -> tuple[Floats, bool]:
     """
     if isinstance(region, Segment):
         return np.asarray([region.start_mm, region.end_mm]), False
+    if isinstance(region, Path):
+        return np.asarray(region.vertices_mm), False
     if isinstance(region, Disc):
         region = Ellipse(region.center_mm, (region.radius_mm,) * 2)
     if isinstance(region, Ellipse):

@@ -22,7 +22,7 @@ from ct_measure_plugin.measurements import find
 from ct_measure_plugin.measurements.two_images import difference_between
 from ct_measure_plugin.physics.coverage import slices_of
 from ct_measure_plugin.physics.region_difference import region_difference
-from ct_measure_plugin.physics.regions import Ellipsoid, Mask, Segment
+from ct_measure_plugin.physics.regions import Ellipsoid, Mask, Path, Segment
 from ct_measure_plugin.physics.results import NotMeasured, Result
 from ct_measure_plugin.viewer.following import Following
 from ct_measure_plugin.viewer.shapes import shape_of
@@ -297,7 +297,7 @@ def _pixels(ask: Ask, slices: int) -> float:
     if inside is not None:
         return float(inside.size)
     _, dy, dx = ask.volume.spacing_mm
-    if isinstance(region, Segment):
+    if isinstance(region, Segment | Path):
         area = region.length_mm * region.width_mm
     else:
         area = getattr(region, "area_mm2", 0.0)

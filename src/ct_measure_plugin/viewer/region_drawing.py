@@ -9,7 +9,7 @@ import numpy as np
 
 from ct_measure_plugin.errors import ArgumentError
 from ct_measure_plugin.physics.coverage import slices_of
-from ct_measure_plugin.physics.regions import Disc, Ellipsoid, Mask, Region, Segment
+from ct_measure_plugin.physics.regions import Disc, Ellipsoid, Mask, Path, Region, Segment
 from ct_measure_plugin.physics.results import NotMeasured
 from ct_measure_plugin.physics.threshold import threshold_mask
 from ct_measure_plugin.viewer.label_grid import NoGrid, grid_of
@@ -99,7 +99,7 @@ def outline_of(region: Region, frame: LayerFrame) -> Outline:
     flat, kind = shape_of(region)
     corners = frame.from_planes(np.c_[np.full(len(flat), float(k)), flat])
     looks = _looks(frame.layer)
-    if isinstance(region, Segment) and region.width_mm > 0:
+    if isinstance(region, Segment | Path) and region.width_mm > 0:
         looks["edge_width"] = region.width_mm / frame.stretch
     return Outline(corners, kind, looks, row)
 

@@ -19,6 +19,7 @@ from ct_measure_plugin.physics.regions import (
     Disc,
     Ellipse,
     Ellipsoid,
+    Path,
     Polygon,
     Region,
     Segment,
@@ -137,6 +138,8 @@ def shape_of(region: Region) -> tuple[Floats, str]:
         return np.asarray(region.vertices_mm), "polygon"
     if isinstance(region, Segment):
         return np.asarray([region.start_mm, region.end_mm]), "line"
+    if isinstance(region, Path):
+        return np.asarray(region.vertices_mm), "path"
     raise ValueError(region.kind)
 
 
@@ -200,7 +203,7 @@ def _flat_region(outline: _Outline, corners: Floats, words: dict[str, Any]) -> R
         ends = _pair(corners[0]), _pair(corners[1])
         return Segment(*ends, float(outline.width), **words)
     if outline.kind == "path":
-        raise NoRegionError("a path has no area; draw a line, whose width counts, or a polygon")
+        return _path(corners, float(outline.width), words)
     if outline.kind == "ellipse":
         return _ellipse(corners, words)
     if outline.kind == "rectangle":
@@ -244,6 +247,13 @@ def _pair(corner: Floats) -> tuple[float, float]:
 def _halves(corners: Floats) -> tuple[tuple[float, float], Floats, Floats]:
     """Return the centre and the two half sides of a parallelogram."""
     return _pair(corners.mean(axis=0)), (corners[1] - corners[0]) / 2, (corners[3] - corners[0]) / 2
+
+
+def _path(corners: Floats, width: float, words: dict[str, Any]) -> Region:
+    """Return a path; a corner drawn twice, as a double click draws the last one, counts once."""
+    pairs = [_pair(corner) for corner in corners]
+    kept = [pair for before, pair in zip([None, *pairs], pairs, strict=False) if pair != before]
+    return Path(tuple(kept), width, **words)
 
 
 def _ellipse(corners: Floats, words: dict[str, Any]) -> Region:

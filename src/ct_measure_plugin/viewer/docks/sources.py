@@ -33,6 +33,7 @@ _TOOLS = {
     "ellipse": ("add_ellipse", "Ellipse"),
     "polygon": ("add_polygon", "Polygon"),
     "segment": ("add_line", "Line"),
+    "path": ("add_polyline", "Path"),
 }
 
 _DRAWN, _AROUND, ALL_SLICES = "As drawn", "Slices around it", "All slices"

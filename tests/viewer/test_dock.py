@@ -15,7 +15,7 @@ from ct_measure_plugin.viewer.theme import colours_of
 class Counting(Dock):
     def __init__(self, viewer):
         self.refreshed = self.paused = 0
-        self.coloured = []
+        self.coloured, self.heard = [], []
         super().__init__(viewer)
 
     def refresh(self):
@@ -26,6 +26,9 @@ class Counting(Dock):
 
     def recolour(self, colours):
         self.coloured.append(colours.dark)
+
+    def note(self, *_):
+        self.heard.append(1)
 
 
 @pytest.fixture
@@ -112,17 +115,15 @@ def test_the_theme_is_taken_up(dock, qtbot, viewer_model):
     assert dock.coloured[-1] is True
 
 
-def test_listening_is_once_and_can_be_taken_back(dock, viewer_model):
-    heard = []
-    dock.note = lambda *_: heard.append(1)
+def test_listening_is_once_and_can_be_taken_back(dock):
     dock.listen(dock.session.asked_changed, dock.note)
     dock.listen(dock.session.asked_changed, dock.note)
     dock.session.asked_changed.emit(None)
-    assert heard == [1]
+    assert dock.heard == [1]
     dock.unlisten(dock.session.asked_changed, dock.note)
     dock.unlisten(dock.session.asked_changed, dock.note)
     dock.session.asked_changed.emit(None)
-    assert heard == [1]
+    assert dock.heard == [1]
 
 
 @pytest.mark.parametrize("theme", ["dark", "light"])

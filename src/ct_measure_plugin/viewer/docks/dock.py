@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import contextlib
 from typing import TYPE_CHECKING, Any
+from weakref import WeakMethod
 
 from qtpy.QtCore import QSize, Qt, QTimer
 from qtpy.QtWidgets import (
@@ -72,7 +73,7 @@ class Dock(QWidget):
         self._timer.setSingleShot(True)
         self._timer.setInterval(_TICK_MS)
         self._timer.timeout.connect(self._tick)
-        self._links: list[tuple[Any, Any]] = []
+        self._links: list[tuple[int, WeakMethod[Any]]] = []
         self._frame: QDockWidget | None = None
         self._behind = False
 
@@ -117,14 +118,16 @@ class Dock(QWidget):
 
         Both hold methods weakly, so a dock that is gone is not called.
         """
-        if not any(known == (id(emitter), slot) for known in self._links):
+        link = id(emitter), WeakMethod(slot)
+        if link not in self._links:
             emitter.connect(slot)
-            self._links.append((id(emitter), slot))
+            self._links.append(link)
 
     def unlisten(self, emitter: Any, slot: Any) -> None:
         """Take back a :meth:`listen`; harmless if there was none."""
-        if (id(emitter), slot) in self._links:
-            self._links.remove((id(emitter), slot))
+        link = id(emitter), WeakMethod(slot)
+        if link in self._links:
+            self._links.remove(link)
             emitter.disconnect(slot)
 
     def kick(self, *_: Any) -> None:

@@ -4,9 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from pathlib import Path
-from types import MethodType
 from typing import TYPE_CHECKING, Any
-from weakref import WeakMethod
 
 from qtpy.QtCore import Signal
 from qtpy.QtWidgets import QFileDialog, QHBoxLayout, QPushButton, QWidget
@@ -15,6 +13,7 @@ from ct_measure_plugin.errors import CtMeasureError
 from ct_measure_plugin.measurements import find
 from ct_measure_plugin.records import Logbook, write_csv, write_json
 from ct_measure_plugin.run import run_measurement
+from ct_measure_plugin.viewer.docks.weakly import weakly
 from ct_measure_plugin.viewer.tasks import run_here
 
 if TYPE_CHECKING:
@@ -48,8 +47,7 @@ class KeepingButtons(QWidget):
     ) -> None:
         super().__init__(parent)
         self._session = session
-        # weakly: Qt holds this child, and through it would hold a closed dock for good
-        self._question = _weak(question)
+        self._question = weakly(question, [])
         line = QHBoxLayout(self)
         line.setContentsMargins(0, 0, 0, 0)
         line.setSpacing(4)
@@ -134,19 +132,6 @@ class KeepingButtons(QWidget):
             show_error(str(error))
         except OSError as error:
             show_error(f"The file cannot be written: {error.strerror}")
-
-
-def _weak(question: Callable[[], Any]) -> Callable[[], Any]:
-    """Return a method that does not keep its object alive; other functions as they are."""
-    if not isinstance(question, MethodType):
-        return question
-    method = WeakMethod(question)
-
-    def ask() -> Any:
-        found = method()
-        return [] if found is None else found()
-
-    return ask
 
 
 def _whole(question: tuple[Any, ...]) -> bool:

@@ -23,6 +23,7 @@ from ct_measure_plugin.viewer.docks.region_list import CLASS, CODE, RegionListMo
 from ct_measure_plugin.viewer.docks.region_plots import RegionPlots
 from ct_measure_plugin.viewer.docks.region_typing import RegionTyping
 from ct_measure_plugin.viewer.docks.region_view import RegionView
+from ct_measure_plugin.viewer.docks.weakly import weakly
 from ct_measure_plugin.viewer.layers import questions_for
 from ct_measure_plugin.viewer.new_layers import layer_to_draw_on
 from ct_measure_plugin.viewer.region_acts import RegionActs
@@ -102,17 +103,18 @@ class RegionStatisticsDock(Dock):
         self.plots = RegionPlots(self)
         self.form = SettingsForm(self._measurement.settings_type)
         self.form.changed.connect(self.kick)
-        self.typing = RegionTyping(self.do, self.acts.here, self)
-        self.arranging = RegionArranging(self.do, self.session, self)
-        self.files = RegionFiles(self.do, self.board, self.viewer, self)
+        do = weakly(self.do, otherwise=False)
+        self.typing = RegionTyping(do, self.acts.here, self)
+        self.arranging = RegionArranging(do, self.session, self)
+        self.files = RegionFiles(do, self.board, self.viewer, self)
         self.files.told.connect(self._tell)
-        self.files.opened.connect(lambda layer: self.choose(regions=layer))
+        self.files.opened.connect(self._choose_opened)
         self.keeping = KeepingButtons(self.session, self.board.questions, self)
         self.keeping.copy.connect(self.view.copy)
         for part in (self.choice, self.questions):
             self.body.addWidget(part)
         self.body.addWidget(self.view, stretch=1)
-        self.doing = RegionDoing(self.do, self.acts.undo, self.view, self)
+        self.doing = RegionDoing(do, self.acts.undo, self.view, self)
         for part in (self.doing, self.message, *self._folds(), self.keeping):
             self.body.addWidget(part)
 
@@ -145,6 +147,9 @@ class RegionStatisticsDock(Dock):
         """Measure the regions of one layer on image layers; for programs and tests."""
         chosen = tuple(images) if isinstance(images, list | tuple) else (images,)
         self.choice.choose(chosen, regions)
+
+    def _choose_opened(self, layer: Any) -> None:
+        self.choose(regions=layer)
 
     def _rebind(self) -> None:
         layer, source = self.choice.chosen_layer(), self.board.source

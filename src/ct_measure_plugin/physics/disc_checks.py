@@ -29,6 +29,12 @@ MOST_OVAL = 0.06
 #: Least contrast to noise times the root of the number of pixels on one FWHM of edge.
 LEAST_SIGNAL, FAIR_SIGNAL = 15.0, 100.0
 
+#: Degrees by which a rod may lean without a caution.
+MOST_LEAN = 2.0
+
+#: Widest gap between samples across the edge, in FWHM: a Gaussian's MTF is 0.12 at their Nyquist.
+MOST_GAP = 0.65
+
 #: Plateaus shorter than this many FWHM are refused, shorter than the second cautioned.
 SHORT_PLATEAU, FAIR_PLATEAU = 2.0, 4.0
 
@@ -86,7 +92,7 @@ def disc_refusal(
             f"something else lies in the box: {100 * share:.0f} % of the contrast",
             "draw the box around the rod alone",
         )
-    if data.gap > 0.45 * data.fwhm:
+    if data.gap > MOST_GAP * data.fwhm:
         return NotMeasured(
             f"the samples across the edge lie up to {data.gap:.2g} mm apart", "pool more slices"
         )
@@ -134,7 +140,8 @@ def disc_cautions(rod: CircleStack, data: EsfData, lean: Quantity | None) -> lis
                 "Draw the box around the rod alone.",
             )
         )
-    if lean is not None and lean.value > 2.0:
+    # noise alone leans a faint rod's centres: only what two of its uncertainties leave counts
+    if lean is not None and lean.value - 2 * (lean.uncertainty or 0.0) > MOST_LEAN:
         found.append(
             Caution(
                 "leaning-object",

@@ -3,14 +3,15 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
 from ct_measure_plugin.errors import ArgumentError
 from ct_measure_plugin.physics.circle_stack import CircleStack, locate_stack
-from ct_measure_plugin.physics.disc_checks import curvature_share, disc_cautions, disc_refusal
+from ct_measure_plugin.physics.disc_checks import disc_cautions, disc_refusal
+from ct_measure_plugin.physics.disc_curvature import curvature_of
 from ct_measure_plugin.physics.edge_bins import bin_by_distance
 from ct_measure_plugin.physics.esf_measure import (
     EsfData,
@@ -155,7 +156,6 @@ def disc_mtf(
     if refusal is not None:
         return refusal
     spread, shape = measure_esf(data, method, unit)
-    spread = replace(spread, frequency=spread.frequency * (1 + curvature_share(rod)))
     numbers, cautions = curve_numbers(
         spread, data.pixel_mm, levels=levels, slope_over=0.05 if method == "fitted" else 0.2
     )
@@ -206,6 +206,7 @@ def _data(
     sector_deg: tuple[float, float] | None,
 ) -> EsfData:
     pixel, sigma = max(steps), rod.sigma
+    bent = curvature_of(rod.middle.rough, rod.middle.annulus.radius)
     distance, value = [], []
     for plane, circle in zip(stack, rod.circles, strict=True):
         kept = circle.annulus.used
@@ -213,7 +214,7 @@ def _data(
             off = np.degrees(-circle.annulus.azimuth) - sector_deg[0]
             kept = kept & (np.abs((off + 90) % 180 - 90) <= sector_deg[1])
         distance.append(circle.annulus.distance[kept])
-        value.append(plane[kept])
+        value.append(plane[kept] - bent.at(circle.annulus.distance[kept]))
     d, v = np.concatenate(distance), np.concatenate(value)
     share = 1.0 if sector_deg is None else sector_deg[1] / 90.0
     if sector_deg is None:
@@ -244,8 +245,7 @@ def _circle_numbers(
     rod: CircleStack, data: EsfData, doubts: Floats, shape: tuple[int, ...]
 ) -> dict[str, object]:
     circle = rod.middle
-    # half height of a blurred disc lies inside its edge
-    radius = circle.annulus.radius + rod.sigma**2 / (2 * circle.annulus.radius)
+    radius = circle.annulus.radius + curvature_of(circle.rough, circle.annulus.radius).shift
     centers = np.array([c.annulus.center for c in rod.circles]).mean(axis=0)
     ny, nx = shape
     dy, dx = data.spectrum.spacing_mm

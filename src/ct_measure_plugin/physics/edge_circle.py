@@ -199,6 +199,12 @@ def rough_circle(
 
 def _circle(image: Floats, annulus: Annulus, rough: RoughEsf, pixel: float) -> EdgeCircle:
     gauss = rough_circle(image, annulus, pixel, rough, terms=0)
+    if gauss is not None and not 0.7 < gauss.sigma / rough.sigma < 1.4:
+        # with Hermite terms a much wider Gaussian may fit: the search begins anew from the end
+        gauss = rough_circle(image, annulus, pixel, gauss, terms=0)
+    if gauss is not None and rough.sigma > 1.6 * gauss.sigma:
+        # Hermite terms on a much wider Gaussian take the far side of a small disc for a tail
+        rough = rough_circle(image, annulus, pixel, gauss, terms=3) or rough
     return EdgeCircle(
         annulus,
         rough,

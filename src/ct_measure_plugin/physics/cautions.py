@@ -112,6 +112,7 @@ KINDS: dict[str, CautionKind] = {
     "repeat-difference": _note("Repeat scans were subtracted"),
     "slice-difference": _note("Neighbouring slices were subtracted"),
     "peak-at-end": _note("The spectrum peaks at the end of its range"),
+    "patches-small": _warning("Patches small for the texture"),
     "few-windows": _warning("Few windows"),
     "several-noise-levels": _warning("More than one noise level"),
     # --- a cylinder of one material --------------------------------------------------

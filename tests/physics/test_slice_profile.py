@@ -4,12 +4,12 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
-from scipy.special import ndtr
+from scipy.special import j1, ndtr
 
 from ct_measure_plugin.errors import ArgumentError
 from ct_measure_plugin.physics.results import NotMeasured
 from ct_measure_plugin.physics.slice_profile import slice_profile
-from ct_measure_plugin.physics.ssp_blur import Blur, blur_transfer
+from ct_measure_plugin.physics.ssp_blur import Blur
 
 PIXEL = 0.5
 
@@ -163,15 +163,26 @@ def test_blur_within_the_slice_and_thickness_are_taken_out(shape, truth):
         assert known.f50.value == pytest.approx(0.187391 / 0.9, rel=0.01)
 
 
-def test_the_blur_of_each_object():
-    f = np.array([0.0, 0.7])
-    ball = blur_transfer(Blur("bead", 0.5, None, 3.0), f)
-    x = np.pi * 0.5 * 0.7
-    assert ball[1] == pytest.approx(3 * (np.sin(x) - x * np.cos(x)) / x**3)
-    plate = blur_transfer(Blur("ramp", 0.3, 1.0, 0.0), f)
-    assert plate[1] == pytest.approx(np.sinc(0.7 * 0.3 * np.sqrt(2)))
-    both = blur_transfer(Blur("ramp", 0.3, 1.0, 2.354820), f)
-    assert both[1] == pytest.approx(plate[1] * np.exp(-2 * (np.pi * 0.7) ** 2))
+@pytest.mark.parametrize("target", ["bead", "wire", "ramp"])
+def test_the_blur_of_each_object(target):
+    """Sphere, cylinder and plate at 45° have their transforms in closed form, x = πDf.
+
+    Twelve layers stand for each: their transform agrees to 0.1 % while it is above a half.
+    """
+    f = np.linspace(0.01, 1.0, 50)
+    extent = 0.5 if target == "bead" else 0.5 * np.sqrt(2)
+    blur = Blur.of(target, 0.5, 0.0 if target == "bead" else 1.0, 0.8)
+    x = np.pi * extent * f
+    truth = {
+        "bead": 3 * (np.sin(x) - x * np.cos(x)) / x**3,
+        "wire": 2 * j1(x) / x,
+        "ramp": np.sin(x) / x,
+    }[target]
+    if target != "bead":  # the slice's resolution, projected by tan 45°
+        truth *= np.exp(-2 * (np.pi * 0.8 / 2.354820 * f) ** 2)
+    phases = np.cos(2 * np.pi * np.outer(f, blur.places)) @ blur.weights
+    found = phases * np.exp(-2 * (np.pi * blur.sigma * f) ** 2)
+    np.testing.assert_allclose(found[truth > 0.5], truth[truth > 0.5], atol=1e-3)
 
 
 def test_a_beads_size_is_taken_out():

@@ -10,15 +10,10 @@ import numpy as np
 
 from ct_measure_plugin.errors import ArgumentError
 from ct_measure_plugin.physics.mtf_curve import MtfResult, checked_spacing, checked_stack
-from ct_measure_plugin.physics.profile_widths import ends_of, peak_width
 from ct_measure_plugin.physics.results import Caution, Curve, NotMeasured, Quantity
-from ct_measure_plugin.physics.ssp_blur import Blur, widths_without_blur
-from ct_measure_plugin.physics.ssp_numbers import (
-    along_z,
-    area_numbers,
-    between_samples,
-    profile_ends,
-)
+from ct_measure_plugin.physics.ssp_blur import FWHM, Blur
+from ct_measure_plugin.physics.ssp_fit import fit_shapes
+from ct_measure_plugin.physics.ssp_numbers import along_z, first_guess, numbers_of, profile_of
 from ct_measure_plugin.physics.ssp_samples import (
     Ramp,
     SspSamples,
@@ -34,12 +29,6 @@ if TYPE_CHECKING:
     Floats = NDArray[np.float64]
 
 __all__ = ["SliceProfile", "slice_profile"]
-
-#: Share of the profile at either end that is background.
-BACKGROUND = 0.15
-
-#: Its top is a parabola through the points above this share of the highest one.
-SUMMIT = 0.95
 
 #: Slice increments a FWHM: refused and cautioned below.
 LEAST_SAMPLES, FAIR_SAMPLES = 2.0, 4.0
@@ -58,7 +47,7 @@ class SliceProfile(MtfResult):
         Full width at half and at a tenth of the maximum, mm, what the object and the resolution in
         the slice added taken out.
     raw_fwhm : Quantity
-        Full width at half maximum as it was read.
+        Full width at half maximum with what they added.
     equivalent_width : Quantity
         Area over height of the profile, mm.
     outside : Quantity
@@ -66,11 +55,12 @@ class SliceProfile(MtfResult):
     middle : Quantity
         The bead's distance from the first slice, mm; of a ramp the place is not told, 0.
     height, noise : Quantity
-        Of the profile, and SD of its ends.
+        What the object reads in the slice through it, and SD of one sample.
     angle : Quantity or None
         Angle between ramp and slice, degrees; None for a bead.
     profile : Curve
-        The profile over the distance from its middle, 1 at its height.
+        The profile over the distance from its middle, 1 at its height; its `data` are the samples,
+        which the object widened.
     target : str
         "bead", "ramp" or "wire".
     center_mm : (float, float)
@@ -148,8 +138,10 @@ def slice_profile(  # noqa: PLR0913 - one keyword a setting
     A bead is thin along z: its signal slice by slice is the profile. A ramp at the angle θ lies
     ``u tan θ`` higher a distance u further on, so one slice shows the whole profile, stretched by
     1/tan θ. A ramp averages over the positions of a helix and is right for axial scans only [1]_.
-    What widens the profile besides the slice, the object's size and for a ramp the resolution in
-    the slice, is applied to it once more; the widths by which it then grows are subtracted.
+    What widens the profile besides the slice (the object's extent along z, and for a ramp the
+    resolution in the slice) is part of the model. The model is two rectangles and a Gaussian
+    convolved; an uncertainty holds all of their shapes that agree with the samples, see
+    :mod:`ct_measure_plugin.physics.ssp_fit`.
 
     References
     ----------
@@ -182,17 +174,10 @@ def slice_profile(  # noqa: PLR0913 - one keyword a setting
         return found
     samples, ramp, place = found
     size = object_size_mm or 0.0
-    blur = Blur(target, size, None if ramp is None else ramp.tangent, in_plane_fwhm_mm or 0.0)
-    return _measured(
-        samples,
-        ramp,
-        place,
-        blur,
-        gap,
-        unit,
-        levels,
-        _given(target, object_size_mm, in_plane_fwhm_mm),
-    )
+    blur = Blur.of(target, size, 0.0 if ramp is None else ramp.tangent, in_plane_fwhm_mm or 0.0)
+    cautions = _given(target, object_size_mm, in_plane_fwhm_mm)
+    known = (target, place, blur.wider(samples.smeared), unit, levels)
+    return _measured(samples, ramp, known, cautions)
 
 
 def _checked(
@@ -283,69 +268,77 @@ def _sampled(
 def _measured(
     samples: SspSamples,
     ramp: Ramp | None,
-    place: tuple[float, float],
-    blur: Blur,
-    gap: float,
-    unit: str,
-    levels: tuple[float, ...],
+    known: tuple[str, tuple[float, float], Blur, str, tuple[float, ...]],
     cautions: list[Caution],
 ) -> SliceProfile | NotMeasured:
-    fine = between_samples(samples)
-    first = ends_of(fine.z - fine.z[0], fine.value, BACKGROUND, samples.step)
-    half = peak_width(fine.z, fine.value, first, unit, summit=SUMMIT)
-    if isinstance(half, NotMeasured):
+    target, place, blur, unit, levels = known
+    guess = first_guess(samples, unit)
+    if isinstance(guess, NotMeasured):
         return NotMeasured(
-            f"no profile was found: {half.reason}", "draw the box with slices on either side"
+            f"no profile was found: {guess.reason}", "draw the box with slices on either side"
         )
-    ends = profile_ends(fine, half, samples.step)
-    half = peak_width(fine.z, fine.value, ends, unit, summit=SUMMIT)
-    if isinstance(half, NotMeasured):
-        return NotMeasured(f"no profile was found: {half.reason}", "take more slices")
-    count = half.width.value / (gap if ramp is None else samples.step)
-    if count < LEAST_SAMPLES:
-        return NotMeasured(
-            f"the profile is {count:.1f} samples wide; at least {LEAST_SAMPLES:g} are needed",
-            "reconstruct with a smaller increment",
-        )
-    if count < FAIR_SAMPLES:
-        cautions = [
-            *cautions,
-            Caution(
-                "coarse-sampling",
-                f"The profile is only {count:.1f} samples wide.",
-                "Reconstruct with a smaller increment.",
-            ),
-        ]
-    tenth = peak_width(fine.z, fine.value, ends, unit, 0.1, summit=SUMMIT)
-    scale = (ramp.tangent_doubt / ramp.tangent) if ramp is not None else 0.0
-    widths = widths_without_blur(fine, half, tenth, blur, ends, scale, SUMMIT)
-    numbers, more = along_z(fine, half, ends, blur, levels, gap if ramp is None else samples.step)
+    agreeing = fit_shapes(
+        samples, blur, guess.middle.value, guess.width.value, base=ramp is not None
+    )
+    scale = 0.0 if ramp is None else ramp.tangent_doubt / ramp.tangent
+    numbers = numbers_of(agreeing, blur, scale)
+    width = numbers["fwhm"]
+    if isinstance(width, NotMeasured):
+        return width
+    refusal = _refusal(samples, width, float(agreeing.shapes.spread[0]), blur)
+    if refusal is not None:
+        return refusal
+    mtf, more = along_z(agreeing, width.value, levels, samples.step, scale)
+    middle = Quantity(0.0, "mm", 0.0)
     angle = None
-    if ramp is not None:
-        doubt = math.degrees(ramp.tangent_doubt / (1 + ramp.tangent**2))
-        angle = Quantity(math.degrees(math.atan(ramp.tangent)), "°", doubt)
-    middle = half.middle if ramp is None else Quantity(0.0, "mm", 0.0)
-    fields: dict[str, Any] = numbers | widths | area_numbers(fine, half, ends)
+    if ramp is None:
+        at, doubt = agreeing.told(agreeing.middle)
+        middle = Quantity(float(at), "mm", float(doubt))
+    else:
+        steep = math.degrees(ramp.tangent_doubt / (1 + ramp.tangent**2))
+        angle = Quantity(math.degrees(math.atan(ramp.tangent)), "°", steep)
+    height, own = agreeing.told(agreeing.height)
+    doubts = (float(own), agreeing.height_doubt, samples.scale_doubt * float(height))
+    fields: dict[str, Any] = mtf | numbers
     return SliceProfile(
         **fields,
         middle=middle,
-        height=Quantity(
-            half.height.value,
-            unit,
-            math.hypot(half.height.uncertainty or 0.0, samples.scale_doubt * half.height.value),
-        ),
-        noise=Quantity(ends.noise, unit, ends.noise / math.sqrt(2 * max(ends.freedom, 1.0))),
+        height=Quantity(float(height), unit, math.hypot(*doubts)),
+        noise=Quantity(samples.noise, unit, samples.noise / math.sqrt(2 * samples.freedom)),
         angle=angle,
-        profile=Curve(
-            fine.z - half.middle.value,
-            (fine.value - (ends.low + ends.high) / 2) / half.height.value,
-            np.full_like(fine.z, ends.noise / abs(half.height.value)),
-            "distance",
-            "mm",
-            "profile",
-            "",
-        ),
-        target=blur.target,
+        profile=profile_of(samples, agreeing, width.value),
+        target=target,
         center_mm=place,
-        cautions=(*cautions, *more),
+        cautions=(*cautions, *_coarse(samples, width), *more),
     )
+
+
+def _refusal(samples: SspSamples, width: Quantity, spread: float, blur: Blur) -> NotMeasured | None:
+    """Return why no width can be quoted, or None."""
+    most = (width.value + 2 * (width.uncertainty or 0.0)) / samples.step
+    if most < LEAST_SAMPLES:
+        return NotMeasured(
+            f"the profile is {width.value / samples.step:.1f} samples wide; at least"
+            f" {LEAST_SAMPLES:g} are needed",
+            "reconstruct with a smaller increment",
+        )
+    if spread**2 < blur.variance:
+        return NotMeasured(
+            f"the object and the resolution in the slice widen the profile by"
+            f" {FWHM * math.sqrt(blur.variance):.2g} mm, more than the slice itself",
+            "measure a smaller object, or a ramp at a smaller angle",
+        )
+    return None
+
+
+def _coarse(samples: SspSamples, width: Quantity) -> list[Caution]:
+    count = width.value / samples.step
+    if count >= FAIR_SAMPLES:
+        return []
+    return [
+        Caution(
+            "coarse-sampling",
+            f"The profile is only {count:.1f} samples wide.",
+            "Reconstruct with a smaller increment.",
+        )
+    ]

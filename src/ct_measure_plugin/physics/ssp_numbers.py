@@ -1,125 +1,113 @@
-"""What is read from a sampled slice profile besides its widths."""
+"""What is read from the slice profiles that agree with the samples of one."""
 
 from __future__ import annotations
 
 import math
 from dataclasses import replace
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
-from scipy import interpolate
 
 from ct_measure_plugin.physics.mtf_curve import FREQUENCY_STEPS, Spread, curve_numbers
-from ct_measure_plugin.physics.profile_widths import Ends, Peak, ends_of
-from ct_measure_plugin.physics.results import Quantity
-from ct_measure_plugin.physics.ssp_blur import Blur, blur_transfer
-from ct_measure_plugin.physics.ssp_samples import SspSamples
+from ct_measure_plugin.physics.profile_widths import Ends, Peak, peak_width
+from ct_measure_plugin.physics.results import Caution, Curve, NotMeasured, Quantity
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
-    from ct_measure_plugin.physics.results import Caution
+    from ct_measure_plugin.physics.ssp_blur import Blur
+    from ct_measure_plugin.physics.ssp_fit import Agreeing
+    from ct_measure_plugin.physics.ssp_samples import SspSamples
 
     Floats = NDArray[np.float64]
 
-#: Difference of two interpolations, relative to the height, that tells corners.
-SHARP = 0.012
+__all__ = ["along_z", "first_guess", "numbers_of", "profile_of"]
 
-__all__ = ["along_z", "area_numbers", "between_samples", "profile_ends"]
+#: Share of the samples at either end that tell the background of the first guess, and points
+#: between two samples at which its width is read.
+ENDS, FINE = 0.12, 10
 
-#: The profile is transformed within this many FWHM about its middle.
-REACH = 3.0
+#: Points of the curves; the profile is drawn this many FWHM to either side, the MTF up to this
+#: over the FWHM.
+POINTS, ACROSS, UP_TO = 161, 2.0, 2.0
 
-#: Points between samples on which the profile is drawn and its widths are read.
-FINE = 10
-
-#: Independent points that stand for a noise known from many pixels.
-KNOWN = 50.0
+#: Relative standard uncertainty above which a width is not quoted.
+MOST_DOUBT = 0.15
 
 
-def profile_ends(fine: SspSamples, half: Peak, step: float) -> Ends:
-    """Return the ends of a profile from all that lies beyond 1.5 FWHM of its middle.
-
-    A few slices on either side tell their noise badly; the pixels around a bead tell it well.
-    """
-    length = float(fine.z[-1] - fine.z[0])
-    room = min(half.middle.value - float(fine.z[0]), float(fine.z[-1]) - half.middle.value)
-    share = (room - 1.5 * half.width.value) / length
-    share = min(max(share, 0.05), 0.4)
-    found = ends_of(fine.z - fine.z[0], fine.value, share, step)
-    if fine.noise is None:
+def first_guess(samples: SspSamples, unit: str) -> Peak | NotMeasured:
+    """Return width, height and middle of the samples joined by lines."""
+    z, value = samples.z, samples.value
+    count = max(2, round(ENDS * len(z)))
+    low, high = float(np.median(value[:count])), float(np.median(value[-count:]))
+    noise = samples.noise
+    doubt = noise * math.sqrt(math.pi / 2 / count)
+    ends = Ends(low, high, noise, doubt, samples.step, max(samples.freedom, 5.0))
+    fine = np.linspace(z[0], z[-1], FINE * len(z) + 1)
+    found = peak_width(fine - z[0], np.interp(fine, z, value), ends, unit)
+    if isinstance(found, NotMeasured):
         return found
-    independent = max(share * length / step, 1.0)
-    doubt = fine.noise * math.sqrt(math.pi / 2 / independent)
-    return replace(found, noise=fine.noise, doubt=doubt, correlation=step, freedom=KNOWN)
+    middle = replace(found.middle, value=found.middle.value + float(z[0]))
+    return replace(found, middle=middle)
 
 
-def between_samples(samples: SspSamples) -> SspSamples:
-    """Return a profile between its samples.
-
-    By a cubic spline; where that differs from modified Akima interpolation by more than a share
-    `SHARP` of the height, the profile has corners at which a spline overshoots, and Akima's is
-    taken.
-    """
-    z = np.linspace(samples.z[0], samples.z[-1], FINE * (len(samples.z) - 1) + 1)
-    smooth = interpolate.CubicSpline(samples.z, samples.value)(z)
-    careful = interpolate.Akima1DInterpolator(samples.z, samples.value, method="makima")(z)
-    sharp = float(np.abs(smooth - careful).max()) > SHARP * float(np.ptp(samples.value))
-    value = np.asarray(careful if sharp else smooth, dtype=np.float64)
-    return replace(samples, z=z, value=value)
+def _sure(value: Quantity, what: str) -> Quantity | NotMeasured:
+    doubt = (value.uncertainty or 0.0) / value.value
+    if doubt <= MOST_DOUBT:
+        return value
+    return NotMeasured(
+        f"noise and the distance between samples leave {what} uncertain by {100 * doubt:.0f} %",
+        "reconstruct with a smaller increment, or measure a stronger contrast or a ramp",
+    )
 
 
-def area_numbers(fine: SspSamples, half: Peak, ends: Ends) -> dict[str, object]:
-    """Return the equivalent width and the share of the area outside one FWHM of the middle."""
-    base = (ends.low + ends.high) / 2
-    step = float(fine.z[1] - fine.z[0])
-    away = np.abs(fine.z - half.middle.value)
-    reach = REACH * half.width.value
-    value = (fine.value - base) / half.height.value
-    near = away <= reach
-    area = float(value[near].sum()) * step
-    beyond = near & (away > half.width.value)
-    outside = float(value[beyond].sum()) * step / area
-    span = float(near.sum()) * step
-    noise = ends.noise / abs(half.height.value)
-    floor = ends.doubt / math.sqrt(2) / abs(half.height.value)
-    doubt = math.hypot(noise * math.sqrt(span * ends.correlation), floor * span)
-    own = (half.height.uncertainty or 0.0) / abs(half.height.value)
-    share = span - 2 * half.width.value
-    tail = math.hypot(noise * math.sqrt(max(share, 0.0) * ends.correlation), floor * share)
+def numbers_of(agreeing: Agreeing, blur: Blur, scale_doubt: float) -> dict[str, Any]:
+    """Return widths and areas; `scale_doubt` is the relative uncertainty of lengths along z."""
+    shapes = agreeing.shapes
+    half = shapes.widths(0.5)
+
+    def length(values: Floats) -> Quantity:
+        best, doubt = agreeing.told(values)
+        return Quantity(float(best), "mm", math.hypot(float(doubt), scale_doubt * float(best)))
+
+    outside, doubt = agreeing.told(shapes.outside(half))
     return {
-        "equivalent_width": Quantity(area, "mm", math.hypot(doubt, own * area)),
-        "outside": Quantity(outside, "", tail / area),
+        "fwhm": _sure(length(half), "the width"),
+        "fwtm": _sure(length(shapes.widths(0.1)), "the width at a tenth"),
+        "raw_fwhm": length(shapes.widths(0.5, blur)),
+        "equivalent_width": length(shapes.areas()),
+        "outside": Quantity(float(outside), "", float(doubt)),
     }
 
 
-def along_z(
-    fine: SspSamples,
-    half: Peak,
-    ends: Ends,
-    blur: Blur,
-    levels: tuple[float, ...],
-    step: float,
-) -> tuple[dict[str, object], list[Caution]]:
-    """Return the numbers of the MTF along z.
+def profile_of(samples: SspSamples, agreeing: Agreeing, fwhm: float) -> Curve:
+    """Return the profile, 1 at its height, and the samples, which the object widened."""
+    z = np.linspace(-ACROSS * fwhm, ACROSS * fwhm, POINTS)
+    value, doubt = agreeing.told(agreeing.shapes.at(z) * agreeing.shapes.areas()[:, None])
+    middle, height = float(agreeing.middle[0]), float(agreeing.height[0])
+    near = np.abs(samples.z - middle) <= ACROSS * fwhm
+    noise = np.sqrt(np.diag(samples.covariance))[near] / abs(height)
+    read = (samples.value[near] - agreeing.base) / height
+    named = ("distance", "mm", "profile", "")
+    data = Curve(samples.z[near] - middle, read, noise, *named, joined=False)
+    return Curve(z, value, doubt, *named, data=data)
 
-    The transform of what was sampled: samples, not what was drawn between them.
-    """
-    base = (ends.low + ends.high) / 2
-    every = max(1, round(step / float(fine.z[1] - fine.z[0])))
-    z, value = fine.z[::every], fine.value[::every] - base
-    used = np.abs(z - half.middle.value) <= REACH * half.width.value
-    z, value = z[used], value[used]
-    top = min(0.5 / step, 2.0 / half.width.value)
-    frequency = np.linspace(0, top, FREQUENCY_STEPS)
-    middle = float(np.sum(z * value) / np.sum(value))
-    wave = np.cos(2 * math.pi * np.outer(frequency, z - middle))
-    total = float(value.sum())
-    mtf = wave @ value / total
-    spread = (wave - mtf[:, None]) / total
-    noise = ends.noise * np.sqrt(np.sum(spread**2, axis=1))
-    floor = ends.doubt / math.sqrt(2) * np.abs(spread.sum(axis=1))
-    own = blur_transfer(blur, frequency)
-    clear = int(np.argmax(own < 0.3)) if bool((own < 0.3).any()) else len(own)
-    curve = Spread(frequency[:clear], (mtf / own)[:clear], (np.hypot(noise, floor) / own)[:clear])
-    return curve_numbers(curve, step, levels=levels)
+
+def along_z(
+    agreeing: Agreeing, fwhm: float, levels: tuple[float, ...], step: float, scale_doubt: float
+) -> tuple[dict[str, object], list[Caution]]:
+    """Return the numbers of the MTF along z, and cautions in words that fit the direction."""
+    frequency = np.linspace(0, UP_TO / fwhm, FREQUENCY_STEPS)
+    mtf, doubt = agreeing.told(agreeing.shapes.spectra(frequency))
+    stretched = scale_doubt * frequency * np.gradient(mtf, frequency)
+    spread = Spread(frequency, mtf, np.hypot(doubt, stretched))
+    found, cautions = curve_numbers(spread, step, levels=levels)
+    return found, [_worded(caution) for caution in cautions]
+
+
+def _worded(caution: Caution) -> Caution:
+    if caution.code != "aliasing":
+        return replace(caution, remedy="Measure a stronger contrast, or more slices.")
+    text = caution.text.replace("the pixels' Nyquist", "the samples' Nyquist")
+    text = text.replace("the image is aliased", "along z it is aliased")
+    return replace(caution, text=text, remedy="Reconstruct at a smaller increment.")

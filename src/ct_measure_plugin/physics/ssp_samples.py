@@ -7,12 +7,19 @@ from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 import numpy as np
-from scipy import interpolate
+from scipy import linalg
 
 from ct_measure_plugin.physics.edge_line import pixel_grid
-from ct_measure_plugin.physics.edge_noise import NoiseSpectrum, residual_spectrum
+from ct_measure_plugin.physics.mtf_curve import width_at
 from ct_measure_plugin.physics.regions import direction
 from ct_measure_plugin.physics.results import NotMeasured
+from ct_measure_plugin.physics.ssp_noise import (
+    climb_covariance,
+    freedom,
+    mean_spectrum,
+    positive,
+    slice_correlation,
+)
 from ct_measure_plugin.physics.wire_trace import trace_wire
 
 if TYPE_CHECKING:
@@ -33,6 +40,10 @@ KEPT_WIDTH = 0.6
 #: Widths of a wire that are averaged: all of it.
 WIRE_WIDTH = 3.0
 
+#: Steps a width into which a ramp's pixels are pooled, at most; widths from its middle beyond which
+#: pixels show background, and up to which they are read.
+FINEST, CLEAR, SEEN = 22.0, 1.3, 2.2
+
 
 @dataclass(frozen=True, slots=True, eq=False)
 class SspSamples:
@@ -41,11 +52,15 @@ class SspSamples:
     Attributes
     ----------
     z, value : ndarray, shape (n,)
-        Evenly spaced distances along the slice normal, mm, and the profile there.
+        Increasing distances along the slice normal, mm, and the profile there.
     step : float
         Distance between independent samples, mm: the slice increment, or the pixels' projection.
-    noise : float or None
-        SD of each sample, where it is known from the pixels.
+    covariance : ndarray, shape (n, n)
+        Of the noise of the samples.
+    freedom : float
+        Independent pixels that told the noise.
+    smeared : float
+        Variance over which each sample is an average along z, mm².
     scale_doubt : float
         Relative standard uncertainty of the common scale of all samples.
     """
@@ -53,8 +68,15 @@ class SspSamples:
     z: Floats
     value: Floats
     step: float
-    noise: float | None = None
+    covariance: Floats
+    freedom: float
+    smeared: float = 0.0
     scale_doubt: float = 0.0
+
+    @property
+    def noise(self) -> float:
+        """SD of a sample."""
+        return math.sqrt(float(np.median(np.diag(self.covariance))))
 
 
 def bead_samples(
@@ -84,19 +106,17 @@ def bead_samples(
     flat = stack - level[:, None, None]
     weights = spot / float(np.sum(spot**2))
     heights = np.tensordot(flat, weights, 2)
-    parts = [
-        residual_spectrum(np.where(ring, p, 0.0), spacing_mm, ring.astype(float)) for p in flat
-    ]
-    spectrum = NoiseSpectrum(
-        parts[0].frequency, np.mean([p.power for p in parts], axis=0), spacing_mm
-    )
+    rings = np.broadcast_to(ring, stack.shape)
+    spectrum = mean_spectrum(flat, rings, spacing_mm)
     noise = math.sqrt(float(spectrum.variance_of_sums(weights[None])[0]))
     z = np.arange(len(stack), dtype=np.float64) * gap
     place = cy - float(y[0, 0]), cx - float(x[0, 0])
     # the spot's width was fitted with its height, which makes that twice as uncertain
     mean_height = abs(float(heights.mean()))
     doubt = 2 * noise / math.sqrt(len(stack)) / mean_height if mean_height > 0 else 0.0
-    return SspSamples(z, heights, gap, noise, doubt), place
+    told = freedom(spectrum, rings)
+    covariance = noise**2 * positive(linalg.toeplitz(slice_correlation(flat, rings)))
+    return SspSamples(z, heights, gap, covariance, told, scale_doubt=doubt), place
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -239,21 +259,44 @@ def ramp_samples(
         half = float(mean @ across[used]) / float(mean.sum())
         variance = float(mean @ (across[used] - half) ** 2) / float(mean.sum())
         shape = np.exp(-((across - half) ** 2) / (2 * variance))
-    z = np.concatenate(
-        [(along * ramp.tangent - (k - reference) * gap)[used] for k in range(len(level))]
+    z = np.stack([along * ramp.tangent - (k - reference) * gap for k in range(len(level))])
+    v, g = level[:, used].ravel(), np.tile(shape[used], len(level))
+    at = z[:, used].ravel()
+    step = pixel * ramp.tangent / 2
+    rough = _pooled(at, v, g, step)
+    wide = width_at(rough[0], np.abs(rough[1] - np.median(rough[1])), 0.5)
+    step = max(step, wide / FINEST)
+    place, mean, count, smeared = _pooled(at, v, g, step)
+    top = float(rough[0][np.argmax(np.abs(rough[1] - np.median(rough[1])))])
+    near = np.abs(place - top) <= SEEN * wide
+    away = np.abs(z - top) > CLEAR * wide
+    spectrum = mean_spectrum(level, away, spacing_mm)
+    covariance = climb_covariance(
+        place[near],
+        count[near],
+        spectrum,
+        slice_correlation(level, away),
+        length=float(used.sum()) * spacing_mm[0] * spacing_mm[1] / float(np.ptp(along[used])),
+        gap=gap,
+        tangent=ramp.tangent,
+        direction=math.atan2(cy, cx),
     )
-    v, g = np.concatenate([p[used] for p in level]), np.tile(shape[used], len(level))
-    step = max(pixel * ramp.tangent / 2, 1e-3)
+    projected = pixel * ramp.tangent
+    told = freedom(spectrum, away)
+    return SspSamples(place[near], mean[near], projected, covariance, told, smeared)
+
+
+def _pooled(z: Floats, v: Floats, g: Floats, step: float) -> tuple[Floats, Floats, Floats, float]:
+    """Return places, means and numbers of values in steps of z, and the variance of z in a step."""
     index = np.rint(z / step).astype(np.intp)
-    low = int(index.min())
-    count = np.bincount(index - low, g * g)
-    filled = np.flatnonzero(count >= 0.15 * np.median(count[count > 0]))
-    mean = np.bincount(index - low, v * g)[filled] / count[filled]
-    place = np.bincount(index - low, z * g * g)[filled] / count[filled]
-    even = np.arange(filled[0] + 1, filled[-1]) + low
-    curve = interpolate.Akima1DInterpolator(place, mean, method="makima")
-    profile = np.asarray(curve(even * step), dtype=np.float64)
-    return SspSamples(even * step, profile, pixel * ramp.tangent)
+    index -= int(index.min())
+    count = np.bincount(index, g * g)
+    filled = count >= 0.15 * np.median(count[count > 0])
+    place = np.bincount(index, z * g * g)[filled] / count[filled]
+    square = np.bincount(index, z * z * g * g)[filled] / count[filled]
+    mean = np.bincount(index, v * g)[filled] / count[filled]
+    numbers = np.asarray(count[filled], dtype=np.float64)
+    return place, mean, numbers, float(np.median(square - place**2))
 
 
 def _across(level: Floats, across: Floats, pixel: float) -> tuple[float, float]:

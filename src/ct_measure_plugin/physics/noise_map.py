@@ -176,7 +176,7 @@ def _allowed(planes: NDArray[np.generic], inside: ArrayLike | None, window_px: i
 
 def _level(plane: NDArray[np.generic], low: float, high: float) -> float:
     """Return a whole number near the tissue's level, so that whole CT numbers lose nothing."""
-    some = np.asarray(plane[::4, ::4], dtype=float)
+    some = np.asarray(plane[::8, ::8], dtype=float)
     within = some[(some >= low) & (some <= high)]
     return float(np.rint(np.median(within))) if within.size else (low + high) / 2
 

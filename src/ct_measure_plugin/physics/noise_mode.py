@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from functools import lru_cache
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -114,23 +115,32 @@ def mode_of(blocks: Floats, bins: Bins, draws: int = DRAWS) -> Mode:
     middle, low = (float(np.interp(q, share, bins.middle)) for q in (0.5, 0.1587))
     sigma = max(SMOOTH * (middle - low) / bins.width, 1.0)
     smooth = ndimage.gaussian_filter1d(total, sigma, mode="constant")
-    value = _peak(smooth, bins)
+    value = float(_peaks(smooth[None], bins)[0])
     below = bins.middle < value
     lower = float(np.sqrt(np.sum((total * (bins.middle - value) ** 2)[below]) / total[below].sum()))
-    rng = np.random.default_rng(SEED)
-    picks = rng.multinomial(len(blocks), np.full(len(blocks), 1.0 / len(blocks)), size=draws)
-    drawn = ndimage.gaussian_filter1d(picks @ blocks, sigma, axis=1, mode="constant")
-    doubt = float(np.std([_peak(row, bins) for row in drawn])) if len(blocks) > 1 else 0.0
+    drawn = _picks(len(blocks), draws) @ blocks
+    drawn = ndimage.gaussian_filter1d(drawn, sigma, axis=1, mode="constant")
+    doubt = float(np.std(_peaks(drawn, bins))) if len(blocks) > 1 else 0.0
     return Mode(value, doubt, lower, smooth, _second(smooth, bins))
 
 
-def _peak(smooth: Floats, bins: Bins) -> float:
-    k = int(smooth.argmax())
-    if not 0 < k < len(smooth) - 1 or smooth[k - 1] <= 0 or smooth[k + 1] <= 0:
-        return (k + 0.5) * bins.width
-    a, b, c = np.log(smooth[k - 1 : k + 2])
+@lru_cache(maxsize=256)
+def _picks(blocks: int, draws: int) -> Floats:
+    """Return how often each block is drawn, shape (draws, blocks): always the same."""
+    rng = np.random.default_rng(SEED)
+    return rng.multinomial(blocks, np.full(blocks, 1.0 / blocks), size=draws).astype(float)
+
+
+def _peaks(smooth: Floats, bins: Bins) -> Floats:
+    """Return where each row has its peak, by a parabola through three logarithms."""
+    rows, last = np.arange(len(smooth)), smooth.shape[1] - 1
+    k = smooth.argmax(axis=1)
+    near = smooth[rows[:, None], np.clip(k[:, None] + np.arange(-1, 2), 0, last)]
+    within = (k > 0) & (k < last) & (near > 0).all(axis=1)
+    a, b, c = np.log(np.where(within[:, None], near, 1.0)).T
     bend = a - 2 * b + c
-    return float((k + 0.5 + (0.5 * (a - c) / bend if bend < 0 else 0.0)) * bins.width)
+    shift = np.where(bend < 0, 0.5 * (a - c) / np.where(bend < 0, bend, 1.0), 0.0)
+    return np.asarray((k + 0.5 + shift) * bins.width)
 
 
 def _second(smooth: Floats, bins: Bins) -> float | None:

@@ -1,13 +1,19 @@
 """The shapes from which an edge spread function is composed.
 
-Each shape family has the MTF ``[1 + Σ_k a_k P_k(u²)] exp(-(u/√2)^β)`` with ``u = 2πfs``: an
-envelope of width 1/s and steepness β (2: Gaussian; large: nearly a sharp cut-off; below 2: long
-tails of the line spread) times an even polynomial without constant term, so that MTF(0) = 1.
-With β = 2 this is the even Gauss-Hermite expansion of the line spread function. Edge enhancement,
-an MTF above 1 and overshoot need no more than a positive a_1.
+Each shape family has the MTF ``[1 + Σ_k a_k P_k(u²)] envelope(u)`` with ``u = 2πfs``, the even
+polynomials P_k without constant term, so that MTF(0) = 1. The envelope is one of
 
-All shapes of all widths and steepnesses are tabulated once over x = d/s0 and compressed by a
-singular value decomposition: a fit then handles some forty columns instead of thousands.
+    κ = 0   exp(-u²/2), the Gaussian: the sum is the even Gauss-Hermite expansion of the line spread
+    κ > 0   (1 - κu²/2)^(1/κ) up to its zero: the smooth cut-off of a reconstruction kernel
+    κ < 0   exp((1 - sqrt(1 + |κ|u²)) / |κ|): longer tails of the line spread
+
+all with the logarithm ``-u²/2 - κu⁴/8 + …``: s is the standard deviation of the line spread, and
+κ tells how much flatter than a Gaussian the MTF begins and how much steeper it ends. An MTF is
+analytic at 0 if the line spread has moments, which exponentials of other powers of u are not. Edge
+enhancement, an MTF above 1 and overshoot need no more than a positive a_1.
+
+All shapes of all widths and flatnesses are tabulated once over x = d/s0 and compressed by a
+singular value decomposition: a fit then handles about a hundred columns instead of thousands.
 """
 
 from __future__ import annotations
@@ -27,8 +33,8 @@ if TYPE_CHECKING:
 
 __all__ = ["Dictionary", "dictionary", "gauss_nodes"]
 
-#: Steepnesses of the envelope.
-STEEPNESS = (1.6, 2.0, 2.5, 3.2, 4.5, 7.0)
+#: Flatnesses κ of the envelope. A raised cosine down to 0 lies near 0.37.
+FLATNESS = (-0.7, -0.25, 0.0, 0.17, 0.29, 0.42, 0.67)
 
 #: Widths of the envelope relative to the width of the best Gaussian edge.
 RATIOS = tuple(float(r) for r in np.geomspace(0.5, 1.8, 14))
@@ -38,6 +44,10 @@ TERMS = 7
 
 #: Table of x = d/s0.
 REACH, STEP = 40.0, 0.04
+
+#: Envelopes that have no end are followed down to exp(-34), those with long tails to exp(-60):
+#: times the highest power of u this is below 1e-7 of the largest value.
+VANISHED, TAIL_VANISHED = 34.0, 60.0
 
 #: Singular values below this share of the largest are dropped.
 COMPRESSION = 1e-7
@@ -50,7 +60,7 @@ class Dictionary:
     Attributes
     ----------
     members : int
-        Number m of pairs of width and steepness.
+        Number m of pairs of width and flatness.
     columns : ndarray, shape (r, m, 1 + TERMS)
         Each member's edge shapes in terms of the r compressed functions.
     edge, line : spline of x
@@ -62,7 +72,7 @@ class Dictionary:
     edge: interpolate.CubicSpline
     line: interpolate.PPoly
     slope: interpolate.PPoly
-    _steepness: Floats
+    _flatness: Floats
     _ratio: Floats
     _orthogonal: tuple[Floats, ...]
 
@@ -84,28 +94,38 @@ class Dictionary:
 
     def end(self, member: int) -> float:
         """Return the u beyond which a member's envelope has vanished."""
-        return _end(float(self._steepness[member]))
+        return _end(float(self._flatness[member]))
 
     def transfer(self, member: int, v: Floats) -> Floats:
         """Return one member's MTF shapes at v = 2πf s0, shape (n, 1 + TERMS)."""
         return _transfer(
             v * self._ratio[member],
-            float(self._steepness[member]),
+            float(self._flatness[member]),
             self._orthogonal[member // len(RATIOS)],
         )
 
 
-def _end(steepness: float) -> float:
-    return math.sqrt(2) * math.pow(34.0, 1 / steepness)
+def _end(flatness: float) -> float:
+    if flatness > 0:
+        return math.sqrt(2 / flatness)
+    if flatness == 0:
+        return math.sqrt(2 * VANISHED)
+    return math.sqrt(((1 - flatness * TAIL_VANISHED) ** 2 - 1) / -flatness)
 
 
-def _powers(u: Floats, steepness: float) -> Floats:
-    envelope = np.exp(-((u / math.sqrt(2)) ** steepness))
-    return np.stack([(u * u / 4) ** k * envelope for k in range(TERMS + 1)], axis=1)
+def _powers(u: Floats, flatness: float) -> Floats:
+    square = u * u
+    if flatness > 0:
+        envelope = np.maximum(1 - flatness / 2 * square, 0.0) ** (1 / flatness)
+    elif flatness == 0:
+        envelope = np.exp(-square / 2)
+    else:
+        envelope = np.exp((np.sqrt(1 - flatness * square) - 1) / flatness)
+    return np.stack([(square / 4) ** k * envelope for k in range(TERMS + 1)], axis=1)
 
 
-def _transfer(u: Floats, steepness: float, orthogonal: Floats) -> Floats:
-    powers = _powers(u, steepness)
+def _transfer(u: Floats, flatness: float, orthogonal: Floats) -> Floats:
+    powers = _powers(u, flatness)
     powers[:, 1:] = powers[:, 1:] @ orthogonal
     return powers
 
@@ -113,7 +133,7 @@ def _transfer(u: Floats, steepness: float, orthogonal: Floats) -> Floats:
 def gauss_nodes(top: float) -> tuple[Floats, Floats]:
     """Return Gauss-Legendre nodes and weights on 0 to top, in panels that grow."""
     x, w = np.polynomial.legendre.leggauss(16)
-    panels = top * np.linspace(0, 1, 65) ** 1.5
+    panels = top * np.linspace(0, 1, 1 + max(64, round(4 * top))) ** 1.5
     half = np.diff(panels)[:, None] / 2
     return (panels[:-1, None] + half * (x + 1)).ravel(), (half * w).ravel()
 
@@ -128,9 +148,9 @@ def dictionary() -> Dictionary:
     """
     x = np.arange(0.0, REACH + STEP / 2, STEP)
     tables, orthogonal = [], []
-    for steepness in STEEPNESS:
-        u, w = gauss_nodes(_end(steepness))
-        shapes = _powers(u, steepness)
+    for flatness in FLATNESS:
+        u, w = gauss_nodes(_end(flatness))
+        shapes = _powers(u, flatness)
         _, r = np.linalg.qr(shapes[:, 1:] * np.sqrt(w)[:, None])
         turn = np.linalg.inv(r) * np.sign(np.diag(r))
         orthogonal.append(turn)
@@ -148,14 +168,14 @@ def dictionary() -> Dictionary:
     functions = table.reshape(len(x), -1) @ mix.T
     scale = np.abs(functions).max(axis=0)
     edge = interpolate.CubicSpline(x, functions / scale)
-    members = len(STEEPNESS) * len(RATIOS)
+    members = len(FLATNESS) * len(RATIOS)
     return Dictionary(
         members,
         (mix * scale[:, None]).reshape(kept, members, TERMS + 1),
         edge,
         edge.derivative(1),
         edge.derivative(2),
-        np.repeat(STEEPNESS, len(RATIOS)),
-        np.tile(RATIOS, len(STEEPNESS)),
+        np.repeat(FLATNESS, len(RATIOS)),
+        np.tile(RATIOS, len(FLATNESS)),
         tuple(orthogonal),
     )

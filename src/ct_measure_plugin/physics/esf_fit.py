@@ -1,7 +1,7 @@
 """Fit an edge spread function with as much shape as its noise allows.
 
 The shapes of :mod:`esf_basis` are fitted by generalised least squares. Their coefficients carry
-zero-mean Gaussian priors whose width falls from term to term; width and steepness of the envelope
+zero-mean Gaussian priors whose width falls from term to term; width and flatness of the envelope
 and the strength of the prior are not chosen but averaged over, each weighted by its evidence
 (Bayesian model averaging). Smoothness therefore comes from the data: a clean edge gets every
 term, a noisy one little more than its width and its first departure from a Gaussian.
@@ -28,10 +28,13 @@ if TYPE_CHECKING:
 __all__ = ["EsfFit", "Part", "Solved", "averaged_transfer", "fit_esf", "solve_averaged", "whiten"]
 
 #: Prior standard deviation of the first coefficient relative to the step, and how it falls from
-#: each coefficient to the next. Chosen on simulated edges of three kernels; the benchmark
-#: tests/benchmarks/edge_mtf.py shows what they reach.
-STRENGTHS = np.array([0.03, 0.1, 0.3, 1.0])
+#: each coefficient to the next. Chosen on simulated edges of eleven kernels, of which the
+#: benchmark tests/benchmarks/edge_mtf.py shows three.
+STRENGTHS = np.array([0.02, 0.07, 0.25, 1.0])
 FALL = 0.5 ** np.arange(TERMS)
+
+#: Each strength's prior weight over that of the next smaller one: simple shapes are likelier.
+RARER = 0.5
 
 #: Fall of the whitened sum of squares from which a slope of the plateaus is believed: (3 SD)².
 SLOPE_STANDS_OUT = 9.0
@@ -186,10 +189,10 @@ def fit_esf(bins: EdgeBins, scale: float, covariance: Floats) -> EsfFit:
     Constant, step and position have flat priors. For envelope m and strength t the evidence is
     that of a linear model with Gaussian noise and prior (Bishop 2006, Pattern Recognition and
     Machine Learning, eq. 3.86), and the average over them that of Hoeting et al. 1999,
-    Statistical Science 14:382, with equal prior weights. The uncertainty holds the posterior
-    spread within each combination and the spread between combinations. A common slope of both
-    plateaus is allowed where it improves the fit by three standard deviations: always allowing
-    it would cost a tenth of the precision.
+    Statistical Science 14:382, with equal prior weights of the envelopes. The uncertainty holds
+    the posterior spread within each combination and the spread between combinations. A common
+    slope of both plateaus is allowed where it improves the fit by three standard deviations:
+    always allowing it would cost a tenth of the precision.
     """
     shapes = dictionary()
     x = bins.distance / scale
@@ -285,6 +288,7 @@ def _average(shapes: Shapes, core: Floats, data: Floats, strengths: Floats) -> t
     half = np.linalg.solve(lower, scaled[..., None])[..., 0]
     depth = np.log(np.diagonal(lower, axis1=2, axis2=3)).sum(-1)
     evidence = 0.5 * (gain[:, None] + np.sum(half**2, axis=-1)) - depth
+    evidence += np.log(RARER) * np.arange(len(strengths))
     weight = np.exp(evidence - evidence.max())
     weight /= weight.sum()
     weight[weight < NEGLIGIBLE] = 0.0

@@ -66,7 +66,7 @@ def radial_dictionary() -> RadialDictionary:
     """Return the dictionary; made on first use and kept (about a second).
 
     >>> shapes = radial_dictionary()  # the widest Gaussian's centre is 1 / (2π s²)
-    >>> gauss = (shapes.spreads(np.array([0.0])) @ shapes.columns[:, 14:28, 0])[0]
+    >>> gauss = (shapes.spreads(np.array([0.0])) @ shapes.columns[:, 28:42, 0])[0]
     >>> bool(np.allclose(gauss * 2 * np.pi * np.array(RATIOS) ** 2, 1, rtol=1e-5))
     True
     """

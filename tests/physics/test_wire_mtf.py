@@ -6,7 +6,7 @@ from functools import cache
 
 import numpy as np
 import pytest
-from truth_images import EDGE, GAUSS, HANN, KERNELS, Kernel, disc_image, noise
+from truth_images import EDGE, GAUSS, HANN, KERNELS, Kernel, disc_image, disc_profile, noise
 
 from ct_measure_plugin.errors import ArgumentError
 from ct_measure_plugin.physics.psf_basis import radial_dictionary
@@ -80,9 +80,36 @@ def test_one_slice_has_no_bias_where_the_spot_is_wide_enough(kernel, pixel, meth
         method=method,
         object_diameter_mm=0.2,
     )
+    if method == "rings" and pixel == 0.5:  # 2.8 and 2.7 pixels a FWHM
+        assert isinstance(found, NotMeasured)
+        assert "at one place of the pixel grid the method 'rings' needs 2.9" in found.reason
+        return
     assert abs(percent(found, kernel)) < 0.5
-    # rings of three pixels a FWHM reach 0.6 %
-    assert abs(percent(found, kernel, 0.1)) < (0.7 if method == "rings" else 0.5)
+    assert abs(percent(found, kernel, 0.1)) < 0.5
+
+
+@pytest.mark.parametrize("pixel", [0.5, 0.7])
+@pytest.mark.parametrize("kernel", KERNELS, ids=lambda k: k.name)
+def test_a_narrow_spots_height_is_right_or_not_measured(kernel, pixel):
+    """The true top by the Hankel transform at radius 0; at 0.7 mm the enhancing kernel's spot is
+    1.3 pixels wide, and a polynomial through its few pixels was 72 % too high."""
+    top = float(disc_profile(kernel, 0.1, np.array([0.0, 0.1]))[0])
+    for center in ((0.11, -0.07), (0.25, 0.25), (0.0, 0.31)):
+        size = int(24 / pixel)
+        image = disc_image(
+            kernel, 0.1, contrast=1.0, shape=(size, size), spacing=(pixel, pixel), center=center
+        )
+        found = wire_mtf(300 / top * image, spacing_mm=(pixel, pixel), method="transform")
+        if kernel is EDGE and pixel == 0.7:
+            for quantity in (found.height, found.width, found.contrast_to_noise):
+                assert isinstance(quantity, NotMeasured)
+                assert "top may lie between the pixels" in quantity.reason
+        else:
+            narrow = pixel == 0.7 or kernel is EDGE  # 1.8 to 2 pixels a FWHM
+            # two percent is what the caution says
+            assert found.height.value == pytest.approx(300, rel=0.02 if narrow else 0.003)
+            said = [c.text for c in found.cautions if "width and height may be off" in c.text]
+            assert len(said) == narrow
 
 
 def test_pixels_too_coarse_for_one_slice_are_refused_and_slices_help():
@@ -97,6 +124,7 @@ def test_pixels_too_coarse_for_one_slice_are_refused_and_slices_help():
     assert "fold" in folded.f50.reason
     # straight slices repeat one place of the grid and do not help
     straight = wires(EDGE, 0.7, 12, step=(0.0, 0.0))
+    assert "1.1 pixels" in wire_mtf(straight, spacing_mm=(0.7, 0.7)).reason
     again = wire_mtf(straight, spacing_mm=(0.7, 0.7), method="transform")
     assert isinstance(again.f50, NotMeasured)
 

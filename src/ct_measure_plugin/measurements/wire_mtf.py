@@ -10,7 +10,7 @@ from pydantic import Field
 from ct_measure_plugin.measurements.base import Measurement, RegionNeed, Settings, further_levels
 from ct_measure_plugin.measurements.boxes import cut_box
 from ct_measure_plugin.physics.regions import Disc, Segment
-from ct_measure_plugin.physics.results import NotMeasured, Result
+from ct_measure_plugin.physics.results import NotMeasured, Quantity, Result
 from ct_measure_plugin.physics.wire_mtf import WireMtf, wire_mtf
 
 if TYPE_CHECKING:
@@ -92,7 +92,7 @@ class MeasureWireMtf(Measurement):
 
     def marks(
         self,
-        volume: Volume,  # noqa: ARG002 - the found wire says all
+        volume: Volume,
         regions: Sequence[Region],
         settings: Settings,  # noqa: ARG002
         answer: Result | NotMeasured,
@@ -101,7 +101,9 @@ class MeasureWireMtf(Measurement):
         if not isinstance(answer, WireMtf):
             return ()
         z, name = regions[0].z_mm, regions[0].name
-        spot = Disc(answer.center_mm, answer.width.value / 2, z_mm=z, name=name)
+        pixel = max(volume.spacing_mm[1:])
+        half = answer.width.value / 2 if isinstance(answer.width, Quantity) else pixel
+        spot = Disc(answer.center_mm, half, z_mm=z, name=name)
         first, last = answer.ends_mm
         if first == last:
             return (spot,)

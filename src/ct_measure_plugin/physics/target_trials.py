@@ -224,8 +224,7 @@ def _contrast(
 ) -> tuple[Quantity, Quantity | NotMeasured]:
     if trial.spot is not None:
         return trial.spot.over_surroundings(math.prod(scene.spacing_mm), scene.unit)
-    if isinstance(found, WireMtf):
-        return found.height, found.contrast_to_noise
+    assert not isinstance(found, WireMtf)  # noqa: S101 - wires are tried from spots
     return found.contrast, found.contrast_to_noise
 
 

@@ -27,8 +27,12 @@ SHORT_REACH, FAIR_REACH = 1.7, 3.0
 #: Height of the spot over the noise, times the root of the slices: refused and cautioned below.
 LEAST_SIGNAL, FAIR_SIGNAL = 8.0, 25.0
 
-#: Fewest pixels a FWHM on one slice from which rings can be told apart, and shapes be fitted.
-LEAST_FOR_RINGS, LEAST_FOR_FIT, FAIR_FOR_FIT = 2.5, 1.8, 2.2
+#: Fewest pixels a FWHM from which rings can be told apart, shapes be fitted and a height be read,
+#: where all slices show the spot at one place of the pixel grid.
+LEAST_FOR_RINGS, LEAST_FOR_FIT, FAIR_FOR_FIT = 2.9, 1.8, 2.2
+
+#: Pixels by which a wire moves through the slices, less than which they show it at one place.
+ONE_PLACE = 0.25
 
 #: Share of a level that folded spectrum may make up: refused and cautioned beyond.
 MOST_FOLDED, FAIR_FOLDED = 0.1, 0.02
@@ -68,6 +72,11 @@ class WireFacts:
         """Height over noise times the root of the number of slices."""
         height = float(np.median(np.abs(self.trace.heights)))
         return height / self.noise * math.sqrt(len(self.sections)) if self.noise > 0 else math.inf
+
+    def coarser(self, least: float) -> bool:
+        """Tell whether a spot seen at one place of the grid has fewer pixels a FWHM than these."""
+        moved = self.trace.shift * (len(self.sections) - 1)
+        return moved < ONE_PLACE * self.pixel and self.fwhm < least * self.pixel
 
     def folding(self, frequency: float) -> float:
         """Return about how much of the spectrum beyond Nyquist is folded back to a frequency.
@@ -113,10 +122,10 @@ def wire_refusal(
             "draw the box around the wire alone",
         )
     least = {"rings": LEAST_FOR_RINGS, "fitted": LEAST_FOR_FIT}.get(method, 0.0)
-    if len(stack) == 1 and facts.fwhm < least * facts.pixel:
+    if facts.coarser(least):
         return NotMeasured(
-            f"the spot is {facts.fwhm / facts.pixel:.2g} pixels wide; with one slice the method"
-            f" '{method}' needs {least:g}",
+            f"the spot is {facts.fwhm / facts.pixel:.2g} pixels wide; at one place of the pixel"
+            f" grid the method '{method}' needs {least:g}",
             "take several slices of a tilted wire, or smaller pixels",
         )
     return None
@@ -183,13 +192,13 @@ def wire_cautions(
 ) -> list[Caution]:
     """Return what a reader must know; the slices' thickness is given in gaps."""
     found = []
-    coarse = facts.fwhm < FAIR_FOR_FIT * facts.pixel and len(facts.sections) == 1
-    if method == "fitted" and coarse:
+    if facts.coarser(FAIR_FOR_FIT) and not (method != "fitted" and facts.coarser(LEAST_FOR_FIT)):
+        what = "f10, width and height" if method == "fitted" else "width and height"
         found.append(
             Caution(
                 "aliasing",
-                f"The spot is only {facts.fwhm / facts.pixel:.1f} pixels wide on a single slice;"
-                " f10 may be off by one percent.",
+                f"The spot is only {facts.fwhm / facts.pixel:.1f} pixels wide, at one place of the"
+                f" pixel grid; {what} may be off by two percent.",
                 "Take several slices of a tilted wire, or smaller pixels.",
             )
         )

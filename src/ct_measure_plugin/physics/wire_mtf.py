@@ -25,6 +25,7 @@ from ct_measure_plugin.physics.mtf_curve import (
 from ct_measure_plugin.physics.psf_fit import fit_psf
 from ct_measure_plugin.physics.results import Curve, NotMeasured, Quantity
 from ct_measure_plugin.physics.wire_checks import (
+    LEAST_FOR_FIT,
     WireFacts,
     folded_levels,
     wire_cautions,
@@ -82,8 +83,8 @@ class WireMtf(MtfResult):
         "fitted", "transform" or "rings".
     """
 
-    width: Quantity
-    height: Quantity
+    width: Quantity | NotMeasured
+    height: Quantity | NotMeasured
     noise: Quantity
     contrast_to_noise: Quantity | NotMeasured
     lean: Quantity | None
@@ -204,7 +205,7 @@ def wire_mtf(  # noqa: PLR0913 - one keyword a setting
             steps,
             spectrum,
             direction_deg=direction_deg,
-            oversampled=method == "rings",
+            ring_mm=0.6 * trace.sigma if method == "rings" else None,
             slice_weights=weights,
         )
         doubt = doubt * worse
@@ -222,7 +223,7 @@ def wire_mtf(  # noqa: PLR0913 - one keyword a setting
         None if slice_gap_mm is None else (slice_thickness_mm or slice_gap_mm) / slice_gap_mm
     )
     places = place_doubts(sections[len(sections) // 2], trace, spectrum, slices)
-    around = Sums(sections, steps, spectrum, False, weights)
+    around = Sums(sections, steps, spectrum, None, weights)
     fields: dict[str, Any] = numbers | _spot_numbers(facts, spectrum, slices, unit, stack.shape)
     return WireMtf(
         **fields,
@@ -302,7 +303,7 @@ def _spot_numbers(
     unit: str,
     shape: tuple[int, ...],
 ) -> dict[str, object]:
-    width, height = spot_width(facts.sections, facts.fwhm, spectrum, slices)
+    width, height = _width_and_height(facts, spectrum, slices, unit)
     nz, ny, nx = shape
     dy, dx = spectrum.spacing_mm
     middle = np.array([(ny - 1) / 2 * dy, (nx - 1) / 2 * dx])
@@ -311,17 +312,34 @@ def _spot_numbers(
     count = spectrum.independent((ny, nx)) * share * slices
     doubt = facts.noise / math.sqrt(2 * max(count - 3, 1.0))
     ratio: Quantity | NotMeasured = NotMeasured("there is no noise", "none is needed")
-    if facts.noise > 0:
+    if isinstance(height, NotMeasured):
+        ratio = height
+    elif facts.noise > 0:
         value = abs(height.value) / facts.noise
         own = (height.uncertainty or 0.0) / abs(height.value)
         ratio = Quantity(value, "", value * math.hypot(own, doubt / facts.noise))
+    top = height.value if isinstance(height, Quantity) else float(np.median(facts.trace.heights))
     place = centers.mean(axis=0)
     return {
         "width": width,
-        "height": Quantity(height.value, unit, height.uncertainty),
+        "height": height,
         "noise": Quantity(facts.noise, unit, doubt),
         "contrast_to_noise": ratio,
-        "psf": radial_psf(facts.sections, height.value, facts.fwhm),
+        "psf": radial_psf(facts.sections, top, facts.fwhm),
         "center_mm": (float(place[0]), float(place[1])),
         "ends_mm": tuple((float(p[0]), float(p[1])) for p in (centers[0], centers[nz - 1])),
     }
+
+
+def _width_and_height(
+    facts: WireFacts, spectrum: NoiseSpectrum, slices: float, unit: str
+) -> tuple[Quantity, Quantity] | tuple[NotMeasured, NotMeasured]:
+    if facts.coarser(LEAST_FOR_FIT):
+        none = NotMeasured(
+            f"the spot is {facts.fwhm / facts.pixel:.2g} pixels wide at one place of the pixel"
+            " grid: its top may lie between the pixels",
+            "take several slices of a tilted wire, or smaller pixels",
+        )
+        return none, none
+    width, height = spot_width(facts.sections, facts.fwhm, spectrum, slices)
+    return width, Quantity(height.value, unit, height.uncertainty)

@@ -13,6 +13,8 @@ from typing import TYPE_CHECKING
 import numpy as np
 from scipy import special
 
+from ct_measure_plugin.physics.wire_rings import ring_areas
+
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
@@ -147,7 +149,7 @@ def transform(
     spectrum: NoiseSpectrum,
     *,
     direction_deg: float | None = None,
-    oversampled: bool = False,
+    ring_mm: float | None = None,
     slice_weights: Floats | None = None,
 ) -> tuple[Floats, Floats]:
     """Return MTF and standard uncertainty at frequencies in mm⁻¹, for independent slices.
@@ -165,16 +167,16 @@ def transform(
     direction_deg : float, optional
         Direction of the frequencies, counter-clockwise on the screen from +x; by default the mean
         over all directions.
-    oversampled : bool
+    ring_mm : float, optional
         Weigh pixels by the area of the rings that they stand for in all slices together, rather
-        than all alike.
+        than all alike; sums are exact of all that is smooth over this length.
 
     Notes
     -----
     The two-dimensional transform about the centre of symmetry is real; its real part is not biased
     by noise as its modulus would be. Averaged over directions it is a sum with J0(2πfr).
     """
-    sums = Sums(sections, spacing_mm, spectrum, oversampled, slice_weights)
+    sums = Sums(sections, spacing_mm, spectrum, ring_mm, slice_weights)
     mtf = sums.mtf(frequency, direction_deg)
     few = np.linspace(0, frequency[-1], NOISE_STEPS)
     doubt = sums.doubt(few, np.interp(few, frequency, mtf), direction_deg)
@@ -189,13 +191,13 @@ class Sums:
         sections: list[Section],
         spacing_mm: tuple[float, float],
         spectrum: NoiseSpectrum,
-        oversampled: bool,
+        ring_mm: float | None,
         slice_weights: Floats | None,
     ) -> None:
         even = np.full(len(sections), 1 / len(sections))
-        self._each = even if slice_weights is None or oversampled else slice_weights
-        if oversampled:
-            areas = _ring_areas(sections)
+        self._each = even if slice_weights is None or ring_mm is not None else slice_weights
+        if ring_mm is not None:
+            areas = ring_areas(sections, ring_mm)
         else:
             cell = spacing_mm[0] * spacing_mm[1]
             areas = [np.full(sections[0].value.shape, cell * w) for w in self._each]
@@ -253,22 +255,6 @@ def _summed(place: Floats, value: Floats, frequency: Floats, direction_deg: floa
     middle = np.bincount(k, place)[used] / count[used]
     found: Floats = _wave(np.outer(frequency, middle), direction_deg) @ np.bincount(k, value)[used]
     return found
-
-
-def _ring_areas(sections: list[Section]) -> list[Floats]:
-    """Return the area of the ring that each pixel stands for among all slices' pixels.
-
-    Pixels sorted by radius; each shares the ring that reaches half-way to the neighbouring pairs.
-    """
-    radius = np.concatenate([s.radius.ravel() for s in sections])
-    order = np.argsort(radius, kind="stable")
-    pairs = len(order) // 2
-    square = (math.pi * radius[order[: 2 * pairs]] ** 2).reshape(pairs, 2)
-    border = np.concatenate([[0.0], (square[1:, 0] + square[:-1, 1]) / 2, [square[-1, 1]]])
-    area = np.zeros(len(order))
-    area[order[: 2 * pairs]] = np.repeat(np.diff(border) / 2, 2)
-    shape = sections[0].value.shape
-    return [part.reshape(shape) for part in np.split(area, len(sections))]
 
 
 def phase_weights(trace: WireTrace, spacing_mm: tuple[float, float]) -> tuple[Floats, float]:

@@ -7,13 +7,14 @@ from functools import cache
 import numpy as np
 import pytest
 from noise_fields import SPECTRA, field
+from scipy.stats import norm
 
 import ct_measure_plugin as ctm
 from ct_measure_plugin.errors import ArgumentError
 from ct_measure_plugin.physics import ring_artefact
 from ct_measure_plugin.physics.results import NotMeasured
 from ct_measure_plugin.physics.ring_layers import CORES, Deviations, Layer
-from ct_measure_plugin.physics.ring_polar import to_polar
+from ct_measure_plugin.physics.ring_polar import Sight, to_polar
 from ct_measure_plugin.virtual_scanner import samples
 from ct_measure_plugin.virtual_scanner.truth import Truth
 
@@ -67,7 +68,7 @@ def alarms(spectrum, repeats: int) -> int:
 
 def detected(radius: float, slices: int, repeats: int) -> int:
     """Count the scans that show a ring of half the pixel SD over 60 % of the circle at its
-    place, to three radial steps."""
+    place, to 1.5 mm."""
     rng = np.random.default_rng(52)
     found = 0
     for _ in range(repeats):
@@ -79,14 +80,31 @@ def detected(radius: float, slices: int, repeats: int) -> int:
     return found
 
 
+def most_detected(radius: float, slices: int, threshold: float) -> float:
+    """Return how often an observer finds the same ring who knows its shape and arc, the noise's
+    spectrum, and all but its radius: the matched filter, whose signal-to-noise ratio d' is
+    d'² = 0.6 · 2πr · slices · 2 ∫ |W|²/S df on a circle that is long against the correlation of
+    the noise. A threshold t against false alarms leaves Φ(d' − t) (signal detection theory; H. H.
+    Barrett and K. J. Myers, Foundations of Image Science, 2004)."""
+    f = (np.arange(2000) + 0.5) / 2000  # up to the pixels' Nyquist frequency
+    shape = np.sqrt(f) * 0.5 * (1 + np.cos(np.pi * f))
+    t = np.linspace(-2, 2, 801)
+    top = np.abs(np.cos(2 * np.pi * np.outer(t, f) - np.pi / 4) @ shape * 2 / 2000).max()
+    power = backprojection(f)
+    pixel = np.sum(2 * np.pi * f * power) / 2000
+    ratio = 2 * np.sum((shape / top) ** 2 / power) / 2000
+    d = 0.5 * np.sqrt(pixel * ratio * 0.6 * 2 * np.pi * radius * slices)
+    return float(norm.cdf(d - threshold))
+
+
 def test_noise_is_called_a_ring_at_most_once_in_twenty():
-    """More than 3 of 24 come once in 34 times at 5 %."""
-    assert alarms(backprojection, 24) <= 3
+    """More than 3 of 20 come once in 63 times at 5 %."""
+    assert alarms(backprojection, 20) <= 3
 
 
 def test_a_ring_of_half_the_sd_over_most_of_the_circle_is_found():
-    """At 25 mm in four slices; at least 19 of 20."""
-    assert detected(25.0, slices=4, repeats=20) >= 19
+    """At 20 mm in two slices."""
+    assert detected(20.0, slices=2, repeats=12) >= 11
 
 
 @pytest.mark.long
@@ -97,9 +115,18 @@ def test_false_alarms_for_every_texture(name):
 
 
 @pytest.mark.long
-@pytest.mark.parametrize(("radius", "slices"), [(15, 4), (20, 4), (25, 2)])
+@pytest.mark.parametrize(("radius", "slices"), [(10, 4), (20, 2), (35, 1)])
 def test_detection_at_every_radius(radius, slices):
     assert detected(radius, slices, 60) >= 57  # 95 %
+
+
+@pytest.mark.long
+@pytest.mark.parametrize("radius", [15, 25])
+def test_detection_is_near_what_the_noise_allows(radius):
+    """In a single slice; 80 scans fix a share to 5 %. The ring's place, arc, width and the
+    noise's spectrum are unknown here and known to the bound, which is worth a fifth of d'."""
+    bound = most_detected(radius, 1, threshold=4.4)
+    assert bound - 0.30 < detected(radius, 1, 80) / 80 < bound + 0.05
 
 
 # --- what is found -------------------------------------------------------------------------------
@@ -132,8 +159,8 @@ def test_the_amplitudes_of_a_simulated_scan_with_bad_channels():
     found = ring_artefact(volume.hu, spacing_mm=SPACING, center_mm=center, inside=inside)
     grid = np.linspace(0, 52, 2081)
     image = np.interp(r, grid, truth.rings(grid))
-    polar = to_polar([image], spacing_mm=SPACING, center_mm=center, inside=inside)
-    plain = Deviations(Layer(polar, CORES[0]), polar.means)
+    polar = to_polar(image, Sight(inside, SPACING, center))
+    plain = Deviations(Layer(polar, CORES[0]), polar.means[None])
     weight = plain.layer.weight.sum(axis=1)
     expected = plain.sums[0].sum(axis=1)[weight > 0] / weight[weight > 0]
     z = (found.amplitude.y - expected) / found.amplitude.y_uncertainty
@@ -141,9 +168,31 @@ def test_the_amplitudes_of_a_simulated_scan_with_bad_channels():
     assert np.abs(z).max() < 4
     index = np.sqrt(np.mean(expected**2))
     assert abs(found.ring_index.value - index) < 3 * found.ring_index.uncertainty
-    places = sorted(ring.radius.value for ring in found.rings[:3])
-    assert places == pytest.approx([10.25, 22.25, 38.25], abs=0.6)
-    assert found.rings_found.value >= 3
+    places = sorted(ring.radius.value for ring in found.rings)  # these, and no side lobe of them
+    assert places == pytest.approx([10.25, 22.25, 38.25], abs=0.5)  # a pixel
+    assert {ring.arc.value for ring in found.rings} == {100.0}
+
+
+@pytest.mark.parametrize("strength", [4.0, 25.0])
+@pytest.mark.parametrize("radii", [(20.0,), (12.0, 20.3, 31.0)])
+def test_a_strong_ring_is_one_ring(radii, strength):
+    """Up to 25 times the SD of the pixels, of either sign: its side lobes are none."""
+    image = noise(np.random.default_rng(59))
+    wave = sum((-1) ** k * channel_ring(r) for k, r in enumerate(radii))
+    found = measured(image + strength * image.std() * wave)
+    places = sorted(ring.radius.value for ring in found.rings)
+    assert places == pytest.approx(radii, abs=0.4)
+    assert min(ring.significance.value for ring in found.rings) > 10
+
+
+def test_a_weak_ring_beside_a_strong_one_is_as_strong_as_alone():
+    image = noise(np.random.default_rng(60))
+    wave = image.std() * 1.5 * channel_ring(24.0)
+    (alone,) = measured(image + wave).rings
+    strong, weak = measured(image + wave + 5.0 * image.std() * channel_ring(30.0)).rings
+    assert strong.radius.value == pytest.approx(30.0, abs=0.5)
+    assert weak.radius.value == pytest.approx(24.0, abs=1.0)
+    assert weak.significance.value == pytest.approx(alone.significance.value, rel=0.15)
 
 
 def test_the_uncertainty_of_the_amplitude_is_its_scatter_without_rings():
@@ -152,7 +201,9 @@ def test_the_uncertainty_of_the_amplitude_is_its_scatter_without_rings():
     z = np.array([f.amplitude.y / f.amplitude.y_uncertainty for f in found])
     # 12 times about 80 steps, a third of them independent: their spread to 4 %
     assert z.std() == pytest.approx(1.0, abs=0.12)
-    assert found[0].amplitude.x[0] == pytest.approx(6.25)  # the inner four steps are surroundings
+    assert found[0].amplitude.x[0] == pytest.approx(
+        6.375, abs=0.01
+    )  # the inner four pixels are sides
 
 
 def test_a_cup_and_a_shading_are_no_rings():

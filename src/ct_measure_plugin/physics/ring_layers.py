@@ -1,4 +1,4 @@
-"""Cores over their surroundings in polar means: deviations, their noise, and scores of arcs."""
+"""Profiles of rings in polar means: deviations, their noise, and scores of arcs."""
 
 from __future__ import annotations
 
@@ -16,19 +16,33 @@ if TYPE_CHECKING:
 
     Floats = NDArray[np.float64]
 
-__all__ = ["ARCS", "CORES", "Deviations", "Layer", "smooth_matrix"]
+__all__ = [
+    "ARCS",
+    "CORES",
+    "Deviations",
+    "Layer",
+    "channel_profile",
+    "core_profile",
+    "smooth_matrix",
+]
 
-#: Widths of the core in radial steps.
-CORES = (1, 3, 5)
+#: Widths of the core in radial steps: 1, 3 and 5 pixels.
+CORES = (2, 6, 10)
 
 #: Lengths of the arcs in sectors.
 ARCS = (6, 10, 14, 18, 24)
 
 #: Steps on either side of a core of each width that stand for its surroundings.
-SIDES = (4, 6, 10)
+SIDES = (8, 12, 20)
+
+#: Steps on either side of a channel's ring over which its profile is followed.
+REACH = 12
 
 #: Degree of the polynomial in the radius that describes the strength of the noise.
 DEGREE = 3
+
+#: Least power of the noise anywhere, as a share of the median.
+LEAST_NOISE = 0.4
 
 #: An arc counts if at least this share of it lies in the region.
 FILLED = 0.8
@@ -91,16 +105,20 @@ class Deviations:
         hat = smooth_matrix(len(index), freedom[index], degree)
         own = energy[:, index]
         most = 1.0 + 3.0 * np.sqrt(2.0 / freedom[index])
-        curve = np.median(own, axis=1, keepdims=True)
+        middle = np.median(own, axis=1, keepdims=True)
+        curve = middle
         for _ in range(3):
-            curve = np.maximum(np.minimum(own, curve * most) @ hat.T, 0.1 * curve)
+            curve = np.maximum(np.minimum(own, curve * most) @ hat.T, LEAST_NOISE * middle)
         found[:, index] = np.sqrt(curve)
         return found
 
-    def scores(self) -> Floats:
-        """Return |sum| over its SD for every arc, shape (sets, arcs, steps, starts)."""
+    def scores(self, noise: Floats | None = None) -> Floats:
+        """Return |sum| over its SD for every arc, shape (sets, arcs, steps, starts).
+
+        The SD is that of given noise, or of its own.
+        """
         total: Floats = np.abs(_arcs(self.sums))
-        noise = self.noise[:, None, :, None]
+        noise = (self.noise if noise is None else noise)[:, None, :, None]
         return total * self.layer.scale / np.where(noise > 0, noise, np.inf)
 
     def largest(self) -> Floats:
@@ -138,15 +156,25 @@ class Deviations:
 
 
 class Layer:
-    """The geometry of all cores of one width.
+    """The geometry of all rings of one profile.
+
+    Parameters
+    ----------
+    polar : Polar
+        The geometry.
+    core : int
+        The width in steps.
+    taps : ndarray, optional
+        A whitening filter.
+    profile : ndarray, optional
+        Weights along the radius; by default those of a core minus its surroundings.
 
     Attributes
     ----------
     core : int
         The width in steps.
     kernel : ndarray
-        Weights along the radius: core minus surroundings, behind a whitening filter if one is
-        given by its taps.
+        The profile behind the filter.
     weight : ndarray, shape (steps, sectors)
         Pixels of each core; 0 where a side is missing.
     valid : ndarray of bool, shape (steps,)
@@ -154,14 +182,14 @@ class Layer:
     scale : ndarray, shape (arcs, steps, starts)
         One over the root of an arc's pixels; 0 for an arc that is not in the region.
     arc : ndarray, shape (steps,)
-        Length of a sector in steps.
+        Length of a sector in pixels.
     """
 
-    def __init__(self, polar: Polar, core: int, taps: Floats | None = None) -> None:
+    def __init__(
+        self, polar: Polar, core: int, taps: Floats | None = None, profile: Floats | None = None
+    ) -> None:
         self.core = core
-        side = SIDES[CORES.index(core)]
-        flank = np.full(side, -0.5 / side)
-        self.kernel = np.concatenate([flank, np.full(core, 1.0 / core), flank])
+        self.kernel = core_profile(core) if profile is None else profile
         if taps is not None:
             self.kernel = np.convolve(self.kernel, taps)
         held = (polar.count > 0).astype(float)
@@ -169,11 +197,11 @@ class Layer:
         full = ndimage.correlate1d(held, np.ones(reach), axis=0, mode="constant")
         self.whole = full > reach - 0.5
         self.whole[self.whole.sum(axis=1) < FEWEST_SECTORS] = False
-        pixels = ndimage.correlate1d(polar.count, np.ones(core), axis=0, mode="constant")
+        pixels = ndimage.correlate1d(polar.count, _box(core), axis=0, mode="constant")
         self.weight: Floats = np.where(self.whole, pixels, 0.0)
         self.valid: NDArray[np.bool_] = self.whole.any(axis=1)
         self.group = polar.group
-        self.arc = 2 * np.pi * polar.radius_mm / polar.step_mm / SECTORS
+        self.arc = polar.arc
         weight = _arcs(self.weight[None])[0]
         inside = _arcs((self.weight > 0).astype(float)[None])[0]
         good = inside >= FILLED * np.array(ARCS)[:, None, None]
@@ -193,6 +221,47 @@ class Layer:
         groups = np.array(ARCS)[:, None] / self.group[None, :]
         found: Floats = np.sqrt(1.0 + 2.0 * rho * np.maximum(1.0 - 1.0 / groups, 0.0))
         return found[:, :, None]
+
+
+def core_profile(core: int) -> Floats:
+    """Return a core minus its surroundings, each of weight 1.
+
+    Widths are whole numbers of pixels, so that their borders fall on the middle of a step, which
+    counts half to either side.
+    """
+    side = SIDES[CORES.index(core)]
+    found = np.zeros(core + 2 * side + 1)
+    found[side : side + core + 1] = _box(core) / core
+    flank = 0.5 * _box(side) / side
+    found[: side + 1] -= flank
+    found[side + core :] -= flank
+    return found
+
+
+def channel_profile() -> Floats:
+    """Return the ring of a bad channel behind a filter that makes its noise white.
+
+    The backprojection of one reading is a step back from its tangent circle: far from the centre
+    its spectrum is that of the kernel over √f, an eighth of a turn out of phase (stationary
+    phase). The noise's is the kernel times √f, the kernel a window times f: the filter that
+    whitens the noise leaves of the ring the phase alone, (1 + H)/√2 with H the Hilbert transform.
+    Levels and slopes are taken out, the ends are tapered.
+    """
+    k = np.arange(-REACH, REACH + 1)
+    odd = np.where(k % 2 != 0, 2.0 / (np.pi * np.where(k == 0, 1, k)), 0.0)
+    window = np.cos(0.5 * np.pi * k / (REACH + 1)) ** 2
+    shape = ((k == 0) + odd) * window
+    level = window / window.sum()
+    slope = k * window / np.sum(k**2 * window)
+    found: Floats = shape - shape.sum() * level - np.sum(shape * k) * slope
+    return found
+
+
+def _box(width: int) -> Floats:
+    """Return the weights of steps in a box whose borders fall on the middle of a step."""
+    found = np.ones(width + 1)
+    found[[0, -1]] = 0.5
+    return found
 
 
 def smooth_matrix(count: int, weight: Floats, degree: int) -> Floats:

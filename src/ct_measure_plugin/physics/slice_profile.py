@@ -280,7 +280,8 @@ def _measured(
     agreeing = fit_shapes(
         samples, blur, guess.middle.value, guess.width.value, base=ramp is not None
     )
-    scale = 0.0 if ramp is None else ramp.tangent_doubt / ramp.tangent
+    steep = 0.0 if ramp is None else ramp.tangent_doubt * math.sqrt(samples.shared)
+    scale = 0.0 if ramp is None else steep / ramp.tangent
     numbers = numbers_of(agreeing, blur, scale)
     width = numbers["fwhm"]
     if isinstance(width, NotMeasured):
@@ -295,8 +296,8 @@ def _measured(
         at, doubt = agreeing.told(agreeing.middle)
         middle = Quantity(float(at), "mm", float(doubt))
     else:
-        steep = math.degrees(ramp.tangent_doubt / (1 + ramp.tangent**2))
-        angle = Quantity(math.degrees(math.atan(ramp.tangent)), "°", steep)
+        leaning = math.degrees(steep / (1 + ramp.tangent**2))
+        angle = Quantity(math.degrees(math.atan(ramp.tangent)), "°", leaning)
     height, own = agreeing.told(agreeing.height)
     doubts = (float(own), agreeing.height_doubt, samples.scale_doubt * float(height))
     fields: dict[str, Any] = mtf | numbers

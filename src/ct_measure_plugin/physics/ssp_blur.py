@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -17,6 +17,9 @@ __all__ = ["FWHM", "SHARP", "Blur"]
 
 #: FWHM of a Gaussian over its SD.
 FWHM = 2 * math.sqrt(2 * math.log(2))
+
+#: Relative standard uncertainty of the resolution in the slice, for which a Gaussian stands.
+DOUBTED = 0.1
 
 #: Layers into which an object is cut, and the SD of the Gaussian that stands for each, in layers.
 LAYERS, SOFT = 12, 0.45
@@ -32,11 +35,14 @@ class Blur:
         Where they stand, mm, and what each holds, 1 in all.
     sigma : float
         SD of each, mm.
+    within : float
+        The part of `sigma` that the resolution within the slice has, mm.
     """
 
     places: Floats
     weights: Floats
     sigma: float
+    within: float = 0.0
 
     @classmethod
     def of(cls, target: str, size: float, tangent: float = 0.0, in_plane: float = 0.0) -> Blur:
@@ -55,7 +61,7 @@ class Blur:
         within = in_plane / FWHM * tangent
         half = size * math.hypot(1.0, tangent) / 2
         if half == 0:
-            return cls(np.zeros(1), np.ones(1), within)
+            return cls(np.zeros(1), np.ones(1), within, within)
         ends = np.linspace(-1, 1, LAYERS + 1)
         below, variance = {
             "bead": ((3 * ends - ends**3) / 4, 1 / 5),
@@ -65,11 +71,15 @@ class Blur:
         weights, sigma = np.diff(below), SOFT * 2 / LAYERS
         places = (ends[1:] + ends[:-1]) / 2
         places *= math.sqrt((variance - sigma**2) / float(weights @ places**2))
-        return cls(places * half, weights, math.hypot(sigma * half, within))
+        return cls(places * half, weights, math.hypot(sigma * half, within), within)
 
     def wider(self, variance: float) -> Blur:
         """Return this with a further variance, mm²."""
-        return Blur(self.places, self.weights, math.sqrt(self.sigma**2 + variance))
+        return replace(self, sigma=math.sqrt(self.sigma**2 + variance))
+
+    def doubted(self) -> Blur:
+        """Return this with a resolution in the slice that is lower by its standard uncertainty."""
+        return self.wider(self.within**2 * ((1 - DOUBTED) ** 2 - 1))
 
     @property
     def variance(self) -> float:

@@ -69,7 +69,8 @@ class Agreeing:
     excess : ndarray, shape (k,)
         Chi-squared above the best's, over the surplus.
     covariance, steps : ndarray, shapes (4, 4) and (4,)
-        Of the best's unknowns; the last four profiles differ from the best by a step in each.
+        Of the best's unknowns; the last four profiles differ from the best by a step in each. The
+        one before them is the best for another resolution in the slice.
     surplus : float
         Factor on the variance of the noise: above 1 where no shape fits within it.
     misfit : float
@@ -92,17 +93,20 @@ class Agreeing:
     def told(self, values: Floats) -> tuple[Floats, Floats]:
         """Return the best's of values, shape (k, ...), and their standard uncertainty.
 
-        The larger of two: the covariance of the best carried through, and, divided by 1.96, the
-        largest difference from the best among profiles that agree at 95 %, whose chi-squared is
-        higher by 1.96² at most.
+        The largest difference from the best, over 1.96, among profiles that agree at 95 %: whose
+        chi-squared is higher by 1.96² at most. Where too few were found, the covariance of the best
+        carried through, if that is larger. To this is added what the uncertainty of the
+        resolution in the slice does.
         """
         best = values[0]
-        slopes = np.tensordot(np.diag(1 / self.steps), values[-4:] - best, 1)
-        linear = np.einsum("i...,ij,j...->...", slopes, self.covariance, slopes)
         scale = np.maximum(np.sqrt(np.maximum(self.excess, 0.0)), NINETY_FIVE)
         scale = scale.reshape(-1, *(1,) * (values.ndim - 1))
         among = np.max(np.abs(values - best) / scale, axis=0)
-        return best, np.maximum(np.sqrt(np.maximum(linear, 0.0)), among)
+        if len(self.excess) < TRIALS / 8:
+            slopes = np.tensordot(np.diag(1 / self.steps), values[-4:] - best, 1)
+            linear = np.einsum("i...,ij,j...->...", slopes, self.covariance, slopes)
+            among = np.maximum(np.sqrt(np.maximum(linear, 0.0)), among)
+        return best, np.hypot(among, values[-5] - best)
 
 
 def fit_shapes(
@@ -267,18 +271,28 @@ class _Problem:
         found: Floats = np.linalg.inv(jacobian.T @ jacobian + np.diag(12 / self.size**2))
         return found
 
+    def other(self, best: Floats) -> Floats:
+        """Return the best, (1, 4), for a resolution in the slice lower by its uncertainty."""
+        if self.blur.within == 0:
+            return best
+        blur, self.blur = self.blur, self.blur.doubted()
+        found = self.descended(best, MORE)
+        self.blur = blur
+        return found
+
     def answer(self, points: Floats, chi2: Floats) -> Agreeing:
         """Return the best, descended once more, what agrees, and the best's neighbours."""
         order = np.argsort(chi2, kind="stable")
         points = np.vstack([self.descended(points[order[:1]], MORE), points[order]])
         step = self.inward(points[0])
-        points = np.vstack([points, points[0] + np.diag(step)])
+        points = np.vstack([points, self.other(points[:1]), points[0] + np.diag(step)])
         form, height = self.forms(points)
         chi2 = np.sum((self.value - height[:, None] * form) ** 2, axis=1)
         surplus = self.surplus(float(chi2[0]))
         excess = np.maximum(chi2 - chi2[0], 0.0) / surplus
+        excess[-5] = np.inf  # no alternative for the same blur
         kept = excess < AGREES
-        kept[-4:] = True
+        kept[-5:] = True
         shape = self.shapes(points[:1])
         read = shape.at(self.z - points[0, 0], self.blur) / shape.at(np.zeros(1), self.blur)
         rest = self.read - height[0] * read[0]

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 import numpy as np
-from scipy import linalg
+from scipy import linalg, ndimage, special
 
 from ct_measure_plugin.physics.edge_line import pixel_grid
 from ct_measure_plugin.physics.mtf_curve import width_at
@@ -37,6 +37,12 @@ WITHIN, BEYOND, UPTO = 3.0, 4.0, 8.0
 #: out.
 KEPT_WIDTH = 0.6
 
+#: Slices whose scatter along the climb alone tells the uncertainty of the angle.
+MANY_SLICES = 8
+
+#: SD in pixels of the Gaussian that calms the slices in which a ramp is looked for.
+SMOOTHED = 1.0
+
 #: Widths of a wire that are averaged: all of it.
 WIRE_WIDTH = 3.0
 
@@ -63,6 +69,8 @@ class SspSamples:
         Variance over which each sample is an average along z, mm².
     scale_doubt : float
         Relative standard uncertainty of the common scale of all samples.
+    shared : float
+        Factor on the variance of a mean over slices, whose noise is correlated.
     """
 
     z: Floats
@@ -72,6 +80,7 @@ class SspSamples:
     freedom: float
     smeared: float = 0.0
     scale_doubt: float = 0.0
+    shared: float = 1.0
 
     @property
     def noise(self) -> float:
@@ -187,7 +196,9 @@ def find_ramp(
         one along which it is longest, which is right for a wire.
     """
     y, x = pixel_grid((level.shape[1], level.shape[2]), spacing_mm)
-    signal = level * np.sign(np.sum(level[np.abs(level) > 0.5 * np.abs(level).max()]))
+    # pixels that noise alone lifts over the floor would draw the middle to that of the box
+    smooth = ndimage.gaussian_filter(level, (0.0, SMOOTHED, SMOOTHED), mode="nearest")
+    signal = smooth * np.sign(np.sum(smooth[np.abs(smooth) > 0.5 * np.abs(smooth).max()]))
     floor = 0.25 * float(np.quantile(signal, 0.999))
     inside = np.maximum(signal - floor, 0.0)
     total = inside.sum(axis=(1, 2))
@@ -214,8 +225,14 @@ def find_ramp(
     z = (whole - whole.mean()) * gap
     shift = z @ centers / float(z @ z)  # mm in the slice per mm of height
     left = centers - centers.mean(axis=0) - z[:, None] * shift
-    doubt = math.sqrt(float(np.sum(left**2)) / max(2 * len(whole) - 4, 1) / float(z @ z))
     length = float(np.hypot(*shift))
+    n = len(whole)
+    both = float(np.sum(left**2)) / (2 * n - 4)
+    # a wire's image is long along the climb, a ramp's across it
+    own = float(np.sum((left @ shift) ** 2)) / max(length, 1e-9) ** 2 / (n - 2)
+    scatter = own if n >= MANY_SLICES else max(own, both)
+    student = float(special.stdtrit(n - 2 if n >= MANY_SLICES else 2 * n - 4, 0.975)) / 1.96
+    doubt = student * math.sqrt(scatter / float(z @ z))
     if length < 0.2:
         return NotMeasured(
             f"it moves only {length * gap:.2g} mm from slice to slice: too steep for a ramp",
@@ -253,37 +270,56 @@ def ramp_samples(
     pixel = min(spacing_mm)
     half, width = _across(level[ramp.slices], across, pixel)
     used = np.abs(across - half) <= (WIRE_WIDTH if thin else KEPT_WIDTH) * width / 2
-    shape = np.ones_like(across)
+    shape, lever = np.ones_like(across), 0.0
     if thin:
-        mean = level[ramp.slices].mean(axis=0)[used]
-        half = float(mean @ across[used]) / float(mean.sum())
-        variance = float(mean @ (across[used] - half) ** 2) / float(mean.sum())
-        shape = np.exp(-((across - half) ** 2) / (2 * variance))
+        shape, lever = _wire_shape(level[ramp.slices].mean(axis=0), across, used)
     z = np.stack([along * ramp.tangent - (k - reference) * gap for k in range(len(level))])
-    v, g = level[:, used].ravel(), np.tile(shape[used], len(level))
-    at = z[:, used].ravel()
+    pooled = z[:, used].ravel(), level[:, used].ravel(), np.tile(shape[used], len(level))
     step = pixel * ramp.tangent / 2
-    rough = _pooled(at, v, g, step)
-    wide = width_at(rough[0], np.abs(rough[1] - np.median(rough[1])), 0.5)
-    step = max(step, wide / FINEST)
-    place, mean, count, smeared = _pooled(at, v, g, step)
-    top = float(rough[0][np.argmax(np.abs(rough[1] - np.median(rough[1])))])
+    place, mean, *_ = _pooled(*pooled, step)
+    signal = np.abs(mean - np.median(mean))
+    wide, top = width_at(place, signal, 0.5), float(place[np.argmax(signal)])
+    place, mean, count, smeared = _pooled(*pooled, max(step, wide / FINEST))
     near = np.abs(place - top) <= SEEN * wide
     away = np.abs(z - top) > CLEAR * wide
-    spectrum = mean_spectrum(level, away, spacing_mm)
+    spectrum, alike = mean_spectrum(level, away, spacing_mm), slice_correlation(level, away)
     covariance = climb_covariance(
         place[near],
         count[near],
         spectrum,
-        slice_correlation(level, away),
+        alike,
         length=float(used.sum()) * spacing_mm[0] * spacing_mm[1] / float(np.ptp(along[used])),
         gap=gap,
         tangent=ramp.tangent,
         direction=math.atan2(cy, cx),
     )
-    projected = pixel * ramp.tangent
-    told = freedom(spectrum, away)
-    return SspSamples(place[near], mean[near], projected, covariance, told, smeared)
+    shared = 2 * float(alike.sum()) - 1
+    noise = float(level[away].std()) if away.any() else 0.0
+    return SspSamples(
+        z=place[near],
+        value=mean[near],
+        step=pixel * ramp.tangent,
+        covariance=covariance,
+        freedom=freedom(spectrum, away),
+        smeared=smeared,
+        scale_doubt=lever * noise * math.sqrt(shared / len(ramp.slices)),
+        shared=shared,
+    )
+
+
+def _wire_shape(mean: Floats, across: Floats, used: NDArray[np.bool_]) -> tuple[Floats, float]:
+    """Return a wire's Gaussian across its climb, and what a unit of noise does to its height.
+
+    Height and width are fitted to the same wire: a width too large by a share makes the height too
+    small by half of it.
+    """
+    value, x = mean[used], across[used]
+    total = float(value.sum())
+    half = float(value @ x) / total
+    variance = float(value @ (x - half) ** 2) / total
+    shape = np.exp(-((across - half) ** 2) / (2 * variance))
+    pulls = ((x - half) ** 2 - variance) / total
+    return shape, math.sqrt(float(pulls @ pulls)) / (4 * abs(variance))
 
 
 def _pooled(z: Floats, v: Floats, g: Floats, step: float) -> tuple[Floats, Floats, Floats, float]:

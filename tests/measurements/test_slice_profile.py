@@ -24,8 +24,8 @@ def test_the_sample_beads_give_their_truth(thin, place):
     box = ctm.regions.Box(place, (13.0, 13.0), z_mm=(44.0, 56.0))
     found = ctm.measure("slice_profile", thin, box, object_size_mm=0.5)
     assert abs(found.fwhm.value - 2.5) < 3 * found.fwhm.uncertainty
-    # corners of the trapezoid fall between slices: 0.1 mm
-    assert abs(found.fwtm.value - 3.3) < 0.1 + 3 * found.fwtm.uncertainty
+    assert abs(found.fwtm.value - 3.3) < 3 * found.fwtm.uncertainty
+    assert found.fwtm.uncertainty < 0.1
     truth = np.sinc(2.5 * found.mtf.x) * np.sinc(found.mtf.x)
     np.testing.assert_allclose(found.mtf.y, truth, atol=0.03)
     assert found.center_mm == pytest.approx(place, abs=0.05)
@@ -39,7 +39,8 @@ def test_the_sample_ramps_give_their_truth(thin, place, towards):
     )
     assert found.angle.value == pytest.approx(25.0, abs=0.1)
     assert abs(found.fwhm.value - 2.5) < 3 * found.fwhm.uncertainty
-    assert abs(found.fwtm.value - 3.3) < 0.02 + 3 * found.fwtm.uncertainty
+    assert abs(found.fwtm.value - 3.3) < 3 * found.fwtm.uncertainty
+    assert found.fwtm.uncertainty < 0.05
     one = ctm.measure(
         "slice_profile",
         thin,
@@ -50,7 +51,7 @@ def test_the_sample_ramps_give_their_truth(thin, place, towards):
         angle_deg=25.0,
         climb_deg=0.0 if towards > 0 else 180.0,
     )
-    assert abs(one.fwhm.value - 2.5) < 3 * one.fwhm.uncertainty + 0.02
+    assert abs(one.fwhm.value - 2.5) < 3 * one.fwhm.uncertainty
 
 
 def test_thick_steps_of_a_ramp_serve_too():
@@ -61,6 +62,8 @@ def test_thick_steps_of_a_ramp_serve_too():
         "slice_profile", volume, box, target="ramp", object_size_mm=0.3, in_plane_fwhm_mm=0.9
     )
     assert abs(found.fwhm.value - 2.5) < 3 * found.fwhm.uncertainty
+    # how sharp its sides are hangs on the resolution in the slice, which a Gaussian stands for
+    assert abs(found.fwtm.value - 2.5) < 3 * found.fwtm.uncertainty
     assert found.angle.value == pytest.approx(25.0, abs=0.2)
 
 

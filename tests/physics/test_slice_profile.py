@@ -65,11 +65,11 @@ def climbing(shape, gap, *, angle=25.0, turn=0.0, count=9, width=10.0, sigma=0.0
 )
 @pytest.mark.parametrize("offset", [0.0, 0.11, 0.2])
 def test_a_beads_widths_are_the_profiles(shape, fwhm, fwtm, offset):
-    """An increment of a fifth of the width; a corner between two samples costs 2 % of the FWTM."""
+    """An increment of a fifth of the width."""
     stack, z = bead(shape, 0.4, offset=offset)
     found = slice_profile(stack, spacing_mm=(PIXEL, PIXEL), positions_mm=z, object_size_mm=0.0)
     assert found.fwhm.value == pytest.approx(fwhm, rel=5e-3)
-    assert found.fwtm.value == pytest.approx(fwtm, rel=0.003 if shape is gauss else 0.025)
+    assert found.fwtm.value == pytest.approx(fwtm, rel=5e-3)
     assert found.middle.value == pytest.approx(offset - z[0], abs=0.01)
     assert found.center_mm == pytest.approx((10.13, 9.79), abs=5e-3)
     assert found.angle is None
@@ -190,20 +190,95 @@ def test_a_beads_size_is_taken_out():
     shape = lambda z: gauss(z, np.sqrt(0.81 + 1.5**2 / 20))  # noqa: E731
     stack, z = bead(shape, 0.3)
     found = slice_profile(stack, spacing_mm=(PIXEL, PIXEL), positions_mm=z, object_size_mm=1.5)
-    # to first order in the blur's variance, which is a seventh of the profile's: 0.3 %
+    # the image here is a Gaussian, of the sphere's variance but not quite its shape
     assert found.fwhm.value == pytest.approx(2.354820 * 0.9, rel=8e-3)
     assert found.raw_fwhm.value > 1.05 * found.fwhm.value
     assert found.f50.value == pytest.approx(0.187391 / 0.9, rel=8e-3)
 
 
+def rectangle_and(sigma, width=2.5):
+    """A rectangle with sides rounded by a Gaussian, 1 at the top of a wide one."""
+    return lambda z: ndtr((z + width / 2) / sigma) - ndtr((z - width / 2) / sigma)
+
+
+def triangle(z, width=2.5):
+    return np.clip(1 - np.abs(z) / width, 0, 1)
+
+
+#: Profile, its FWHM and its FWTM. A rounded rectangle's tenth lies 1.28155 SD beyond its half.
+KNOWN = {
+    "gauss": (gauss, 2.354820 * 0.9, 4.291932 * 0.9),
+    "trapezoid": (trapezoid, 2.5, 3.3),
+    "rounded": (rectangle_and(0.25), 2.5, 2.5 + 2 * 1.281552 * 0.25),
+    "triangle": (triangle, 2.5, 4.5),
+}
+
+
+def held(target, name, step, noise, repeats, seed=13):
+    """Return which 95 % intervals held FWHM and FWTM, of those that were given, at random places.
+
+    `step` is the slice increment over the FWHM.
+    """
+    rng = np.random.default_rng(seed)
+    shape, fwhm, fwtm = KNOWN[name]
+    gap = step * fwhm
+    rows = []
+    for _ in range(repeats):
+        offset = float(rng.uniform(-0.5, 0.5)) * gap
+        if target == "bead":
+            stack, z = bead(shape, gap, offset=offset)
+        else:
+            wire = {"angle": 15.0, "width": 0.3, "count": 9} if target == "wire" else {}
+            stack, z = climbing(lambda at, o=offset: shape(at - o), gap, turn=7.0, **wire)
+        found = slice_profile(
+            stack + rng.normal(0, noise, stack.shape),
+            spacing_mm=(PIXEL, PIXEL),
+            positions_mm=z,
+            target=target,
+            object_size_mm=0.0,
+            in_plane_fwhm_mm=0.0,
+        )
+        if not found:
+            assert "uncertain by" in found.reason
+            rows.append((np.nan, np.nan))
+            continue
+        pairs = ((found.fwhm, fwhm), (found.fwtm, fwtm))
+        inside = [abs(q.value - t) < 1.96 * q.uncertainty if q else np.nan for q, t in pairs]
+        rows.append(inside)
+    return np.array(rows, dtype=float)
+
+
+@pytest.mark.parametrize("name", KNOWN)
+def test_nominal_intervals_hold_the_truth_of_a_bead(name):
+    """8 repeats at a fifth and at two fifths of the width: of 32 intervals of the nominal 95 %,
+    fewer than 26 that hold have the chance of 0.06 %."""
+    rows = np.concatenate([held("bead", name, step, 12.0, 8) for step in (0.2, 0.4)])
+    given = np.isfinite(rows)
+    assert given.mean() > 0.5  # some at two fifths are honestly refused
+    assert np.nanmean(rows) > 25 / 32
+
+
+@pytest.mark.long
+@pytest.mark.parametrize("step", [0.1, 0.2, 0.3, 0.5])
+@pytest.mark.parametrize("name", KNOWN)
+@pytest.mark.parametrize(("target", "noise"), [("bead", 12.0), ("ramp", 20.0), ("wire", 4.0)])
+def test_nominal_intervals_hold_the_truth(target, noise, name, step):
+    """100 repeats: of intervals at 95 %, fewer than 88 that hold have the chance of 0.2 %."""
+    rows = held(target, name, step, noise, 100, seed=14)
+    for column in rows.T:
+        given = column[np.isfinite(column)]
+        # where most are refused, those given are a selection
+        assert len(given) < 50 or given.mean() >= 0.88
+
+
 @pytest.mark.parametrize("target", ["bead", "ramp"])
 def test_stated_uncertainties_are_the_scatter(target):
-    """60 repeats fix a scatter to 9 %."""
+    """16 repeats fix a scatter to 18 %: a ratio beyond 0.6 to 1.9 is 3 standard deviations off."""
     rng = np.random.default_rng(13)
     rows = []
     make = bead if target == "bead" else climbing
-    clean, z = make(gauss, 0.5)
-    for _ in range(60):
+    clean, z = make(trapezoid, 0.5)
+    for _ in range(16):
         found = slice_profile(
             clean + rng.normal(0, 15, clean.shape),
             spacing_mm=(PIXEL, PIXEL),
@@ -215,8 +290,64 @@ def test_stated_uncertainties_are_the_scatter(target):
         rows.append([(q.value, q.uncertainty) for q in (found.fwhm, found.f50, found.height)])
     rows = np.array(rows)
     ratio = np.median(rows[..., 1], axis=0) / rows[..., 0].std(axis=0, ddof=1)
-    assert np.all(ratio > 0.65), ratio
-    assert np.all(ratio < 1.8), ratio
+    assert np.all(ratio > 0.6), ratio
+    assert np.all(ratio < 1.9), ratio
+
+
+@pytest.mark.parametrize("name", ["gauss", "trapezoid", "rounded"])
+def test_slices_that_share_noise_do_not_seem_more_certain(name):
+    """Noise averaged over three neighbouring slices: of 24 intervals more than 18 hold."""
+    rng = np.random.default_rng(15)
+    shape, fwhm, fwtm = KNOWN[name]
+    inside = []
+    for _ in range(12):
+        clean, z = bead(shape, 0.4, offset=float(rng.uniform(-0.2, 0.2)))
+        noise = rng.normal(0, 20, (len(z) + 2, *clean.shape[1:]))
+        found = slice_profile(
+            clean + (noise[2:] + noise[1:-1] + noise[:-2]) / np.sqrt(3),
+            spacing_mm=(PIXEL, PIXEL),
+            positions_mm=z,
+            object_size_mm=0.0,
+        )
+        pairs = ((found.fwhm, fwhm), (found.fwtm, fwtm))
+        inside += [abs(q.value - t) < 1.96 * q.uncertainty for q, t in pairs if q]
+    assert len(inside) > 18
+    assert np.mean(inside) > 18 / 24
+
+
+@pytest.mark.parametrize("name", KNOWN)
+@pytest.mark.parametrize("target", ["bead", "ramp"])
+def test_fine_samples_without_noise_are_read_to_half_a_per_cent(target, name):
+    """An increment of a tenth of the width.
+
+    A ramp's pixels are pooled in steps of a twentieth of the width; where the tip of a triangle
+    lies in its step changes the height by up to a quarter of that.
+    """
+    shape, fwhm, fwtm = KNOWN[name]
+    make = bead if target == "bead" else climbing
+    stack, z = make(shape, 0.1 * fwhm, count=None if target == "bead" else 24)
+    found = slice_profile(
+        stack,
+        spacing_mm=(PIXEL, PIXEL),
+        positions_mm=z,
+        target=target,
+        object_size_mm=0.0,
+        in_plane_fwhm_mm=0.0,
+    )
+    rel = 0.0125 if (target, name) == ("ramp", "triangle") else 0.005
+    assert found.fwhm.value == pytest.approx(fwhm, rel=rel)
+    assert found.fwtm.value == pytest.approx(fwtm, rel=0.005)
+    assert abs(found.fwhm.value - fwhm) < 1.96 * found.fwhm.uncertainty + 1e-4
+    assert abs(found.fwtm.value - fwtm) < 1.96 * found.fwtm.uncertainty + 1e-4
+
+
+def test_a_rectangle_between_coarse_slices_is_left_open():
+    """Two slices see it whole, two see nothing: its width lies between one and three steps."""
+    stack, z = bead(lambda at: (np.abs(at) < 1.25).astype(float), 1.25, offset=0.625 * 0.9)
+    found = slice_profile(stack, spacing_mm=(PIXEL, PIXEL), positions_mm=z, object_size_mm=0.0)
+    assert not found
+    assert "uncertain by" in found.reason
+    assert "smaller increment" in found.remedy
 
 
 REFUSALS = {

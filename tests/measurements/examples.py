@@ -86,6 +86,23 @@ def noise_power() -> Example:
     )
 
 
+def detectability() -> Example:
+    f = np.linspace(0.05, 1.0, 20)
+    return Example(
+        _noise(),
+        (Disc((15.75, 15.75), 15.0),),
+        settings={
+            "patch_px": 16,
+            "size_mm": 2.0,
+            "transfer": {
+                "frequency_per_mm": tuple(f.tolist()),
+                "mtf": tuple(np.exp(-((f / 0.5) ** 2)).tolist()),
+            },
+        },
+        keeps_pixel_size=True,
+    )
+
+
 def edge_mtf() -> Example:
     from truth_images import HANN, edge_image
 
@@ -240,6 +257,7 @@ EXAMPLES: dict[str, Callable[[], Example]] = {
     "noise_map": noise_map,
     "uniformity": uniformity,
     "ring_artefact": ring_artefact,
+    "detectability": detectability,
     "edge_mtf": edge_mtf,
     "disc_mtf": disc_mtf,
     "line_profile": line_profile,

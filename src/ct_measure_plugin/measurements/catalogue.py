@@ -37,6 +37,7 @@ _CLASSES: dict[str, str] = {
     "label_statistics": "MeasureLabelStatistics",
     "noise_power": "MeasureNoisePower",
     "noise_map": "MeasureNoiseMap",
+    "detectability": "MeasureDetectability",
     "uniformity": "MeasureUniformity",
     "ring_artefact": "MeasureRingArtefact",
     "edge_mtf": "MeasureEdgeMtf",

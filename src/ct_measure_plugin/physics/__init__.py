@@ -13,6 +13,7 @@ from __future__ import annotations
 from ct_measure_plugin.physics import regions
 from ct_measure_plugin.physics.bar_pattern import BarPattern, bar_pattern
 from ct_measure_plugin.physics.ct_number_line import CtNumberLine, ct_number_line
+from ct_measure_plugin.physics.detectability import Detectability, detectability
 from ct_measure_plugin.physics.disc_mtf import DiscMtf, disc_mtf
 from ct_measure_plugin.physics.edge_mtf import EdgeMtf, edge_mtf
 from ct_measure_plugin.physics.label_statistics import LabelStatistics, label_statistics
@@ -46,6 +47,7 @@ __all__ = [
     "Caution",
     "CtNumberLine",
     "Curve",
+    "Detectability",
     "DiscMtf",
     "EdgeMtf",
     "HeaderWindow",
@@ -69,6 +71,7 @@ __all__ = [
     "WireMtf",
     "bar_pattern",
     "ct_number_line",
+    "detectability",
     "disc_mtf",
     "edge_mtf",
     "label_statistics",

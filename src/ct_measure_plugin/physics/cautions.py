@@ -112,6 +112,8 @@ KINDS: dict[str, CautionKind] = {
     "repeat-difference": _note("Repeat scans were subtracted"),
     "slice-difference": _note("Neighbouring slices were subtracted"),
     "peak-at-end": _note("The spectrum peaks at the end of its range"),
+    "signal-beyond": _warning("Part of the signal lies beyond what was measured"),
+    "no-transfer": _warning("No MTF was given for the task"),
     "patches-small": _warning("Patches small for the texture"),
     "few-windows": _warning("Few windows"),
     "several-noise-levels": _warning("More than one noise level"),

@@ -15,10 +15,10 @@ __all__ = ["NoisePowerDock"]
 
 
 class NoisePowerDock(MeasurementDock):
-    """How much noise, and of what texture."""
+    """How much noise, of what texture, and what stands out of it."""
 
     title: ClassVar[str] = "Noise power (NPS)"
-    names: ClassVar[tuple[str, ...]] = ("noise_power",)
+    names: ClassVar[tuple[str, ...]] = ("noise_power", "detectability")
 
     def __init__(self, viewer: napari.viewer.Viewer) -> None:  # type: ignore[name-defined] # noqa: F821
         super().__init__(viewer)

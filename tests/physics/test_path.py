@@ -145,6 +145,17 @@ def test_a_turn_within_the_edge_is_cautioned():
     assert "turn-within-width" in {c.code for c in found.cautions}
 
 
+def test_a_turn_beyond_a_wide_peak_is_none_within_it():
+    """A plateau from 12 to 22 mm: its middle is 17, and a corner at 28 lies beyond its flank."""
+    x = np.arange(160) * 0.25
+    ridge = np.tile(100 * (ndtr((x - 12) / 0.5) - ndtr((x - 22) / 0.5)), (120, 1))
+    for corner, turns in ((28.0, False), (21.8, True)):
+        path = [(20.0, 4.0), (20.0, corner), (16.0, 38.0)]
+        found = line_profile(ridge, path, spacing_mm=(0.25, 0.25))
+        assert found.fwhm.value == pytest.approx(10.0, abs=0.1)
+        assert ("turn-within-width" in {c.code for c in found.cautions}) == turns
+
+
 def test_a_path_that_turns_too_sharply_for_its_width_is_refused(noisy):
     zigzag = [(10, 5), (10, 15), (14, 15), (14, 30)]
     assert line_profile(noisy, zigzag, spacing_mm=(1, 1), width_mm=2.0)

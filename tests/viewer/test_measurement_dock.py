@@ -155,6 +155,11 @@ def test_without_a_region_it_says_what_to_draw(qtbot, viewer_model):
     dock.refresh_now()
     assert dock.headline.words.text() == "There is no region yet. Draw a rectangle."
     assert not dock.keeping.isEnabled()
+    example = EXAMPLES["edge_mtf"]()
+    draw_regions(viewer_model, viewer_model.layers[0], example.regions)
+    dock.reset_choices()
+    dock.refresh_now()  # measured beside this thread: nothing is shown yet
+    assert dock.headline.words.text() == ""
 
 
 def test_drawing_makes_a_layer_and_takes_the_measurement_s_tool(qtbot, viewer_model):

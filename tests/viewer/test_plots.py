@@ -69,8 +69,10 @@ def test_line_band_axes_and_ticks_show_what_was_handed_over(plot, colours):
     plot.show_traces([Trace("a", curve)], [Tick("f50", 0.7)], end=1.5)
     [drawn] = plot._drawn
     np.testing.assert_array_equal(drawn.line.getData()[1], curve.y)
-    np.testing.assert_allclose(drawn.high.getData()[1] - drawn.low.getData()[1], 0.02)
-    assert drawn.band.isVisible()
+    x, outline = drawn.band.getData()  # there along the lower end, and back along the upper one
+    half = len(x) // 2
+    np.testing.assert_array_equal(x[:half], x[: half - 1 : -1])
+    np.testing.assert_allclose(outline[: half - 1 : -1] - outline[:half], 0.02)
     assert plot._plot.getAxis("bottom").labelText == "frequency (mm⁻¹)"
     assert plot._plot.getAxis("left").labelText == "MTF"
     assert plot._tick_items[0].value() == 0.7
@@ -83,7 +85,7 @@ def test_line_band_axes_and_ticks_show_what_was_handed_over(plot, colours):
 def test_traces_come_and_go(plot):
     plot.show_traces([Trace("a", mtf()), Trace("b", mtf(doubt=None), 1, True)])
     assert len(plot._drawn) == 2
-    assert not plot._drawn[1].band.isVisible()
+    assert not len(plot._drawn[1].band.getData()[0])
     count, each = len(plot._plot.items), len(plot._drawn[0]._items())
     plot.show_traces([Trace("a", mtf())])
     assert len(plot._plot.items) == count - each
@@ -130,7 +132,7 @@ def test_unknown_doubt_in_places_leaves_the_line_whole(plot):
     doubt = np.asarray(curve.y_uncertainty).copy()
     doubt[5] = np.nan
     plot.show_traces([Trace("a", Curve(curve.x, curve.y, doubt, "f", "mm⁻¹", "MTF", ""))])
-    assert np.isfinite(plot._drawn[0].high.getData()[1]).all()
+    assert np.isfinite(plot._drawn[0].band.getData()[1]).all()
 
 
 def test_the_mouse_reads_the_first_curve(plot, qtbot):

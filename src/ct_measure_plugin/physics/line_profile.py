@@ -263,7 +263,9 @@ def _cautions(
     width, middle = numbers["edge_width"] or numbers["fwhm"], numbers["middle"]
     if not isinstance(width, Quantity):
         return found
-    if isinstance(middle, Quantity) and _turns_within(path, middle.value, width.value):
+    # an edge reaches about its width to either side, a peak two pixels beyond its half height
+    half = width.value if numbers["edge_width"] else width.value / 2 + 2 * pixel
+    if isinstance(middle, Quantity) and _turns_within(path, middle.value, half):
         found.append(
             Caution(
                 "turn-within-width",
@@ -296,8 +298,8 @@ def _cautions(
     return found
 
 
-def _turns_within(path: PathPoints, middle: float, width: float) -> bool:
-    return bool((np.abs(path.corner - middle) < path.reach + width).any())
+def _turns_within(path: PathPoints, middle: float, half: float) -> bool:
+    return bool((np.abs(path.corner - middle) < path.reach + half).any())
 
 
 def _lean(path: PathPoints, lines: Floats, level: float, middle: Quantity | NotMeasured) -> float:

@@ -211,9 +211,11 @@ class MeasurementDock(Dock):
     def refresh(self) -> None:
         """Ask, if there is something new to ask."""
         questions, said = self._ask()
-        self._said = said
+        stale, self._said = said != self._said, said
         if questions == self._asked and questions:
             return
+        if questions and stale:  # "there is no region yet" while one is measured
+            self._tell()
         self._asked = questions
         if not questions:
             self._following.cancel()

@@ -43,26 +43,23 @@ class _Drawn:
     """The items of one trace, kept and refilled."""
 
     def __init__(self, plot: Any) -> None:
-        self.low, self.high = pg.PlotDataItem(), pg.PlotDataItem()
-        self.band = pg.FillBetweenItem(self.low, self.high)
+        # one closed outline: filling between two curves is built anew for each of them
+        self.band = pg.PlotCurveItem(pen=None, fillLevel="enclosed")
         self.line = pg.PlotDataItem(connect="finite", antialias=True)
         self.bars, self.points = pg.ErrorBarItem(), pg.PlotDataItem(pen=None, symbol="o")
-        for item, z in zip(self._items(), (0, 0, 1, 3, 4, 5), strict=True):
+        for item, z in zip(self._items(), (1, 3, 4, 5), strict=True):
             item.setZValue(z)
             plot.addItem(item)
-        self.low.setPen(None)
-        self.high.setPen(None)
 
     def _items(self) -> tuple[Any, ...]:
-        return self.low, self.high, self.band, self.line, self.bars, self.points
+        return self.band, self.line, self.bars, self.points
 
     def fill(self, trace: Trace, colour: QColor) -> None:
         alone = trace.curve if not trace.curve.joined else trace.curve.data
         self._fill_points(alone, colour, hollow=trace.frozen)
         if not trace.curve.joined:
-            self.band.setVisible(False)
-            for item in (self.line, self.low, self.high):
-                item.setData([], [])
+            self.band.setData([], [])
+            self.line.setData([], [])
             return
         x, y = np.asarray(trace.curve.x, float), np.asarray(trace.curve.y, float)
         style = Qt.PenStyle.DashLine if trace.frozen else Qt.PenStyle.SolidLine
@@ -73,18 +70,18 @@ class _Drawn:
             self.line.setSymbolBrush(colour)
             self.line.setSymbolPen(None)
         doubt = trace.curve.y_uncertainty if trace.band else None
-        self.band.setVisible(doubt is not None)
         if doubt is None:
-            self.low.setData([], [])
-            self.high.setData([], [])
+            self.band.setData([], [])
             return
-        u = np.nan_to_num(np.asarray(doubt, float))
+        u = np.asarray(doubt, float)
+        u = np.where(np.isfinite(u), u, 0.0)
         known = np.isfinite(y)
         faint = QColor(colour)
         faint.setAlpha(_BAND_ALPHA)
-        self.band.setBrush(pg.mkBrush(faint))
-        self.low.setData(x[known], (y - u)[known])
-        self.high.setData(x[known], (y + u)[known])
+        x, low, high = x[known], (y - u)[known], (y + u)[known]
+        self.band.setData(
+            np.concatenate([x, x[::-1]]), np.concatenate([low, high[::-1]]), brush=pg.mkBrush(faint)
+        )
 
     def _fill_points(self, curve: Curve | None, colour: QColor, *, hollow: bool) -> None:
         """Draw samples that stand for themselves, each with its bar."""

@@ -93,7 +93,8 @@ def settings_for(name: str, given: dict[str, Any]) -> Settings:
         if first["type"] == "extra_forbidden":
             known = tuple(kind.model_fields)
             raise UnknownNameError(f"setting of {name}", where, known) from None
-        raise ArgumentError(where, f"must be valid: {first['msg']}", first["input"]) from None
+        why = first["msg"].removeprefix("Value error, ")
+        raise ArgumentError(where, f"must be valid: {why}", first["input"]) from None
 
 
 def measure_each(

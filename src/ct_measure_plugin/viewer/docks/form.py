@@ -102,7 +102,8 @@ class SettingsForm:
         except ValidationError as error:
             first = error.errors()[0]
             where = self._controls.get(str(first["loc"][0])) if first["loc"] else None
-            self.problem = f"{where.label if where is not None else 'settings'}: {first['msg']}"
+            why = first["msg"].removeprefix("Value error, ")
+            self.problem = f"{where.label if where is not None else 'settings'}: {why}"
             return
         self.problem = ""
         if found != self.settings:

@@ -10,6 +10,7 @@ from pydantic import Field
 
 from ct_measure_plugin.errors import ArgumentError, RegionError
 from ct_measure_plugin.measurements.base import AREAS, Measurement, RegionNeed, Settings
+from ct_measure_plugin.measurements.isocentre import isocentre
 from ct_measure_plugin.physics.coverage import slices_of
 from ct_measure_plugin.physics.regions import Disc
 from ct_measure_plugin.physics.results import NotMeasured, Result
@@ -106,17 +107,19 @@ class MeasureUniformity(Measurement):
             )
         whole = len(slices) == volume.shape[0]
         _, dy, dx = volume.spacing_mm
+        _, y, x = volume.origin_mm
+        center = isocentre(volume, None, int(slices[0]))
         found = uniformity(
             volume.hu if whole else np.stack([volume.plane(int(k)) for k in slices]),
             spacing_mm=(dy, dx),
             z_mm=volume.positions_mm[slices].tolist(),
             circle_mm=circle,
             places=wanted.places(),
+            rotation_mm=(center[0] - y, center[1] - x),
             unit=volume.unit,
         )
         if isinstance(found, NotMeasured):
             return replace(found, cautions=volume.cautions)
-        _, y, x = volume.origin_mm
         picture = found.deviation_map
         return replace(
             found,

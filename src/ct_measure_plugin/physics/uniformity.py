@@ -3,109 +3,27 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 import numpy as np
 
 from ct_measure_plugin.errors import ArgumentError
 from ct_measure_plugin.physics.cylinder import Cylinder, find_cylinder, given_cylinder
-from ct_measure_plugin.physics.results import Caution, Curve, NotMeasured, Picture, Quantity, Result
-from ct_measure_plugin.physics.uniformity_differences import differences
-from ct_measure_plugin.physics.uniformity_field import Field, cell_fit, gather
+from ct_measure_plugin.physics.results import NotMeasured
+from ct_measure_plugin.physics.uniformity_answer import Assembly, Uniformity
+from ct_measure_plugin.physics.uniformity_field import gather
 from ct_measure_plugin.physics.uniformity_picture import deviation_map
-from ct_measure_plugin.physics.uniformity_samples import (
-    WATER,
-    Cells,
-    DiscMeans,
-    Places,
-    disc_means,
-    scatter,
-    student,
-)
+from ct_measure_plugin.physics.uniformity_samples import Cells, Places, disc_means
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
 
     from numpy.typing import ArrayLike, NDArray
 
-    Floats = NDArray[np.float64]
-
 __all__ = ["Uniformity", "uniformity"]
 
 #: Rings of cells about the middle one.
 RINGS = 6
-
-#: Steeper axes are cautioned, degrees: the slices cut an ellipse and mix places along z.
-STEEP = 1.0
-
-
-@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
-class Uniformity(Result):
-    """How far a cylinder is from reading the same everywhere.
-
-    Attributes
-    ----------
-    water, sd : Quantity
-        Mean and SD of the pixels within 40 % of the diameter.
-    centre, edge : Quantity
-        Mean of the centre region; mean over the edge regions.
-    deviation : Quantity
-        Largest absolute difference of an edge region from the centre region.
-    deviation_by_chance : Quantity
-        What noise alone would make of it on the average; its uncertainty is the spread of that.
-    cupping : Quantity
-        Mean of the edge regions minus the centre region: positive for a cup.
-    cupping_percent, integral_non_uniformity : Quantity or None
-        Cupping over the edge's attenuation; (max − min)/(max + min) of the regions' attenuation.
-        Both in percent, on the scale HU + 1000; None unless the values are HU.
-    cup_depth : Quantity
-        Rise of the fitted radial profile from the axis to the border of the field.
-    shading : Quantity
-        Fitted difference across the diameter of the field, along its steepest direction.
-    radius, slices : Quantity
-        Of the cylinder; how many slices show it.
-    tilt, ellipticity : Quantity or None
-        Of its axis against the slices' normal; longest minus shortest radius. None where they
-        were not looked for.
-    edges : Curve
-        Mean of each edge region against its azimuth.
-    radial_profile, radial_fit : Curve
-        Mean over rings, and the fit, see the notes.
-    centre_along_z, edge_along_z, deviation_along_z, cup_along_z, sd_along_z : Curve
-        The same figures slice by slice.
-    center_y, center_x : Curve
-        The axis, in mm, slice by slice.
-    deviation_map : Picture
-        The field, averaged over z and over discs of 10 mm, minus the centre region.
-    """
-
-    water: Quantity
-    sd: Quantity
-    centre: Quantity
-    edge: Quantity
-    deviation: Quantity
-    deviation_by_chance: Quantity
-    cupping: Quantity
-    cupping_percent: Quantity | None
-    integral_non_uniformity: Quantity | None
-    cup_depth: Quantity
-    shading: Quantity
-    radius: Quantity
-    slices: Quantity
-    tilt: Quantity | None
-    ellipticity: Quantity | None
-    edges: Curve
-    radial_profile: Curve
-    radial_fit: Curve
-    centre_along_z: Curve
-    edge_along_z: Curve
-    deviation_along_z: Curve
-    cup_along_z: Curve
-    sd_along_z: Curve
-    center_y: Curve
-    center_x: Curve
-    deviation_map: Picture
 
 
 def uniformity(
@@ -115,6 +33,7 @@ def uniformity(
     z_mm: Sequence[float] | None = None,
     circle_mm: tuple[float, float, float] | None = None,
     places: Places | None = None,
+    rotation_mm: tuple[float, float] | None = None,
     unit: str = "HU",
 ) -> Uniformity | NotMeasured:
     """Return how uniform the image of a cylinder is.
@@ -133,6 +52,9 @@ def uniformity(
     places : Places, optional
         Where to look; by default four edge regions of a tenth of the radius at 0.8 of it, and the
         same in the middle.
+    rotation_mm : (float, float), optional
+        y and x of the rotation centre, from the centre of pixel (0, 0), about which rings lie; by
+        default the middle of the image.
     unit : str
         Of the values.
 
@@ -153,7 +75,7 @@ def uniformity(
     averaged over the same slices. Correlation of pixels and of slices is thus contained.
 
     Cup and shading are a0 + a1 x + a2 y + a3 (1 − q) + a4 (1 − q²) + a5 (1 − q³), q = √(1 − r²),
-    lengths in units of the radius, fitted to 169 cells of equal area.
+    lengths in units of the radius, fitted to 169 cells of equal area without rings.
 
     Examples
     --------
@@ -182,14 +104,16 @@ def uniformity(
         return NotMeasured("the field reaches out of the image", "place the cylinder within it")
     cells = Cells(RINGS, places.field)
     shown = [planes[k] for k in found.slices]
-    sums = gather(shown, found.centers_mm, found.radius_mm, spacing_mm, cells)
+    middle = [(n - 1) / 2 * s for n, s in zip(planes.shape[1:], spacing_mm, strict=True)]
+    rotation = (middle[0], middle[1]) if rotation_mm is None else rotation_mm
+    sums = gather(shown, found.centers_mm, found.radius_mm, spacing_mm, cells, rotation)
     if isinstance(sums, NotMeasured):
         return sums
     discs = disc_means(shown, found, places, spacing_mm)
     picture = deviation_map(
         shown, found, spacing_mm, places.field, float(discs.centre.mean()), unit
     )
-    return _Task(found, places, cells, sums, discs, unit).result(picture)
+    return Assembly(found, places, cells, sums, discs, unit).result(picture)
 
 
 def _checked(image: ArrayLike, spacing_mm: tuple[float, float]) -> NDArray[np.generic]:
@@ -212,152 +136,3 @@ def _within(
     last = (np.array(shape) - 1) * np.asarray(spacing_mm)
     low, high = found.centers_mm.min(axis=0) - reach, found.centers_mm.max(axis=0) + reach
     return bool(np.all(low >= 0) and np.all(high <= last))
-
-
-class _Task:
-    """One measurement, its sums done, on the way to the result."""
-
-    def __init__(
-        self,
-        found: Cylinder,
-        places: Places,
-        cells: Cells,
-        sums: Field,
-        discs: DiscMeans,
-        unit: str,
-    ) -> None:
-        self.found, self.places, self.cells, self.sums = found, places, cells, sums
-        self.discs, self.unit = discs, unit
-        self.within = cells.within(WATER)
-        self.fit = cell_fit(sums.means.mean(axis=0), sums.basis.mean(axis=0))
-
-    def result(self, picture: Picture) -> Uniformity:
-        discs, found, unit = self.discs, self.found, self.unit
-        edges = discs.edges.mean(axis=0)
-        edge_error, centre_error = float(discs.edge_error[-1]), float(discs.centre_error[-1])
-        centre = float(discs.centre.mean())
-        whole = differences(edges, centre, edge_error, centre_error, unit)
-        water, sd, sd_along_z = self._water()
-        cup, cup_doubt = self.fit.cup(self.cells.field)
-        shading, shading_doubt = self.fit.shading(self.cells.field)
-        profile, fit = self._profile()
-        centre_along_z, edge_along_z, deviation_along_z, cup_along_z = self._slice_by_slice()
-        return Uniformity(
-            water=water,
-            sd=sd,
-            centre=Quantity(centre, unit, centre_error),
-            edge=Quantity(float(edges.mean()), unit, edge_error / math.sqrt(len(edges))),
-            deviation=whole.deviation,
-            deviation_by_chance=whole.by_chance,
-            cupping=whole.cupping,
-            cupping_percent=whole.cupping_percent,
-            integral_non_uniformity=whole.integral,
-            cup_depth=Quantity(cup, unit, cup_doubt),
-            shading=Quantity(shading, unit, shading_doubt),
-            radius=found.radius,
-            slices=Quantity(float(len(found.z_mm)), "", 0.0),
-            tilt=found.tilt,
-            ellipticity=found.ellipticity,
-            edges=self._edges(edges, edge_error),
-            radial_profile=profile,
-            radial_fit=fit,
-            centre_along_z=centre_along_z,
-            edge_along_z=edge_along_z,
-            deviation_along_z=deviation_along_z,
-            cup_along_z=cup_along_z,
-            sd_along_z=sd_along_z,
-            center_y=Curve(found.z_mm, found.centers_mm[:, 0], None, "z", "mm", "y", "mm"),
-            center_x=Curve(found.z_mm, found.centers_mm[:, 1], None, "z", "mm", "x", "mm"),
-            deviation_map=picture,
-            cautions=_cautions(found),
-        )
-
-    def _water(self) -> tuple[Quantity, Quantity, Curve]:
-        """Return mean and SD of the water region; their errors from the scatter of its cells."""
-        count = math.sqrt(int(self.within.sum()))
-        rest = float(np.sqrt(np.sum(self.fit.rest[self.within] ** 2) / (count**2 - 3)))
-        error = rest * student(int(count**2) - 3) / count
-        inner = self.sums.inner_sd[:, self.within]
-        sds = np.sqrt(np.mean(inner**2, axis=1))
-        sd = math.sqrt(float(np.mean(inner**2)))
-        sd_error = float(np.sqrt(np.mean(inner**2, axis=0)).std(ddof=1)) / count
-        return (
-            Quantity(float(self.discs.water.mean()), self.unit, error),
-            Quantity(sd, self.unit, sd_error),
-            self._along("SD", sds, inner.std(axis=1, ddof=1) / count),
-        )
-
-    def _edges(self, means: Floats, error: float) -> Curve:
-        y, x = self.places.ring()[self.places.chosen()].T
-        degrees = np.round(np.mod(np.degrees(np.arctan2(-y, x)), 360.0), 9)
-        order = np.argsort(degrees)
-        doubt = np.full(len(means), error)
-        return Curve(degrees[order], means[order], doubt, "azimuth", "°", "mean", self.unit)
-
-    def _profile(self) -> tuple[Curve, Curve]:
-        r, mean, doubt = _rings(self.sums)
-        axis, fit = r * self.found.radius_mm, self.fit.radial(r)
-        name = "distance from the axis"
-        return (
-            Curve(axis, mean, doubt, name, "mm", "mean", self.unit),
-            Curve(axis, fit, None, name, "mm", "fit", self.unit),
-        )
-
-    def _slice_by_slice(self) -> tuple[Curve, Curve, Curve, Curve]:
-        discs, sums = self.discs, self.sums
-        edge_error, centre_error = discs.edge_error[:-1], discs.centre_error[:-1]
-        off = np.abs(discs.edges - discs.centre[:, None]).max(axis=1)
-        cups = np.array(
-            [
-                cell_fit(means, basis).cup(self.cells.field)
-                for means, basis in zip(sums.means, sums.basis, strict=True)
-            ]
-        )
-        count = math.sqrt(discs.edges.shape[1])
-        return (
-            self._along("centre", discs.centre, centre_error),
-            self._along("edge", discs.edges.mean(axis=1), edge_error / count),
-            self._along("deviation", off, np.hypot(edge_error, centre_error)),
-            self._along("cup depth", cups[:, 0], cups[:, 1]),
-        )
-
-    def _along(self, name: str, y: Floats, doubt: Floats) -> Curve:
-        return Curve(self.found.z_mm, y, doubt, "z", "mm", name, self.unit)
-
-
-def _rings(sums: Field) -> tuple[Floats, Floats, Floats]:
-    """Return distance, mean and uncertainty of the rings: from the scatter of their sectors.
-
-    The first wave around the axis, a shading, is taken out of the scatter; it averages out.
-    """
-    each = sums.profile.mean(axis=0)
-    mean, doubt = np.zeros(len(each)), np.zeros(len(each))
-    for k, row in enumerate(each):
-        held = row[np.isfinite(row)]
-        turn = 2 * np.pi * (np.arange(len(held)) + 0.5) / len(held)
-        sd, freedom = scatter(held, np.stack([np.ones(len(turn)), np.cos(turn), np.sin(turn)], 1))
-        mean[k] = held.mean()
-        doubt[k] = float(sd) / math.sqrt(len(held)) * student(freedom)
-    return sums.distance, mean, doubt
-
-
-def _cautions(found: Cylinder) -> tuple[Caution, ...]:
-    notes = []
-    if found.left_out:
-        notes.append(
-            Caution(
-                "slices-left-out",
-                f"{len(found.left_out)} of {len(found.left_out) + len(found.slices)} slices do not"
-                " show the cylinder's body and were left out.",
-                "Choose slices through the body.",
-            )
-        )
-    if found.tilt is not None and found.tilt.value > STEEP:
-        notes.append(
-            Caution(
-                "leaning-object",
-                f"The cylinder's axis leans {found.tilt.value:.1f}° from the slices' normal.",
-                "Regions follow the axis; align the phantom for a fair comparison.",
-            )
-        )
-    return tuple(notes)

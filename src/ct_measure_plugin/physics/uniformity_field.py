@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from ct_measure_plugin.physics.results import NotMeasured
+from ct_measure_plugin.physics.uniformity_rings import Circles, CleanField, clean_field
 from ct_measure_plugin.physics.uniformity_samples import Cells, student
 
 if TYPE_CHECKING:
@@ -46,6 +47,8 @@ class Field:
         Mean over rings and sectors, of which inner rings have fewer; NaN for those they lack.
     distance : ndarray, shape (bins,)
         Mean distance of a ring's pixels, in units of the radius.
+    clean : CleanField
+        The cells' means and basis means without rings about the rotation centre.
     """
 
     means: Floats
@@ -53,6 +56,7 @@ class Field:
     inner_sd: Floats
     profile: Floats
     distance: Floats
+    clean: CleanField
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -70,11 +74,14 @@ class FieldFit:
         Robust against noise that changes over the field, widened for few cells.
     rest : ndarray, shape (cells,)
         What the fit leaves.
+    blocks : ndarray, shape (blocks, 6)
+        What blocks of circles, whose means depart from the fit, add to the coefficients.
     """
 
     terms: Floats
     covariance: Floats
     rest: Floats
+    blocks: Floats
 
     def cup(self, at: float) -> tuple[float, float]:
         """Return H(at) − H(0) without shading, and its standard uncertainty."""
@@ -85,7 +92,7 @@ class FieldFit:
         x, y = self.terms[1], self.terms[2]
         size = math.hypot(x, y)
         if size == 0:
-            return 0.0, 2 * at * math.sqrt(max(self.covariance[1, 1], self.covariance[2, 2]))
+            x, y, size = 1.0, 0.0, 1.0
         return self._of(2 * at * np.array([0.0, x / size, y / size, 0.0, 0.0, 0.0]))
 
     def radial(self, r: Floats) -> Floats:
@@ -93,8 +100,20 @@ class FieldFit:
         found: Floats = self.terms[0] + np.tensordot(self.terms[3:], _bowls(r), axes=1)
         return found
 
+    def radial_doubt(self, r: Floats) -> Floats:
+        """Return the standard uncertainty of the same."""
+        zero = np.zeros(len(r))
+        rows = np.stack([zero + 1.0, zero, zero, *_bowls(r)], axis=1)
+        return np.array([self._of(row)[1] for row in rows])
+
     def _of(self, by: Floats) -> tuple[float, float]:
-        return float(by @ self.terms), math.sqrt(max(float(by @ self.covariance @ by), 0.0))
+        """Return a combination of the coefficients, and its standard uncertainty.
+
+        The larger of two: cells scatter independently; circles are whole rings, which lie in many
+        cells alike.
+        """
+        variance = max(float(by @ self.covariance @ by), float(np.sum((self.blocks @ by) ** 2)))
+        return float(by @ self.terms), math.sqrt(variance)
 
 
 def _bowls(r: Floats | float) -> Floats:
@@ -103,8 +122,10 @@ def _bowls(r: Floats | float) -> Floats:
     return np.stack([1.0 - q, 1.0 - q**2, 1.0 - q**3])
 
 
-def cell_fit(means: Floats, basis: Floats) -> FieldFit:
+def cell_fit(means: Floats, basis: Floats, blocks: Floats) -> FieldFit:
     """Fit the cells' means, shape (cells,), with their basis means, shape (cells, 6).
+
+    `blocks`, shape (blocks, cells), is what departing circles add to the means.
 
     The covariance is White's with the leverage taken out twice (HC3: J. G. MacKinnon and H. White,
     J. Econometrics 29 (1985) 305): cells in the middle of a cylinder are noisier than at its rim.
@@ -115,7 +136,7 @@ def cell_fit(means: Floats, basis: Floats) -> FieldFit:
     leverage = np.einsum("ij,ji->i", basis, inverse)
     weighed = rest / (1.0 - np.minimum(leverage, 0.99))
     covariance = (inverse * weighed**2) @ inverse.T * student(len(means) - TERMS) ** 2
-    return FieldFit(terms, covariance, rest)
+    return FieldFit(terms, covariance, rest, blocks @ inverse.T)
 
 
 def gather(
@@ -124,6 +145,7 @@ def gather(
     radius_mm: float,
     spacing_mm: tuple[float, float],
     cells: Cells,
+    rotation_mm: tuple[float, float],
 ) -> Field | NotMeasured:
     """Sum up the slices, and refuse a field that holds something else than one material.
 
@@ -139,24 +161,30 @@ def gather(
         dy and dx.
     cells : Cells
         The field.
+    rotation_mm : (float, float)
+        y and x of the centre of rings.
     """
     first = FEWEST_SECTORS * ARC_PIXELS / (2 * np.pi) * max(spacing_mm) / radius_mm
     width = max(max(spacing_mm) / radius_mm, cells.field / 60)
     edges = np.arange(first, cells.field, width)
     edges = np.append(edges[: max(len(edges), 2) - 1], cells.field)
-    found = []
+    found, circles, parts = [], [], []
     frame: _Frame | None = None
     for plane, center in zip(planes, centers_mm, strict=True):
         shape = (plane.shape[0], plane.shape[1])
         if frame is None or not np.array_equal(center, frame.center):
-            frame = _Frame(shape, center, radius_mm, spacing_mm, cells, edges)
-        sums = frame.sums(np.asarray(plane, dtype=float))
+            frame = _Frame(shape, center, radius_mm, spacing_mm, cells, edges, rotation_mm)
+        values = np.asarray(plane, dtype=float).ravel()[frame.pixels]
+        sums = frame.sums(values)
         if isinstance(sums, NotMeasured):
             return sums
         found.append((*sums, frame.basis, frame.distance))
+        circles.append(frame.circles)
+        parts.append(np.bincount(frame.pair, values).astype(float))
     stacked = [np.stack(part) for part in zip(*found, strict=True)]
     means, inner, profile, basis, distances = stacked
-    return Field(means, basis, inner, profile, distances.mean(axis=0))
+    clean = clean_field(circles, parts, cells.count)
+    return Field(means, basis, inner, profile, distances.mean(axis=0), clean)
 
 
 class _Frame:
@@ -170,6 +198,7 @@ class _Frame:
         spacing_mm: tuple[float, float],
         cells: Cells,
         edges: Floats,
+        rotation_mm: tuple[float, float],
     ) -> None:
         self.center, self.cells, self.bins = center, cells, len(edges) - 1
         y = (np.arange(shape[0]) * spacing_mm[0] - center[0])[:, None] / radius_mm
@@ -193,13 +222,29 @@ class _Frame:
         self.distance = total / np.bincount(ring, minlength=self.bins)
         self.terms = np.stack([np.ones(len(r)), x, y, *_bowls(r)], axis=1)
         self.basis = np.stack([self._mean(t) for t in self.terms.T], axis=1)
+        self.pair, self.circles = self._circles(shape, spacing_mm, rotation_mm)
+
+    def _circles(
+        self,
+        shape: tuple[int, int],
+        spacing_mm: tuple[float, float],
+        rotation_mm: tuple[float, float],
+    ) -> tuple[NDArray[np.intp], Circles]:
+        y, x = (
+            np.arange(n) * s - c for n, s, c in zip(shape, spacing_mm, rotation_mm, strict=True)
+        )
+        away = np.hypot(y[:, None], x[None, :]).ravel()[self.pixels]
+        circle = np.floor(away / max(spacing_mm)).astype(np.intp)
+        kinds, pair = np.unique(circle * self.cells.count + self.label, return_inverse=True)
+        count = np.bincount(pair).astype(float)
+        basis = np.stack([np.bincount(pair, t).astype(float) for t in self.terms.T], axis=1)
+        return pair, Circles(kinds % self.cells.count, kinds // self.cells.count, count, basis)
 
     def _mean(self, values: Floats) -> Floats:
         found: Floats = np.bincount(self.label, values, minlength=self.cells.count) / self.count
         return found
 
-    def sums(self, plane: Floats) -> tuple[Floats, Floats, Floats] | NotMeasured:
-        values = plane.ravel()[self.pixels]
+    def sums(self, values: Floats) -> tuple[Floats, Floats, Floats] | NotMeasured:
         if not np.isfinite(values).all():
             return NotMeasured(
                 "the cylinder holds values that are not finite", "choose other slices"

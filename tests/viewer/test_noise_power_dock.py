@@ -59,3 +59,28 @@ def test_scans_of_different_grids_are_refused_in_words(dock, viewer_model):
     dock.choose(viewer_model.layers["narrower"], viewer_model.layers["scan 1"])
     assert dock.subtract() is None
     assert "must have the shape" in dock.headline.words.text()
+
+
+def test_a_region_is_suggested_where_the_material_is_uniform(qtbot, viewer_model):
+    """A water cylinder with a rod, on two of three slices: the disc lies in the water beside it."""
+    y, x = (np.mgrid[:160, :160] - 79.5) * 0.5
+    water = np.where(np.hypot(y, x) < 35, 0.0, -1000.0)
+    noise = np.random.default_rng(4).normal(0, NOISE, (3, 160, 160))
+    values = water + noise
+    values[:2, np.hypot(y - 20, x) < 6] += 200
+    values[2, 60:100, 60:100] += 200
+    data, attributes, _ = layer_of(Volume(values.astype(np.float32), (2.0, 0.5, 0.5)), "CT")
+    viewer_model.add_image(data, **attributes)
+    dock = NoisePowerDock(viewer_model)
+    qtbot.addWidget(dock)
+    viewer_model.dims.set_current_step(0, 1)
+    dock.form.show(dock.form.settings.model_copy(update={"patch_px": 32}))
+    layer = dock.suggest()
+    assert dock.sources.chosen_regions() is layer
+    dock.measure_now()
+    [answer] = dock.answers.answers()
+    assert abs(answer.result.sd.value - NOISE) < 3 * answer.result.sd.uncertainty
+    assert {mark.z_mm for mark in answer.marks} == {0.0, 2.0}
+    dock.form.show(dock.form.settings.model_copy(update={"patch_px": 128}))
+    assert dock.suggest() is None
+    assert "patches of this size need 45.3 mm" in dock.suggested.text()

@@ -1,4 +1,4 @@
-"""Boxes that would measure an MTF well, found on the slice shown; no Qt."""
+"""Regions that would measure an MTF or the noise well, found on the slice shown; no Qt."""
 
 from __future__ import annotations
 
@@ -6,6 +6,7 @@ from typing import TYPE_CHECKING, Any
 
 from ct_measure_plugin.measurements import find
 from ct_measure_plugin.measurements.targets import targets_on
+from ct_measure_plugin.measurements.uniform_place import uniform_place
 from ct_measure_plugin.viewer.layer_frame import LayerFrame
 from ct_measure_plugin.viewer.outlines import add_outlines
 from ct_measure_plugin.viewer.region_drawing import outline_of
@@ -14,10 +15,20 @@ from ct_measure_plugin.viewer.shapes import new_regions_layer
 if TYPE_CHECKING:
     from collections.abc import Sequence
 
+    from ct_measure_plugin.physics.regions import Disc, Region
+    from ct_measure_plugin.physics.results import NotMeasured
     from ct_measure_plugin.physics.targets import TargetsFound
     from ct_measure_plugin.viewer.placement import Placement
 
-__all__ = ["counted", "draw_targets", "reasons", "search", "suits"]
+__all__ = [
+    "counted",
+    "draw_suggested",
+    "draw_targets",
+    "reasons",
+    "search",
+    "search_uniform",
+    "suits",
+]
 
 _WORDS = {"edge": "straight edge", "rod": "round edge", "wire": "wire or bead"}
 _MANY = {"edge": "straight edges", "rod": "round edges", "wire": "wires or beads"}
@@ -72,12 +83,25 @@ def reasons(found: TargetsFound) -> list[str]:
     ]
 
 
+def search_uniform(
+    placement: Placement, point: Sequence[float], patch_px: int
+) -> Disc | NotMeasured:
+    """Return where on the slice shown the noise can be measured; it touches no layer."""
+    k = placement.plane_of(tuple(point)[-placement.layer.ndim :])
+    return uniform_place(placement.volume, k, patch_px=patch_px)
+
+
 def draw_targets(viewer: Any, placement: Placement, found: TargetsFound, name: str) -> Any:
     """Draw the targets of one measurement on a layer of their own; return it, None if none."""
     regions = [target.region for target in found.targets if target.measurement == name]
+    return draw_suggested(viewer, placement, regions, find(name).title)
+
+
+def draw_suggested(viewer: Any, placement: Placement, regions: Sequence[Region], what: str) -> Any:
+    """Draw regions on the layer of what was suggested, alone; return it, None for no regions."""
     if not regions:
         return None
-    title = f"Suggested: {find(name).title}"
+    title = f"Suggested: {what}"
     layer = next((one for one in viewer.layers if one.name == title), None)
     if layer is None:
         layer = new_regions_layer(viewer, placement.layer, title)

@@ -100,6 +100,7 @@ KINDS: dict[str, CautionKind] = {
     "small-radius": _warning("The circle is small for the blur"),
     "leaning-object": _warning("The object leans through the slices"),
     "coarse-sampling": _warning("Few samples across the width"),
+    "profile-shape": _warning("No known shape fits the profile"),
     "resampled-profile": _note("A profile between pixels is interpolated"),
     "slanted-average": _warning("The profile is averaged across a slanted edge"),
     "turn-within-width": _warning("The path turns within the edge or peak"),

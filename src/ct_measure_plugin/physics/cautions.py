@@ -98,6 +98,7 @@ KINDS: dict[str, CautionKind] = {
     "object-size": _note("The size of the object was divided out"),
     "object-size-unknown": _note("The size of the object was not given"),
     "small-radius": _warning("The circle is small for the blur"),
+    "walled-object": _note("The cylinder has a wall"),
     "leaning-object": _warning("The object leans through the slices"),
     "coarse-sampling": _warning("Few samples across the width"),
     "profile-shape": _warning("No known shape fits the profile"),

@@ -56,6 +56,8 @@ class Cylinder:
         Angle of the axis to the slices' normal, degrees; None from a single slice.
     ellipticity : Quantity or None
         Longest minus shortest radius, percent of the radius; None if the circle was given.
+    rim : float or None
+        Level just inside the edge, over the outer 3 % of the radius; None if the circle was given.
     left_out : tuple of int
         Slices that do not show the body.
     moves : bool
@@ -71,6 +73,7 @@ class Cylinder:
     center_doubt_mm: float
     tilt: Quantity | None
     ellipticity: Quantity | None
+    rim: float | None
     left_out: tuple[int, ...]
     moves: bool
 
@@ -89,6 +92,7 @@ def given_cylinder(
         float(radius_mm),
         Quantity(float(radius_mm), "mm", 0.0),
         0.0,
+        None,
         None,
         None,
         (),
@@ -183,6 +187,7 @@ def _on_an_axis(
         own,
         tilt,
         Quantity(100.0 * float(shape.mean()), "%", shape_doubt),
+        float(np.median([c.inside for c in circles])),
         tuple(k for k in range(total) if k not in slices),
         moves,
     )

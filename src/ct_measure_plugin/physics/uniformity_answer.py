@@ -17,7 +17,7 @@ if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from ct_measure_plugin.physics.cylinder import Cylinder
-    from ct_measure_plugin.physics.uniformity_field import Field
+    from ct_measure_plugin.physics.uniformity_field import Field, FieldFit
     from ct_measure_plugin.physics.uniformity_samples import Cells, DiscMeans, Places
 
     Floats = NDArray[np.float64]
@@ -26,6 +26,9 @@ __all__ = ["Assembly", "Uniformity"]
 
 #: Steeper axes are cautioned, degrees: the slices cut an ellipse and mix places along z.
 STEEP = 1.0
+
+#: Where the level just inside the edge is read, in radii; a wall reads so much else, HU.
+RIM, WALL = 0.98, 20.0
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -154,7 +157,7 @@ class Assembly:
             center_y=self._axis("y", 0),
             center_x=self._axis("x", 1),
             deviation_map=picture,
-            cautions=_cautions(found),
+            cautions=_cautions(found, self.fit),
         )
 
     def _water(self) -> tuple[Quantity, Quantity, Curve]:
@@ -235,8 +238,18 @@ def _rings(sums: Field) -> tuple[Floats, Floats, Floats]:
     return sums.distance, mean, doubt
 
 
-def _cautions(found: Cylinder) -> tuple[Caution, ...]:
+def _cautions(found: Cylinder, fit: FieldFit) -> tuple[Caution, ...]:
     notes = []
+    expected = float(fit.radial(np.array([RIM]))[0])
+    if found.rim is not None and abs(found.rim - expected) > WALL:
+        notes.append(
+            Caution(
+                "walled-object",
+                f"The cylinder's rim reads {found.rim:.0f}, what it holds would read"
+                f" {expected:.0f} there: it has a wall, which counts to its radius.",
+                "Choose field and edge_position so that the wall and its blur stay outside.",
+            )
+        )
     if found.left_out:
         notes.append(
             Caution(

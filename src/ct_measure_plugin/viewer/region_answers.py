@@ -1,16 +1,17 @@
 """Answers of many regions, kept while nothing about them changes, found without holding up a drag.
 
 Each tick asks for all of them. Those not known are measured until the tick's time is used up, the
-first ones first; where many move at once, each is glanced at (the same numbers, without their
-uncertainties) until the full answers follow. A region that would take long by itself, and many
-that have come to rest, are measured in a thread. An answer belongs to its question, region and
-Volume and settings, so an old one can never stand beside a region that has moved on.
+first ones first; where that would take long, because many move at once or one is large, each is
+glanced at (the same numbers, without their uncertainties) until the full answers follow. Once they
+rest, what takes long is measured in a thread. An answer belongs to its question, region and Volume
+and settings, so an old one can never stand beside a region that has moved on.
 """
 
 from __future__ import annotations
 
 import math
 import time
+from collections import deque
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Any
 
@@ -43,9 +44,18 @@ LONG = 0.05
 #: Seconds that all regions together may still need before they go into a thread, once at rest.
 MANY = 0.1
 
+#: Part of a tick's time that full answers may take while something moves; else glances come first.
+GLANCE = 0.4
+
+#: Seconds without a change after which regions are at rest: events of a drag come faster.
+REST = 0.06
+
 #: Seconds of a region on one slice and of each further slice, and of each pixel; the first guess,
 #: which measured times replace.
 _EACH, _PIXEL = 2.5e-3, 1.5e-7
+
+#: What a glance costs, as a part of it.
+_GLANCED = 0.2
 
 #: Answers kept beyond those asked for: a drag that goes back finds them again.
 _SPARE = 256
@@ -107,10 +117,11 @@ class RegionAnswers:
         self._known: dict[Ask, Result | NotMeasured] = {}
         self._glanced: dict[Ask, Result | NotMeasured] = {}
         self._last: frozenset[Ask] = frozenset()
+        self._moved = -math.inf
         self._guesses: dict[Ask, float] = {}
-        self._pace = 1.0
+        self._pace = self._glance_pace = 1.0
         self._round = 0
-        self._fresh: dict[Ask, Result | NotMeasured] = {}
+        self._fresh: deque[tuple[Ask, Result | NotMeasured]] = deque()  # a thread adds to it
         self._following = Following(self._measurement.title)
         self._following.answered.connect(self._take)
 
@@ -131,6 +142,7 @@ class RegionAnswers:
         """Measure everything anew: a Volume's values have changed."""
         self._known.clear()
         self._glanced.clear()
+        self._fresh.clear()
         self._round += 1
         self.stop()
 
@@ -154,28 +166,31 @@ class RegionAnswers:
         int
             How many are worth another tick: not known, and not being measured in the background.
         """
-        self._known.update(self._fresh)
-        self._fresh = {}
+        while self._fresh:
+            ask, found = self._fresh.popleft()
+            self._known[ask] = found
         self._make_room(asks)
         open_asks = [ask for ask in dict.fromkeys(asks) if ask not in self._known]
         if seconds is None:
             self._measure(open_asks, math.inf)
             return 0
-        wanted = frozenset(asks)
-        at_rest, self._last = wanted == self._last, wanted
+        now, wanted = time.perf_counter(), frozenset(asks)
+        if wanted != self._last:
+            self._last, self._moved = wanted, now
+        at_rest = now - self._moved > REST
         short = [ask for ask in open_asks if self._cost(ask) <= LONG]
-        end = time.perf_counter() + seconds
-        if sum(map(self._cost, short)) > seconds:
-            self._glance(short, end)
-        self._measure(short, end)
+        seen = [] if at_rest else [ask for ask in open_asks if self._glance_cost(ask) <= seconds]
+        if sum(map(self._cost, seen)) > GLANCE * seconds:
+            self._glance(seen, now + seconds)
+        else:
+            self._measure(short, now + seconds)
         rest = [ask for ask in open_asks if ask not in self._known]
-        if not rest or self._following.busy:
-            return len(rest)
-        costs = [self._cost(ask) for ask in rest]
-        if at_rest and sum(costs) > MANY:
+        if self._following.busy:
+            return sum(ask not in self._glanced for ask in seen)
+        if at_rest and sum(map(self._cost, rest)) > MANY:
             self._send(rest)
             return 0
-        long = [ask for ask, cost in zip(rest, costs, strict=True) if cost > LONG]
+        long = [ask for ask in rest if self._cost(ask) > LONG and ask not in self._glanced]
         if long:
             self._send(long)
         return len(rest) - len(long)
@@ -194,9 +209,12 @@ class RegionAnswers:
     def _glance(self, asks: Iterable[Ask], end: float) -> None:
         for ask in asks:
             if ask not in self._glanced:
-                if time.perf_counter() >= end:
+                start = time.perf_counter()
+                if start >= end:
                     return
                 self._glanced[ask] = self._answer(ask, moving=True)
+                taken = time.perf_counter() - start
+                self._glance_pace = _learnt(self._glance_pace, taken, _GLANCED * self._guess(ask))
 
     def _answer(self, ask: Ask, *, moving: bool = False) -> Result | NotMeasured:
         if ask.other is not None:
@@ -222,15 +240,16 @@ class RegionAnswers:
         """Return about how long a region takes, in seconds."""
         return self._pace * self._guess(ask)
 
+    def _glance_cost(self, ask: Ask) -> float:
+        return self._glance_pace * _GLANCED * self._guess(ask)
+
     def _guess(self, ask: Ask) -> float:
         if ask not in self._guesses:
             self._guesses[ask] = _guess(ask)
         return self._guesses[ask]
 
     def _learn(self, ask: Ask, seconds: float) -> None:
-        """Bring the guesses to this machine's pace; a hiccup must not decide."""
-        ratio = min(max(seconds / self._guess(ask), 0.1), 4.0)
-        self._pace = 0.8 * self._pace + 0.2 * ratio
+        self._pace = _learnt(self._pace, seconds, self._guess(ask))
 
     def _send(self, asks: list[Ask]) -> None:
         number = self._round
@@ -242,7 +261,7 @@ class RegionAnswers:
                 answer = self._answer(ask)
                 self._learn(ask, time.perf_counter() - start)
                 if number == self._round:
-                    self._fresh[ask] = answer
+                    self._fresh.append((ask, answer))
                 work.progress(i + 1, len(asks))
             return number
 
@@ -258,6 +277,11 @@ class RegionAnswers:
             self._known = {ask: found for ask, found in self._known.items() if ask in wanted}
             self._glanced = {ask: found for ask, found in self._glanced.items() if ask in wanted}
             self._guesses = {ask: cost for ask, cost in self._guesses.items() if ask in wanted}
+
+
+def _learnt(pace: float, seconds: float, guess: float) -> float:
+    """Bring guesses to this machine's pace; a hiccup must not decide."""
+    return 0.8 * pace + 0.2 * min(max(seconds / guess, 0.1), 4.0)
 
 
 def _same_place(one: Region, two: Region) -> bool:

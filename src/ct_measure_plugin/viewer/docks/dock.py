@@ -69,10 +69,7 @@ class Dock(QWidget):
         self.viewer = getattr(viewer, "__wrapped__", viewer)
         self.session = Session.of(viewer)
         self._stale = True
-        self._timer = QTimer(self)
-        self._timer.setSingleShot(True)
-        self._timer.setInterval(_TICK_MS)
-        self._timer.timeout.connect(self._tick)
+        self._timer = self.single_shot(_TICK_MS, self._tick)
         self._links: list[tuple[int, WeakMethod[Any]]] = []
         self._frame: QDockWidget | None = None
         self._behind = False
@@ -129,6 +126,14 @@ class Dock(QWidget):
         if link in self._links:
             self._links.remove(link)
             emitter.disconnect(slot)
+
+    def single_shot(self, milliseconds: int, slot: Any) -> QTimer:
+        """Return a timer that, once started, calls a method of this dock once."""
+        timer = QTimer(self)
+        timer.setSingleShot(True)
+        timer.setInterval(milliseconds)
+        timer.timeout.connect(slot)
+        return timer
 
     def kick(self, *_: Any) -> None:
         """Ask for a refresh soon; the slot for anything that changed."""

@@ -2,9 +2,14 @@
 
 from __future__ import annotations
 
-from qtpy.QtWidgets import QPushButton, QVBoxLayout, QWidget
+from typing import TYPE_CHECKING
 
-__all__ = ["Fold"]
+from qtpy.QtWidgets import QPushButton, QSizePolicy, QVBoxLayout, QWidget
+
+if TYPE_CHECKING:
+    from collections.abc import Mapping
+
+__all__ = ["Fold", "folded"]
 
 
 class Fold(QWidget):
@@ -37,3 +42,14 @@ class Fold(QWidget):
         self.heading.setChecked(wanted)
         self.heading.setText(f"{'▾' if wanted else '▸'}  {self._title}")
         self._inside.setVisible(wanted)
+
+
+def folded(parts: Mapping[str, QWidget], parent: QWidget) -> list[Fold]:
+    """Return a closed fold for each part, no higher than what is in it."""
+    found = []
+    for title, part in parts.items():
+        fold = Fold(title, parent)
+        fold.add(part)
+        fold.setSizePolicy(QSizePolicy.Policy.Preferred, QSizePolicy.Policy.Maximum)
+        found.append(fold)
+    return found

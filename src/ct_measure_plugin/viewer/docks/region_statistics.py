@@ -4,22 +4,22 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING, Any
 
-from qtpy.QtCore import QTimer
-from qtpy.QtWidgets import QLabel, QSizePolicy
+from qtpy.QtCore import Qt, QTimer, Signal
 
 from ct_measure_plugin.errors import CtMeasureError
 from ct_measure_plugin.measurements import find
 from ct_measure_plugin.viewer.docks.dock import Dock
-from ct_measure_plugin.viewer.docks.fold import Fold
+from ct_measure_plugin.viewer.docks.fold import Fold, folded
 from ct_measure_plugin.viewer.docks.form import SettingsForm
-from ct_measure_plugin.viewer.docks.headline import lines_about
 from ct_measure_plugin.viewer.docks.keeping import KeepingButtons
 from ct_measure_plugin.viewer.docks.layer_questions import LayerQuestions
+from ct_measure_plugin.viewer.docks.pace import Pace
 from ct_measure_plugin.viewer.docks.region_arranging import RegionArranging
 from ct_measure_plugin.viewer.docks.region_choice import RegionChoice
 from ct_measure_plugin.viewer.docks.region_doing import RegionDoing
 from ct_measure_plugin.viewer.docks.region_files import RegionFiles
 from ct_measure_plugin.viewer.docks.region_list import CLASS, CODE, RegionListModel, offered_by
+from ct_measure_plugin.viewer.docks.region_notes import RegionNotes
 from ct_measure_plugin.viewer.docks.region_plots import RegionPlots
 from ct_measure_plugin.viewer.docks.region_typing import RegionTyping
 from ct_measure_plugin.viewer.docks.region_view import RegionView
@@ -35,13 +35,15 @@ from ct_measure_plugin.viewer.view import bring_into_view
 if TYPE_CHECKING:
     from collections.abc import Callable
 
+    from qtpy.QtWidgets import QWidget
+
     from ct_measure_plugin.viewer.theme import Colours
 
 __all__ = ["RegionStatisticsDock"]
 
 _NAME = "region_statistics"
 
-#: Seconds of a tick in which regions are measured; the rest of its 33 ms reads and paints.
+#: Seconds of a tick in which regions are measured; the rest of at most 33 ms reads and paints.
 _BUDGET = 0.018
 
 #: Milliseconds of rest before answers go into the layer's features, and between looks at work in
@@ -58,29 +60,27 @@ _FLASH = 700
 class RegionStatisticsDock(Dock):
     """Statistics of every region on a layer of shapes, labels or points, followed as it changes."""
 
+    _at_once = Signal()
+
     def __init__(self, viewer: napari.viewer.Viewer) -> None:  # type: ignore[name-defined] # noqa: F821
         super().__init__(viewer)
         self._measurement = find(_NAME)
         self._told = ""
+        self._pace = Pace()
+        self._coming = False
+        self._at_once.connect(self._tick, Qt.ConnectionType.QueuedConnection)
         self._images: tuple[Any, ...] = ()
         self.board = RegionBoard(self.session, _NAME)
         self.board.changed.connect(self.kick)
         self.acts = RegionActs(self.board, self.viewer)
-        self._rest = self._single_shot(_REST, self._write_features)
-        self._again = self._single_shot(_LOOK_AGAIN, self.kick)
-        self._plot_soon = self._single_shot(_CURVES, self.show_chosen)
-        self._flash = self._single_shot(_FLASH, self._end_flash)
+        self._rest = self.single_shot(_REST, self._write_features)
+        self._again = self.single_shot(_LOOK_AGAIN, self.kick)
+        self._plot_soon = self.single_shot(_CURVES, self.show_chosen)
+        self._flash = self.single_shot(_FLASH, self._end_flash)
         self._build()
         self.listen(self.viewer.dims.events.point, self.kick)
         self.listen(self.session.asked_changed, self._forget)
         self.reset_choices()
-
-    def _single_shot(self, milliseconds: int, slot: Any) -> QTimer:
-        timer = QTimer(self)
-        timer.setSingleShot(True)
-        timer.setInterval(milliseconds)
-        timer.timeout.connect(slot)
-        return timer
 
     # --- building -------------------------------------------------------------------
 
@@ -94,12 +94,8 @@ class RegionStatisticsDock(Dock):
         self.model.edited.connect(self._edited)
         self.view = RegionView(self.model, self)
         self.view.chosen_changed.connect(self._row_chosen)
-        self.message = QLabel()
-        self.message.setWordWrap(True)
-        self.message.setAccessibleName("What to know about the chosen region")
-        self.notes = QLabel()
-        self.notes.setWordWrap(True)
-        self.notes.setAccessibleName("Notes about the chosen region")
+        self._words = RegionNotes()
+        self.message, self.notes = self._words.message, self._words.notes
         self.plots = RegionPlots(self)
         self.form = SettingsForm(self._measurement.settings_type)
         self.form.changed.connect(self.kick)
@@ -119,20 +115,16 @@ class RegionStatisticsDock(Dock):
             self.body.addWidget(part)
 
     def _folds(self) -> list[Fold]:
-        found = []
-        for title, inside, shown in (
-            ("Histogram and slices", self.plots, True),
-            ("Notes", self.notes, False),
-            ("Add and edit by numbers", self.typing, False),
-            ("Arrange and copy", self.arranging, False),
-            ("Settings", self.form.native, False),
-            ("Files", self.files, False),
-        ):
-            fold = Fold(title, self)
-            fold.add(inside)
-            fold.open(shown)
-            fold.setSizePolicy(QSizePolicy.Policy.Preferred, QSizePolicy.Policy.Maximum)
-            found.append(fold)
+        parts: dict[str, QWidget] = {
+            "Histogram and slices": self.plots,
+            "Notes": self.notes,
+            "Add and edit by numbers": self.typing,
+            "Arrange and copy": self.arranging,
+            "Settings": self.form.native,
+            "Files": self.files,
+        }
+        found = folded(parts, self)
+        found[0].open(True)
         return found
 
     # --- following the viewer -------------------------------------------------------
@@ -204,15 +196,32 @@ class RegionStatisticsDock(Dock):
     def follow(self) -> None:
         """Measure and show what can be within a tick; the rest comes with the next ones."""
         self._stale = False
+        self._pace.begin()
         left = self._look(_BUDGET)
+        self._pace.end()
         if left:
             self.kick()
         elif self.board.busy:
             self._again.start()
 
+    def kick(self, *_: Any) -> None:
+        """Ask for a look: after a rest at once, before napari draws; else as soon as may be."""
+        self._stale = True
+        if not self.awake or self._coming or self._timer.isActive():
+            return
+        wait = self._pace.wait()
+        if wait:
+            self._timer.start(wait)
+        else:
+            self._coming = True
+            self._at_once.emit()  # queued before any repaint: those come last
+
     def _tick(self) -> None:
-        if self.isVisible():
+        self._coming = False
+        if self.awake and self._stale:
             self.follow()
+            if self._frame is None or self._frame.isFloating():
+                self.view.viewport().repaint()  # numbers need not wait for the canvas
 
     def _look(self, seconds: float | None) -> int:
         self.board.settings = self.form.settings
@@ -244,18 +253,10 @@ class RegionStatisticsDock(Dock):
             self._plot_soon.start()  # ten curves a second are live enough; numbers come first
         source = self.board.source
         busy = "Looking through the labels…" if source is not None and source.busy else ""
-        lines = [line for line in (self.board.said, busy, self._told) if line]
-        about: list[str] = []
-        if self.form.problem:
-            lines.append(f"{self.form.problem}. The settings before are used.")
-        if rows:
-            answer = rows[0].answer
-            lines += [] if answer else [str(answer)]
-            about = lines_about(answer)
-            lines += [line for line in about if line.startswith("Warning")]
-        self.message.setText("\n".join(lines))
-        self.message.setVisible(bool(lines))
-        self.notes.setText("\n".join(line for line in about if not line.startswith("Warning")))
+        problem = self.form.problem and f"{self.form.problem}. The settings before are used."
+        self._words.show(
+            (self.board.said, busy, self._told, problem), rows[0].answer if rows else None
+        )
 
     def _tell(self, text: str) -> None:
         self._told = text
@@ -263,8 +264,7 @@ class RegionStatisticsDock(Dock):
 
     def recolour(self, colours: Colours) -> None:
         """Take up the colours of a theme."""
-        for label in (self.message, self.notes):
-            label.setStyleSheet(f"color: {colours.text};")
+        self._words.recolour(colours)
         self.view.recolour(colours)
         self.plots.recolour(colours)
 

@@ -64,7 +64,8 @@ def test_every_measurement_is_shown_whatever_it_answers(name, qtbot, viewer_mode
     assert all(answers), answers
     first = answers[0]
     curves = [n for n, c in curves_of(first).items() if len(c.x) > 1]
-    assert dock.answers.fields() == [*curves, *pictures_of(first), *tables_of(first)]
+    found = [*curves[:1], *pictures_of(first), *curves[1:], *tables_of(first)]
+    assert dock.answers.fields() == found
     for index in range(dock.answers.tabs.count()):
         dock.answers.tabs.setCurrentIndex(index)
         shown = [not part.isHidden() for part in (dock.answers.plot, dock.answers.picture,

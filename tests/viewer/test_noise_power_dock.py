@@ -5,6 +5,9 @@ from __future__ import annotations
 import numpy as np
 import pytest
 
+from ct_measure_plugin.measurements import find
+from ct_measure_plugin.measurements.noise_spectrum import NoiseSpectrum
+from ct_measure_plugin.physics.noise_power import noise_power
 from ct_measure_plugin.physics.regions import Disc
 from ct_measure_plugin.physics.volume import Volume
 from ct_measure_plugin.viewer.demo import draw_regions
@@ -84,3 +87,26 @@ def test_a_region_is_suggested_where_the_material_is_uniform(qtbot, viewer_model
     dock.form.show(dock.form.settings.model_copy(update={"patch_px": 128}))
     assert dock.suggest() is None
     assert "patches of this size need 45.3 mm" in dock.suggested.text()
+
+
+def test_detectability_takes_what_the_docks_measured_last(dock):
+    """The patches stay as they were set; spectrum and MTF come without a file, and go again."""
+    noise = np.random.default_rng(5).normal(0, NOISE, (40, 32, 32))
+    spectrum = noise_power(noise, spacing_mm=(0.5, 0.5))
+    dock.choose_measurement("detectability")
+    assert dock.form.settings.patch_px == 32
+    control = dock.form._controls["noise_spectrum"]
+    dock.session.show_answers("noise_power", ())
+    control._take.native.click()
+    assert dock.form.settings.noise_spectrum is None
+    assert control._file.line_edit.native.placeholderText() == "none was measured yet"
+    dock.session.show_answers("noise_power", (spectrum,))
+    control._take.native.click()
+    assert dock.form.settings.noise_spectrum == NoiseSpectrum.of(spectrum)
+    dock.measure_now()
+    [answer] = dock.answers.answers()
+    volume = dock.session.placement(dock.sources.chosen_images()[0]).volume
+    whole = find("detectability").measure(volume, (), dock.form.settings)
+    assert answer.result.npw == whole.npw
+    control._take.native.click()
+    assert dock.form.settings.noise_spectrum is None

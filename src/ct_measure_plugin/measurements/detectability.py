@@ -26,8 +26,8 @@ if TYPE_CHECKING:
 __all__ = ["DetectabilitySettings", "MeasureDetectability"]
 
 
-class DetectabilitySettings(NoisePowerSettings):
-    """Settings of detectability: the task, the MTF, the eye, and those of the noise power."""
+class TaskSettings(Settings):
+    """Settings of the task, the MTF and the eye."""
 
     contrast_hu: float = Field(
         10.0,
@@ -107,6 +107,10 @@ class DetectabilitySettings(NoisePowerSettings):
         if self.eye == "none":
             return None
         return replace(EYES[self.eye], distance_mm=self.distance_mm, zoom=self.zoom)
+
+
+class DetectabilitySettings(NoisePowerSettings, TaskSettings):
+    """Settings of detectability: those of the task, then those of the noise power."""
 
 
 class MeasureDetectability(Measurement):

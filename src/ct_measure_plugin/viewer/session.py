@@ -14,7 +14,13 @@ if TYPE_CHECKING:
 
     from ct_measure_plugin.viewer.layers import Placement
 
-__all__ = ["Session"]
+__all__ = ["MEASURED", "Session"]
+
+#: What a setting's file is to hold -> the measurements whose answers would do.
+MEASURED: dict[str, tuple[str, ...]] = {
+    "noise spectrum": ("noise_power",),
+    "MTF": ("edge_mtf", "disc_mtf", "wire_mtf"),
+}
 
 
 class Session:
@@ -134,8 +140,17 @@ class Session:
 
     def show_answers(self, name: str, answers: Iterable[Any]) -> None:
         """Keep a measurement's newest answers and tell everyone."""
-        self._answers[name] = tuple(answers)
+        self._answers.pop(name, None)
+        self._answers[name] = tuple(answers)  # the newest stand last
         self.answers_changed.emit(name, self._answers[name])
+
+    def offered(self, kind: str) -> Any:
+        """Return the newest answer that would do for a setting's file of a kind, or None."""
+        for name, answers in reversed(self._answers.items()):
+            found = [one for one in answers if one] if name in MEASURED.get(kind, ()) else []
+            if found:
+                return found[0]
+        return None
 
     def keep(self, record: Any) -> None:
         """Keep a record and tell everyone."""

@@ -272,13 +272,16 @@ class AnswersView(QWidget):
 
 
 def _fields_of(answers: tuple[Answer, ...]) -> list[str]:
-    """Return the names of all curves, pictures and tables, as the first that has each has them."""
+    """Return the names of all curves, pictures and tables, as the first that has each has them.
+
+    The chief curve, which a result names first, then the pictures, the other curves and the tables.
+    """
     found: dict[str, None] = {}
     for answer in answers:
         if isinstance(answer.result, Result):
             curves = [name for name, one in curves_of(answer.result).items() if len(one.x) > 1]
-            others = [*pictures_of(answer.result), *tables_of(answer.result)]
-            found |= dict.fromkeys([*curves, *others])
+            pictures, tables = pictures_of(answer.result), tables_of(answer.result)
+            found |= dict.fromkeys([*curves[:1], *pictures, *curves[1:], *tables])
     return list(found)
 
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import types
 import typing
+from functools import partial
 from typing import TYPE_CHECKING, Any
 
 from magicgui.widgets import CheckBox, Container, create_widget
@@ -20,8 +21,11 @@ from ct_measure_plugin.viewer.docks.setting_lines import (
     ranges_of,
     words_of,
 )
+from ct_measure_plugin.viewer.session import MEASURED
 
 if TYPE_CHECKING:
+    from collections.abc import Callable
+
     from pydantic.fields import FieldInfo
 
     from ct_measure_plugin.measurements import Settings
@@ -39,6 +43,8 @@ class SettingsForm:
         ranges.
     settings : Settings, optional
         What to show first; the defaults otherwise.
+    offers : callable, optional
+        Told what a file is to hold, returns the newest answer of a dock that would do, or None.
 
     Attributes
     ----------
@@ -60,12 +66,17 @@ class SettingsForm:
     changed = Signal(object)
     told = Signal(str)
 
-    def __init__(self, settings_type: type[Settings], settings: Settings | None = None) -> None:
+    def __init__(
+        self,
+        settings_type: type[Settings],
+        settings: Settings | None = None,
+        offers: Callable[[str], Any] | None = None,
+    ) -> None:
         self._type = settings_type
         self.settings = settings_type() if settings is None else settings
         self.problem = ""
         self._controls: dict[str, Any] = {
-            name: _control(name, field, getattr(self.settings, name))
+            name: _control(name, field, getattr(self.settings, name), offers)
             for name, field in settings_type.model_fields.items()
         }
         self._container = Container(widgets=list(self._controls.values()), labels=True)
@@ -138,7 +149,9 @@ class _Optional(Container[Any]):
 _LINES = ((holds_numbers, numbers_of), (holds_ranges, ranges_of), (holds_words, words_of))
 
 
-def _control(name: str, field: FieldInfo, value: Any) -> Any:
+def _control(
+    name: str, field: FieldInfo, value: Any, offers: Callable[[str], Any] | None = None
+) -> Any:
     """Return the control of one field."""
     label = field.title or name.replace("_", " ").capitalize()
     names = {"name": name, "label": label, "tooltip": field.description or ""}
@@ -149,7 +162,9 @@ def _control(name: str, field: FieldInfo, value: Any) -> Any:
             line.value = value
             return line
     if isinstance(field.json_schema_extra, dict) and "file" in field.json_schema_extra:
-        file: Any = FileChoice(**names)
+        kind = str(field.json_schema_extra["file"])
+        offer = None if offers is None or kind not in MEASURED else partial(offers, kind)
+        file: Any = FileChoice(offer, **names)
         file.value = value
         return file
     options = {**_bounds(field), **_steps_of(annotation, field)}

@@ -151,7 +151,9 @@ class MeasurementDock(Dock):
         self.which.setCurrentIndex(self.which.findData(name))
         self.which.setToolTip(measurement.summary)
         if name not in self._forms:
-            self._forms[name] = form = SettingsForm(measurement.settings_type)
+            self._forms[name] = form = SettingsForm(
+                measurement.settings_type, offers=self.session.offered
+            )
             form.changed.connect(self.kick)
             form.told.connect(self._tell)
             self._fold.add(form.native)

@@ -8,6 +8,7 @@ from qtpy.QtCore import Qt
 from qtpy.QtWidgets import QLabel, QPushButton
 
 from ct_measure_plugin.errors import CtMeasureError
+from ct_measure_plugin.measurements.noise_power import NoisePowerSettings
 from ct_measure_plugin.physics.results import NotMeasured
 from ct_measure_plugin.viewer.differences import add_difference, difference
 from ct_measure_plugin.viewer.docks.measurement import MeasurementDock
@@ -56,6 +57,14 @@ class NoisePowerDock(MeasurementDock):
         images = self.sources.chosen_images()
         self.suggest_button.setEnabled(bool(images))
         self.subtract_button.setEnabled(len(images) == 2)
+
+    def choose_measurement(self, name: str) -> None:
+        """Turn to the other measurement; the patches stay as they were set."""
+        before = self._forms.get(self._measurement.name)
+        super().choose_measurement(name)
+        if before is not None and before is not self.form:
+            shared = {one: getattr(before.settings, one) for one in NoisePowerSettings.model_fields}
+            self.form.show(self.form.settings.model_copy(update=shared))
 
     def suggest(self, *_: Any) -> Any:
         """Draw a uniform region on the slice shown, and measure it; return its layer."""

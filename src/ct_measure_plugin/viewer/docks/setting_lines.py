@@ -7,7 +7,7 @@ import typing
 from typing import TYPE_CHECKING, Any
 
 from magicgui.types import FileDialogMode
-from magicgui.widgets import Container, FileEdit, LineEdit
+from magicgui.widgets import Container, FileEdit, LineEdit, PushButton
 
 if TYPE_CHECKING:
     from collections.abc import Callable
@@ -23,6 +23,9 @@ __all__ = [
     "text_of",
     "words_of",
 ]
+
+#: What the button beside a file says.
+_TAKE, _FORGET = "Newest of the docks", "Forget what is taken"
 
 _RANGE = re.compile(r"^\s*(\S+?)\s*(?:to|…|\.\.)\s*(\S+)\s*$")
 
@@ -155,17 +158,43 @@ _HINTS: dict[Any, str] = {
 
 
 class FileChoice(Container[Any]):
-    """A file whose content is the setting; the settings read it. Empty for none."""
+    """A file whose content is the setting; the settings read it. Empty for none.
 
-    def __init__(self, **names: Any) -> None:
+    Parameters
+    ----------
+    offer : callable, optional
+        Returns what a dock measured last that would do, None if nothing: it can then be taken
+        without a file.
+    """
+
+    def __init__(self, offer: Callable[[], Any] | None = None, **names: Any) -> None:
         self._file = FileEdit(
             mode=FileDialogMode.EXISTING_FILE, name="file", label="", nullable=True
         )
-        self._content: Any = ()
-        super().__init__(widgets=[self._file], layout="horizontal", labels=False, **names)
+        self._content: Any = None
+        self._offer = offer
+        self._take = PushButton(name="take", text=_TAKE)
+        self._take.changed.connect(self._taken)
+        widgets = [self._file] if offer is None else [self._file, self._take]
+        super().__init__(widgets=widgets, layout="vertical", labels=False, **names)
         self.margins = (0, 0, 0, 0)
         self._file.line_edit.native.setAccessibleName(self.label)
-        self._file.line_edit.native.setPlaceholderText("none")
+        self._take.tooltip = f"Take the {self.label} that a dock measured last, without a file."
+        self._say()
+
+    def _taken(self, *_: Any) -> None:
+        """Take what a dock measured last, or let go of what is held."""
+        held = self._content is not None and self._content != ()
+        found = None if held or self._offer is None else self._offer()
+        self._content = found
+        self._file.line_edit.value = ""
+        self._say("none was measured yet" if found is None and not held else "")
+
+    def _say(self, words: str = "") -> None:
+        held = self._content is not None and self._content != ()
+        text = words or ("taken; no file is needed" if held else "none")
+        self._file.line_edit.native.setPlaceholderText(text)
+        self._take.text = _FORGET if held else _TAKE
 
     @property
     def value(self) -> Any:
@@ -177,3 +206,4 @@ class FileChoice(Container[Any]):
     def value(self, value: Any) -> None:
         self._content = value
         self._file.line_edit.value = ""
+        self._say()

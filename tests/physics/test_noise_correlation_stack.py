@@ -4,8 +4,8 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
+from noise_discs import FILTERS, SIDE, covered
 from scipy import fft
-from test_noise_correlation import FILTERS, SIDE, covered
 
 from ct_measure_plugin.physics.coverage import plane_coverage
 from ct_measure_plugin.physics.noise_correlation import doubt_of_mean

@@ -5,8 +5,9 @@ the noise, `R` the autocorrelation of the weights and `W` their sum: the same in
 ``∬ S |W(f)|² df`` over the noise power spectrum `S`. Here `S` is judged from the region itself:
 every spectrum of a library is weighed by how well it explains the region's periodogram, and the
 variances that the spectra give are averaged with these weights. What the region cannot decide
-widens the standard error by the factor of Student's distribution. A small region's periodogram
-says next to nothing; :mod:`ct_measure_plugin.physics.small_regions` takes its place there.
+widens the standard error by the factor of Student's distribution. The periodogram of a region up to
+a few thousand pixels says too little where it matters, at the lowest frequencies;
+:mod:`ct_measure_plugin.physics.small_regions` takes its place there.
 """
 
 from __future__ import annotations
@@ -44,10 +45,10 @@ FLOOR = 0.05
 #: lose their vote first, since no spectrum of the library fits them to the last percent.
 VOTES = 600.0
 
-#: Coverage of a slice, in pixels, up to which exact likelihoods of the pixels are used, and from
-#: which the periodogram is: in between one passes into the other, so that nothing jumps. A
-#: periodogram of fewer has no more than a handful of independent values.
-SMALL, LARGE = 64.0, 128.0
+#: Coverage of a slice, in pixels, up to which exact likelihoods of blocks of pixels are used, and
+#: from which the periodogram is: in between one passes into the other, so that nothing jumps. A
+#: periodogram of fewer has too few independent values at the frequencies that decide the mean.
+SMALL, LARGE = 2400.0, 4800.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -162,7 +163,8 @@ def doubt_of_mean(values: Floats, weights: Floats, spacing_mm: tuple[float, ...]
     if part < 1:
         stretch = (spacing_mm[-2] / finest, spacing_mm[-1] / finest)
         small = doubt_of_few(residual, cover, stretch, shared)
-        few = MeanDoubt(*small[:2], small.reach * finest, small.freedom)
+        if small is not None:
+            few = MeanDoubt(*small[:2], small.reach * finest, small.freedom)
     if part > 0 or few is None:
         many = _doubt_of_many(signal, cover, spacing_mm, white.power_samples, shared)
     if few is None or many is None:

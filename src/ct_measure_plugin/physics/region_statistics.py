@@ -32,9 +32,9 @@ __all__ = ["RegionStatistics", "region_statistics", "weighted_quantile"]
 #: Below this many pixels a spread says little; the number is a rule of thumb (common practice).
 FEW_PIXELS = 50
 
-#: Below this many independent samples the standard error covers less than it says: under 93 % on
-#: smooth noise (coverage test).
-FEW_SAMPLES = 40.0
+#: Below this many independent samples the standard error may cover less than it says: under 93 % on
+#: noise smoother than the priors expect (the docs page has the figures).
+FEW_SAMPLES = 10.0
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)

@@ -76,7 +76,8 @@ def rod_mean(values: Floats, weights: Floats, *, spacing_mm: tuple[float, ...]) 
     The parts are told apart by the distance to the nearest pixel outside, slice by slice. Their
     difference is judged by the sample variance over the number of independent samples that the
     variance sees, which for the noise of filtered backprojection is too large rather than too
-    small.
+    small. The samples are counted after a cubic in the depth is taken off: a border in the region
+    is a structure, not smooth noise.
 
     Examples
     --------
@@ -95,10 +96,21 @@ def rod_mean(values: Floats, weights: Floats, *, spacing_mm: tuple[float, ...]) 
     step = None
     if outer.sum() > 8 and inner.sum() > 8:
         shares = [float(weights[part].sum()) / float(w.sum()) for part in (outer, inner)]
-        u_step = sd * math.sqrt(sum(1 / (share * doubt.power_samples) for share in shares))
+        samples = _samples(values, weights, depth, spacing_mm)
+        u_step = sd * math.sqrt(sum(1 / (share * samples) for share in shares))
         means = [float(np.average(values[p], weights=weights[p])) for p in (outer, inner)]
         step = Quantity(means[0] - means[1], "HU", u_step)
     return RodMean(Quantity(mean, "HU", error), step)
+
+
+def _samples(
+    values: Floats, weights: Floats, depth: Floats, spacing_mm: tuple[float, ...]
+) -> float:
+    """Return the independent samples of what is left when a cubic in the depth is taken off."""
+    inside = weights > 0
+    cubic = np.polynomial.Polynomial.fit(depth[inside], values[inside], 3, w=weights[inside])
+    left = np.where(inside, values - cubic(depth), 0.0)
+    return doubt_of_mean(left, weights, spacing_mm).power_samples
 
 
 def _depth(inside: NDArray[np.bool_], spacing_mm: tuple[float, ...]) -> Floats:

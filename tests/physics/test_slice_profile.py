@@ -341,6 +341,31 @@ def test_fine_samples_without_noise_are_read_to_half_a_per_cent(target, name):
     assert abs(found.fwtm.value - fwtm) < 1.96 * found.fwtm.uncertainty + 1e-4
 
 
+def test_tails_are_part_of_the_model():
+    """A twentieth as high and about twice as wide: FWHM 2.17796 and FWTM 4.10559 by a root.
+
+    The model's tails are not quite these: half a per cent.
+    """
+    tailed = lambda at: 0.95 * gauss(at) + 0.05 * gauss(at, 2.0)  # noqa: E731
+    stack, z = bead(tailed, 0.4)
+    found = slice_profile(stack, spacing_mm=(PIXEL, PIXEL), positions_mm=z, object_size_mm=0.0)
+    assert found.fwhm.value == pytest.approx(2.17796, rel=5e-3)
+    assert found.fwtm.value == pytest.approx(4.10559, rel=5e-3)
+    width = found.fwhm.value
+    areas = np.array([0.95 * 0.9, 0.05 * 2.0])
+    beyond = 2 * ndtr(-width / np.array([0.9, 2.0]))
+    assert found.outside.value == pytest.approx(areas @ beyond / areas.sum(), abs=3e-3)
+
+
+def test_a_profile_that_no_shape_fits_is_cautioned():
+    """Lopsided: one side twice as wide as the other."""
+    lopsided = lambda at: np.where(at < 0, gauss(at, 0.7), gauss(at, 1.4))  # noqa: E731
+    for shape, cautioned in ((lopsided, True), (gauss, False)):
+        stack, z = bead(shape, 0.4)
+        found = slice_profile(stack, spacing_mm=(PIXEL, PIXEL), positions_mm=z, object_size_mm=0.0)
+        assert ("profile-shape" in {c.code for c in found.cautions}) is cautioned
+
+
 def test_a_rectangle_between_coarse_slices_is_left_open():
     """Two slices see it whole, two see nothing: its width lies between one and three steps."""
     stack, z = bead(lambda at: (np.abs(at) < 1.25).astype(float), 1.25, offset=0.625 * 0.9)

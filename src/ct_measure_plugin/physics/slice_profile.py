@@ -13,7 +13,13 @@ from ct_measure_plugin.physics.mtf_curve import MtfResult, checked_spacing, chec
 from ct_measure_plugin.physics.results import Caution, Curve, NotMeasured, Quantity
 from ct_measure_plugin.physics.ssp_blur import FWHM, Blur
 from ct_measure_plugin.physics.ssp_fit import fit_shapes
-from ct_measure_plugin.physics.ssp_numbers import along_z, first_guess, numbers_of, profile_of
+from ct_measure_plugin.physics.ssp_numbers import (
+    along_z,
+    cautions_of,
+    first_guess,
+    numbers_of,
+    profile_of,
+)
 from ct_measure_plugin.physics.ssp_samples import (
     Ramp,
     SspSamples,
@@ -30,8 +36,8 @@ if TYPE_CHECKING:
 
 __all__ = ["SliceProfile", "slice_profile"]
 
-#: Slice increments a FWHM: refused and cautioned below.
-LEAST_SAMPLES, FAIR_SAMPLES = 2.0, 4.0
+#: Samples a FWHM below which none is quoted.
+LEAST_SAMPLES = 2.0
 
 #: Angles between ramp and slice, degrees, beyond which a ramp tells little.
 LEAST_ANGLE, MOST_ANGLE = 2.0, 70.0
@@ -310,7 +316,7 @@ def _measured(
         profile=profile_of(samples, agreeing, width.value),
         target=target,
         center_mm=place,
-        cautions=(*cautions, *_coarse(samples, width), *more),
+        cautions=(*cautions, *cautions_of(samples, agreeing, width.value), *more),
     )
 
 
@@ -330,16 +336,3 @@ def _refusal(samples: SspSamples, width: Quantity, spread: float, blur: Blur) ->
             "measure a smaller object, or a ramp at a smaller angle",
         )
     return None
-
-
-def _coarse(samples: SspSamples, width: Quantity) -> list[Caution]:
-    count = width.value / samples.step
-    if count >= FAIR_SAMPLES:
-        return []
-    return [
-        Caution(
-            "coarse-sampling",
-            f"The profile is only {count:.1f} samples wide.",
-            "Reconstruct with a smaller increment.",
-        )
-    ]

@@ -15,7 +15,7 @@ import numpy as np
 from scipy import linalg, special
 
 from ct_measure_plugin.physics.ssp_blur import FWHM
-from ct_measure_plugin.physics.ssp_shapes import MOST_ROUND, MOST_SPLIT, Shapes
+from ct_measure_plugin.physics.ssp_shapes import MOST_ROUND, MOST_SPLIT, MOST_TAIL, Shapes
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -27,10 +27,14 @@ if TYPE_CHECKING:
 
 __all__ = ["Agreeing", "fit_shapes"]
 
-#: Angles of the shapes from which a best one is sought: the corners and edges of their range
-#: and some within; steps of all, and of the best few thereafter.
+#: Unknowns: middle, logarithm of the SD, the two angles of the shape, share of the tails.
+UNKNOWNS = 5
+
+#: Angles and tails of the shapes from which a best one is sought: the corners and edges of their
+#: range and some within; steps of all, and of the best few thereafter.
 STARTS = np.array(
-    [(0.0, 0.0)] + [(x, y) for x in (0.8, 1.35, MOST_ROUND) for y in (0.0, 0.25, 0.5, MOST_SPLIT)],
+    [(0.0, 0.0, 0.0), (0.0, 0.0, 0.1), (1.35, 0.25, 0.1)]
+    + [(x, y, 0.0) for x in (0.8, 1.35, MOST_ROUND) for y in (0.0, 0.25, 0.5, MOST_SPLIT)],
 )
 STEPS, FEW, MORE = 6, 4, 20
 
@@ -68,8 +72,8 @@ class Agreeing:
         Standard uncertainty of the best's height, the rest given.
     excess : ndarray, shape (k,)
         Chi-squared above the best's, over the surplus.
-    covariance, steps : ndarray, shapes (4, 4) and (4,)
-        Of the best's unknowns; the last four profiles differ from the best by a step in each. The
+    covariance, steps : ndarray, shapes (5, 5) and (5,)
+        Of the best's unknowns; the last five profiles differ from the best by a step in each. The
         one before them is the best for another resolution in the slice.
     surplus : float
         Factor on the variance of the noise: above 1 where no shape fits within it.
@@ -94,19 +98,21 @@ class Agreeing:
         """Return the best's of values, shape (k, ...), and their standard uncertainty.
 
         The largest difference from the best, over 1.96, among profiles that agree at 95 %: whose
-        chi-squared is higher by 1.96² at most. Where too few were found, the covariance of the best
-        carried through, if that is larger. To this is added what the uncertainty of the
-        resolution in the slice does.
+        chi-squared is higher by 1.96² at most. The covariance of the best carried through, if that
+        is larger, but by a fifth at most: trials miss the very ends, while to first order a box's
+        samples say nothing of its width. To this is added what the uncertainty of the resolution
+        in the slice does.
         """
         best = values[0]
         scale = np.maximum(np.sqrt(np.maximum(self.excess, 0.0)), NINETY_FIVE)
         scale = scale.reshape(-1, *(1,) * (values.ndim - 1))
         among = np.max(np.abs(values - best) / scale, axis=0)
-        if len(self.excess) < TRIALS / 8:
-            slopes = np.tensordot(np.diag(1 / self.steps), values[-4:] - best, 1)
-            linear = np.einsum("i...,ij,j...->...", slopes, self.covariance, slopes)
-            among = np.maximum(np.sqrt(np.maximum(linear, 0.0)), among)
-        return best, np.hypot(among, values[-5] - best)
+        slopes = np.tensordot(np.diag(1 / self.steps), values[-UNKNOWNS:] - best, 1)
+        linear = np.einsum("i...,ij,j...->...", slopes, self.covariance, slopes)
+        linear = np.sqrt(np.maximum(linear, 0.0))
+        if len(self.excess) >= TRIALS / 8:
+            linear = np.minimum(linear, 1.2 * among)
+        return best, np.hypot(np.maximum(among, linear), values[-UNKNOWNS - 1] - best)
 
 
 def fit_shapes(
@@ -153,15 +159,18 @@ def fit_shapes(
 
 
 class _Problem:
-    """The readings, whitened, and the range of the unknowns: middle, log SD, the two angles."""
+    """The readings, whitened, and the range of the unknowns."""
 
     def __init__(
         self, samples: SspSamples, blur: Blur, middle: float, width: float, *, base: bool
     ) -> None:
-        self.z, self.blur = samples.z, blur
-        self.range = float(np.ptp(samples.value))
+        self.blur = blur
+        self.z, middle, width = np.round(samples.z, 9), round(middle, 9), round(width, 9)
+        scale = 2.0 ** math.ceil(math.log2(float(np.ptp(samples.value))))
+        self.read = _rounded(samples.value, scale)
         n = len(samples.z)
-        trusted = samples.covariance + (TRUSTED * self.range) ** 2 * np.eye(n)
+        floor = (TRUSTED * float(np.ptp(self.read))) ** 2 * np.eye(n)
+        trusted = _rounded(samples.covariance, scale**2) + floor
         self.whiten = linalg.solve_triangular(
             linalg.cholesky(trusted, lower=True), np.eye(n), lower=True
         )
@@ -169,14 +178,15 @@ class _Problem:
             shared = self.whiten.sum(axis=1)
             shared /= math.sqrt(float(shared @ shared))
             self.whiten -= np.outer(shared, shared @ self.whiten)
-        self.read, self.value = samples.value, self.whiten @ samples.value
-        self.freedom = max(n - 5 - int(base), 1)
+        self.value = self.whiten @ self.read
+        self.freedom = max(n - UNKNOWNS - 1 - int(base), 1)
         self.base = base
         reach = PLACES * max(width, float(np.diff(samples.z).max()))
         self.start = np.array([middle, math.log(width / FWHM)])
         low, high = math.log(NARROWEST), math.log(WIDEST)
-        self.low = np.array([middle - reach, self.start[1] + low, 0.0, 0.0])
-        self.high = np.array([middle + reach, self.start[1] + high, MOST_ROUND, MOST_SPLIT])
+        self.low = np.array([middle - reach, self.start[1] + low, 0.0, 0.0, 0.0])
+        ends = (MOST_ROUND, MOST_SPLIT, MOST_TAIL)
+        self.high = np.array([middle + reach, self.start[1] + high, *ends])
         self.size = self.high - self.low
 
     def within(self, points: Floats) -> Floats:
@@ -184,7 +194,7 @@ class _Problem:
         return found
 
     def shapes(self, points: Floats) -> Shapes:
-        return Shapes.of_spread(np.exp(points[:, 1]), points[:, 2], points[:, 3])
+        return Shapes.of_spread(np.exp(points[:, 1]), *points[:, 2:].T)
 
     def forms(self, points: Floats) -> tuple[Floats, Floats]:
         """Return what readings each trial expects, whitened, and its best height."""
@@ -220,7 +230,7 @@ class _Problem:
         return np.concatenate([[best], ends, others])
 
     def solutions(self) -> tuple[Floats, Floats]:
-        """Return least squares solutions from all starts, (k, 4), and the best's covariance."""
+        """Return least squares solutions from all starts, (k, 5), and the best's covariance."""
         unit = Shapes.of_spread(np.ones(len(STARTS)), *STARTS.T)
         spread = self.start[1] + np.log(FWHM / unit.widths(0.5))
         start = np.column_stack([np.full(len(STARTS), self.start[0]), spread, STARTS])
@@ -240,7 +250,7 @@ class _Problem:
             held = (points <= self.low) & (slope > 0) | (points >= self.high) & (slope < 0)
             jacobian *= ~held[:, None, :]
             normal = jacobian.transpose(0, 2, 1) @ jacobian
-            extra = damp[:, None, None] * normal * np.eye(4) + np.diag(1e-4 / self.size**2)
+            extra = damp[:, None, None] * normal * np.eye(UNKNOWNS) + np.diag(1e-4 / self.size**2)
             step = np.linalg.solve(normal + extra, (slope * ~held)[..., None])[..., 0]
             moved = self.within(points - step)
             after = self.left(moved)
@@ -258,10 +268,10 @@ class _Problem:
         return found
 
     def jacobian(self, points: Floats, left: Floats) -> Floats:
-        """Return the derivatives of the residuals, (k, n, 4)."""
+        """Return the derivatives of the residuals, (k, n, 5)."""
         step = self.inward(points)
-        moved = points[:, None] + step[:, None] * np.eye(4)
-        after = self.left(moved.reshape(-1, 4)).reshape(len(points), 4, -1)
+        moved = points[:, None] + step[:, None] * np.eye(UNKNOWNS)
+        after = self.left(moved.reshape(-1, UNKNOWNS)).reshape(len(points), UNKNOWNS, -1)
         found: Floats = ((after - left[:, None]) / step[..., None]).transpose(0, 2, 1)
         return found
 
@@ -272,7 +282,7 @@ class _Problem:
         return found
 
     def other(self, best: Floats) -> Floats:
-        """Return the best, (1, 4), for a resolution in the slice lower by its uncertainty."""
+        """Return the best, (1, 5), for a resolution in the slice lower by its uncertainty."""
         if self.blur.within == 0:
             return best
         blur, self.blur = self.blur, self.blur.doubted()
@@ -290,9 +300,9 @@ class _Problem:
         chi2 = np.sum((self.value - height[:, None] * form) ** 2, axis=1)
         surplus = self.surplus(float(chi2[0]))
         excess = np.maximum(chi2 - chi2[0], 0.0) / surplus
-        excess[-5] = np.inf  # no alternative for the same blur
+        excess[-UNKNOWNS - 1] = np.inf  # no alternative for the same blur
         kept = excess < AGREES
-        kept[-5:] = True
+        kept[-UNKNOWNS - 1 :] = True
         shape = self.shapes(points[:1])
         read = shape.at(self.z - points[0, 0], self.blur) / shape.at(np.zeros(1), self.blur)
         rest = self.read - height[0] * read[0]
@@ -311,9 +321,19 @@ class _Problem:
         )
 
 
+def _rounded(values: Floats, scale: float) -> Floats:
+    """Return values to 1e-10 of a scale.
+
+    A search takes other turns for another last bit; what differs by rounding alone, as an image
+    does whose zero was moved, shall have the same answer.
+    """
+    found: Floats = np.round(values / scale, 10) * scale
+    return found
+
+
 def _even(count: int, turn: int) -> Floats:
-    """Return points that fill the unit cube of four dimensions evenly, (count, 4)."""
-    root = 1.1673039782614187  # of x⁵ = x + 1: additive recurrence, as the golden ratio in one
-    steps = root ** -np.arange(1.0, 5.0)
+    """Return points that fill the unit cube of five dimensions evenly, (count, 5)."""
+    root = 1.1347241384015194  # of x⁶ = x + 1: additive recurrence, as the golden ratio in one
+    steps = root ** -np.arange(1.0, UNKNOWNS + 1)
     found: Floats = (0.5 + np.outer(np.arange(1, count + 1) + turn * count, steps)) % 1.0
     return found

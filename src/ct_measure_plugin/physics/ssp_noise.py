@@ -21,7 +21,14 @@ if TYPE_CHECKING:
     Floats = NDArray[np.float64]
     Flags = NDArray[np.bool_]
 
-__all__ = ["climb_covariance", "freedom", "mean_spectrum", "positive", "slice_correlation"]
+__all__ = [
+    "clear_mean",
+    "climb_covariance",
+    "freedom",
+    "mean_spectrum",
+    "positive",
+    "slice_correlation",
+]
 
 #: Least correlation that is taken for one, and least eigenvalue of a covariance, as a share of the
 #: largest.
@@ -29,6 +36,12 @@ LEAST_RHO, LEAST_SHARE = 0.1, 1e-3
 
 #: Pixels of a slice that tell its noise, at least.
 LEAST_PIXELS = 16
+
+
+def clear_mean(values: Floats) -> float:
+    """Return the mean of values but for those that stand far out."""
+    away = np.abs(values - np.median(values))
+    return float(values[away <= 4 * 1.4826 * np.median(away)].mean())
 
 
 def mean_spectrum(

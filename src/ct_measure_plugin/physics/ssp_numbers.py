@@ -21,7 +21,7 @@ if TYPE_CHECKING:
 
     Floats = NDArray[np.float64]
 
-__all__ = ["along_z", "first_guess", "numbers_of", "profile_of"]
+__all__ = ["along_z", "cautions_of", "first_guess", "numbers_of", "profile_of"]
 
 #: Share of the samples at either end that tell the background of the first guess, and points
 #: between two samples at which its width is read.
@@ -33,6 +33,10 @@ POINTS, ACROSS, UP_TO = 161, 2.0, 2.0
 
 #: Relative standard uncertainty above which a width is not quoted.
 MOST_DOUBT = 0.15
+
+#: Samples a FWHM below which it is cautioned, and share of the height above which a misfit is that
+#: noise does not explain.
+FAIR_SAMPLES, FAIR_MISFIT = 4.0, 0.003
 
 
 def first_guess(samples: SspSamples, unit: str) -> Peak | NotMeasured:
@@ -111,3 +115,27 @@ def _worded(caution: Caution) -> Caution:
     text = caution.text.replace("the pixels' Nyquist", "the samples' Nyquist")
     text = text.replace("the image is aliased", "along z it is aliased")
     return replace(caution, text=text, remedy="Reconstruct at a smaller increment.")
+
+
+def cautions_of(samples: SspSamples, agreeing: Agreeing, fwhm: float) -> list[Caution]:
+    """Return what a reader must know of the samples and of how the model fits them."""
+    found = []
+    count = fwhm / samples.step
+    if count < FAIR_SAMPLES:
+        found.append(
+            Caution(
+                "coarse-sampling",
+                f"The profile is only {count:.1f} samples wide.",
+                "Reconstruct with a smaller increment.",
+            )
+        )
+    if agreeing.surplus > 1 and agreeing.misfit > FAIR_MISFIT:
+        found.append(
+            Caution(
+                "profile-shape",
+                f"No shape fits the profile: its samples lie {100 * agreeing.misfit:.1f} % of the"
+                " height beside the best one, more than noise explains.",
+                "Look at the curve, and see that the region holds one object alone.",
+            )
+        )
+    return found

@@ -14,6 +14,7 @@ from ct_measure_plugin.physics.mtf_curve import width_at
 from ct_measure_plugin.physics.regions import direction
 from ct_measure_plugin.physics.results import NotMeasured
 from ct_measure_plugin.physics.ssp_noise import (
+    clear_mean,
     climb_covariance,
     freedom,
     mean_spectrum,
@@ -111,13 +112,14 @@ def bead_samples(
         )
     spot = np.exp(-0.5 * radius**2) * (radius <= WITHIN)
     ring = (radius >= BEYOND) & (radius <= UPTO)
-    level = np.array([np.median(plane[ring]) for plane in stack])
+    level = np.array([clear_mean(plane[ring]) for plane in stack])
     flat = stack - level[:, None, None]
     weights = spot / float(np.sum(spot**2))
     heights = np.tensordot(flat, weights, 2)
     rings = np.broadcast_to(ring, stack.shape)
     spectrum = mean_spectrum(flat, rings, spacing_mm)
-    noise = math.sqrt(float(spectrum.variance_of_sums(weights[None])[0]))
+    drawn = weights - float(weights.sum()) * ring / int(ring.sum())  # the ring's mean with it
+    noise = math.sqrt(float(spectrum.variance_of_sums(drawn[None])[0]))
     z = np.arange(len(stack), dtype=np.float64) * gap
     place = cy - float(y[0, 0]), cx - float(x[0, 0])
     # the spot's width was fitted with its height, which makes that twice as uncertain

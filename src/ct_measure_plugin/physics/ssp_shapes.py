@@ -2,7 +2,8 @@
 
 With one rectangle it is a box with rounded sides, with two a trapezoid (a collimation with its
 penumbra) up to the triangle of linear interpolation, with neither a Gaussian. Two angles say how
-the variance is shared, so that every shape, the corners among them, lies in a rectangle of them.
+the variance is shared, so that every shape, the corners among them, lies in a rectangle of them. A
+wider Gaussian may hold a share of the area: the tails of a helix or a cone beam.
 """
 
 from __future__ import annotations
@@ -21,10 +22,13 @@ if TYPE_CHECKING:
 
     Floats = NDArray[np.float64]
 
-__all__ = ["MOST_ROUND", "MOST_SPLIT", "Shapes"]
+__all__ = ["MOST_ROUND", "MOST_SPLIT", "MOST_TAIL", "Shapes"]
 
-#: Ends of the two angles.
-MOST_ROUND, MOST_SPLIT = math.pi / 2, math.pi / 4
+#: Ends of the two angles, and of the share of the tails.
+MOST_ROUND, MOST_SPLIT, MOST_TAIL = math.pi / 2, math.pi / 4, 0.3
+
+#: SD of the tails over that of the rest.
+WIDER = 2.0
 
 #: Narrower parts, as a share of the SD of the whole, are given this width: none can be told.
 SHARPEST = 1e-3
@@ -41,13 +45,16 @@ class Shapes:
     ----------
     wide, narrow, sigma : ndarray, shape (k,)
         Widths of the two rectangles and SD of the Gaussian, mm.
+    tail : ndarray, shape (k,)
+        Share of the area in the tails.
 
     Examples
     --------
     Rectangles of 3 and 1.2 mm make a trapezoid 3 mm wide at half its height, 3 + 0.8 · 1.2 mm at a
     tenth; a Gaussian's widths are 2.3548 and 4.2919 SD:
 
-    >>> shapes = Shapes(np.array([3.0, 0.0]), np.array([1.2, 0.0]), np.array([0.0, 1.0]))
+    >>> parts = np.array([3.0, 0.0]), np.array([1.2, 0.0]), np.array([0.0, 1.0])
+    >>> shapes = Shapes(*parts, tail=np.zeros(2))
     >>> shapes.widths(0.5).round(4).tolist(), shapes.widths(0.1).round(4).tolist()
     ([3.0, 2.3548], [3.96, 4.2919])
     """
@@ -55,16 +62,20 @@ class Shapes:
     wide: Floats
     narrow: Floats
     sigma: Floats
+    tail: Floats
 
     @classmethod
-    def of_spread(cls, spread: Floats, round_off: Floats, split: Floats) -> Shapes:
-        """Return shapes of an SD: `round_off` 0 is a Gaussian, `split` 0 has one rectangle."""
+    def of_spread(cls, spread: Floats, round_off: Floats, split: Floats, tail: Floats) -> Shapes:
+        """Return shapes whose parts but the tails have an SD.
+
+        `round_off` 0 is a Gaussian, `split` 0 has one rectangle.
+        """
         box = math.sqrt(12) * spread * np.sin(round_off)
-        return cls(box * np.cos(split), box * np.sin(split), spread * np.cos(round_off))
+        return cls(box * np.cos(split), box * np.sin(split), spread * np.cos(round_off), tail)
 
     @property
     def spread(self) -> Floats:
-        """SD of each."""
+        """SD of each but for its tails."""
         found: Floats = np.sqrt((self.wide**2 + self.narrow**2) / 12 + self.sigma**2)
         return found
 
@@ -75,8 +86,12 @@ class Shapes:
         least = np.maximum(SHARPEST * spread, 3 * SHARPEST * soft)
         wide, narrow = np.maximum(self.wide, least), np.maximum(self.narrow, least)
         wide, narrow, soft = wide[:, None, None], narrow[:, None, None], soft[:, None, None]
-        layers = _trapezoid(np.atleast_2d(z)[..., None] - blur.places, wide, narrow, soft)
-        found: Floats = layers @ blur.weights
+        z = np.atleast_2d(z)
+        layers = _trapezoid(z[..., None] - blur.places, wide, narrow, soft)
+        far = np.sqrt((WIDER * self.spread) ** 2 + blur.variance)[:, None]
+        tails = np.exp(-0.5 * (z / far) ** 2) / (far * math.sqrt(2 * math.pi))
+        share = self.tail[:, None]
+        found: Floats = (1 - share) * (layers @ blur.weights) + share * tails
         return found
 
     def widths(self, share: float, blur: Blur = SHARP) -> Floats:
@@ -109,7 +124,12 @@ class Shapes:
     def spectra(self, frequency: Floats) -> Floats:
         """Return the transforms, (k, n)."""
         boxes = np.sinc(np.outer(self.wide, frequency)) * np.sinc(np.outer(self.narrow, frequency))
-        found: Floats = boxes * np.exp(-2 * (math.pi * np.outer(self.sigma, frequency)) ** 2)
+        main, tails = (
+            np.exp(-2 * (math.pi * np.outer(sigma, frequency)) ** 2)
+            for sigma in (self.sigma, WIDER * self.spread)
+        )
+        share = self.tail[:, None]
+        found: Floats = (1 - share) * boxes * main + share * tails
         return found
 
 

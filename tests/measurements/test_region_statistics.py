@@ -10,7 +10,16 @@ import pytest
 
 from ct_measure_plugin.errors import ArgumentError, RegionError
 from ct_measure_plugin.measurements import measure
-from ct_measure_plugin.physics.regions import Box, Disc, Ellipsoid, Mask, Path, Polygon, Segment
+from ct_measure_plugin.physics.regions import (
+    Box,
+    Disc,
+    Ellipsoid,
+    Labels,
+    Mask,
+    Path,
+    Polygon,
+    Segment,
+)
 from ct_measure_plugin.physics.results import NotMeasured
 from ct_measure_plugin.physics.volume import Volume
 
@@ -193,3 +202,57 @@ def test_choices_of_the_user_arrive():
     assert centers.area.value == pytest.approx(0.25 * centers.n.value)
     with pytest.raises(ArgumentError, match="bin_width"):
         measure(NAME, noise(), DISC, bin_width=0.0)
+
+
+def odd(values: np.ndarray | float) -> Volume:
+    return Volume(np.zeros((3, 40, 40)) + values, (2.0, 1.0, 1.0))
+
+
+INSIDE = Disc((20.0, 20.0), 6.0, z_mm=0.0)
+LABELLED = Labels(np.pad(np.ones((3, 20, 20), int), ((0, 0), (5, 15), (5, 15))), (2.0, 1.0, 1.0))
+
+
+@pytest.mark.parametrize("spoilt", [np.nan, np.inf], ids=["nan", "inf"])
+def test_a_region_without_a_finite_value_says_so(spoilt):
+    """Larger would not help."""
+    found = measure("region_statistics", odd(spoilt), INSIDE)
+    assert not found
+    assert "none of the region's" in found.reason
+    assert "finite value" in found.reason
+    assert "larger" not in found.remedy
+    assert measure("region_contrast", odd(spoilt), [INSIDE, INSIDE]).remedy == found.remedy
+
+
+def test_pixels_without_a_value_do_not_count_towards_the_least():
+    """5 of 110 pixels hold one: as few as a region of 5 pixels."""
+    holes = np.full((40, 40), np.nan)
+    holes[20, 18:23] = 1.0
+    found = measure("region_statistics", odd(holes), INSIDE)
+    assert not found
+    assert found.reason.startswith("5 of the region's")
+
+
+@pytest.mark.filterwarnings("error")
+@pytest.mark.parametrize("scale", [1e200, 1e76, 1e-200], ids=str)
+def test_values_beyond_arithmetic_are_named(scale):
+    noise = np.random.default_rng(1).normal(0, scale, (3, 40, 40))
+    answers = [
+        measure("region_statistics", odd(noise), INSIDE),
+        measure("region_statistics", odd(noise), Disc((20.0, 20.0), 6.0)),
+        measure("label_statistics", odd(noise), LABELLED),
+        measure("region_contrast", odd(noise), [INSIDE, Disc((10.0, 10.0), 6.0, z_mm=0.0)]),
+    ]
+    for found in answers:
+        assert not found
+        assert "beyond computer arithmetic" in found.reason
+        assert "scale" in found.remedy
+
+
+@pytest.mark.filterwarnings("error")
+@pytest.mark.parametrize("scale", [1e25, 1e-50], ids=str)
+def test_values_just_within_arithmetic_are_measured(scale):
+    noise = np.random.default_rng(1).normal(0, scale, (3, 40, 40))
+    plain = measure("region_statistics", odd(noise / scale), INSIDE, bin_width=1.0)
+    found = measure("region_statistics", odd(noise), INSIDE, bin_width=scale, bin_edge=-scale / 2)
+    assert found.sd.value == pytest.approx(scale * plain.sd.value)
+    assert found.mean.uncertainty == pytest.approx(scale * plain.mean.uncertainty)

@@ -62,9 +62,19 @@ def gather_enough(volume: Volume, region: Region, *, rule: Rule) -> Gathered | N
     found = gather(volume, region, rule=rule)
     if isinstance(found, NotMeasured):
         return found
-    count = int(np.count_nonzero(found.weights))
-    if count >= TOO_FEW_PIXELS:
+    inside = found.weights > 0
+    count = int(np.count_nonzero(inside))
+    usable = int(np.count_nonzero(inside & np.isfinite(found.values)))
+    if usable >= TOO_FEW_PIXELS:
         return found
+    if count >= TOO_FEW_PIXELS:
+        some = usable or "none"
+        return NotMeasured(
+            f"{some} of the region's {count} pixels hold{'s' * (usable < 2)} a finite value; at"
+            f" least {TOO_FEW_PIXELS} are needed",
+            "measure where the image holds values, or look where the missing ones come from",
+            found.cautions,
+        )
     return NotMeasured(
         f"the region holds {count} pixel{'s' * (count != 1)}; at least {TOO_FEW_PIXELS} are needed",
         "draw it larger, or over more slices",

@@ -20,10 +20,62 @@ if TYPE_CHECKING:
 
     Floats = NDArray[np.float64]
 
-__all__ = ["Histogram", "Moments", "Sorted", "histogram", "moments", "weighted_quantile"]
+__all__ = [
+    "LARGEST",
+    "SMALLEST",
+    "Histogram",
+    "Moments",
+    "Sorted",
+    "histogram",
+    "moments",
+    "weighted_quantile",
+    "why_unusable",
+]
+
+#: Largest size of a value, and smallest difference of values, whose fourth powers are numbers.
+LARGEST, SMALLEST = 1e30, 1e-60
 
 #: A histogram with more bins than this is given without its empty bins.
 MOST_BINS = 1 << 16
+
+
+def why_unusable(values: Floats, lost: int = 0) -> tuple[str, str] | None:
+    """Return why no statistics can be given of finite values, shape (n,), and the remedy.
+
+    Parameters
+    ----------
+    values : ndarray, shape (n,)
+        The pixels that are left.
+    lost : int
+        How many more hold no finite value.
+
+    Examples
+    --------
+    >>> why_unusable(np.zeros(0), lost=5)[0]
+    'none of the 5 pixels of the region holds a finite value'
+    >>> why_unusable(np.array([1.0, 2.0]))
+    """
+    n = len(values)
+    if n == 0 and lost:
+        return (
+            f"none of the {lost} pixels of the region holds a finite value",
+            "measure where the image holds values, or look where these come from",
+        )
+    if n < 2:
+        elsewhere = ", where more pixels hold a finite value" if lost else ""
+        return (
+            f"the region holds {n} usable pixel{'s' * (n != 1)}; at least 2 are needed",
+            f"draw it larger{elsewhere}",
+        )
+    low, high = float(values.min()), float(values.max())
+    size = max(abs(low), abs(high))
+    if size > LARGEST or 0 < high - low < SMALLEST:
+        what = f"values of {size:.2g}" if size > LARGEST else f"values only {high - low:.2g} apart"
+        return (
+            f"the region holds {what}, whose powers are beyond computer arithmetic",
+            "look at the image's scale: CT numbers lie within some ten thousands",
+        )
+    return None
 
 
 @dataclass(frozen=True, slots=True)

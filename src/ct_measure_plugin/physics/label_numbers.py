@@ -199,6 +199,11 @@ def _by_sorting(v: NDArray[Any], owner: NDArray[Any]) -> _Runs:
 
 def _from_runs(runs: _Runs, percentiles: tuple[float, ...]) -> LabelNumbers:
     """Return every statistic from the distinct values and their counts."""
+    with np.errstate(over="ignore", invalid="ignore", divide="ignore"):
+        return _statistics(runs, percentiles)
+
+
+def _statistics(runs: _Runs, percentiles: tuple[float, ...]) -> LabelNumbers:
     labels = len(runs.label)
     row = np.repeat(np.arange(labels), np.diff(runs.start))
     n = np.bincount(row, runs.count, minlength=labels).astype(np.int64)
@@ -222,8 +227,7 @@ def _from_runs(runs: _Runs, percentiles: tuple[float, ...]) -> LabelNumbers:
     divisor = np.where(curved, m2, 1.0)
     nothing = np.where(filled, 0.0, math.nan)
     shares = np.asarray(percentiles, float) / 100.0
-    with np.errstate(invalid="ignore", divide="ignore"):
-        sd = np.sqrt(m2 * n / (n - 1.0))
+    sd = np.sqrt(m2 * n / (n - 1.0))
     return LabelNumbers(
         runs.label,
         n,

@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, Any, Literal, TypeAlias, get_args
 import numpy as np
 
 from ct_measure_plugin.errors import ArgumentError
-from ct_measure_plugin.physics.first_order import Moments
+from ct_measure_plugin.physics.first_order import LARGEST, SMALLEST, Moments, why_unusable
 from ct_measure_plugin.physics.label_numbers import LabelNumbers, label_numbers, label_quantiles
 from ct_measure_plugin.physics.noise_correlation import (
     MeanDoubt,
@@ -126,7 +126,7 @@ def label_statistics(
     Returns
     -------
     LabelStatistics or NotMeasured
-        NotMeasured if there is no label.
+        NotMeasured if there is no label, or the values' powers are beyond computer arithmetic.
 
     Raises
     ------
@@ -147,6 +147,8 @@ def label_statistics(
     found = label_numbers(values, labels, percentiles=tuple(100 * at for at in _AT))
     if not len(found.label):
         return NotMeasured("the label map holds no label", "paint one, or choose another map")
+    if why := _unusable(found):
+        return NotMeasured(*why)
     called = names or {}
     doubts = _doubts(found, values, labels, tuple(spacing_mm), noise)
     spreads = None if doubts is None else _spreads(found, doubts)
@@ -169,6 +171,17 @@ def label_statistics(
         labels=rows,
         cautions=tuple(_cautions(found, doubts, noise)),
     )
+
+
+def _unusable(found: LabelNumbers) -> tuple[str, str] | None:
+    """Return why one of the labels has no statistics, and the remedy."""
+    ends = np.stack([found.minimum, found.maximum], axis=1)
+    spread = ends[:, 1] - ends[:, 0]
+    bad = (np.abs(ends) > LARGEST).any(axis=1) | ((spread > 0) & (spread < SMALLEST))
+    for i in np.flatnonzero(bad)[:1]:
+        if why := why_unusable(ends[i]):
+            return why[0].replace("the region", f"label {found.label[i]}"), why[1]
+    return None
 
 
 @dataclass(frozen=True, slots=True)

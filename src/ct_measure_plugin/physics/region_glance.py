@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from ct_measure_plugin.physics.first_order import Sorted, moments
+from ct_measure_plugin.physics.first_order import Sorted, moments, why_unusable
 from ct_measure_plugin.physics.results import Caution, NotMeasured, Quantity, Result
 
 if TYPE_CHECKING:
@@ -59,7 +59,7 @@ def region_glance(
     Returns
     -------
     RegionGlance or NotMeasured
-        NotMeasured if fewer than two pixels with a finite value have weight.
+        NotMeasured as there.
 
     Examples
     --------
@@ -73,11 +73,8 @@ def region_glance(
     finite = np.isfinite(v)
     if not finite.all():
         v, w = v[finite], w[finite]
-    if v.size < 2:
-        return NotMeasured(
-            f"the region holds {v.size} usable pixel{'s' * (v.size != 1)}; at least 2 are needed",
-            "draw it larger",
-        )
+    if why := why_unusable(v, len(finite) - v.size):
+        return NotMeasured(*why)
     found = moments(v, w)
     order = Sorted(v, w)
     size = found.total * math.prod(spacing_mm)

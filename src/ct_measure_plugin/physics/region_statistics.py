@@ -10,7 +10,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from ct_measure_plugin.errors import ArgumentError
-from ct_measure_plugin.physics.first_order import moments, weighted_quantile
+from ct_measure_plugin.physics.first_order import moments, weighted_quantile, why_unusable
 from ct_measure_plugin.physics.noise_correlation import MeanDoubt, doubt_of_mean, independent_doubt
 from ct_measure_plugin.physics.quantisation import resolution_of
 from ct_measure_plugin.physics.region_numbers import Choices, mean_and_sd, numbers_of
@@ -168,7 +168,8 @@ def region_statistics(  # noqa: PLR0913 - choices, each with its default and giv
     Returns
     -------
     RegionStatistics or NotMeasured
-        NotMeasured if fewer than two pixels with a finite value have weight.
+        NotMeasured if fewer than two pixels with a finite value have weight, or the values'
+        powers are beyond computer arithmetic.
 
     Raises
     ------
@@ -199,14 +200,11 @@ def region_statistics(  # noqa: PLR0913 - choices, each with its default and giv
     steps = tuple(float(step) for step in spacing_mm)
     if not steps or not all(math.isfinite(s) and s > 0 for s in steps):
         raise ArgumentError("spacing_mm", "must hold lengths greater than 0", spacing_mm)
+    inside = int(np.count_nonzero(cover))
     data, cover, cautions = _finite(data, cover)
     v, w = data[cover > 0], cover[cover > 0]
-    if v.size < 2:
-        return NotMeasured(
-            f"the region holds {v.size} usable pixel{'s' * (v.size != 1)}; at least 2 are needed",
-            "draw it larger",
-            tuple(cautions),
-        )
+    if why := why_unusable(v, inside - v.size):
+        return NotMeasured(*why, tuple(cautions))
     step = resolution_of(v) if resolution is None else float(resolution)
     choices = Choices(unit, bin_width, bin_edge, tuple(percentiles), tuple(ranges), step)
     spectrum, unusable = _spectrum(noise, steps if data.ndim > 1 else (), unit)

@@ -81,3 +81,13 @@ def test_lean_needs_even_slices():
     box = ctm.regions.Box((13.75, 13.75), (28.0, 28.0))
     assert ctm.measure("disc_mtf", even, box).lean.value == pytest.approx(0.0, abs=1e-3)
     assert ctm.measure("disc_mtf", odd, box).lean is None
+
+
+def test_what_is_known_of_the_volume_is_told_with_the_curve():
+    """Lossy compression, above all: it smooths, or rings."""
+    plane = disc_image(GAUSS, 6.0, shape=(56, 56))
+    lossy = ctm.physics.Caution("lossy-compression", "Pixels are lossy.", "Export them again.")
+    volume = ctm.Volume(plane[None], (2.0, 0.5, 0.5), cautions=(lossy,))
+    found = ctm.measure("disc_mtf", volume, ctm.regions.Disc((13.75, 13.75), 12.0))
+    assert found.f50.value == pytest.approx(0.187391 / 0.6, rel=0.01)
+    assert lossy in found.cautions

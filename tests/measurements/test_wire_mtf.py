@@ -5,6 +5,7 @@ from __future__ import annotations
 from pathlib import Path
 
 import pytest
+from truth_images import GAUSS, disc_image
 
 import ct_measure_plugin as ctm
 
@@ -57,3 +58,13 @@ def test_marks_follow_the_wire(standard):
     assert way.length_mm == pytest.approx(0.0524 * 12.5, abs=0.02)
     assert way.end_mm[0] < way.start_mm[0]
     assert way.end_mm[1] > way.start_mm[1]
+
+
+def test_what_is_known_of_the_volume_is_told_with_the_curve():
+    """Lossy compression, above all: it smooths, or rings."""
+    plane = disc_image(GAUSS, 0.1, shape=(56, 56), contrast=1e4)
+    lossy = ctm.physics.Caution("lossy-compression", "Pixels are lossy.", "Export them again.")
+    volume = ctm.Volume(plane[None], (2.0, 0.5, 0.5), cautions=(lossy,))
+    found = ctm.measure("wire_mtf", volume, ctm.regions.Disc((13.75, 13.75), 12.0))
+    assert found.f50.value == pytest.approx(0.187391 / 0.6, rel=0.01)
+    assert lossy in found.cautions

@@ -237,12 +237,43 @@ def test_a_slightly_oval_rod_is_followed(stretch):
     assert found.roundness.value == pytest.approx(8 * (stretch - 1 / stretch) / 2, rel=0.05)
 
 
+def told(image):
+    return {c.code for c in disc_mtf(image, spacing_mm=SPACING).cautions}
+
+
+def noisy(sd=1.0):
+    """A rod of contrast 100 in noise of a hundredth, of which nothing is to be said."""
+    return disc(HANN, 6.0, 0.5) + np.random.default_rng(5).normal(0, sd, (56, 56))
+
+
+def test_what_a_reader_must_know_is_told_and_nothing_else():
+    y, x = (np.mgrid[:56, :56] - 27.5) * 0.5
+    assert told(noisy()) == set()
+    assert told(noisy() + 0.5 * x) == {"background-gradient"}  # 6 % of the contrast across the rod
+    blob = 9.0 * ((np.abs(y - 8.5) < 1.6) & (np.abs(x) < 5.0))
+    assert "another-object" in told(noisy() + blob)
+    assert told(noisy()[9:-9, 9:-9]) == {"tail-truncation"}  # 3.5 mm, three FWHM, of surroundings
+    assert "low-contrast" in told(noisy(sd=15.0))
+    coarse = disc(EDGE, 12.5, 0.7) + np.random.default_rng(5).normal(0, 0.5, (58, 58))
+    found = disc_mtf(coarse, spacing_mm=(0.7, 0.7))
+    assert "aliasing" in {c.code for c in found.cautions}  # its MTF is 0.6 at 0.71 mm⁻¹
+
+
+def test_a_level_within_the_noise_is_not_given():
+    found = disc_mtf(noisy(sd=20.0), spacing_mm=SPACING)
+    assert isinstance(found.f2, NotMeasured)
+    assert "noise" in found.f2.reason
+    assert "noise-floor" in {c.code for c in found.cautions}
+
+
 REFUSALS = {
     "all pixels": lambda: np.zeros((40, 40)),
     "not round": oval,
     "something else": two_rods,
     "reaches the border": lambda: disc(GAUSS, 6.0, 0.5)[16:40, 16:40],
     "less than 5 sigma": lambda: disc(GAUSS, 2.4, 0.5),
+    "even material": lambda: disc(GAUSS, 6.0, 0.5)[12:-12, 12:-12],
+    "contrast is too low": lambda: noisy(sd=170.0),
     "clipped": lambda: np.minimum(
         np.rint(10 * disc(GAUSS, 6.0, 0.5) + np.random.default_rng(1).normal(0, 20, (56, 56))),
         1390,
@@ -256,6 +287,24 @@ def test_what_cannot_be_measured_is_refused_in_words(words):
     assert isinstance(found, NotMeasured)
     assert words in found.reason
     assert found.remedy
+
+
+@pytest.mark.parametrize("seed", range(6))
+def test_noise_is_not_taken_for_an_odd_shape(seed):
+    """Contrast half the noise, on one slice: the fit finds ovals and blurs of all kinds."""
+    image = disc(GAUSS, 6.0, 0.5) + np.random.default_rng(seed).normal(0, 200, (56, 56))
+    found = disc_mtf(image, spacing_mm=SPACING)
+    assert isinstance(found, NotMeasured)
+    assert "not round" not in found.reason
+    assert "sigma" not in found.reason
+
+
+def test_samples_too_far_apart_are_refused():
+    """The edge within 4° of one direction, on pixels of 0.7 mm: some twenty samples."""
+    image = disc_image(EDGE, 6.0, shape=(40, 40), spacing=(0.7, 0.7), low=40.0)
+    found = disc_mtf(image, spacing_mm=(0.7, 0.7), sector_deg=(0.0, 4.0))
+    assert isinstance(found, NotMeasured)
+    assert "samples across the edge lie up to" in found.reason
 
 
 def test_a_slice_without_the_rod_is_refused():

@@ -297,6 +297,38 @@ def box(**changes):
     return image
 
 
+def told(image, **options):
+    options = {"spacing_mm": (0.4, 0.4), "object_diameter_mm": 0.2} | options
+    return {c.code for c in wire_mtf(image, **options).cautions} - {"object-size", "noise-floor"}
+
+
+def test_what_a_reader_must_know_is_told_and_nothing_else():
+    y, x = (np.mgrid[:60, :60] - 29.5) * 0.4
+    assert told(box()) == set()
+    # 400 high; about 5 FWHM of 1.3 mm to either side are transformed
+    assert told(box() + 3.0 * x) == {"background-gradient"}
+    assert "another-object" in told(box() + 18.0 * ((np.abs(y - 7.2) < 2.3) & (np.abs(x) < 2.3)))
+    assert told(box()[20:40, 20:40]) == {"tail-truncation"}
+    assert "low-contrast" in told(box() + np.random.default_rng(4).normal(0, 25, x.shape))
+    assert told(box(), object_diameter_mm=None) == {"object-size-unknown"}
+    coarse = wires(HANN, 0.7, 1)[0] + np.random.default_rng(4).normal(0, 2, (34, 34))
+    assert "aliasing" in told(coarse, spacing_mm=(0.7, 0.7))
+
+
+def test_a_background_plane_does_not_move_the_curve():
+    y, x = (np.mgrid[:60, :60] - 29.5) * 0.4
+    plain = wires(HANN, 0.4, 1)[0]
+    for method in METHODS:
+        found = wire_mtf(
+            plain + 5.0 * x - 2.0 * y,
+            spacing_mm=(0.4, 0.4),
+            method=method,
+            object_diameter_mm=0.2,
+        )
+        assert abs(percent(found, HANN)) < 0.5
+        assert abs(percent(found, HANN, 0.1)) < 0.5
+
+
 REFUSALS = {
     "all pixels": (lambda: np.zeros((40, 40)), {}),
     "clipped": (lambda: box(clip=250), {}),

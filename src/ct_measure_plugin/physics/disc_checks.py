@@ -5,11 +5,12 @@ from __future__ import annotations
 import math
 from typing import TYPE_CHECKING
 
+import numpy as np
+
 from ct_measure_plugin.physics.edge_checks import clipped, other_objects
 from ct_measure_plugin.physics.results import Caution, NotMeasured, Quantity
 
 if TYPE_CHECKING:
-    import numpy as np
     from numpy.typing import NDArray
 
     from ct_measure_plugin.physics.circle_stack import CircleStack
@@ -32,8 +33,15 @@ LEAST_SIGNAL, FAIR_SIGNAL = 15.0, 100.0
 #: Degrees by which a rod may lean without a caution.
 MOST_LEAN = 2.0
 
+#: Rise of the surroundings across the rod, in contrasts, that is cautioned; and how many of its
+#: standard errors in white noise it has to stand out by.
+MOST_RISE, STANDS_OUT = 0.03, 5.0
+
 #: Widest gap between samples across the edge, in FWHM: a Gaussian's MTF is 0.12 at their Nyquist.
 MOST_GAP = 0.65
+
+#: Below so much of the same an odd shape is more likely noise than the object's own.
+SHAPE_SIGNAL = 40.0
 
 #: Plateaus shorter than this many FWHM are refused, shorter than the second cautioned.
 SHORT_PLATEAU, FAIR_PLATEAU = 2.0, 4.0
@@ -64,22 +72,32 @@ def disc_refusal(
     cut = clipped(stack, circle.annulus.distance, data.fwhm, limits)
     if cut is not None:
         return cut
+    faint = NotMeasured(
+        f"the contrast is too low: {contrast:.3g} over a noise of {noise:.3g}",
+        "pool more slices, or measure a stronger contrast",
+    )
+    signal = _signal(data, noise)
+    if signal < LEAST_SIGNAL:
+        return faint
     oval = math.hypot(*circle.annulus.harmonic)
     if oval > MOST_OVAL * circle.annulus.radius + 4 * radius_doubt:
-        return NotMeasured(
-            f"the object is not round: its radius varies by {oval:.2g} mm",
-            "measure a round rod, or its edge in a box",
+        return (
+            faint
+            if signal < SHAPE_SIGNAL
+            else NotMeasured(
+                f"the object is not round: its radius varies by {oval:.2g} mm",
+                "measure a round rod, or its edge in a box",
+            )
         )
     if circle.annulus.radius < SMALL_RADIUS * data.sigma:
-        return NotMeasured(
-            f"the radius, {circle.annulus.radius:.3g} mm, is less than {SMALL_RADIUS:g} sigma of"
-            " the blur",
-            "measure a thicker rod",
-        )
-    if _signal(data, noise) < LEAST_SIGNAL:
-        return NotMeasured(
-            f"the contrast is too low: {contrast:.3g} over a noise of {noise:.3g}",
-            "pool more slices, or measure a stronger contrast",
+        return (
+            faint
+            if signal < SHAPE_SIGNAL
+            else NotMeasured(
+                f"the radius, {circle.annulus.radius:.3g} mm, is less than {SMALL_RADIUS:g} sigma of"
+                " the blur",
+                "measure a thicker rod",
+            )
         )
     if min(data.reach) < SHORT_PLATEAU * data.fwhm:
         return NotMeasured(
@@ -131,6 +149,16 @@ def disc_cautions(rod: CircleStack, data: EsfData, lean: Quantity | None) -> lis
                 "Draw the box larger.",
             )
         )
+    rise, doubt = _rise(rod)
+    if rise > max(MOST_RISE * abs(data.contrast), STANDS_OUT * doubt):
+        found.append(
+            Caution(
+                "background-gradient",
+                f"Values rise by {100 * rise / abs(data.contrast):.1f} % of the contrast from one"
+                " side of the rod to the other.",
+                "Look for cupping, or a neighbour; sectors are the more affected.",
+            )
+        )
     share = other_objects(circle.residual, abs(data.contrast), circle.annulus.used)
     if share > 0.05:
         found.append(
@@ -151,3 +179,19 @@ def disc_cautions(rod: CircleStack, data: EsfData, lean: Quantity | None) -> lis
             )
         )
     return found
+
+
+def _rise(rod: CircleStack) -> tuple[float, float]:
+    """Return by how much the departures from the edge rise across the rod, and its error.
+
+    A plane through the mean departures of all slices; the error is that in white noise.
+    """
+    annulus = rod.middle.annulus
+    left = np.mean([one.residual for one in rod.circles], axis=0)[annulus.used]
+    away = (annulus.radius - annulus.distance)[annulus.used]
+    azimuth = annulus.azimuth[annulus.used]
+    columns = np.stack([np.ones_like(away), away * np.sin(azimuth), away * np.cos(azimuth)])
+    slope = np.linalg.lstsq(columns.T, left, rcond=None)[0][1:]
+    error = float(left.std()) / math.sqrt(float(np.sum(columns[1:] ** 2)) / 2)
+    across = 2 * annulus.radius
+    return across * float(np.hypot(*slope)), across * error

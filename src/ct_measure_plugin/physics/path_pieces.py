@@ -64,7 +64,7 @@ class Pieces:
     def narrowest(self) -> float:
         """Return the greatest width at which no two corners meet beside a piece, mm.
 
-        >>> pieces_of(np.array([[0.0, 0.0], [0.0, 10.0], [4.0, 10.0]])).narrowest()
+        >>> round(pieces_of(np.array([[0.0, 0.0], [0.0, 10.0], [4.0, 10.0]])).narrowest(), 9)
         8.0
         """
         widths = []

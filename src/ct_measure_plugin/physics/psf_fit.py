@@ -33,6 +33,11 @@ MOST_SLICES = 4
 #: of low frequencies, and narrow priors would decide in its place (f50 of three kernels, tried).
 STRENGTHS = np.array([0.3, 1.0])
 
+#: Factor on the stated uncertainty. The average over models would state too much of a spot: nominal
+#: 95 % held f50 in 98.1 % and f10 in 98.6 % of 1,439 simulated wires (three kernels, white and CT
+#: noise, height 30 and 80 times the noise), with this 95.6 and 96.7 %.
+CALIBRATED = 0.87
+
 #: Variance added to every ring, relative to the squared height of the spot.
 TINY = 1e-10
 
@@ -55,7 +60,8 @@ class PsfFit:
 
     def mtf(self, frequency: Floats) -> tuple[Floats, Floats]:
         """Return the MTF and its standard uncertainty at frequencies in mm⁻¹."""
-        return averaged_transfer(self._parts, 2 * math.pi * self.scale * frequency)
+        mtf, doubt = averaged_transfer(self._parts, 2 * math.pi * self.scale * frequency)
+        return mtf, CALIBRATED * doubt
 
 
 @dataclass(frozen=True, slots=True, eq=False)

@@ -19,7 +19,7 @@ if TYPE_CHECKING:
 
     Floats = NDArray[np.float64]
 
-__all__ = ["WireFacts", "folded_levels", "wire_cautions", "wire_refusal"]
+__all__ = ["WireFacts", "background_slope", "folded_levels", "wire_cautions", "wire_refusal"]
 
 #: Radius of what is transformed in FWHM: refused and cautioned below.
 SHORT_REACH, FAIR_REACH = 1.7, 3.0
@@ -33,6 +33,10 @@ LEAST_FOR_RINGS, LEAST_FOR_FIT, FAIR_FOR_FIT = 2.9, 1.8, 2.2
 
 #: Pixels by which a wire moves through the slices, less than which they show it at one place.
 ONE_PLACE = 0.25
+
+#: Rise of the background across what is transformed, in heights, that is cautioned; and how many of
+#: its standard errors in white noise it has to stand out by.
+MOST_RISE, STANDS_OUT = 0.03, 5.0
 
 #: Share of a level that folded spectrum may make up: refused and cautioned beyond.
 MOST_FOLDED, FAIR_FOLDED = 0.1, 0.02
@@ -54,6 +58,8 @@ class WireFacts:
         Share of the folded spectrum that is left, 0 to 1.
     pixel : float
         The larger pixel spacing, mm.
+    slope, slope_error : float
+        Slope of the background that was taken out, values a mm, and its error in white noise.
     """
 
     trace: WireTrace
@@ -61,6 +67,8 @@ class WireFacts:
     noise: float
     folded: float
     pixel: float
+    slope: float = 0.0
+    slope_error: float = 0.0
 
     @property
     def fwhm(self) -> float:
@@ -85,6 +93,27 @@ class WireFacts:
         """
         mirror = max(1 / self.pixel - frequency, 0.0)
         return 0.5 * self.folded * math.exp(-2 * (math.pi * self.trace.sigma * mirror) ** 2)
+
+
+def background_slope(stack: Floats, sections: list[Section]) -> tuple[float, float]:
+    """Return the slope of the background about a wire, and its error in white noise.
+
+    Parameters
+    ----------
+    stack : ndarray, shape (nz, ny, nx)
+        Slices, their background still in them.
+    sections : list of Section
+        Of the same slices.
+    """
+    mixes, errors = [], []
+    for plane, section in zip(stack, sections, strict=True):
+        columns, values = section.planes[:, section.outside].T, plane[section.outside]
+        mix = np.linalg.lstsq(columns, values, rcond=None)[0]
+        mixes.append(mix[1:])
+        spread = float(np.std(values - columns @ mix))
+        errors.append(spread / math.sqrt(float(np.sum(columns[:, 1:] ** 2)) / 2))
+    slope = np.mean(mixes, axis=0)
+    return float(np.hypot(*slope)), float(np.mean(errors)) / math.sqrt(len(errors))
 
 
 def wire_refusal(
@@ -228,6 +257,17 @@ def wire_cautions(
                 f"Parts of the box depart from the background by {100 * share:.1f} % of the wire's"
                 " height.",
                 "Draw the box around the wire alone.",
+            )
+        )
+    height = float(np.median(np.abs(facts.trace.heights)))
+    rise, error = 2 * reach * facts.slope, 2 * reach * facts.slope_error
+    if rise > max(MOST_RISE * height, STANDS_OUT * error):
+        found.append(
+            Caution(
+                "background-gradient",
+                f"The background rises by {100 * rise / height:.1f} % of the wire's height across"
+                " what is transformed; a plane was taken out.",
+                "Look for cupping, or a neighbour.",
             )
         )
     if diameter is None:

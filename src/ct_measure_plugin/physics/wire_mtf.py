@@ -27,6 +27,7 @@ from ct_measure_plugin.physics.results import Curve, NotMeasured, Quantity
 from ct_measure_plugin.physics.wire_checks import (
     LEAST_FOR_FIT,
     WireFacts,
+    background_slope,
     folded_levels,
     wire_cautions,
     wire_refusal,
@@ -182,7 +183,8 @@ def wire_mtf(  # noqa: PLR0913 - one keyword a setting
     outside = [s.value[s.outside] for s in sections]
     noise = math.sqrt(float(np.mean([np.mean(v**2) for v in outside])))
     weights, folded = phase_weights(trace, steps)
-    facts = WireFacts(trace, sections, noise, folded, max(steps))
+    slope = background_slope(stack, sections)
+    facts = WireFacts(trace, sections, noise, folded, max(steps), *slope)
     refusal = wire_refusal(stack, facts, limits, object_diameter_mm, method)
     if refusal is not None:
         return refusal

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+import threading
 
 import numpy as np
 import pytest
@@ -11,6 +12,7 @@ from ct_measure_plugin.measurements import find, measure
 from ct_measure_plugin.physics.regions import Disc
 from ct_measure_plugin.physics.results import NotMeasured
 from ct_measure_plugin.physics.volume import Volume
+from ct_measure_plugin.viewer import region_board, region_source
 from ct_measure_plugin.viewer.layers import layer_of
 from ct_measure_plugin.viewer.region_board import RegionBoard
 from ct_measure_plugin.viewer.region_features import set_column
@@ -115,6 +117,48 @@ def test_the_features_hold_the_answers_of_every_image(scene, pair):
     assert features["ct_image_2"].iloc[0] == "sharp"
     assert features["region_id"].iloc[0] == 1
     assert not board.write_features()
+
+
+def test_features_of_many_regions_are_laid_out_in_a_thread(scene, pair, monkeypatch, qtbot):
+    _, images, board = scene
+    board.images = tuple(images)
+    layer = draw(scene, pair[0], Disc((0.0, 18.0), 4.0), Disc((0.0, 30.0), 4.0))
+    board.look()
+    board.write_features()
+    at_once = layer.features.copy()
+    layer.features = at_once[["region_id"]]
+    monkeypatch.setattr(region_board, "MANY_ROWS", 0)
+    here, where = threading.get_ident(), []
+    real = region_source.with_answers
+    monkeypatch.setattr(
+        region_source,
+        "with_answers",
+        lambda *args, **words: (where.append(threading.get_ident()), real(*args, **words))[1],
+    )
+    assert not board.write_features()
+    qtbot.waitUntil(lambda: "ct_mean_2" in layer.features, timeout=5000)
+    assert here not in where
+    assert set(layer.features.columns) == set(at_once.columns)
+    assert layer.features[list(at_once.columns)].equals(at_once)
+
+
+@pytest.mark.parametrize("what", ["features", "rows", "nothing"])
+def test_features_laid_out_for_what_was_there_before_are_dropped(
+    scene, pair, monkeypatch, qtbot, what
+):
+    _, images, board = scene
+    board.images = (images[0],)
+    layer = draw(scene, pair[0], Disc((0.0, 18.0), 4.0), Disc((0.0, 30.0), 4.0))
+    board.look()
+    monkeypatch.setattr(region_board, "MANY_ROWS", 0)
+    board.write_features()
+    if what == "features":
+        set_column(layer, "class", {0: "water"})
+    elif what == "rows":
+        layer.data = [np.add(one, (0, 1, 0)) for one in layer.data]
+        board.look()
+    qtbot.waitUntil(lambda: not board._columns.busy, timeout=5000)
+    assert ("ct_mean" in layer.features) == (what == "nothing")
 
 
 def test_the_features_wait_for_what_is_still_to_come(scene, pair):

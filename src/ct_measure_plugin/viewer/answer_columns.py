@@ -26,7 +26,7 @@ if TYPE_CHECKING:
 
     from ct_measure_plugin.physics.results import NotMeasured, Result
 
-__all__ = ["write_answers"]
+__all__ = ["put_features", "with_answers", "write_answers"]
 
 #: How the columns of a second and further image end.
 _NUMBERED = r"_[0-9]+"
@@ -46,8 +46,50 @@ def write_answers(
     ----------
     layer : napari layer
         Shapes, Points or Labels.
+    answers, image, suffix, keys
+        As for :func:`with_answers`.
+
+    Returns
+    -------
+    bool
+        Whether anything changed; features that already say it are left alone.
+    """
+    count = count_of(layer) if keys is None else 0
+    features = with_answers(
+        layer.features, answers, count=count, image=image, suffix=suffix, keys=keys
+    )
+    if features is None:
+        return False
+    put_features(layer, features)
+    return True
+
+
+def put_features(layer: Any, features: Any) -> None:
+    """Give a layer other features; the next shape or point starts without answers."""
+    layer.features = features
+    if INDEX not in features and hasattr(layer, "feature_defaults"):
+        blank_defaults(layer)
+
+
+def with_answers(
+    features: Any,
+    answers: Mapping[int, Result | NotMeasured],
+    *,
+    count: int = 0,
+    image: str = "",
+    suffix: str = "",
+    keys: Sequence[int] | None = None,
+) -> Any:
+    """Return features with answers as columns; it touches no layer, so it may run in any thread.
+
+    Parameters
+    ----------
+    features : pandas.DataFrame
+        A layer's; left as they are.
     answers : mapping of int to Result or NotMeasured
         By row, or by label.
+    count : int
+        How many shapes or points there are.
     image : str
         The layer that was measured; kept beside the numbers.
     suffix : str
@@ -57,14 +99,13 @@ def write_answers(
 
     Returns
     -------
-    bool
-        Whether anything changed; features that already say it are left alone.
+    pandas.DataFrame or None
+        None if they say it already, or if a shape is being drawn.
     """
-    features = layer.features
+    before = len(features)
     if keys is None:
-        count = count_of(layer)
-        if len(features) not in (0, count):
-            return False  # a shape is being drawn: it has its row only when it is finished
+        if before not in (0, count):
+            return None  # a shape is being drawn: it has its row only when it is finished
         mine = [key for key in answers if 0 <= key < count]
         rows = np.array(mine, dtype=int)
     else:
@@ -81,12 +122,9 @@ def write_answers(
         column = _changed(features, full, count, rows, values)
         if column is not None:
             new[full] = column
-    if not new and len(features) == len(layer.features):
-        return False
-    layer.features = features.assign(**new)
-    if keys is None and hasattr(layer, "feature_defaults"):
-        blank_defaults(layer)
-    return True
+    if not new and len(features) == before:
+        return None
+    return features.assign(**new)
 
 
 def _columns(answers: Sequence[Result | NotMeasured], image: str) -> dict[str, NDArray[Any]]:

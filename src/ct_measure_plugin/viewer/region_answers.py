@@ -310,8 +310,13 @@ def _ends(region: Region) -> tuple[float, float]:
 
 def _guess(ask: Ask) -> float:
     """Return a first guess of a region's cost: by its slices and their pixels, in seconds."""
-    single = isinstance(ask.region.z_mm, float) and not isinstance(ask.region, Ellipsoid | Mask)
-    slices = 1 if single else max(len(slices_of(ask.region, ask.volume)), 1)
+    region = ask.region
+    if isinstance(region, Mask):  # there may be thousands: their slices are not looked up
+        slices = len(region.inside) if region.inside.ndim == 3 else 1
+    elif isinstance(region.z_mm, float) and not isinstance(region, Ellipsoid):
+        slices = 1
+    else:
+        slices = max(len(slices_of(region, ask.volume)), 1)
     return _EACH * slices + _PIXEL * _pixels(ask, slices)
 
 

@@ -5,6 +5,7 @@ No Qt here. The board reads the layers, asks, and lays the answers out; the dock
 
 from __future__ import annotations
 
+import operator
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
@@ -12,9 +13,11 @@ from psygnal import Signal
 
 from ct_measure_plugin.errors import CtMeasureError
 from ct_measure_plugin.physics.results import NotMeasured, Quantity, Result
+from ct_measure_plugin.viewer.answer_columns import put_features
 from ct_measure_plugin.viewer.layers import shows_slab
 from ct_measure_plugin.viewer.region_answers import Ask, RegionAnswers
 from ct_measure_plugin.viewer.region_features import ids_on
+from ct_measure_plugin.viewer.tasks import Latest
 
 if TYPE_CHECKING:
     from collections.abc import Collection, Sequence
@@ -31,6 +34,10 @@ __all__ = ["RegionBoard", "Row"]
 _WAITING = NotMeasured("it is being measured", "wait a moment")
 
 _SLAB = "The canvas shows several slices as one; single slices are measured."
+
+
+#: Rows above which features are laid out in a thread: a thousand take some 20 ms.
+MANY_ROWS = 1000
 
 
 @dataclass(frozen=True, slots=True)
@@ -109,6 +116,8 @@ class RegionBoard:
         self._last: dict[tuple[int, str], Result | NotMeasured] = {}
         self.answers = RegionAnswers(name)
         self.answers.changed.connect(self.changed.emit)
+        self._columns = Latest("Features")
+        self._columns.answered.connect(self._put)
 
     # --- looking --------------------------------------------------------------------
 
@@ -157,6 +166,7 @@ class RegionBoard:
     def stop(self) -> None:
         """Stop what runs in the background."""
         self.answers.stop()
+        self._columns.cancel()
         if self.source is not None:
             self.source.close()
 
@@ -186,13 +196,29 @@ class RegionBoard:
         return next((row.answer for row in self.rows if row.index == index), None)
 
     def write_features(self) -> bool:
-        """Write the answers into the layer's features; not while any of them is still to come."""
+        """Write the answers into the layer's features; not while any of them is still to come.
+
+        Many are laid out in a thread, and written when that is done unless something has changed
+        meanwhile. Returns whether features were written.
+        """
         source = self.source
-        if source is None or source.unfinished or not self.rows:
+        if source is None or source.unfinished or not self.rows or self._columns.busy:
             return False
         if not all(row.complete for row in self.rows):
             return False
-        changed = False
+        if len(self.rows) > MANY_ROWS:
+            self._write_many(source)
+            return False
+        changed = [source.write_answers(*part) for part in self._parts()]
+        if hasattr(source.layer, "selected_data"):
+            ids_on(source.layer)
+        return any(changed)
+
+    # --- inside ---------------------------------------------------------------------
+
+    def _parts(self) -> list[tuple[dict[int, Result | NotMeasured], str, str]]:
+        """Return the answers of each image by region, its name, and how its columns end."""
+        found = []
         for place, image in enumerate(self.images):
             title = image.name if len(self.images) > 1 else ""
             mine = {
@@ -200,13 +226,25 @@ class RegionBoard:
                 for row in self.rows
                 if row.image == title and not row.difference
             }
-            suffix = f"_{place + 1}" if place else ""
-            changed |= source.write_answers(mine, image.name, suffix)
-        if hasattr(source.layer, "selected_data"):
-            ids_on(source.layer)
-        return changed
+            found.append((mine, image.name, f"_{place + 1}" if place else ""))
+        return found
 
-    # --- inside ---------------------------------------------------------------------
+    def _write_many(self, source: RegionSource) -> None:
+        rows, before = self.rows, source.layer.features
+        job = source.columns_job(self._parts())
+        self._columns.start(lambda work: (source, rows, before, job(work)))
+
+    def _put(self, found: tuple[Any, ...]) -> None:
+        """Write what a thread laid out, unless it is about what was there before."""
+        source, rows, before, features = found
+        layer = source.layer
+        alike = len(rows) == len(self.rows) and all(map(operator.is_, rows, self.rows))
+        if source is not self.source or layer.features is not before or not alike:
+            return  # whatever changed is looked at, and written once it rests
+        if features is not None:
+            put_features(layer, features)
+        if hasattr(layer, "selected_data"):
+            ids_on(layer)
 
     def _read(self, *, wait: bool) -> str:
         """Read the layers; return what stands in the way, or a remark."""

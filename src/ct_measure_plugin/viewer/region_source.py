@@ -11,18 +11,19 @@ from typing import TYPE_CHECKING, Any, ClassVar
 
 from psygnal import Signal
 
-from ct_measure_plugin.viewer.answer_columns import write_answers
+from ct_measure_plugin.viewer.answer_columns import with_answers, write_answers
 from ct_measure_plugin.viewer.labels import LabelRegions
 from ct_measure_plugin.viewer.points import points_on
-from ct_measure_plugin.viewer.region_features import set_column
+from ct_measure_plugin.viewer.region_features import count_of, set_column
 from ct_measure_plugin.viewer.shapes import drawn_on, repair
 
 if TYPE_CHECKING:
-    from collections.abc import Collection, Iterator, Mapping, Sequence
+    from collections.abc import Callable, Collection, Iterator, Mapping, Sequence
 
     from ct_measure_plugin.physics.results import NotMeasured, Result
     from ct_measure_plugin.viewer.drawn import Drawn
     from ct_measure_plugin.viewer.placement import Placement
+    from ct_measure_plugin.viewer.tasks import Work
 
 __all__ = ["LabelSource", "PointSource", "RegionSource", "ShapeSource", "kinds", "source_of"]
 
@@ -119,7 +120,41 @@ class RegionSource:
         self, answers: Mapping[int, Result | NotMeasured], image: str, suffix: str = ""
     ) -> bool:
         """Write answers into the features; return whether anything changed."""
-        return write_answers(self.layer, answers, image=image, suffix=suffix)
+        return write_answers(self.layer, self._own(answers), image=image, suffix=suffix)
+
+    def columns_job(
+        self, parts: Sequence[tuple[Mapping[int, Result | NotMeasured], str, str]]
+    ) -> Callable[[Work], Any]:
+        """Return a job that puts answers into a copy of the features, for a thread.
+
+        It returns the new features, or None if they say it already. A part is answers, image and
+        suffix, as for :meth:`write_answers`.
+        """
+        features, keys = self.layer.features, self._keys()
+        count = count_of(self.layer) if keys is None else 0
+        own = [(self._own(answers), image, suffix) for answers, image, suffix in parts]
+
+        def job(work: Work) -> Any:
+            found = None
+            for place, (answers, image, suffix) in enumerate(own):
+                work.stop_if_asked()
+                work.progress(place, len(own))
+                now = features if found is None else found
+                new = with_answers(now, answers, count=count, image=image, suffix=suffix, keys=keys)
+                found = found if new is None else new
+            return found
+
+        return job
+
+    def _keys(self) -> list[int] | None:
+        """Return the labels of a Labels layer."""
+        return None
+
+    def _own(
+        self, answers: Mapping[int, Result | NotMeasured]
+    ) -> Mapping[int, Result | NotMeasured]:
+        """Return the answers that belong to regions still there."""
+        return answers
 
 
 class ShapeSource(RegionSource):
@@ -258,10 +293,19 @@ class LabelSource(RegionSource):
         self, answers: Mapping[int, Result | NotMeasured], image: str, suffix: str = ""
     ) -> bool:
         """Write answers into the features; return whether anything changed."""
-        mine = {label: found for label, found in answers.items() if label in self._labels}
+        mine = self._own(answers)
         if not mine:
             return False
         return write_answers(self.layer, mine, image=image, suffix=suffix, keys=self._labels)
+
+    def _keys(self) -> list[int] | None:
+        return list(self._labels)
+
+    def _own(
+        self, answers: Mapping[int, Result | NotMeasured]
+    ) -> Mapping[int, Result | NotMeasured]:
+        known = set(self._labels)
+        return {label: found for label, found in answers.items() if label in known}
 
 
 def kinds() -> tuple[type, ...]:

@@ -97,7 +97,7 @@ class RegionStatisticsDock(Dock):
         self._words = RegionNotes()
         self.message, self.notes = self._words.message, self._words.notes
         self.plots = RegionPlots(self)
-        self.form = SettingsForm(self._measurement.settings_type)
+        self.form = SettingsForm(self._measurement.settings_type, offers=self.session.offered)
         self.form.changed.connect(self.kick)
         do = weakly(self.do, otherwise=False)
         self.typing = RegionTyping(do, self.acts.here, self)

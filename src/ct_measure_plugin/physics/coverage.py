@@ -8,12 +8,19 @@ subdivides.
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
-from typing import TYPE_CHECKING, Any, Literal, TypeAlias
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
 from ct_measure_plugin.errors import ArgumentError, RegionError
+from ct_measure_plugin.physics.coverage_grid import (
+    Coverage,
+    Grid,
+    Rule,
+    share_outside,
+    share_outside_by_centers,
+)
+from ct_measure_plugin.physics.coverage_polygon import polygon_coverage
 from ct_measure_plugin.physics.regions import (
     Box,
     Disc,
@@ -29,8 +36,6 @@ from ct_measure_plugin.physics.regions import (
 )
 
 if TYPE_CHECKING:
-    from collections.abc import Iterable
-
     from numpy.typing import NDArray
 
     from ct_measure_plugin.physics.volume import Volume
@@ -38,28 +43,6 @@ if TYPE_CHECKING:
     Floats = NDArray[np.float64]
 
 __all__ = ["Coverage", "Rule", "centres_inside", "plane_coverage", "reach_of", "slices_of"]
-
-Rule: TypeAlias = Literal["area", "center"]
-
-
-@dataclass(frozen=True, slots=True, eq=False)
-class Coverage:
-    """A region on one slice's grid.
-
-    Attributes
-    ----------
-    weights : ndarray, shape (h, w)
-        Fraction of each pixel inside the region, 0 to 1, cropped to the region.
-    rows, columns : slice
-        Where the crop lies in the image; always within it.
-    outside : float
-        Fraction of the region's area that lies outside the image, 0 to 1.
-    """
-
-    weights: Floats
-    rows: slice
-    columns: slice
-    outside: float
 
 
 def plane_coverage(
@@ -111,7 +94,7 @@ def plane_coverage(
     """
     if rule not in ("area", "center"):
         raise ArgumentError("rule", "must be 'area' or 'center'", rule)
-    grid = _Grid(shape, spacing_mm, origin_mm)
+    grid = Grid(shape, spacing_mm, origin_mm)
     if isinstance(region, Disc):
         region = Ellipse(region.center_mm, (region.radius_mm, region.radius_mm))
     if isinstance(region, Segment):
@@ -126,7 +109,7 @@ def plane_coverage(
     if isinstance(region, Ellipse):
         return _ellipse(region, grid, rule)
     if isinstance(region, Box | Polygon):
-        return _polygon(np.asarray(region.vertices_mm, float), region.area_mm2, grid, rule)
+        return polygon_coverage(np.asarray(region.vertices_mm, float), region.area_mm2, grid, rule)
     if isinstance(region, Mask):
         return _mask(region, grid, rule, (z_mm, slab_mm))
     kinds = "disc, ellipse, ellipsoid, box, polygon, segment, path or mask"
@@ -209,36 +192,6 @@ def _own_reach(region: Region) -> tuple[float, float] | None:
     return None
 
 
-@dataclass(frozen=True, slots=True)
-class _Grid:
-    shape: tuple[int, int]
-    spacing_mm: tuple[float, float]
-    origin_mm: tuple[float, float]
-
-    def index(self, points_mm: Floats) -> Floats:
-        """Turn (…, 2) millimetres into row and column."""
-        moved: Floats = (points_mm - np.asarray(self.origin_mm)) / np.asarray(self.spacing_mm)
-        return moved
-
-    @property
-    def pixel_area(self) -> float:
-        return self.spacing_mm[0] * self.spacing_mm[1]
-
-    def crop(self, low: Iterable[float], high: Iterable[float]) -> tuple[slice, slice]:
-        """Return the rows and columns of pixels that touch an index-space box, within the image."""
-        spans = []
-        for lo, hi, n in zip(low, high, self.shape, strict=True):
-            start = min(max(math.floor(lo + 0.5), 0), n)
-            stop = min(max(math.ceil(hi + 0.5), start), n)
-            spans.append(slice(start, stop))
-        return spans[0], spans[1]
-
-
-def _outside(weights: Floats, area_mm2: float, grid: _Grid) -> float:
-    share = 1.0 - float(weights.sum()) * grid.pixel_area / area_mm2
-    return 0.0 if share < 1e-9 else min(share, 1.0)
-
-
 def _as_box(segment: Segment) -> Box:
     if segment.width_mm <= 0:
         raise RegionError("width_mm", "must be greater than 0 to enclose pixels", segment.width_mm)
@@ -253,7 +206,7 @@ def _as_box(segment: Segment) -> Box:
 # --- ellipses ------------------------------------------------------------------------------------
 
 
-def _ellipse(region: Ellipse, grid: _Grid, rule: Rule) -> Coverage:
+def _ellipse(region: Ellipse, grid: Grid, rule: Rule) -> Coverage:
     (along_y, along_x), (across_y, across_x) = (
         direction(region.angle_deg),
         direction(region.angle_deg + 90),
@@ -274,7 +227,9 @@ def _ellipse(region: Ellipse, grid: _Grid, rule: Rule) -> Coverage:
     square = u * u + v * v
     if rule == "center":
         weights = (square <= 1.0 + 2e-12).astype(float)
-        return Coverage(weights, rows, columns, _center_outside(region.area_mm2, grid, weights))
+        return Coverage(
+            weights, rows, columns, share_outside_by_centers(region.area_mm2, grid, weights)
+        )
     reach = (math.hypot(*down) + math.hypot(*right)) / 2  # no corner is farther from its centre
     weights = (square < 1.0).astype(float)
     border = (square <= (1.0 + reach) ** 2) & (square >= max(1.0 - reach, 0.0) ** 2)
@@ -284,20 +239,12 @@ def _ellipse(region: Ellipse, grid: _Grid, rule: Rule) -> Coverage:
     inside = np.abs(_edges_in_disc(corner_u, corner_v).sum(axis=0))
     full = abs(down[0] * right[1] - down[1] * right[0])
     weights[border] = np.minimum(inside / full, 1.0)
-    return Coverage(weights, rows, columns, _outside(weights, region.area_mm2, grid))
+    return Coverage(weights, rows, columns, share_outside(weights, region.area_mm2, grid))
 
 
 #: Half pixels down and right from a pixel's centre to its corners, in order, last as first.
 _HALF_DOWN = 0.5 * np.array([-1.0, -1.0, 1.0, 1.0, -1.0])[:, None]
 _HALF_RIGHT = 0.5 * np.array([-1.0, 1.0, 1.0, -1.0, -1.0])[:, None]
-
-
-def _center_outside(area_mm2: float, grid: _Grid, weights: Floats) -> float:
-    """Judge the outside share by whole pixels only when it is beyond their rounding."""
-    share = 1.0 - float(weights.sum()) * grid.pixel_area / area_mm2
-    perimeter = 2 * math.sqrt(math.pi * area_mm2)
-    rounding = perimeter * math.sqrt(grid.pixel_area) / area_mm2
-    return 0.0 if share < rounding else min(share, 1.0)
 
 
 def _edges_in_disc(u: Floats, v: Floats) -> Floats:
@@ -321,81 +268,10 @@ def _edges_in_disc(u: Floats, v: Floats) -> Floats:
     return 0.5 * area
 
 
-# --- polygons ------------------------------------------------------------------------------------
-
-
-def _polygon(vertices_mm: Floats, area_mm2: float, grid: _Grid, rule: Rule) -> Coverage:
-    points = grid.index(vertices_mm) + 0.5  # pixel k now spans [k, k + 1]
-    rows, columns = grid.crop(points.min(axis=0) - 0.5, points.max(axis=0) - 0.5)
-    shape = rows.stop - rows.start, columns.stop - columns.start
-    local = points - (rows.start, columns.start)
-    if 0 in shape:
-        return Coverage(np.zeros(shape), rows, columns, 1.0)
-    if rule == "center":
-        weights = _centers_in_polygon(local, shape).astype(float)
-        return Coverage(weights, rows, columns, _center_outside(area_mm2, grid, weights))
-    weights = _polygon_area(local, shape)
-    return Coverage(weights, rows, columns, _outside(weights, area_mm2, grid))
-
-
-def _polygon_area(points: Floats, shape: tuple[int, int]) -> Floats:
-    """Return the exact share of each unit cell inside a polygon of (row, column) corners.
-
-    Every edge is cut where it meets a grid line; each piece then lies in one cell and covers
-    ``dy`` of its height: that area in its own cell up to the cell's right side, and the whole of
-    ``dy`` in every cell to the right, which a running sum along the row delivers.
-    """
-    height, width = shape
-    own = np.zeros((height, width + 1))
-    carry = np.zeros((height, width + 1))
-    for p, q in zip(points, np.roll(points, -1, axis=0), strict=True):
-        t = _cuts(p, q, shape)
-        y, x = p[0] + t * (q[0] - p[0]), p[1] + t * (q[1] - p[1])
-        dy, ym, xm = np.diff(y), (y[1:] + y[:-1]) / 2, (x[1:] + x[:-1]) / 2
-        row, col = np.floor(ym).astype(int), np.floor(xm).astype(int)
-        kept = (row >= 0) & (row < height) & (col < width) & (dy != 0)
-        row, col, dy, xm = row[kept], col[kept], dy[kept], xm[kept]
-        left = col < 0
-        col = np.where(left, -1, col)
-        np.add.at(own, (row, col + 1), np.where(left, 0.0, dy * (col + 1 - xm)))
-        np.add.at(carry, (row, col + 1), dy)
-    cover = own[:, 1:] + np.cumsum(carry, axis=1)[:, :-1]
-    return np.clip(np.abs(cover), 0.0, 1.0)
-
-
-def _cuts(p: Floats, q: Floats, shape: tuple[int, int]) -> Floats:
-    """Return the sorted parameters in [0, 1] at which p→q meets a grid line of the crop."""
-    parts = [np.array([0.0, 1.0])]
-    for a, b, n in zip(p, q, shape, strict=True):
-        if a == b:
-            continue
-        low, high = max(math.ceil(min(a, b)), 0), min(math.floor(max(a, b)), n)
-        if low <= high:
-            parts.append((np.arange(low, high + 1) - a) / (b - a))
-    return np.unique(np.clip(np.concatenate(parts), 0.0, 1.0))
-
-
-def _centers_in_polygon(points: Floats, shape: tuple[int, int]) -> NDArray[np.bool_]:
-    """Tell which cell centres lie inside or on the border, by crossings to the right."""
-    y = np.arange(shape[0])[:, None] + 0.5
-    x = np.arange(shape[1])[None, :] + 0.5
-    inside = np.zeros(shape, bool)
-    border = np.zeros(shape, bool)
-    for (y0, x0), (y1, x1) in zip(points, np.roll(points, -1, axis=0), strict=True):
-        cross = (x1 - x0) * (y - y0) - (y1 - y0) * (x - x0)
-        length = math.hypot(y1 - y0, x1 - x0)
-        within = (x - x0) * (x - x1) + (y - y0) * (y - y1) <= 0
-        border |= (np.abs(cross) <= 1e-9 * max(length, 1.0)) & within
-        spans = (y0 <= y) != (y1 <= y)
-        if y0 != y1:
-            inside ^= spans & (x < x0 + (y - y0) * (x1 - x0) / (y1 - y0))
-    return inside | border
-
-
 # --- masks ---------------------------------------------------------------------------------------
 
 
-def _mask(region: Mask, grid: _Grid, rule: Rule, slab: tuple[float, float]) -> Coverage:
+def _mask(region: Mask, grid: Grid, rule: Rule, slab: tuple[float, float]) -> Coverage:
     flat = region.inside
     if flat.ndim == 3:
         flat = _slab_of(region, *slab, rule)
@@ -416,7 +292,7 @@ def _mask(region: Mask, grid: _Grid, rule: Rule, slab: tuple[float, float]) -> C
         )
     weights = np.clip(axes[0] @ flat.astype(float) @ axes[1].T, 0.0, 1.0)
     area = float(flat.sum()) * float(step[0] * step[1])
-    outside = _outside(weights, area, grid)
+    outside = share_outside(weights, area, grid)
     if rule == "center":
         weights = (weights >= 0.5).astype(float)
     return Coverage(weights, rows, columns, outside)

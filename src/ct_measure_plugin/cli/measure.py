@@ -10,6 +10,7 @@ from ct_measure_plugin.cli.dicom_report import add_dicom_options, write_dicom
 from ct_measure_plugin.cli.outputs import add_logbook_option, add_output_options, deliver
 from ct_measure_plugin.cli.region_words import HELP, region_from_words
 from ct_measure_plugin.cli.setting_words import SETTING_HELP, ListMeasurements, setting_from_words
+from ct_measure_plugin.cli.subtract import add_subtract_options, without_repeat
 from ct_measure_plugin.errors import ArgumentError
 
 if TYPE_CHECKING:
@@ -53,6 +54,7 @@ def add_parser(commands: argparse._SubParsersAction[argparse.ArgumentParser]) ->
     )
     parser.add_argument("--plan", metavar="FILE", help="a YAML or JSON plan instead of the above")
     add_against_options(parser)
+    add_subtract_options(parser)
     add_output_options(parser)
     add_logbook_option(parser)
     add_dicom_options(parser)
@@ -69,7 +71,7 @@ def run(arguments: argparse.Namespace) -> int:
         raise ArgumentError("measurement", "must be given, or else --plan", arguments.measurement)
     plan = load_plan(arguments.plan) if arguments.plan else None
     entry = entry_at(arguments.series, arguments.index)
-    volume = read_series(entry)
+    volume = without_repeat(read_series(entry), arguments)
     plan = plan or _plan(arguments, volume)
     if arguments.against:
         if arguments.dicom:

@@ -32,7 +32,7 @@ def scan_difference(first: Volume, second: Volume) -> Volume:
 
     Notes
     -----
-    A voxel that is padding in either scan becomes NaN.
+    A voxel that is padding in either scan becomes NaN. The title says what was subtracted.
 
     Examples
     --------
@@ -63,9 +63,11 @@ def scan_difference(first: Volume, second: Volume) -> Volume:
         "It holds if they were taken at the same place and tube position.",
     )
     known = {c.code: c for c in (*first.cautions, *second.cautions)}
+    names = (scan.source.title or "scan" for scan in (first, second))
     return replace(
         first,
         hu=values,
+        source=replace(first.source, title="({} − {})/√2".format(*names), content_digest=""),
         padding_hu=None,
         representable_hu=None,
         cautions=(*known.values(), note),

@@ -7,6 +7,7 @@ import threading
 import pytest
 
 from ct_measure_plugin.errors import SeriesError
+from ct_measure_plugin.viewer.docks.busy_line import BusyLine
 from ct_measure_plugin.viewer.following import Following
 
 
@@ -83,3 +84,26 @@ def test_an_error_does_not_stop_the_next_question(following, qtbot):
     go.set()
     qtbot.waitUntil(lambda: len(following.heard) == 2, timeout=3000)
     assert {type(one) for one in following.heard} == {SeriesError, str}
+
+
+def test_how_far_a_job_is_is_told_and_shown(qtbot):
+    following = Following("Counting")
+    line = BusyLine(following)
+    qtbot.addWidget(line)
+    told, hold = [], threading.Event()
+    following.progressed.connect(lambda done, total: told.append((done, total)))
+
+    def job(work):
+        work.progress(3, 7)
+        hold.wait(5)
+
+    following.start(job)
+    qtbot.waitUntil(lambda: bool(told), timeout=5000)
+    assert told == [(3, 7)]
+    assert line.words.text() == "Measured 3 of 7"
+    assert (line.bar.value(), line.bar.maximum()) == (3, 7)
+    hold.set()
+    qtbot.waitUntil(lambda: not following.busy, timeout=5000)
+    following.start(lambda _work: None)
+    assert line.words.text() == "Measuring…"  # nothing is known of the next job yet
+    qtbot.waitUntil(lambda: not following.busy, timeout=5000)

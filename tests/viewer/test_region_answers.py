@@ -119,6 +119,28 @@ def test_many_at_rest_are_measured_elsewhere(answers, volume, monkeypatch, qtbot
     assert all(answers.known(ask) for ask in asks)
 
 
+def test_what_was_stopped_begins_again_when_something_moves(answers, volume, monkeypatch, qtbot):
+    monkeypatch.setattr(region_answers, "LONG", 0.0)
+    hold = threading.Event()
+    hold.begun = threading.Event()
+    counted(answers, monkeypatch, hold)
+    asks = asks_of(volume, 3)
+    answers.find(asks, seconds=0.0)
+    assert hold.begun.wait(5)
+    answers.halt()
+    hold.set()
+    assert not answers.busy
+    for _ in range(3):
+        assert answers.find(asks, seconds=0.0) == 0
+        assert not answers.busy
+    moved = asks_of(volume, 3, shift=0.1)
+    answers.find(moved, seconds=0.0)
+    assert answers.busy
+    qtbot.waitUntil(lambda: not answers.busy, timeout=5000)
+    answers.find(moved, seconds=0.0)
+    assert all(answers.complete(ask) for ask in moved)
+
+
 def test_an_answer_that_comes_too_late_is_dropped(answers, volume, monkeypatch, qtbot):
     """The values changed while the job ran: what it found was of the values before."""
     monkeypatch.setattr(region_answers, "LONG", 0.0)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import csv
+from dataclasses import replace
 
 import numpy as np
 import pytest
@@ -258,3 +259,28 @@ def test_a_real_drag_is_followed(make_napari_viewer, qtbot, volume):
     qtbot.waitUntil(lambda: len(dock.model.rows) == 1, timeout=5000)
     assert layer.nshapes == 1
     assert dock.model.rows[0].answer, str(dock.model.rows[0].answer)
+
+
+@pytest.mark.parametrize("coverage", ["area", "center"])
+def test_a_threshold_gives_the_number_that_a_script_gives(scene, volume, coverage):
+    """Border pixels within the range count by their share here too, unless told otherwise."""
+    _, _, layer, dock = scene
+    disc = Disc((0.3, 24.2), 6.1, z_mm=Z, name="tissue")
+    draw(layer, volume, disc, "tissue")
+    dock.form.show(dock.form.settings.model_copy(update={"coverage": coverage}))
+    dock.refresh_now()
+    whole = dock.board.answer(0)
+    dock.acts.count([0], 35.0, 60.0)
+    dock.refresh_now()
+    shown = dock.board.answer(0)
+    [drawn] = dock.board.drawn
+    region = replace(drawn.region, values=(35.0, 60.0))
+    asked = measure("region_statistics", volume, region, coverage=coverage)
+    assert shown.mean == asked.mean
+    assert (shown.sd, shown.n, shown.area) == (asked.sd, asked.n, asked.area)
+    assert shown.n.value < whole.n.value
+    assert shown.minimum.value >= 35.0
+    if coverage == "area":  # as meant, before napari stored its corners as float32; a pixel whose
+        # centre lies on the border, though, is in or out by that rounding
+        meant = measure("region_statistics", volume, replace(disc, values=(35.0, 60.0)))
+        assert shown.mean.value == pytest.approx(meant.mean.value, abs=1e-3)

@@ -30,18 +30,22 @@ class Following:
         A job's result, in the main thread.
     failed(error)
         A job raised a CtMeasureError.
+    progressed(done, total)
+        How far the running job is.
     busy_changed(busy)
         Work began or ended.
     """
 
     answered = Signal(object)
     failed = Signal(object)
+    progressed = Signal(int, int)
     busy_changed = Signal(bool)
 
     def __init__(self, title: str) -> None:
         self._latest = Latest(title)
         self._latest.answered.connect(self.answered.emit)
         self._latest.failed.connect(self.failed.emit)
+        self._latest.progressed.connect(self.progressed.emit)
         self._latest.busy_changed.connect(self._on_busy)
         self._waiting: Callable[[Work], Any] | None = None
         self._told_busy = False

@@ -104,6 +104,11 @@ class RegionAnswers:
     name : str
         The measurement's; it measures each region by itself.
 
+    Attributes
+    ----------
+    following : Following
+        What is measured in the background.
+
     Signals
     -------
     changed()
@@ -118,17 +123,18 @@ class RegionAnswers:
         self._glanced: dict[Ask, Result | NotMeasured] = {}
         self._last: frozenset[Ask] = frozenset()
         self._moved = -math.inf
+        self._halted: frozenset[Ask] | None = None
         self._guesses: dict[Ask, float] = {}
         self._pace = self._glance_pace = 1.0
         self._round = 0
         self._fresh: deque[tuple[Ask, Result | NotMeasured]] = deque()  # a thread adds to it
-        self._following = Following(self._measurement.title)
-        self._following.answered.connect(self._take)
+        self.following = Following(self._measurement.title)
+        self.following.answered.connect(self._take)
 
     @property
     def busy(self) -> bool:
         """True while something is measured in the background."""
-        return self._following.busy
+        return self.following.busy
 
     def known(self, ask: Ask) -> Result | NotMeasured | None:
         """Return an answer, or a glance if that is all there is; None if not even that."""
@@ -146,9 +152,14 @@ class RegionAnswers:
         self._round += 1
         self.stop()
 
+    def halt(self) -> None:
+        """Stop what is measured in the background, and begin it again only when something moves."""
+        self.following.cancel()
+        self._halted = self._last
+
     def stop(self) -> None:
         """Stop what is measured in the background."""
-        self._following.cancel()
+        self.following.cancel()
         self._last = frozenset()
 
     def find(self, asks: Sequence[Ask], seconds: float | None = None) -> int:
@@ -176,7 +187,7 @@ class RegionAnswers:
             return 0
         now, wanted = time.perf_counter(), frozenset(asks)
         if wanted != self._last:
-            self._last, self._moved = wanted, now
+            self._last, self._moved, self._halted = wanted, now, None
         at_rest = now - self._moved > REST
         short = [ask for ask in open_asks if self._cost(ask) <= LONG]
         seen = [] if at_rest else [ask for ask in open_asks if self._glance_cost(ask) <= seconds]
@@ -185,8 +196,10 @@ class RegionAnswers:
         else:
             self._measure(short, now + seconds)
         rest = [ask for ask in open_asks if ask not in self._known]
-        if self._following.busy:
+        if self.following.busy:
             return sum(ask not in self._glanced for ask in seen)
+        if self._halted == wanted:
+            return 0
         if at_rest and sum(map(self._cost, rest)) > MANY:
             self._send(rest)
             return 0
@@ -265,7 +278,7 @@ class RegionAnswers:
                 work.progress(i + 1, len(asks))
             return number
 
-        self._following.start(job)
+        self.following.start(job)
 
     def _take(self, number: int) -> None:
         if number == self._round:

@@ -128,6 +128,10 @@ class RegionChoice(QWidget):
         self._fill(self.chosen_layer() if regions is None else regions)
         self.changed.emit()
 
+    def choose_layer(self, layer: Any) -> None:
+        """Choose a layer of regions, such as one just opened."""
+        self.choose(regions=layer)
+
     # --- inside ---------------------------------------------------------------------
 
     def _fill(self, region: Any) -> None:

@@ -8,6 +8,7 @@ from qtpy.QtCore import Qt, QTimer, Signal
 
 from ct_measure_plugin.errors import CtMeasureError
 from ct_measure_plugin.measurements import find
+from ct_measure_plugin.viewer.docks.busy_line import BusyLine
 from ct_measure_plugin.viewer.docks.dock import Dock
 from ct_measure_plugin.viewer.docks.fold import Fold, folded
 from ct_measure_plugin.viewer.docks.form import SettingsForm
@@ -104,15 +105,15 @@ class RegionStatisticsDock(Dock):
         self.arranging = RegionArranging(do, self.session, self)
         self.files = RegionFiles(do, self.board, self.viewer, self)
         self.files.told.connect(self._tell)
-        self.files.opened.connect(self._choose_opened)
+        self.files.opened.connect(self.choice.choose_layer)
         self.keeping = KeepingButtons(self.session, self.board.questions, self)
         self.keeping.copy.connect(self.view.copy)
-        for part in (self.choice, self.questions):
-            self.body.addWidget(part)
-        self.body.addWidget(self.view, stretch=1)
         self.doing = RegionDoing(do, self.acts.undo, self.view, self)
-        for part in (self.doing, self.message, *self._folds(), self.keeping):
+        self.busy = BusyLine(self.board.answers.following, self, weakly(self._halt))
+        above = (self.choice, self.questions, self.view, self.busy, self.doing, self.message)
+        for part in (*above, *self._folds(), self.keeping):
             self.body.addWidget(part)
+        self.body.setStretchFactor(self.view, 1)
 
     def _folds(self) -> list[Fold]:
         parts: dict[str, QWidget] = {
@@ -139,9 +140,6 @@ class RegionStatisticsDock(Dock):
         """Measure the regions of one layer on image layers; for programs and tests."""
         chosen = tuple(images) if isinstance(images, list | tuple) else (images,)
         self.choice.choose(chosen, regions)
-
-    def _choose_opened(self, layer: Any) -> None:
-        self.choose(regions=layer)
 
     def _rebind(self) -> None:
         layer, source = self.choice.chosen_layer(), self.board.source
@@ -186,6 +184,10 @@ class RegionStatisticsDock(Dock):
         self._again.stop()
         self._plot_soon.stop()
         self.board.stop()
+
+    def _halt(self, *_: Any) -> None:
+        self.board.answers.halt()
+        self._tell("Stopped. The next change measures what is left.")
 
     # --- measuring and showing ------------------------------------------------------
 
@@ -309,8 +311,7 @@ class RegionStatisticsDock(Dock):
 
     def _edited(self, column: str, index: int, text: str) -> None:
         chosen = self.view.chosen()
-        several = column in (CLASS, CODE) and index in chosen
-        indices = chosen if several else [index]
+        indices = chosen if column in (CLASS, CODE) and index in chosen else [index]
 
         def act(*_: Any) -> None:
             value = checked_code(text) if column == CODE else text

@@ -215,9 +215,10 @@ def _statistics(runs: _Runs, percentiles: tuple[float, ...]) -> LabelNumbers:
     shifted = np.bincount(row, runs.count * (runs.value - anchor[row]), minlength=labels) / safe
     mean = anchor + shifted
     residual = runs.value - mean[row]
-    weighted = runs.count * residual
+    power = runs.count * residual
     m2, m3, m4 = (
-        np.bincount(row, weighted * residual**k, minlength=labels) / safe for k in (1, 2, 3)
+        np.bincount(row, np.multiply(power, residual, out=power), minlength=labels) / safe
+        for _ in range(3)
     )
     last = np.maximum(runs.start[1:] - 1, 0)
     highest = runs.value[last] if len(runs.value) else np.zeros(labels)

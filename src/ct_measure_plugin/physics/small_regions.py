@@ -236,11 +236,9 @@ def _tiles(residual: Floats, inside: NDArray[np.bool_], votes: float) -> _TilesS
         return None
     windows = np.lib.stride_tricks.sliding_window_view
     step, side = TILE // 2, (TILE, TILE)
-    count, scatter = 0, np.zeros((TILE * TILE, TILE * TILE))
-    for plane, mask in zip(residual, inside, strict=True):
-        full = windows(mask, side)[::step, ::step].all(axis=(2, 3))
-        x = windows(plane, side)[::step, ::step][full].reshape(-1, TILE * TILE)
-        count, scatter = count + len(x), scatter + x.T @ x
+    full = windows(inside, side, axis=(1, 2))[:, ::step, ::step].all(axis=(3, 4))
+    x = windows(residual, side, axis=(1, 2))[:, ::step, ::step][full].reshape(-1, TILE * TILE)
+    count, scatter = len(x), x.T @ x
     if not count:
         return None
     pixels = int(np.count_nonzero(inside))
@@ -279,7 +277,7 @@ def _half_width(share: Floats, scale: Floats, freedom: float) -> float:
     share, scale = share[kept] / share[kept].sum(), scale[kept]
     factor = float(special.stdtrit(freedom, 0.975))
     low, high = factor * scale.min(), factor * scale.max()  # the widest member bounds it
-    for _ in range(30):
+    for _ in range(18):  # to a part in 10,000 of a range of 13
         middle = math.sqrt(low * high)
         if float(share @ special.stdtr(freedom, middle / scale)) < 0.975:
             low = middle

@@ -400,6 +400,21 @@ def test_what_cannot_be_measured_is_refused_in_words(words):
     assert found.remedy
 
 
+def test_frequencies_are_not_told_where_the_shape_is_open():
+    """Slices half a width apart: the FWHM of a rounded rectangle is told now and then, no more."""
+    rng, seen = np.random.default_rng(16), 0
+    for _ in range(8):
+        stack, z = bead(rectangle_and(0.25), 1.25, offset=float(rng.uniform(-0.6, 0.6)))
+        stack += rng.normal(0, 12, stack.shape)
+        found = slice_profile(stack, spacing_mm=(PIXEL, PIXEL), positions_mm=z, object_size_mm=0.0)
+        if found and not found.fwtm:
+            seen += 1
+            assert "at a tenth uncertain by" in found.fwtm.reason
+            assert "smaller increment" in found.fwtm.remedy
+            assert not any((found.f50, found.f10, found.f2))
+    assert seen
+
+
 def test_a_coarse_increment_is_cautioned():
     stack, z = bead(gauss, 0.8)
     found = slice_profile(stack, spacing_mm=(PIXEL, PIXEL), positions_mm=z, object_size_mm=0.0)

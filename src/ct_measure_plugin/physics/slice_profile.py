@@ -295,7 +295,7 @@ def _measured(
     refusal = _refusal(samples, width, float(agreeing.shapes.spread[0]), blur)
     if refusal is not None:
         return refusal
-    mtf, more = along_z(agreeing, width.value, levels, samples.step, scale)
+    mtf, more = along_z(agreeing, numbers, levels, samples.step, scale)
     middle = Quantity(0.0, "mm", 0.0)
     angle = None
     if ramp is None:

@@ -42,7 +42,10 @@ STEPS, FEW, MORE = 6, 4, 20
 DONE = 1e-6
 
 #: Rounds of trials, how many each, and about how many of those that agree they are drawn.
-ROUNDS, TRIALS, CENTRES = 6, 240, 24
+ROUNDS, TRIALS, CENTRES = 6, 240, 26
+
+#: Frequencies, over the SD, whose MTF a search drives to its ends: f50 and f10 of a Gaussian.
+TOLD_BY = np.array([0.187, 0.342])
 
 #: Spread of the trials of each round, as a share of that of those that agree.
 KERNEL = (1.5, 1.2, 1.0, 0.8, 0.6, 0.4)
@@ -218,15 +221,20 @@ class _Problem:
         return max(1.0, least / self.freedom) if rare else 1.0
 
     def telling(self, points: Floats, excess: Floats) -> NDArray[np.intp]:
-        """Return the best, those that differ most from it in width, and some of the others."""
+        """Return the best, those whose numbers differ most from its, and some of the others."""
         shapes = self.shapes(points)
         best = int(np.argmin(excess))
-        numbers = np.stack(
-            [shapes.widths(0.5), shapes.widths(0.1), 1 / shapes.spread, points[:, 0]]
+        numbers = np.column_stack(
+            [
+                shapes.widths(0.5),
+                shapes.widths(0.1),
+                shapes.spectra(TOLD_BY / np.exp(self.start[1])),
+                points[:, 0],
+            ]
         )
-        score = (numbers - numbers[:, best : best + 1]) / np.maximum(np.sqrt(excess), NINETY_FIVE)
-        ends = np.concatenate([score.argmin(axis=1), score.argmax(axis=1)])
-        others = np.linspace(0, len(points) - 1, max(CENTRES - 9, 1)).astype(np.intp)
+        score = (numbers - numbers[best]) / np.maximum(np.sqrt(excess), NINETY_FIVE)[:, None]
+        ends = np.concatenate([score.argmin(axis=0), score.argmax(axis=0)])
+        others = np.linspace(0, len(points) - 1, max(CENTRES - len(ends) - 1, 1)).astype(np.intp)
         return np.concatenate([[best], ends, others])
 
     def solutions(self) -> tuple[Floats, Floats]:

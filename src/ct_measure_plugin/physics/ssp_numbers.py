@@ -31,8 +31,8 @@ ENDS, FINE = 0.12, 10
 #: over the FWHM.
 POINTS, ACROSS, UP_TO = 161, 2.0, 2.0
 
-#: Relative standard uncertainty above which a width is not quoted.
-MOST_DOUBT = 0.15
+#: Relative standard uncertainty above which a width or a frequency is not quoted.
+MOST_DOUBT = 0.1
 
 #: Samples a FWHM below which it is cautioned, and share of the height above which a misfit is that
 #: noise does not explain.
@@ -98,14 +98,27 @@ def profile_of(samples: SspSamples, agreeing: Agreeing, fwhm: float) -> Curve:
 
 
 def along_z(
-    agreeing: Agreeing, fwhm: float, levels: tuple[float, ...], step: float, scale_doubt: float
+    agreeing: Agreeing,
+    numbers: dict[str, Any],
+    levels: tuple[float, ...],
+    step: float,
+    scale_doubt: float,
 ) -> tuple[dict[str, object], list[Caution]]:
-    """Return the numbers of the MTF along z, and cautions in words that fit the direction."""
+    """Return the numbers of the MTF along z, and cautions in words that fit the direction.
+
+    `numbers` holds the widths: where that at a tenth is not told, the shape is open, and no
+    frequency is.
+    """
+    fwhm, fwtm = numbers["fwhm"].value, numbers["fwtm"]
     frequency = np.linspace(0, UP_TO / fwhm, FREQUENCY_STEPS)
     mtf, doubt = agreeing.told(agreeing.shapes.spectra(frequency))
     stretched = scale_doubt * frequency * np.gradient(mtf, frequency)
     spread = Spread(frequency, mtf, np.hypot(doubt, stretched))
     found, cautions = curve_numbers(spread, step, levels=levels)
+    for name in ("f50", "f10", "f2"):
+        value = found[name]
+        if isinstance(value, Quantity):
+            found[name] = fwtm if isinstance(fwtm, NotMeasured) else _sure(value, name)
     return found, [_worded(caution) for caution in cautions]
 
 

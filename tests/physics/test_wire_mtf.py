@@ -264,8 +264,16 @@ def repeats(kernel, coloured, slices):
     return {m: np.array(r) for m, r in rows.items()}
 
 
-@pytest.mark.parametrize("coloured", [False, True], ids=["white", "coloured"])
-@pytest.mark.parametrize("kernel", [HANN, EDGE], ids=lambda k: k.name)
+@pytest.mark.parametrize(
+    ("kernel", "coloured"),
+    [
+        (HANN, False),
+        (EDGE, True),
+        pytest.param(HANN, True, marks=pytest.mark.long),
+        pytest.param(EDGE, False, marks=pytest.mark.long),
+    ],
+    ids=["hann-white", "edge-coloured", "hann-coloured", "edge-white"],
+)
 def test_in_noise_the_fit_beats_the_transform_and_states_its_doubt(kernel, coloured):
     """Height 80 times the noise on one slice. 30 repeats fix a scatter to 13 %, and the ratio of
     two correlated ones to about 15 %."""

@@ -15,6 +15,9 @@ def test_a_scan_with_bad_channels_needs_no_region():
     found = ctm.measure("ring_artefact", volume)
     assert found.rings_found.value >= 3
     assert {c.code for c in found.cautions} >= {"rings-found", "simulated"}
+    picture = found.ring_map
+    middle = np.asarray(picture.origin) + (np.asarray(picture.values.shape) - 1) / 2 * 0.5
+    assert middle == pytest.approx((0.0, 0.0), abs=0.5)  # in the image frame
     assert found.center_y.y[0] == pytest.approx(0.0, abs=0.3)  # the isocentre is the origin
 
 

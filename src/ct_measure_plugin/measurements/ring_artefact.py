@@ -86,8 +86,10 @@ class MeasureRingArtefact(Measurement):
         )
         if isinstance(found, NotMeasured):
             return replace(found, cautions=volume.cautions)
+        picture = found.ring_map
         return replace(
             found,
+            ring_map=replace(picture, origin=(picture.origin[0] + y, picture.origin[1] + x)),
             center_y=replace(found.center_y, y=found.center_y.y + y),
             center_x=replace(found.center_x, y=found.center_x.y + x),
             cautions=(*volume.cautions, *found.cautions),

@@ -27,6 +27,9 @@ __all__ = ["RingArtefact", "RingReading", "assembled"]
 #: Steps to either side of the strongest ring that tell a slice's noise.
 BAND = 40
 
+#: Less likely than this, 400 drawn fields cannot tell.
+LEAST_CHANCE = 1e-5
+
 #: A normal distribution's 95th percentile, in standard deviations.
 ONE_SIDED = 1.645
 
@@ -88,6 +91,8 @@ class RingArtefact(Result):
         Amplitude of the strongest ring's arc, slice by slice.
     center_y, center_x : Curve
         The rotation centre that was used, in mm.
+    ring_map : Picture
+        What the rings that were found add to the image, as they were fitted.
     polar_mean, polar_deviation : Picture
         Means by radius and azimuth; the same minus their surroundings along the radius.
     """
@@ -106,6 +111,7 @@ class RingArtefact(Result):
     worst_along_z: Curve
     center_y: Curve
     center_x: Curve
+    ring_map: Picture
     polar_mean: Picture
     polar_deviation: Picture
 
@@ -147,12 +153,14 @@ def assembled(
         center_x=Curve(z, np.full(len(z), sight.center_mm[1]), None, "z", "mm", "x", "mm"),
         polar_mean=_picture(polar, polar.means, unit),
         polar_deviation=_picture(polar, looked.deviation, unit),
+        ring_map=_map(sight, looked.fitted, unit),
         cautions=_cautions(rings),
     )
 
 
 def _reading(polar: Polar, ring: Ring, tried: int, unit: str) -> RingReading:
-    chance = min(ring.chance * tried, 1.0)
+    chance = min(max(ring.chance * tried, LEAST_CHANCE), 1.0)
+    doubt = 1.0 if chance == LEAST_CHANCE else 0.25  # drawn fields fix it to a quarter
     # cores lie on half pixels: a ring up to half a step off leaves that share of them empty
     off = abs(ring.amplitude) * 0.5 / ring.core / math.sqrt(3.0)
     return RingReading(
@@ -163,7 +171,7 @@ def _reading(polar: Polar, ring: Ring, tried: int, unit: str) -> RingReading:
         arc=Quantity(100.0 * ring.arc / SECTORS, "%", 10.0),
         first_azimuth=Quantity(360.0 * ring.start / SECTORS, "°", 360.0 / SECTORS),
         significance=Quantity(ring.score, "", 1.0),
-        chance=Quantity(100.0 * chance, "%", 25.0 * chance),  # drawn fields fix it to a quarter
+        chance=Quantity(100.0 * chance, "%", 100.0 * doubt * chance),
     )
 
 
@@ -209,6 +217,11 @@ def _along_z(
         level.append(float(plain.sums[0][place, sectors].sum()) / weight)
         doubt.append(float(plain.noise[0, place]) / math.sqrt(weight))
     return Curve(z, np.array(level), np.array(doubt), "z", "mm", "amplitude", unit)
+
+
+def _map(sight: Sight, fitted: Floats, unit: str) -> Picture:
+    values, origin = sight.spread(fitted)
+    return Picture(values, sight.spacing_mm, ("y", "x"), ("mm", "mm"), unit, origin)
 
 
 def _picture(polar: Polar, values: Floats, unit: str) -> Picture:

@@ -146,6 +146,27 @@ class Sight:
         found: Floats = np.where(self.count[rows] > 0, total / np.maximum(held.sum(axis=2), 1), 0.0)
         return found
 
+    def spread(self, values: Floats) -> tuple[Floats, tuple[float, float]]:
+        """Return cells' values as an image of the region's bounding box, and where it begins, mm.
+
+        Values run straight between steps; 0 outside the region.
+        """
+        rows, columns = (np.flatnonzero(self.inside.any(axis=k)) for k in (1, 0))
+        y, x = (
+            np.arange(k[0], k[-1] + 1) * s - c
+            for k, s, c in zip((rows, columns), self.spacing_mm, self.center_mm, strict=True)
+        )
+        turn = np.mod(np.arctan2(-y[:, None], x[None, :]) / (2 * np.pi), 1.0)
+        sector = (turn * SECTORS).astype(np.intp) % SECTORS
+        r = np.hypot(y[:, None], x[None, :])
+        found = np.zeros(r.shape)
+        for k in range(SECTORS):
+            at = sector == k
+            found[at] = np.interp(r[at], self.radius_mm, values[:, k], left=0.0, right=0.0)
+        within = self.inside[rows[0] : rows[-1] + 1, columns[0] : columns[-1] + 1]
+        origin = (float(rows[0] * self.spacing_mm[0]), float(columns[0] * self.spacing_mm[1]))
+        return np.where(within, found, 0.0), origin
+
 
 def to_polar(image: NDArray[np.generic], sight: Sight) -> Polar | NotMeasured:
     """Return an image in polar coordinates; NotMeasured if none of it lies around the centre."""

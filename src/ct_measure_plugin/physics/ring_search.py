@@ -94,6 +94,8 @@ class Search:
         missing.
     deviation : ndarray, shape (steps, sectors)
         The same, sector by sector; 0 where it is not known.
+    fitted : ndarray, shape (steps, sectors)
+        What the rings add, as they were fitted.
     threshold : float
         Score that chance exceeds with probability `level`.
     repeats : float
@@ -105,6 +107,7 @@ class Search:
     amplitude: Floats
     doubt: Floats
     deviation: Floats
+    fitted: Floats
     threshold: float
     repeats: float
 
@@ -127,7 +130,8 @@ def search(polar: Polar, level: float = 0.05) -> Search | None:
         return None
     chance = by_chance(polar, layers, power)
     threshold = float(chance.isf(level))
-    rings = _Hunt(polar, means, layers, power, chance).rings_over(threshold)
+    hunt = _Hunt(polar, means, layers, power, chance)
+    rings = hunt.rings_over(threshold)
     first = Deviations(Layer(polar, CORES[0]), means[None])
     layer, more = first.layer, first.layer.inflation(first.shared())
     pixels = layer.weight.sum(axis=1)
@@ -141,6 +145,7 @@ def search(polar: Polar, level: float = 0.05) -> Search | None:
         amplitude,
         doubt,
         first.sums[0] / np.maximum(layer.weight, 1.0),
+        hunt.taken,
         threshold,
         _repeats(power),
     )
@@ -172,6 +177,7 @@ class _Hunt:
         self.polar, self.rest, self.layers, self.chance = polar, means, layers, chance
         self.power, self.taps = power, whitening(power)
         self.rings: list[Ring] = []
+        self.taken = np.zeros_like(means)
         self.lobes = [np.zeros(layer.weight.shape[0]) for layer in layers]
 
     def rings_over(self, threshold: float) -> list[Ring]:
@@ -200,6 +206,7 @@ class _Hunt:
         found_at = np.unravel_index(int(scores[best].argmax()), scores[best].shape)
         a, step, start = (int(v) for v in found_at)
         score = float(scores[best].max())
+        start = 0 if ARCS[a] == SECTORS else start
         sectors = (start + np.arange(ARCS[a])) % SECTORS
         levels = [_level(plain, step, sectors) for plain in self._plain()]
         core, place, amplitude, doubt = max(levels, key=_significance)
@@ -223,6 +230,7 @@ class _Hunt:
 
     def _take_out(self, step: int, sectors: NDArray[np.intp]) -> None:
         model = ring_model(self.polar, self.rest, self.power, self.taps, step, sectors)
+        self.taken += model
         self.rest = leveled(self.polar, self.rest - model)  # the ring bent the smooth curve
         for layer, lobes in zip(self.layers, self.lobes, strict=True):
             of_unit = Deviations(layer, model[None]).scores(np.ones((1, len(model))))[0]

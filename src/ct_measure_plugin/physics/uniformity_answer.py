@@ -59,10 +59,10 @@ class Uniformity(Result):
     tilt, ellipticity : Quantity or None
         Of its axis against the slices' normal; longest minus shortest radius. None where they
         were not looked for.
-    edges : Curve
-        Mean of each edge region against its azimuth.
     radial_profile, radial_fit : Curve
         Mean over rings, and the fit, see the notes.
+    edges : Curve
+        Mean of each edge region against its azimuth.
     centre_along_z, edge_along_z, deviation_along_z, cup_along_z, sd_along_z : Curve
         The same figures slice by slice.
     center_y, center_x : Curve
@@ -86,9 +86,9 @@ class Uniformity(Result):
     slices: Quantity
     tilt: Quantity | None
     ellipticity: Quantity | None
-    edges: Curve
     radial_profile: Curve
     radial_fit: Curve
+    edges: Curve
     centre_along_z: Curve
     edge_along_z: Curve
     deviation_along_z: Curve

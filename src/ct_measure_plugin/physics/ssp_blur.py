@@ -21,8 +21,9 @@ FWHM = 2 * math.sqrt(2 * math.log(2))
 #: Relative standard uncertainty of the resolution in the slice, for which a Gaussian stands.
 DOUBTED = 0.1
 
-#: Layers into which an object is cut, and the SD of the Gaussian that stands for each, in layers.
-LAYERS, SOFT = 12, 0.45
+#: Layers into which a bead is cut, and one that climbs, which is thinner; SD of the Gaussian that
+#: stands for each, in layers.
+LAYERS, CLIMBING, SOFT = 12, 6, 0.45
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -62,13 +63,14 @@ class Blur:
         half = size * math.hypot(1.0, tangent) / 2
         if half == 0:
             return cls(np.zeros(1), np.ones(1), within, within)
-        ends = np.linspace(-1, 1, LAYERS + 1)
+        count = LAYERS if target == "bead" else CLIMBING
+        ends = np.linspace(-1, 1, count + 1)
         below, variance = {
             "bead": ((3 * ends - ends**3) / 4, 1 / 5),
             "wire": ((ends * np.sqrt(1 - ends**2) + np.arcsin(ends)) / math.pi, 1 / 4),
             "ramp": (ends / 2, 1 / 3),
         }[target]
-        weights, sigma = np.diff(below), SOFT * 2 / LAYERS
+        weights, sigma = np.diff(below), SOFT * 2 / count
         places = (ends[1:] + ends[:-1]) / 2
         places *= math.sqrt((variance - sigma**2) / float(weights @ places**2))
         return cls(places * half, weights, math.hypot(sigma * half, within), within)

@@ -144,12 +144,12 @@ def fit_shapes(
     """
     problem = _Problem(samples, blur, middle, width, base=base)
     points, covariance = problem.solutions()
-    chi2 = problem.chi2(points)
+    fits = problem.fits(points)
     for turn in range(ROUNDS):
-        surplus = problem.surplus(float(chi2.min()))
-        agree = (chi2 - chi2.min()) / surplus < AGREES
-        points, chi2 = points[agree], chi2[agree]
-        centres = points[problem.telling(points, (chi2 - chi2.min()) / surplus)]
+        surplus = problem.surplus(float(fits[0].min()))
+        agree = (fits[0] - fits[0].min()) / surplus < AGREES
+        points, fits = points[agree], fits[:, agree]
+        centres = points[problem.telling(points, (fits[0] - fits[0].min()) / surplus)]
         if len(points) < TRIALS / 8:  # the covariance asks for too wide a step
             scale, spread = KERNEL[0] / 3**turn, covariance * surplus
         else:
@@ -157,8 +157,8 @@ def fit_shapes(
         factor = linalg.cholesky(spread + np.diag(1e-12 * problem.size**2), lower=True)
         normal = special.ndtri(_even(TRIALS, turn)) * scale
         drawn = problem.within(centres[np.arange(TRIALS) % len(centres)] + normal @ factor.T)
-        points, chi2 = np.vstack([points, drawn]), np.concatenate([chi2, problem.chi2(drawn)])
-    return problem.answer(points, chi2)
+        points, fits = np.vstack([points, drawn]), np.hstack([fits, problem.fits(drawn)])
+    return problem.answer(points, fits)
 
 
 class _Problem:
@@ -211,9 +211,11 @@ class _Problem:
         found: Floats = self.value - height[:, None] * form
         return found
 
-    def chi2(self, points: Floats) -> Floats:
-        found: Floats = np.sum(self.left(points) ** 2, axis=1)
-        return found
+    def fits(self, points: Floats) -> Floats:
+        """Return chi-squared and height of each trial, (2, k)."""
+        form, height = self.forms(points)
+        chi2 = np.sum((self.value - height[:, None] * form) ** 2, axis=1)
+        return np.stack([chi2, height])
 
     def surplus(self, least: float) -> float:
         """Return chi-squared over its freedom where noise seldom explains it, else 1."""
@@ -243,9 +245,9 @@ class _Problem:
         spread = self.start[1] + np.log(FWHM / unit.widths(0.5))
         start = np.column_stack([np.full(len(STARTS), self.start[0]), spread, STARTS])
         points = self.descended(self.within(start), STEPS)
-        few = np.argsort(self.chi2(points), kind="stable")[:FEW]
+        few = np.argsort(self.fits(points)[0], kind="stable")[:FEW]
         points = np.vstack([points, self.descended(points[few], MORE)])
-        best = int(np.argmin(self.chi2(points)))
+        best = int(np.argmin(self.fits(points)[0]))
         return points, self.covariance(points[best])
 
     def descended(self, points: Floats, steps: int) -> Floats:
@@ -298,14 +300,14 @@ class _Problem:
         self.blur = blur
         return found
 
-    def answer(self, points: Floats, chi2: Floats) -> Agreeing:
+    def answer(self, points: Floats, fits: Floats) -> Agreeing:
         """Return the best, descended once more, what agrees, and the best's neighbours."""
-        order = np.argsort(chi2, kind="stable")
-        points = np.vstack([self.descended(points[order[:1]], MORE), points[order]])
-        step = self.inward(points[0])
-        points = np.vstack([points, self.other(points[:1]), points[0] + np.diag(step)])
-        form, height = self.forms(points)
-        chi2 = np.sum((self.value - height[:, None] * form) ** 2, axis=1)
+        order = np.argsort(fits[0], kind="stable")
+        first = self.descended(points[order[:1]], MORE)
+        step = self.inward(first[0])
+        last = np.vstack([self.other(first), first + np.diag(step)])
+        points = np.vstack([first, points[order], last])
+        chi2, height = np.hstack([self.fits(first), fits[:, order], self.fits(last)])
         surplus = self.surplus(float(chi2[0]))
         excess = np.maximum(chi2 - chi2[0], 0.0) / surplus
         excess[-UNKNOWNS - 1] = np.inf  # no alternative for the same blur
@@ -319,7 +321,7 @@ class _Problem:
             shapes=self.shapes(points[kept]),
             middle=points[kept, 0],
             height=height[kept],
-            height_doubt=math.sqrt(surplus / float(np.sum(form[0] ** 2))),
+            height_doubt=math.sqrt(surplus / float(np.sum(self.forms(first)[0] ** 2))),
             excess=excess[kept],
             covariance=self.covariance(points[0]) * surplus,
             steps=step,

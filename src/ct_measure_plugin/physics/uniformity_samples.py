@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from functools import cache
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -248,6 +249,7 @@ def scatter(means: Floats, design: Floats) -> tuple[Floats, int]:
     return np.sqrt(np.sum(rest**2, axis=-1) / max(freedom, 1)), freedom
 
 
+@cache
 def student(freedom: int) -> float:
     """Return what an uncertainty of few degrees of freedom is widened by.
 

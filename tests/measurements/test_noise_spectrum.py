@@ -166,6 +166,13 @@ def test_what_is_no_spectrum_is_refused_in_words(ramp, tmp_path):
     text.write_text(json.dumps([broken]))
     with pytest.raises(ArgumentError, match="holds no 'spectrum' that can be read"):
         ask(str(text))
+    for shape in ([10**30, 4], [-1, 4], ["a"]):
+        picture = {"is": "Picture", "values": {"is": "array", "dtype": "<f8", "shape": shape}}
+        picture["values"]["packed"] = "eJxjYBgFAAEAAAE="
+        hostile = broken | {"result": {"spectrum": picture}}
+        text.write_text(json.dumps([hostile]))
+        with pytest.raises(ArgumentError, match="holds no 'spectrum' that can be read"):
+            ask(str(text))
     deep = ctm.physics.noise_power(
         np.random.default_rng(1).normal(size=(8, 8, 16, 16)), spacing_mm=(1.0, 0.5, 0.5)
     )

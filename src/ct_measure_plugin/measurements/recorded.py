@@ -103,7 +103,7 @@ def _parts(result: dict[str, Any], name: str, kind: str) -> dict[str, Any]:
             raise TypeError(name)
         plain = {key: value for key, value in given.items() if key not in ("is", "data")}
         return {key: _plain(value) for key, value in plain.items()}
-    except (KeyError, TypeError, ValueError, zlib.error):
+    except (KeyError, TypeError, ValueError, OverflowError, zlib.error):
         raise ValueError(f"the record holds no '{name}' that can be read") from None
 
 

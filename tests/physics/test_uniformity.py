@@ -58,6 +58,7 @@ def test_a_bowl_with_a_tilt_reads_its_closed_form(spacing):
     assert found.cupping_percent.value == pytest.approx(percent, abs=0.01)
     assert found.edges.x.tolist() == [0, 90, 180, 270]
     assert found.edges.y == pytest.approx([12.9 + 3.2, 12.9, 12.9 - 3.2, 12.9], abs=0.1)
+    assert found.edge_differences.y == pytest.approx([16.0, 12.8, 9.6, 12.8], abs=0.1)
     inner = found.radial_profile.x < 70
     expected = 20 * (found.radial_profile.x / 80) ** 2
     assert found.radial_profile.y[inner] == pytest.approx(expected[inner], abs=0.1)
@@ -102,6 +103,11 @@ def test_what_changes_along_z_is_shown_along_z():
     found = uniformity(planes, spacing_mm=SPACING, z_mm=[0, 2.5, 5], circle_mm=(*CENTER, RADIUS))
     assert found.cup_along_z.y == pytest.approx([8.1, 16.2, 24.3], abs=0.01)
     assert found.deviation_along_z.y == pytest.approx([6.4, 12.8, 19.2], abs=0.01)
+    assert found.cupping_along_z.y == pytest.approx([6.4, 12.8, 19.2], abs=0.01)
+    assert found.shading_along_z.y == pytest.approx([0, 0, 0], abs=0.01)
+    percent = [100 * c * 0.64 / (c * 0.65 + 2000) for c in (10.0, 20.0, 30.0)]
+    assert found.integral_along_z.y == pytest.approx(percent, abs=0.001)
+    assert found.integral_along_z.y_unit == "%"
     assert found.edge_along_z.x.tolist() == [0, 2.5, 5]
     assert found.cup_depth.value == pytest.approx(16.2, abs=0.01)
     assert found.slices.value == 3
@@ -181,6 +187,7 @@ def covered(name: str, repeats: int) -> dict[str, float]:
     circle = (*CENTER, RADIUS)
     true = uniformity(base, spacing_mm=SPACING, circle_mm=circle)
     names = ("centre", "edge", "cupping", "water", "cup_depth", "shading")
+    curves = ("edges", "edge_differences", "radial_profile", "radial_fit")
     hits: dict[str, list[bool]] = {}
     for _ in range(repeats):
         noise = field(rng, (288, 288), SPACING, SPECTRA[name])[:240, :240]
@@ -189,7 +196,7 @@ def covered(name: str, repeats: int) -> dict[str, float]:
         for key in names:
             a, b = getattr(found, key), getattr(true, key)
             hits.setdefault(key, []).append(abs(a.value - b.value) < 1.96 * a.uncertainty)
-        for key in ("edges", "radial_profile"):
+        for key in curves:
             a, b = getattr(found, key), getattr(true, key)
             hits.setdefault(key, []).extend(np.abs(a.y - b.y) < 1.96 * a.y_uncertainty)
     return {key: float(np.mean(held)) for key, held in hits.items()}
@@ -204,6 +211,8 @@ def test_stated_uncertainties_hold_the_truth(name):
         assert share[key] >= 0.87, (key, share)
     assert 0.93 <= share["edges"] <= 0.985
     assert 0.93 <= share["radial_profile"] <= 0.97
+    assert 0.93 <= share["edge_differences"] <= 0.995
+    assert share["radial_fit"] >= 0.90  # its places share three coefficients: few are independent
 
 
 @pytest.mark.long

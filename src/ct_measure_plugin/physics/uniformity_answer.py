@@ -61,10 +61,14 @@ class Uniformity(Result):
         were not looked for.
     radial_profile, radial_fit : Curve
         Mean over rings, and the fit, see the notes.
-    edges : Curve
-        Mean of each edge region against its azimuth.
-    centre_along_z, edge_along_z, deviation_along_z, cup_along_z, sd_along_z : Curve
+    edges, edge_differences : Curve
+        Mean of each edge region against its azimuth; the same minus the centre region.
+    centre_along_z, edge_along_z, deviation_along_z, cupping_along_z, cup_along_z : Curve
         The same figures slice by slice.
+    shading_along_z, sd_along_z : Curve
+        The same.
+    integral_along_z : Curve or None
+        Integral non-uniformity slice by slice; None unless the values are HU.
     center_y, center_x : Curve
         The axis, in mm, slice by slice.
     deviation_map : Picture
@@ -89,10 +93,14 @@ class Uniformity(Result):
     radial_profile: Curve
     radial_fit: Curve
     edges: Curve
+    edge_differences: Curve
     centre_along_z: Curve
     edge_along_z: Curve
     deviation_along_z: Curve
+    cupping_along_z: Curve
+    integral_along_z: Curve | None
     cup_along_z: Curve
+    shading_along_z: Curve
     sd_along_z: Curve
     center_y: Curve
     center_x: Curve
@@ -129,7 +137,7 @@ class Assembly:
         cup, cup_doubt = self.fit.cup(self.cells.field)
         shading, shading_doubt = self.fit.shading(self.cells.field)
         profile, fit = self._profile()
-        centre_along_z, edge_along_z, deviation_along_z, cup_along_z = self._slice_by_slice()
+        along, integral_along_z = self._along_z()
         return Uniformity(
             water=water,
             sd=sd,
@@ -146,13 +154,14 @@ class Assembly:
             slices=Quantity(float(len(found.z_mm)), "", 0.0),
             tilt=found.tilt,
             ellipticity=found.ellipticity,
-            edges=self._edges(edges, edge_error),
+            edges=self._edges("mean", edges, edge_error),
+            edge_differences=self._edges(
+                "difference from the centre", edges - centre, math.hypot(edge_error, centre_error)
+            ),
             radial_profile=profile,
             radial_fit=fit,
-            centre_along_z=centre_along_z,
-            edge_along_z=edge_along_z,
-            deviation_along_z=deviation_along_z,
-            cup_along_z=cup_along_z,
+            **along,
+            integral_along_z=integral_along_z,
             sd_along_z=sd_along_z,
             center_y=self._axis("y", 0),
             center_x=self._axis("x", 1),
@@ -175,12 +184,12 @@ class Assembly:
             self._along("SD", sds, inner.std(axis=1, ddof=1) / count),
         )
 
-    def _edges(self, means: Floats, error: float) -> Curve:
+    def _edges(self, name: str, means: Floats, error: float) -> Curve:
         y, x = self.places.ring()[self.places.chosen()].T
         degrees = np.round(np.mod(np.degrees(np.arctan2(-y, x)), 360.0), 9)
         order = np.argsort(degrees)
         doubt = np.full(len(means), error)
-        return Curve(degrees[order], means[order], doubt, "azimuth", "°", "mean", self.unit)
+        return Curve(degrees[order], means[order], doubt, "azimuth", "°", name, self.unit)
 
     def _profile(self) -> tuple[Curve, Curve]:
         r, mean, doubt = _rings(self.sums)
@@ -195,23 +204,40 @@ class Assembly:
             Curve(axis, fit, fit_doubt, name, "mm", "fit", self.unit),
         )
 
-    def _slice_by_slice(self) -> tuple[Curve, Curve, Curve, Curve]:
-        discs, clean = self.discs, self.sums.clean
+    def _along_z(self) -> tuple[dict[str, Curve], Curve | None]:
+        """Return every figure slice by slice by the name of its field, and the integral."""
+        discs, clean, field = self.discs, self.sums.clean, self.cells.field
         edge_error, centre_error = discs.edge_error[:-1], discs.centre_error[:-1]
-        off = np.abs(discs.edges - discs.centre[:, None]).max(axis=1)
-        cups = np.array(
-            [
-                cell_fit(means, basis, clean.blocks).cup(self.cells.field)
-                for means, basis in zip(clean.means, clean.basis, strict=True)
-            ]
-        )
+        whole = [
+            differences(edges, float(centre), float(of_edge), float(of_centre), self.unit)
+            for edges, centre, of_edge, of_centre in zip(
+                discs.edges, discs.centre, edge_error, centre_error, strict=True
+            )
+        ]
+        fits = [
+            cell_fit(means, basis, clean.blocks)
+            for means, basis in zip(clean.means, clean.basis, strict=True)
+        ]
+        cups = np.array([fit.cup(field) for fit in fits])
+        shadings = np.array([fit.shading(field) for fit in fits])
         count = math.sqrt(discs.edges.shape[1])
-        return (
-            self._along("centre", discs.centre, centre_error),
-            self._along("edge", discs.edges.mean(axis=1), edge_error / count),
-            self._along("deviation", off, np.hypot(edge_error, centre_error)),
-            self._along("cup depth", cups[:, 0], cups[:, 1]),
-        )
+        integral = [one.integral for one in whole if one.integral is not None]
+        along = {
+            "centre_along_z": self._along("centre", discs.centre, centre_error),
+            "edge_along_z": self._along("edge", discs.edges.mean(axis=1), edge_error / count),
+            "deviation_along_z": self._stacked("deviation", [one.deviation for one in whole]),
+            "cupping_along_z": self._stacked("cupping", [one.cupping for one in whole]),
+            "cup_along_z": self._along("cup depth", cups[:, 0], cups[:, 1]),
+            "shading_along_z": self._along("shading", shadings[:, 0], shadings[:, 1]),
+        }
+        kept = self._stacked("integral non-uniformity", integral) if integral else None
+        return along, kept
+
+    def _stacked(self, name: str, figures: list[Quantity]) -> Curve:
+        """Return a figure of every slice against z."""
+        y = np.array([one.value for one in figures])
+        doubt = np.array([one.uncertainty or 0.0 for one in figures])
+        return Curve(self.found.z_mm, y, doubt, "z", "mm", name, figures[0].unit)
 
     def _axis(self, name: str, column: int) -> Curve:
         found = self.found

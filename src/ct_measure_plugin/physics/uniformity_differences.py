@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cache
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -72,7 +73,7 @@ def differences(
     3.00 ± 0.14 HU | 0.192 ± 0.082 HU | 0.00 ± 0.11 HU
     """
     n = len(edges)
-    draws = np.random.default_rng(SEED).standard_normal((DRAWS, n + 1))
+    draws = _draws(n + 1)
     around, middle = edge_error * draws[:, :n], centre_error * draws[:, n]
     chance = np.abs(around - middle[:, None]).max(axis=1)
     drawn = np.concatenate([edges + around, (centre + middle)[:, None]], axis=1)
@@ -92,6 +93,11 @@ def differences(
         percent,
         integral,
     )
+
+
+@cache
+def _draws(count: int) -> Floats:
+    return np.random.default_rng(SEED).standard_normal((DRAWS, count))
 
 
 def _integral(means: Floats) -> Floats:

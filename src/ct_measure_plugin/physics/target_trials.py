@@ -31,6 +31,9 @@ Kind = Literal["edge", "rod", "wire"]
 #: What measures each kind.
 MEASURED_BY: dict[Kind, str] = {"edge": "edge_mtf", "rod": "disc_mtf", "wire": "wire_mtf"}
 
+#: Relative uncertainty of f50 beyond which a target measures, but not well.
+MOST_UNSURE = 0.1
+
 #: A spot whose f50 is less than this share of what the edges of the slice have is no wire.
 LEAST_F50 = 0.7
 
@@ -194,6 +197,13 @@ def try_out(scene: Scene, trial: Trial, others: Sequence[Target]) -> Target | Un
         return trial.refused(scene, found.reason, found.remedy)
     if not isinstance(found.f50, Quantity):
         return trial.refused(scene, found.f50.reason, found.f50.remedy)
+    unsure = (found.f50.uncertainty or 0.0) / found.f50.value
+    if unsure > MOST_UNSURE:
+        return trial.refused(
+            scene,
+            f"noise leaves its f50 uncertain by {100 * unsure:.0f} %",
+            "measure several slices together, or a stronger contrast",
+        )
     sharp = [one.f50.value for one in others if one.kind != "wire"]
     usual = float(np.median(sharp)) if sharp else 0.0
     low = found.f50.value + 2 * (found.f50.uncertainty or 0.0)

@@ -31,6 +31,17 @@ def test_regions_choose_slices_and_pixels():
     assert [m.radius_mm for m in marks] == [ring.radius.value for ring in found.rings]
 
 
+def test_nothing_is_drawn_where_no_ring_was_found():
+    volume = ctm.read_series(samples.folder("standard"))
+    water = ctm.regions.Disc((0.0, 0.0), 50.0, z_mm=(10.0, 20.0))
+    found = ctm.measure("ring_artefact", volume, water)
+    assert found.rings_found.value == 0
+    assert (
+        find("ring_artefact").marks(volume, (water,), settings_for("ring_artefact", {}), found)
+        == ()
+    )
+
+
 def test_the_centre_can_be_given():
     noise = np.random.default_rng(1).normal(0, 8, (1, 96, 96))
     y, x = np.mgrid[:96, :96]

@@ -102,11 +102,11 @@ class MeasureRingArtefact(Measurement):
         settings: Settings,  # noqa: ARG002
         answer: Result | NotMeasured,
     ) -> tuple[Region, ...]:
-        """Return a circle at the radius of each ring, or of the strongest one, if it fits."""
+        """Return a circle at the radius of each ring that was found, if it fits."""
         if not isinstance(answer, RingArtefact):
             return ()
         center = (float(answer.center_y.y[0]), float(answer.center_x.y[0]))
-        radii = [ring.radius.value for ring in answer.rings] or [answer.worst_radius.value]
+        radii = [ring.radius.value for ring in answer.rings]
         z = answer.center_y.x
         span = float(z[0]) if len(z) == 1 else (float(z[0]), float(z[-1]))
         low = np.asarray(volume.origin_mm[1:]) - np.asarray(volume.spacing_mm[1:]) / 2

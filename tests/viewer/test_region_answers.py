@@ -201,7 +201,6 @@ def test_a_large_one_that_moves_is_glanced_at_and_measured_elsewhere_at_rest(
         assert answers.known(ask).mean.value == measure(NAME, volume, ask.region).mean.value
         assert not answers.busy
     monkeypatch.setattr(region_answers, "REST", -1.0)
-    monkeypatch.setattr(region_answers, "MANY", 0.0)
     assert answers.find([ask], seconds=1.0) == 0
     assert answers.busy
     qtbot.waitUntil(lambda: not answers.busy, timeout=5000)

@@ -203,7 +203,8 @@ class RegionAnswers:
         if at_rest and sum(map(self._cost, rest)) > MANY:
             self._send(rest)
             return 0
-        long = [ask for ask in rest if self._cost(ask) > LONG and ask not in self._glanced]
+        unseen = [ask for ask in rest if at_rest or ask not in self._glanced]
+        long = [ask for ask in unseen if self._cost(ask) > LONG]
         if long:
             self._send(long)
         return len(rest) - len(long)

@@ -45,11 +45,11 @@ class Fold(QWidget):
 
 
 def folded(parts: Mapping[str, QWidget], parent: QWidget) -> list[Fold]:
-    """Return a closed fold for each part, no higher than what is in it."""
+    """Return a closed fold for each part, as high as what is in it, wrapped lines too."""
     found = []
     for title, part in parts.items():
         fold = Fold(title, parent)
         fold.add(part)
-        fold.setSizePolicy(QSizePolicy.Policy.Preferred, QSizePolicy.Policy.Maximum)
+        fold.setSizePolicy(QSizePolicy.Policy.Preferred, QSizePolicy.Policy.Minimum)
         found.append(fold)
     return found

@@ -6,6 +6,7 @@ from functools import cache
 
 import numpy as np
 import pytest
+from scipy.interpolate import CubicSpline
 from truth_images import (
     EDGE,
     GAUSS,
@@ -125,10 +126,14 @@ def trial(kernel, coloured, cnr, count, methods=("fitted", "conventional")):
     """Values and uncertainties of READ in repeats, shape (methods, count, READ, 2)."""
     rng = np.random.default_rng(12)
     rows = {m: [] for m in methods}
+    place = np.linspace(-18, 18, 7201)
+    edge = CubicSpline(place, edge_response(kernel, place))
+    y = (np.arange(64) - 31.5) * SPACING[0]
+    across = np.cos(np.radians(4)) * y[None, :] + np.sin(np.radians(4)) * y[:, None]
     for _ in range(count):
         shift = rng.uniform(-0.5, 0.5)
-        image = edge_image(kernel, shift=shift)
-        image = image + noise(rng, image.shape, SPACING, 100 / cnr, kernel if coloured else None)
+        image = 100 * edge(across - shift)
+        image += noise(rng, image.shape, SPACING, 100 / cnr, kernel if coloured else None)
         for method in methods:
             found = edge_mtf(image, spacing_mm=SPACING, method=method)
             values = [getattr(found, name) for name in READ]
@@ -144,38 +149,70 @@ def trial(kernel, coloured, cnr, count, methods=("fitted", "conventional")):
     return np.array([rows[m] for m in methods])
 
 
+#: RMS error of the fit over that of the conventional route: f50 and f10 for each kernel.
+WANTED = {"gauss": (0.5, 0.6), "hann": (0.5, 0.6), "edge": (0.7, 0.6)}
+
+
+@pytest.mark.parametrize("level", [0.5, 0.1], ids=["f50", "f10"])
 @pytest.mark.parametrize("coloured", [False, True], ids=["white", "coloured"])
 @pytest.mark.parametrize("kernel", KERNELS, ids=lambda k: k.name)
-def test_in_noise_the_fit_beats_the_conventional_route(kernel, coloured):
-    """CNR 20, 64 × 64 pixels, 4°. 60 boxes fix an RMS error to 9 % and a ratio of two correlated
-    ones to about 10 %; the figures of longer runs stand on the docs page."""
-    found = trial(kernel, coloured, 20, 60)[:, :, 0]
-    truth = kernel.level(0.5)
+def test_in_noise_the_fit_beats_the_conventional_route(kernel, coloured, level):
+    """CNR 20, 64 × 64 pixels, 4°. 100 boxes fix an RMS error to 7 % and a ratio of two correlated
+    ones to about 8 %, of which three are allowed; the figures of longer runs stand on the page."""
+    check_in_noise(kernel, coloured, level, 20, 100)
+
+
+@pytest.mark.long
+@pytest.mark.parametrize("cnr", [20, 10])
+@pytest.mark.parametrize("level", [0.5, 0.1], ids=["f50", "f10"])
+@pytest.mark.parametrize("coloured", [False, True], ids=["white", "coloured"])
+@pytest.mark.parametrize("kernel", KERNELS, ids=lambda k: k.name)
+def test_in_noise_over_many_boxes(kernel, coloured, level, cnr):
+    check_in_noise(kernel, coloured, level, cnr, 400)
+
+
+#: Found 1.03 to 1.07 times what is wanted; what limits them stands on the validation page.
+HARD = {
+    ("gauss", True, 0.5),
+    ("hann", False, 0.5),
+    ("hann", True, 0.5),
+    ("edge", True, 0.5),
+    ("edge", True, 0.1),
+}
+
+
+def check_in_noise(kernel, coloured, level, cnr, count):
+    hard = (kernel.name, coloured, level) in HARD
+    found = trial(kernel, coloured, cnr, count)[:, :, READ.index("f50" if level == 0.5 else "f10")]
+    truth = kernel.level(level)
     errors = 100 * (found[..., 0] / truth - 1)
     rms = np.sqrt(np.nanmean(errors**2, axis=1))
-    assert rms[0] < 0.85 * rms[1]
-    # bias within 1 %, plus three standard errors of this short run
-    assert abs(errors[0].mean()) < 1.0 + 3 * errors[0].std() / np.sqrt(60)
+    doubt = 0.8 / np.sqrt(count)  # of the ratio of two correlated RMS errors
+    wanted = WANTED[kernel.name][level != 0.5] * (1.08 if hard else 1.0)
+    assert rms[0] < wanted * rms[1] * (1 + 3 * doubt)
+    fitted = errors[0]
+    allowed = 1.2 if level == 0.5 else 3.0  # -1.1 % found for one kernel at CNR 10
+    assert abs(fitted.mean()) < allowed + 3 * fitted.std() / np.sqrt(count)
     covered = np.abs(found[0, :, 0] - truth) < 1.96 * found[0, :, 1]
-    # of 60 intervals at 93 %, fewer than 50 hold the truth once in 300 runs
-    assert covered.sum() >= 50
+    # of n intervals at 93 %, so many fewer hold the truth once in 700 runs
+    assert covered.sum() >= 0.93 * count - 3 * np.sqrt(0.93 * 0.07 * count)
 
 
 @pytest.mark.parametrize("name", ["width", "contrast", "position", "angle", "noise"])
 @pytest.mark.parametrize("coloured", [False, True], ids=["white", "coloured"])
 def test_stated_uncertainties_are_the_scatter_of_repeats(coloured, name):
-    """60 repeats fix a scatter to 9 %; three of these are 0.73 to 1.27. Averaging over models
-    states the width's uncertainty up to a half too large."""
-    found = trial(HANN, coloured, 20, 60)[:, :, READ.index(name)]
+    """100 repeats fix a scatter to 7 %; three of these are 0.79 to 1.21. Averaging over models
+    states the width's uncertainty up to a fifth too large."""
+    found = trial(HANN, coloured, 20, 100)[:, :, READ.index(name)]
     ratio = np.median(found[..., 1], axis=1) / found[..., 0].std(axis=1, ddof=1)
-    assert (ratio > 0.73).all()
-    assert (ratio < (1.6 if name == "width" else 1.27)).all()
+    assert (ratio > 0.79).all()
+    assert (ratio < (1.45 if name == "width" else 1.21)).all()
     truth = {"width": 1.25, "contrast": 100.0, "position": 0.0, "angle": 4.0, "noise": 5.0}[name]
     off = np.abs(found[..., 0].mean(axis=1) - truth) / found[..., 0].std(axis=1)
     # three standard errors of the mean; the conventional width is smoothed by 0.8 %, and priors
     # at zero may shift a fitted contrast by a part of its scatter
     allowed = {"width": 0.2, "contrast": 0.2}.get(name, 0.0)
-    assert (off < 3 / np.sqrt(60) + allowed).all()
+    assert (off < 3 / np.sqrt(100) + allowed).all()
 
 
 @pytest.mark.parametrize("kernel", KERNELS, ids=lambda k: k.name)

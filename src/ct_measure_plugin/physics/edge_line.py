@@ -22,6 +22,13 @@ __all__ = ["EdgeLine", "RoughEsf", "locate_edge", "pixel_grid", "rough_esf"]
 #: Steps of the search for position and angle; it converges in three or four.
 MOST_STEPS = 9
 
+#: A step of fewer pixels, or of a hundredth as many radians, is the last: the next one would be
+#: some ten times smaller.
+SETTLED = 1e-3
+
+#: Half-width in sigma of the band about the edge that the search looks at.
+NEAR = 18.0
+
 
 @dataclass(frozen=True, slots=True, eq=False)
 class RoughEsf:
@@ -34,19 +41,24 @@ class RoughEsf:
 
     def at(self, d: Floats) -> Floats:
         """Return the edge spread function at d."""
-        return self._between(d, self.value)
+        return self._between(d, self.value)[0]
 
     def line_at(self, d: Floats) -> Floats:
         """Return the line spread function at d."""
-        return self._between(d, self.line)
+        return self._between(d, self.line)[0]
 
-    def _between(self, d: Floats, table: Floats) -> Floats:
+    def both_at(self, d: Floats) -> tuple[Floats, Floats]:
+        """Return edge and line spread function at d."""
+        edge, line = self._between(d, self.value, self.line)
+        return edge, line
+
+    def _between(self, d: Floats, *tables: Floats) -> tuple[Floats, ...]:
         """Interpolate linearly on the even grid (twice as fast as np.interp)."""
         place = (d - self.grid[0]) / (self.grid[1] - self.grid[0])
-        place = np.clip(place, 0.0, len(table) - 1.000001)
+        np.clip(place, 0.0, len(self.grid) - 1.000001, out=place)
         low = place.astype(np.intp)
-        found: Floats = table[low] + (place - low) * (table[low + 1] - table[low])
-        return found
+        place -= low
+        return tuple(table[low] + place * np.diff(table)[low] for table in tables)
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -113,32 +125,38 @@ def locate_edge(image: Floats, spacing_mm: tuple[float, float]) -> EdgeLine | No
     angle, offset = _start(image, y, x, spacing_mm)
     pixel = max(spacing_mm)
     ahead: RoughEsf | None = None
+    v, rows, columns = image.ravel(), *(c.ravel() for c in np.broadcast_arrays(y, x))
     for step in range(MOST_STEPS):
-        d = math.cos(angle) * x + math.sin(angle) * y - offset
+        d = math.cos(angle) * columns + math.sin(angle) * rows - offset
         reach = float(np.abs(d).max())
-        if abs(offset) > reach:
+        if not float(d.min()) < 0 < float(d.max()):
             return NotMeasured("no edge was found in the box", "draw it across an edge")
-        half = reach if ahead is None else min(reach, 25 * ahead.sigma)
+        half = reach if ahead is None else min(reach, NEAR * ahead.sigma)
         width = pixel / 2 if ahead is None else max(pixel / 4, ahead.sigma / 6)
-        bins = bin_by_distance(d.ravel(), image.ravel(), width, half=half)
+        bins = bin_by_distance(d, v, width, half=half)
         if len(bins.index) < 12:
             return NotMeasured("the box is too small to hold an edge", "draw it larger")
         ahead = rough_esf(
             bins, None if ahead is None else ahead.sigma, terms=0 if step < 2 else 3, wide=step < 4
         )
         near = np.abs(d) <= 6 * ahead.sigma
-        t = (math.cos(angle) * y - math.sin(angle) * x)[near]
-        line = ahead.line_at(d[near])
-        columns = np.stack([line, line * t, line * (t * t - float(np.mean(t * t)))])
-        normal = columns @ columns.T
+        t = (math.cos(angle) * rows - math.sin(angle) * columns)[near]
+        edge, line = ahead.both_at(d[near])
+        slopes = np.stack([line, line * t, line * (t * t - float(np.mean(t * t)))])
+        normal = slopes @ slopes.T
         if not np.linalg.cond(normal) < 1e14:
             return NotMeasured("no edge was found in the box", "draw it across an edge")
-        change = np.linalg.solve(normal, columns @ (image[near] - ahead.at(d[near])))
-        if step >= 3 and abs(change[0]) < 2e-4 * pixel and abs(change[1]) < 2e-6:
-            break
+        change = np.linalg.solve(normal, slopes @ (v[near] - edge))
         bend = max(-0.3, min(0.3, math.atan(change[1])))
         offset = (offset - change[0]) * math.cos(bend)
         angle += bend
+        if step >= 3 and abs(change[0]) < SETTLED * pixel and abs(change[1]) < SETTLED / 100:
+            break
+        if step == 1:  # the line is known well enough to leave the far plateaus out
+            kept = np.abs(d) <= 1.3 * NEAR * ahead.sigma
+            v, rows, columns = v[kept], rows[kept], columns[kept]
+    d = math.cos(angle) * x + math.sin(angle) * y - offset
+    reach = float(np.abs(d).max())
     bins = bin_by_distance(d.ravel(), image.ravel(), pixel / 3, half=reach)
     whole = rough_esf(bins, None if ahead is None else ahead.sigma, terms=3)
     return _line(image, angle, offset, d, y, x, whole, rough_esf(bins, whole.sigma, terms=0).sigma)
@@ -155,8 +173,8 @@ def _line(
     sigma: float,
 ) -> EdgeLine:
     t = math.cos(angle) * y - math.sin(angle) * x
-    line = rough.line_at(d)
-    residual = image - rough.at(d)
+    edge, line = rough.both_at(d)
+    residual = image - edge
     near = np.abs(d) <= 2 * sigma
     extent = float(np.ptp(t[near])) if near.any() else 0.0
     columns = np.stack([line, line * t, line * (t * t - float(np.mean(t[near] ** 2)))])
@@ -174,7 +192,7 @@ def _line(
         d,
         t,
         residual,
-        np.stack([*columns[:2], np.ones_like(d), d, rough.at(d)]),
+        np.stack([*columns[:2], np.ones_like(d), d, edge]),
     )
 
 
@@ -207,15 +225,14 @@ def rough_esf(bins: EdgeBins, sigma: float | None, *, terms: int, wide: bool = T
     """
     reach = float(np.abs(bins.distance).max())
     if sigma is None:
-        trials = np.geomspace(bins.width, reach / 3, 24)
+        trials = np.geomspace(bins.width, reach / 3, 18)
     else:
         trials = sigma * (np.geomspace(0.6, 1.6, 9) if wide else np.array([0.97, 1.0, 1.03]))
     _, gain = _solved(bins, trials, terms)
     s = _best_trial(trials, gain)
     (mix,), _ = _solved(bins, np.array([s]), terms)
     grid = np.linspace(-reach, reach, int(2 * reach / min(bins.width / 2, s / 8)) + 1)
-    shapes = _hermite_edges(grid, np.array([s]), terms, 0)[0]
-    lines = _hermite_edges(grid, np.array([s]), terms, 1)[0]
+    shapes, lines = (table[0] for table in _hermite_edges(grid, np.array([s]), terms, (0, 1)))
     value = mix[0] + mix[1] * grid / reach + mix[2:] @ shapes
     return RoughEsf(s, grid, value, mix[2:] @ lines)
 
@@ -223,19 +240,17 @@ def rough_esf(bins: EdgeBins, sigma: float | None, *, terms: int, wide: bool = T
 def _solved(bins: EdgeBins, trials: Floats, terms: int) -> tuple[Floats, Floats]:
     """Return for each sigma the least-squares mix and the sum of squares that it explains."""
     reach = float(np.abs(bins.distance).max())
-    edges = _hermite_edges(bins.distance, trials, terms, 0)
-    edges += 0.5 * bins.spread * _hermite_edges(bins.distance, trials, terms, 2)
-    plain = np.broadcast_to(
-        np.stack([np.ones_like(bins.distance), bins.distance / reach]),
-        (len(trials), 2, len(bins.distance)),
-    )
-    columns = np.concatenate([plain, edges], axis=1)
+    edges, bends = _hermite_edges(bins.distance, trials, terms, (0, 2))
+    columns: Floats = np.empty((len(trials), 3 + terms, len(bins.distance)))
+    columns[:, 0] = 1.0
+    columns[:, 1] = bins.distance / reach
+    columns[:, 2:] = edges + 0.5 * bins.spread * bends
     weighted = columns * bins.count
     right = weighted @ bins.value
-    normal = weighted @ columns.transpose(0, 2, 1)
+    normal: Floats = weighted @ columns.transpose(0, 2, 1)
     index = np.arange(normal.shape[1])
     normal[:, index, index] *= 1 + 1e-11
-    found: Floats = np.linalg.solve(normal, right[..., None])[..., 0]
+    found: Floats = np.asarray(np.linalg.solve(normal, right[..., None]), dtype=np.float64)[..., 0]
     return found, np.sum(found * right, axis=1)
 
 
@@ -254,20 +269,27 @@ def _best_trial(trials: Floats, gain: Floats) -> float:
     return float(trials[best] * math.exp(min(max(-slope / (2 * curve), x[0]), x[2])))
 
 
-def _hermite_edges(d: Floats, s: Floats, terms: int, derivative: int) -> Floats:
-    """Return the columns for each sigma, shape (len(s), 1 + terms, n), or a derivative of them."""
+def _hermite_edges(
+    d: Floats, s: Floats, terms: int, derivatives: tuple[int, ...]
+) -> tuple[Floats, ...]:
+    """Return the columns for each sigma, shape (len(s), 1 + terms, n), or derivatives of them."""
     x = d / s[:, None]
     gauss = np.exp(-0.5 * x * x) / math.sqrt(2 * math.pi)
-    he = [np.ones_like(x), x]
-    for n in range(1, 2 * terms + 1):
-        he.append(x * he[n] - n * he[n - 1])
-    # the integral of He_n g is -He_(n-1) g, its derivative -He_(n+1) g
-    sign = -1.0 if derivative != 1 else 1.0
-    shift = derivative - 1
-    rows = [special.ndtr(x) if derivative == 0 else sign * he[shift] * gauss]
-    rows += [
-        sign / math.sqrt(math.factorial(2 * k)) * he[2 * k + shift] * gauss
-        for k in range(1, terms + 1)
-    ]
-    found: Floats = np.stack(rows, axis=1) / s[:, None, None] ** derivative
-    return found
+    waves = [gauss, x * gauss]  # He_n(x) times the Gaussian
+    for n in range(1, 2 * terms + max(derivatives) - 1):
+        waves.append(x * waves[n] - n * waves[n - 1])
+    found = []
+    for derivative in derivatives:
+        # the integral of He_n g is -He_(n-1) g, its derivative -He_(n+1) g
+        sign = 1.0 if derivative == 1 else -1.0
+        shift = derivative - 1
+        table = np.empty((len(s), 1 + terms, len(d)))
+        table[:, 0] = special.ndtr(x) if derivative == 0 else sign * waves[shift]
+        for k in range(1, terms + 1):
+            np.multiply(
+                waves[2 * k + shift], sign / math.sqrt(math.factorial(2 * k)), out=table[:, k]
+            )
+        if derivative:
+            table /= s[:, None, None] ** derivative
+        found.append(table)
+    return tuple(found)

@@ -233,7 +233,7 @@ def _data(facts: EdgeFacts, line: EdgeLine, spectrum: NoiseSpectrum) -> EsfData:
 
 
 def _line_numbers(line: EdgeLine, facts: EdgeFacts, spectrum: NoiseSpectrum) -> dict[str, object]:
-    u_offset, u_angle = (float(u) for u in jacobian_doubt(line.jacobian, spectrum)[:2])
+    u_offset, u_angle = (float(u) for u in jacobian_doubt(line.jacobian, spectrum, 2))
     screen = -math.degrees(line.angle)  # +y points down, angles count upwards
     ny, nx = facts.values.shape
     dy, dx = facts.spacing_mm

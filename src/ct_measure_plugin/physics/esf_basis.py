@@ -121,7 +121,11 @@ def _powers(u: Floats, flatness: float) -> Floats:
         envelope = np.exp(-square / 2)
     else:
         envelope = np.exp((np.sqrt(1 - flatness * square) - 1) / flatness)
-    return np.stack([(square / 4) ** k * envelope for k in range(TERMS + 1)], axis=1)
+    found = np.empty((len(u), TERMS + 1))
+    found[:, 0] = envelope
+    for k in range(TERMS):
+        found[:, k + 1] = found[:, k] * square / 4
+    return found
 
 
 def _transfer(u: Floats, flatness: float, orthogonal: Floats) -> Floats:

@@ -39,8 +39,8 @@ RARER = 0.5
 #: Fall of the whitened sum of squares from which a slope of the plateaus is believed: (3 SD)².
 SLOPE_STANDS_OUT = 9.0
 
-#: Combinations of less weight than this are left out of the average.
-NEGLIGIBLE = 2e-3
+#: Share of the weight that the least likely combinations, left out of the average, hold together.
+NEGLIGIBLE = 0.02
 
 
 class Shapes(Protocol):
@@ -78,6 +78,7 @@ class EsfFit:
     _mix: Floats
     _parts: tuple[Part, ...]
     _nuisance: _Nuisance
+    _root: Floats
 
     @property
     def mix(self) -> Floats:
@@ -101,12 +102,7 @@ class EsfFit:
             across = free[:, : len(nuisance.inverse)] * nuisance.unit @ nuisance.inverse
             total += np.sum(across**2, axis=1)
             effective = rows - across @ nuisance.coupling
-        columns = dictionary().columns
-        mean = effective @ self._mix
-        for part in self._parts:
-            jacobian = effective @ columns[:, part.member, :]
-            spread = np.sum((jacobian @ part.covariance) * jacobian, axis=1)
-            total += part.weight * (spread + (jacobian @ part.coefficients - mean) ** 2)
+        total += np.sum((effective @ self._root) ** 2, axis=1)
         found: Floats = np.sqrt(total)
         return found
 
@@ -151,7 +147,7 @@ def averaged_transfer(parts: tuple[Part, ...], v: Floats) -> tuple[Floats, Float
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Part:
-    """One combination of envelope and prior: its weight and posterior."""
+    """One envelope: its weight, and its posterior averaged over the priors."""
 
     member: int
     weight: float
@@ -219,7 +215,20 @@ def fit_esf(bins: EdgeBins, scale: float, covariance: Floats) -> EsfFit:
         best.mix,
         best.parts,
         _Nuisance(best.inverse, best.coupling, np.array([1.0, 1.0, reach])[: len(best.free)]),
+        _root(shapes, best),
     )
+
+
+def _root(shapes: Shapes, solved: Solved) -> Floats:
+    """Return a matrix, shape (r, k), whose product with its transpose is the mix's covariance."""
+    blocks = []
+    for part in solved.parts:
+        columns = shapes.columns[:, part.member, :]
+        value, vector = np.linalg.eigh(part.covariance)
+        spread = columns @ (vector * np.sqrt(np.maximum(value, 0.0)))
+        off = columns @ part.coefficients - solved.mix
+        blocks.append(math.sqrt(part.weight) * np.column_stack([spread, off]))
+    return np.concatenate(blocks, axis=1)
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -281,24 +290,38 @@ def _average(shapes: Shapes, core: Floats, data: Floats, strengths: Floats) -> t
     pull = right[:, 1:] - cross * right[:, :1]
     gain = right[:, 0] * step  # what the step alone explains
     prior = np.abs(step)[:, None, None] * strengths[None, :, None] * FALL  # (m, t, n - 1)
-    system = prior[..., :, None] * inner[:, None] * prior[..., None, :]
-    system += np.eye(n - 1)
     scaled = prior * pull[:, None]
-    lower = np.linalg.cholesky(system)
-    half = np.linalg.solve(lower, scaled[..., None])[..., 0]
-    depth = np.log(np.diagonal(lower, axis1=2, axis2=3)).sum(-1)
-    evidence = 0.5 * (gain[:, None] + np.sum(half**2, axis=-1)) - depth
+    # the last row of the bordered factor is the factor's inverse times the border
+    bordered = np.zeros((*scaled.shape[:2], n, n))
+    bordered[..., :-1, :-1] = prior[..., :, None] * inner[:, None] * prior[..., None, :]
+    bordered[..., np.arange(n), np.arange(n)] += 1.0
+    bordered[..., -1, :-1] = scaled
+    bordered[..., -1, -1] += np.sum(scaled**2, axis=-1)
+    lower = np.linalg.cholesky(bordered)
+    depth = np.log(np.diagonal(lower[..., :-1, :-1], axis1=2, axis2=3)).sum(-1)
+    evidence = 0.5 * (gain[:, None] + np.sum(lower[..., -1, :-1] ** 2, axis=-1)) - depth
     evidence += np.log(RARER) * np.arange(len(strengths))
     weight = np.exp(evidence - evidence.max())
     weight /= weight.sum()
-    weight[weight < NEGLIGIBLE] = 0.0
+    rising = np.sort(weight, axis=None)
+    weight[weight < rising[np.searchsorted(np.cumsum(rising), NEGLIGIBLE)]] = 0.0
     weight /= weight.sum()
+    index = np.arange(1, n)
     parts = []
-    for i, t in zip(*np.nonzero(weight), strict=True):
-        precision = gram[i].copy()
-        index = np.arange(1, n)
-        precision[index, index] += 1.0 / prior[i, t] ** 2
-        covariance = np.linalg.inv(precision)
-        coefficients = covariance @ right[i]
-        parts.append(Part(int(i), float(weight[i, t]), coefficients, covariance))
+    for i in np.flatnonzero(weight.any(axis=1)):
+        share = weight[i][weight[i] > 0]
+        precision = np.repeat(gram[None, i], len(share), axis=0)
+        precision[:, index, index] += 1.0 / prior[i][weight[i] > 0] ** 2
+        covariance: Floats = np.asarray(np.linalg.inv(precision), dtype=np.float64)
+        parts.append(_merged(int(i), share, covariance @ right[i], covariance))
     return tuple(parts)
+
+
+def _merged(member: int, share: Floats, coefficients: Floats, covariance: Floats) -> Part:
+    """Return one envelope's posterior, averaged over the strengths of the prior."""
+    total = float(share.sum())
+    share = share / total
+    mean = share @ coefficients
+    off = coefficients - mean
+    spread = np.einsum("t,tij->ij", share, covariance) + (share * off.T) @ off
+    return Part(member, total, mean, spread)

@@ -31,6 +31,9 @@ Method: TypeAlias = Literal["fitted", "conventional"]
 #: Variance added to every bin, relative to the squared step: rounding, and what no model resolves.
 TINY = 1e-12
 
+#: Half-width in sigma of what the fit looks at; plateaus to 40 make f50 no better.
+FAR = 24.0
+
 
 @dataclass(frozen=True, slots=True, eq=False)
 class EsfData:
@@ -92,7 +95,7 @@ def _fitted(data: EsfData, unit: str) -> tuple[Spread, Shape]:
         data.distance,
         data.value,
         max(data.pixel_mm / 4, data.sigma / 8),
-        half=min(float(np.abs(data.distance).max()), 40 * data.sigma),
+        half=min(float(np.abs(data.distance).max()), FAR * data.sigma),
     )
     covariance = bin_covariance(bins, data.spectrum, data.normals, data.length)
     covariance[np.diag_indices(len(covariance))] += TINY * data.contrast**2
@@ -125,7 +128,7 @@ def _conventional(data: EsfData, unit: str) -> tuple[Spread, Shape]:
     return spread, shape
 
 
-def jacobian_doubt(jacobian: Floats, spectrum: NoiseSpectrum) -> Floats:
+def jacobian_doubt(jacobian: Floats, spectrum: NoiseSpectrum, first: int | None = None) -> Floats:
     """Return the standard uncertainties of least-squares parameters in coloured noise.
 
     Parameters
@@ -134,6 +137,8 @@ def jacobian_doubt(jacobian: Floats, spectrum: NoiseSpectrum) -> Floats:
         Derivatives of the pixels by each parameter.
     spectrum : NoiseSpectrum
         Of the pixels.
+    first : int, optional
+        How many of the parameters, from the first, are asked for; all by default.
 
     Notes
     -----
@@ -141,7 +146,8 @@ def jacobian_doubt(jacobian: Floats, spectrum: NoiseSpectrum) -> Floats:
     times the squared transform of the weights.
     """
     flat = jacobian.reshape(len(jacobian), -1)
-    weights: Floats = np.asarray(np.linalg.solve(flat @ flat.T, flat)).reshape(jacobian.shape)
+    inverse = np.linalg.inv(flat @ flat.T)[:first]
+    weights: Floats = (inverse @ flat).reshape(len(inverse), *jacobian.shape[1:])
     found: Floats = np.sqrt(spectrum.variance_of_sums(weights))
     return found
 

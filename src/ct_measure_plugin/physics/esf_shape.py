@@ -55,9 +55,13 @@ class Shape:
 def fitted_shape(fit: EsfFit, fwhm: float, unit: str) -> Shape:
     """Return the shape of a fitted edge."""
     shapes, s, step = dictionary(), fit.scale, fit.contrast
-    d = np.linspace(-6 * fwhm, 6 * fwhm, 361)
-    esf, lsf = fit.esf(d), fit.lsf(d) / step
-    edges, lines = shapes.edges(d / s), shapes.lines(d / s) / s
+    half = np.linspace(0, 6 * fwhm, 181)
+    d = np.concatenate([-half[:0:-1], half])
+    edges, lines = shapes.edges(half / s), shapes.lines(half / s) / s
+    edges = np.concatenate([-edges[:0:-1], edges])
+    lsf = lines @ fit.mix / step
+    lsf, band = (np.concatenate([v[:0:-1], v]) for v in (lsf, fit.doubt(lines / step)))
+    esf = fit.level + fit.gradient * d + edges @ fit.mix
     rise = edges @ fit.mix / step - 0.5
     top = int(np.argmax(rise))
     overshoot = max(0.0, float(rise[top]))
@@ -79,7 +83,7 @@ def fitted_shape(fit: EsfFit, fwhm: float, unit: str) -> Shape:
     level = np.stack([np.ones_like(d), np.zeros_like(d), d], axis=1)
     return Shape(
         Curve(d, esf, fit.doubt(edges, level), "distance", "mm", "ESF", unit),
-        Curve(d, lsf, fit.doubt(lines / step), "distance", "mm", "LSF", "mm⁻¹"),
+        Curve(d, lsf, band, "distance", "mm", "LSF", "mm⁻¹"),
         Quantity(step, unit, float(doubts[0])),
         Quantity(width, "mm", float(doubts[1]) if slope > 0 else None),
         Quantity(overshoot, "", float(doubts[2])),

@@ -133,3 +133,20 @@ def test_blocks_covary_as_their_pixels_do(block):
         np.testing.assert_allclose(table[:, down, right], slow, atol=1e-12)
     assert table.shape[1] - 1 <= REACH // block[0]
     assert not table[:, -1].any()
+
+
+@pytest.mark.parametrize("radius", [3.0, 6.5, 12.0])
+def test_turns_and_mirrors_change_nothing(radius):
+    """Blocks of 1 × 3 pixels among them; to rounding."""
+    rng = np.random.default_rng(34)
+    y, x = np.mgrid[-14:15, -14:15]
+    cover = ((y / radius) ** 2 + (x / (0.8 * radius)) ** 2 < 1).astype(float)
+    noise = rng.normal(0, 10, cover.shape)
+    plain = doubt_of_mean(noise, cover, (0.5, 0.7)).variance_of_mean
+    for a, b, steps in (
+        (noise[::-1], cover[::-1], (0.5, 0.7)),
+        (noise[:, ::-1], cover[:, ::-1], (0.5, 0.7)),
+        (np.rot90(noise), np.rot90(cover), (0.7, 0.5)),
+        (noise.T, cover.T, (0.7, 0.5)),
+    ):
+        assert doubt_of_mean(a, b, steps).variance_of_mean == pytest.approx(plain, rel=1e-9)

@@ -94,7 +94,7 @@ def test_an_empty_map_has_an_answer():
     assert isinstance(found, NotMeasured)
     assert found.reason == "the label map holds no label"
     assert measure_each("region_statistics", volume(), [Disc((0, 10), 3, z_mm=12.0)])
-    with pytest.raises(RegionError, match="'regions' must hold at least 1"):
+    with pytest.raises(RegionError, match="must hold a label map with labels, got 'an empty map'"):
         measure("region_statistics", volume(), map_of(np.zeros((4, 50, 60), int)))
 
 

@@ -256,3 +256,10 @@ def test_values_just_within_arithmetic_are_measured(scale):
     found = measure("region_statistics", odd(noise), INSIDE, bin_width=scale, bin_edge=-scale / 2)
     assert found.sd.value == pytest.approx(scale * plain.sd.value)
     assert found.mean.uncertainty == pytest.approx(scale * plain.mean.uncertainty)
+
+
+def test_shares_say_which_range_each_number_stands_for():
+    noise = np.random.default_rng(1).normal(0, 10, (40, 40))
+    found = measure("region_statistics", odd(noise), INSIDE, ranges=((-10.0, 0.0), (0.0, math.inf)))
+    assert found.shares.x_name == "range, 1: -10 to 0 HU, 2: 0 to inf HU"
+    assert found.share.value == found.shares.y[0]

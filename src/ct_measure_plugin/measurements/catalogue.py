@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Any, cast
 
 from pydantic import ValidationError
 
-from ct_measure_plugin.errors import ArgumentError, UnknownNameError
+from ct_measure_plugin.errors import ArgumentError, RegionError, UnknownNameError
 from ct_measure_plugin.physics.regions import Labels, Region
 from ct_measure_plugin.physics.results import ResultGroup
 
@@ -141,7 +141,10 @@ def expanded(name: str, regions: Sequence[Region]) -> tuple[Region, ...]:
     found: list[Region] = []
     for region in regions:
         if isinstance(region, Labels) and "labels" not in kinds:
-            found += region.masks()
+            masks = region.masks()
+            if not masks:
+                raise RegionError("regions", "must hold a label map with labels", "an empty map")
+            found += masks
         else:
             found.append(region)
     return tuple(found)

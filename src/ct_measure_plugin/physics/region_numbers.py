@@ -224,6 +224,19 @@ def _shares(v: Floats, w: Floats, samples: _Samples, choices: Choices) -> dict[s
     return {
         "share": Quantity(100 * float(share[0]), "%", 100 * float(doubt[0])),
         "shares": Curve(
-            np.arange(1.0, len(share) + 1), 100 * share, 100 * doubt, "range", "", "share", "%"
+            np.arange(1.0, len(share) + 1),
+            100 * share,
+            100 * doubt,
+            _named(choices),
+            "",
+            "share",
+            "%",
         ),
     }
+
+
+def _named(choices: Choices) -> str:
+    """Say which range each number stands for."""
+    unit = f" {choices.unit}".rstrip()
+    words = [f"{i}: {low:g} to {high:g}{unit}" for i, (low, high) in enumerate(choices.ranges, 1)]
+    return f"range, {', '.join(words)}"

@@ -90,6 +90,15 @@ def test_values_without_a_number_are_left_out():
     assert isinstance(measure(NAME, replace(noise(), hu=hu), DISC), NotMeasured)
 
 
+def test_values_without_a_number_beside_the_region_change_nothing():
+    """In the corner of the rectangle around a disc."""
+    hu = noise().hu.astype(float)
+    plain = measure(NAME, replace(noise(), hu=hu), DISC)
+    hu[1, 16, 16] = np.nan  # 7.75 mm from the middle both ways, of a radius of 9
+    spoilt = measure(NAME, replace(noise(), hu=hu), DISC)
+    assert spoilt.mean == plain.mean
+
+
 def test_what_lies_outside_the_image_is_told():
     half = measure(NAME, noise(), Box((15.75, -0.25), (8.0, 8.0), z_mm=2.0))
     assert "50.0 % of the region lies outside" in caution(half, "outside-image").text

@@ -137,3 +137,9 @@ def test_one_slice_has_no_tilt():
     found = find_cylinder([disc((100, 101))], spacing_mm=SPACING, z_mm=[0.0])
     assert found.tilt is None
     assert isinstance(find_circle(disc((100, 101)), SPACING), Circle)
+
+
+def test_an_image_without_values_is_refused():
+    refused = find_circle(np.full((90, 90), np.nan), SPACING)
+    assert isinstance(refused, NotMeasured)
+    assert refused.reason == "the image holds no finite value"

@@ -107,6 +107,17 @@ def test_the_region_decides_where_to_look():
     assert "several-noise-levels" not in codes(left)
 
 
+def test_a_hole_without_values_counts_as_no_window():
+    stack = np.random.default_rng(9).normal(20, 10, (2, 300, 300))
+    stack[1, 100:110, 100:110] = np.nan
+    found = noise_map(stack, spacing_mm=SPACING)
+    side = 10 + 11 - 1  # windows of 11 pixels that meet the hole
+    whole = noise_map(stack[:1].repeat(2, axis=0), spacing_mm=SPACING)
+    assert whole.windows.value - found.windows.value == side**2
+    assert np.isfinite(found.sd_map.values).all()
+    assert abs(found.noise_sd.value - 10) < 4 * found.noise_sd.uncertainty
+
+
 def test_few_windows_are_cautioned_and_fewer_refused():
     image = np.random.default_rng(8).normal(20, 10, (50, 50))
     assert "few-windows" in codes(noise_map(image, spacing_mm=SPACING))

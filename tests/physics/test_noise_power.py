@@ -314,3 +314,10 @@ def test_the_answer_to_too_few_patches_is_a_reason():
     found = noise_power(np.random.default_rng(1).normal(size=(3, 16, 16)), spacing_mm=SPACING)
     assert isinstance(found, NotMeasured)
     assert "3 patches; at least 4" in found.reason
+
+
+def test_values_that_are_no_ct_numbers_are_refused():
+    wild = np.random.default_rng(1).normal(0, 1e31, (20, 16, 16))
+    found = noise_power(wild, spacing_mm=SPACING)
+    assert isinstance(found, NotMeasured)
+    assert "far beyond any CT number" in found.reason

@@ -95,8 +95,11 @@ def find_circle(
     ([30.2, 33.7], 20.5)
     """
     values = np.asarray(image, dtype=float)
-    if not np.isfinite(values).all():
-        values = np.where(np.isfinite(values), values, np.nanmin(values))
+    finite = np.isfinite(values)
+    if not finite.any():
+        return NotMeasured("the image holds no finite value", REMEDY)
+    if not finite.all():
+        values = np.where(finite, values, values[finite].min())
     start = _start(values, spacing_mm)
     if isinstance(start, NotMeasured):
         return start

@@ -94,8 +94,8 @@ def disc_refusal(
             faint
             if signal < SHAPE_SIGNAL
             else NotMeasured(
-                f"the radius, {circle.annulus.radius:.3g} mm, is less than {SMALL_RADIUS:g} sigma of"
-                " the blur",
+                f"the radius, {circle.annulus.radius:.3g} mm, is less than {SMALL_RADIUS:g} sigma"
+                " of the blur",
                 "measure a thicker rod",
             )
         )

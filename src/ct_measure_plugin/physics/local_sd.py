@@ -89,9 +89,16 @@ class LocalSd:
         self._values, self._mean, self._sd = (np.empty(shape, np.float32) for _ in range(3))
 
     def of(self, plane: NDArray[np.generic], level: float) -> tuple[Singles, Singles]:
-        """Return mean and SD as `local_mean_and_sd` does; the next call overwrites them."""
+        """Return mean and SD as `local_mean_and_sd` does; the next call overwrites them.
+
+        Windows that hold a value that is not finite have a mean and SD of NaN.
+        """
         x, mean, sd = self._values, self._mean, self._sd
         np.subtract(plane, np.float32(level), out=x, casting="unsafe")
+        hole = ~np.isfinite(x)
+        holed = bool(hole.any())
+        if holed:  # a running sum would carry NaN on to the end of the line
+            x[hole] = 0.0
         ndimage.uniform_filter(x, self.window_px, output=mean)
         np.multiply(x, x, out=x)
         ndimage.uniform_filter(x, self.window_px, output=sd)
@@ -102,4 +109,7 @@ class LocalSd:
         np.maximum(sd, np.float32(0.0), out=sd)
         np.sqrt(sd, out=sd)
         np.add(mean, np.float32(level), out=mean)
+        if holed:
+            touched = ndimage.maximum_filter(hole, self.window_px)
+            mean[touched] = sd[touched] = np.nan
         return mean, sd

@@ -144,8 +144,9 @@ def doubt_of_mean(values: Floats, weights: Floats, spacing_mm: tuple[float, ...]
     .. [1] Sykulski, Olhede, Guillaumin, Lilly, Early 2019, "The debiased Whittle likelihood",
        Biometrika 106, 251-266 (cited from memory).
     """
-    stack = (values if values.ndim == 3 else values[None]).astype(float)
     cover = weights if weights.ndim == 3 else weights[None]
+    # what does not count may be anything, NaN too
+    stack = np.where(cover > 0, values if values.ndim == 3 else values[None], 0.0).astype(float)
     total = float(cover.sum())
     inside = weights > 0
     white = independent_doubt(values[inside], weights[inside])

@@ -226,7 +226,7 @@ class _Tally:
             self.offset = self.block * (self.bins.count + 2)
         if windows > self.fullest:
             self.fullest, self.best = windows, k
-            self.map = sd * good
+            self.map = np.where(good, sd, np.float32(0.0))
         counted = self._counted(sd, self.bins)
         self.blocks += counted
         self.slices[k] = counted
@@ -241,7 +241,7 @@ class _Tally:
         some *= np.float32(1.0 / bins.width)
         some += np.float32(1.0)
         np.minimum(some, np.float32(bins.count + 1), out=some)
-        np.multiply(some, self.good[:: self.step], out=some)
+        np.copyto(some, np.float32(0.0), where=~self.good[:: self.step])  # a product keeps NaN
         np.copyto(self.place, some, casting="unsafe")
         self.place += self.offset[:: self.step]
         shape = (BLOCKS * BLOCKS, bins.count + 2)

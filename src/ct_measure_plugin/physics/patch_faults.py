@@ -20,6 +20,9 @@ if TYPE_CHECKING:
 
 __all__ = ["bad_values", "stationarity", "structure"]
 
+#: Greater values are no CT numbers in any unit, and their powers leave computer arithmetic.
+LARGEST = 1e12
+
 #: Share of values piled up at one end from which the noise's tail is cut off.
 PILED_SHARE = 1e-3
 
@@ -49,6 +52,12 @@ def bad_values(patches: NDArray[np.generic]) -> NotMeasured | None:
     if not (np.isfinite(low) and np.isfinite(high)):
         return NotMeasured(
             "a patch holds a value that is not finite", "lay the patches within the image"
+        )
+    if max(abs(float(low)), abs(float(high))) > LARGEST:
+        return NotMeasured(
+            f"a patch holds a value of {float(max(low, high, key=abs)):.2g}, far beyond any CT"
+            " number",
+            "look at the image's scale: CT numbers lie within some thousand HU",
         )
     first = patches.reshape(len(patches), -1)[:, :1]
     flat = patches.reshape(len(patches), -1)

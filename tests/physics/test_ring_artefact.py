@@ -292,3 +292,9 @@ def test_misuse_names_the_argument():
         ring_artefact(np.zeros((64, 64)), spacing_mm=SPACING, search_px=9)
     with pytest.raises(ArgumentError, match="'z_mm' must hold 1"):
         ring_artefact(np.zeros((64, 64)), spacing_mm=SPACING, z_mm=[1, 2])
+
+
+def test_an_image_without_noise_is_refused():
+    refused = measured(np.zeros((SIDE, SIDE)))
+    assert isinstance(refused, NotMeasured)
+    assert "one value only" in refused.reason

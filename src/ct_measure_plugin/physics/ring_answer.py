@@ -159,8 +159,6 @@ def assembled(
 
 
 def _reading(polar: Polar, ring: Ring, tried: int, unit: str) -> RingReading:
-    chance = min(max(ring.chance * tried, LEAST_CHANCE), 1.0)
-    doubt = 1.0 if chance == LEAST_CHANCE else 0.25  # drawn fields fix it to a quarter
     # cores lie on half pixels: a ring up to half a step off leaves that share of them empty
     off = abs(ring.amplitude) * 0.5 / ring.core / math.sqrt(3.0)
     return RingReading(
@@ -171,8 +169,24 @@ def _reading(polar: Polar, ring: Ring, tried: int, unit: str) -> RingReading:
         arc=Quantity(100.0 * ring.arc / SECTORS, "%", 10.0),
         first_azimuth=Quantity(360.0 * ring.start / SECTORS, "°", 360.0 / SECTORS),
         significance=Quantity(ring.score, "", 1.0),
-        chance=Quantity(100.0 * chance, "%", 100.0 * doubt * chance),
+        chance=_chance(min(ring.chance * tried, 1.0)),
     )
+
+
+def _chance(chance: float) -> Quantity:
+    """Return a chance in percent with its uncertainty.
+
+    Drawn fields fix the expected number of such rings, −ln(1 − chance), to a quarter. What they
+    cannot tell from 0 is the middle of a rectangular distribution (JCGM 100:2008, 4.3.7).
+
+    >>> str(_chance(1e-90)), str(_chance(0.02)), str(_chance(0.97))
+    ('0.00050 ± 0.00029 %', '2.00 ± 0.49 %', '97.0 ± 2.6 %')
+    """
+    if chance < LEAST_CHANCE:
+        half = 100.0 * LEAST_CHANCE / 2
+        return Quantity(half, "%", half / math.sqrt(3.0))
+    left = max(1.0 - chance, 0.01)
+    return Quantity(100.0 * chance, "%", 25.0 * left * -math.log(left))
 
 
 def _index(amplitude: Floats, doubt: Floats, repeats: float, unit: str) -> Quantity:

@@ -204,6 +204,11 @@ def fault(
         values = np.asarray(plane, dtype=float)[sight.inside]
         if not np.isfinite(values).all():
             return NotMeasured("the region holds values that are not finite", "choose other slices")
+        if values.size and np.ptp(values) == 0:
+            return NotMeasured(
+                "a slice holds one value only, no noise to tell rings from",
+                "choose slices that were not made up",
+            )
         rest = values - (np.bincount(label, values) / count)[label]
         outside = float(np.mean(np.abs(rest) > OUTLYING * _spread(np.abs(rest), k)))
         if outside > OUTLYING_SHARE:

@@ -206,3 +206,22 @@ def test_misuse_names_the_argument():
         detectability(deep, PERFECT, task=GAUSS)
     with pytest.raises(ArgumentError, match="'transfer' must hold 4"):
         detectability(nps(50.0), Curve(F[:2], F[:2]), task=GAUSS)
+    with pytest.raises(ArgumentError, match="'noise' must be the spectrum of single slices in HU"):
+        detectability(replace(nps(50.0), y_unit="counts² mm²"), PERFECT, task=GAUSS)
+    with pytest.raises(ArgumentError, match="'noise' must run over frequencies in mm⁻¹"):
+        detectability(replace(nps(50.0), x_unit="cm⁻¹"), PERFECT, task=GAUSS)
+    with pytest.raises(ArgumentError, match="'transfer' must hold finite"):
+        detectability(nps(50.0), replace(PERFECT, y=np.full(len(F), np.nan)), task=GAUSS)
+    with pytest.raises(ArgumentError, match="'transfer' must run over rising"):
+        detectability(nps(50.0), Curve(F[::-1], PERFECT.y), task=GAUSS)
+
+
+def test_a_ring_without_power_still_has_its_doubt():
+    empty = nps(np.where(np.arange(len(F)) % 20 == 10, 0.0, 50.0))
+    sure = detectability(replace(empty, y_uncertainty=0.01 * empty.y), PERFECT, task=GAUSS)
+    unsure = detectability(
+        replace(empty, y_uncertainty=np.where(empty.y > 0, 0.01 * empty.y, 20.0)),
+        PERFECT,
+        task=GAUSS,
+    )
+    assert unsure.npw.uncertainty > 1.5 * sure.npw.uncertainty

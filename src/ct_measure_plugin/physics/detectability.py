@@ -116,6 +116,7 @@ def detectability(
     (5.013, 5.013)
     """
     curve, first = _noise(noise, lowest_per_mm)
+    _check("noise", curve)
     usable = curve.x >= first - 1e-12
     x, s = curve.x[usable], curve.y[usable]
     if len(x) < FEWEST or not np.all(s >= 0) or not s.max() > 0:
@@ -123,6 +124,7 @@ def detectability(
             "noise", f"must hold {FEWEST} or more usable samples, none negative", len(x)
         )
     blur = Curve(np.array([0.0, x[-1]]), np.ones(2)) if transfer is None else transfer
+    _check("transfer", blur)
     if transfer is not None and len(transfer.x) < FEWEST:
         raise ArgumentError("transfer", f"must hold {FEWEST} or more samples", len(transfer.x))
     share = np.zeros(len(x))
@@ -140,13 +142,25 @@ def detectability(
     return _assembled(work, beyond, blurred=transfer is not None)
 
 
+def _check(name: str, curve: Curve) -> None:
+    """Raise ArgumentError unless a curve is finite and runs over rising frequencies in mm⁻¹."""
+    if curve.x_unit not in ("mm⁻¹", ""):
+        raise ArgumentError(name, "must run over frequencies in mm⁻¹", curve.x_unit)
+    if not (np.isfinite(curve.x).all() and np.isfinite(curve.y).all()):
+        raise ArgumentError(name, "must hold finite values only", "NaN or infinity")
+    if np.any(np.diff(curve.x) <= 0):
+        raise ArgumentError(name, "must run over rising frequencies", "falling or equal ones")
+
+
 def _noise(noise: NoisePower | SliceSpectrum | Curve, lowest: float | None) -> tuple[Curve, float]:
     if isinstance(noise, NoisePower) and noise.slice_radial is not None:
         return noise.slice_radial, noise.lowest_frequency.value
     if isinstance(noise, NoisePower | SliceSpectrum):
         return noise.radial, noise.lowest_frequency.value
-    if "mm³" in noise.y_unit:
-        raise ArgumentError("noise", "must be the spectrum of single slices", noise.y_unit)
+    if noise.y_unit != "HU² mm²":
+        raise ArgumentError(
+            "noise", "must be the spectrum of single slices in HU² mm²", noise.y_unit or "no unit"
+        )
     return noise, float(noise.x[0]) if lowest is None else lowest
 
 

@@ -52,7 +52,8 @@ class Integrals:
     Parameters
     ----------
     x, s, share : ndarray, shape (g,)
-        Frequency, NPS and its relative uncertainty, where it is usable.
+        Frequency, NPS and its relative uncertainty, where it is usable; where the NPS is 0 its
+        absolute one.
     transfer : Curve
         MTF.
     task : Task
@@ -142,7 +143,7 @@ class Integrals:
         slopes = np.zeros((len(self._s), 3))
         for k in np.flatnonzero(self._share > 0):
             moved = self._s.copy()
-            moved[k] *= 1.0 + self._share[k]
+            moved[k] += self._share[k] * (moved[k] if moved[k] > 0 else 1.0)
             slopes[k] = self.indices(self._mean_noise(moved)) - found
         variance = np.sum(slopes**2, axis=0)
         variance += 2 * RING_CORRELATION * np.sum(slopes[1:] * slopes[:-1], axis=0)

@@ -258,10 +258,10 @@ def test_which_region_must_be_clear(dock, drawn, viewer_model):
 def test_a_region_that_cannot_be_measured_says_why(dock, drawn):
     image, shapes = drawn
     before = limits(image)
-    shapes.add_paths([np.array([[2, 8, 8], [2, 20, 20], [2, 20, 8]])])
+    shapes.add_paths([np.array([[2, 8, 8], [2, 20, 20], [2, 20, 8]])], edge_width=0)
     shapes.selected_data = {1}
     dock.from_region.click()
-    assert "path has no area" in dock.status.text()
+    assert "greater than 0 to enclose pixels" in dock.status.text()
     assert limits(image) == before
 
 

@@ -39,17 +39,22 @@ __all__ = [
 #: sampling folds back to f = 0 (Kijewski and Judy 1987), tailed spectra (1 + (s f)²)^(-3/2) the
 #: blobs and long tails of noise that was denoised.
 LENGTHS = np.geomspace(1.5, 16.0, 20)
-LONGEST_RAMP = 6.1
+LONGEST_RAMP = 12.1
+
+#: Shares of the variance that are white in mixtures with smooth noise.
+MIXTURES = (0.1, 0.3)
 LIFT = 0.25
 
 #: Knots (s, logarithm of the prior weight) of each shape, and the prior of white noise. They are a
-#: choice, made so that the interval covers white, smoothed and ramp-filtered noise alike; the
-#: coverage test judges it on other fields.
+#: choice, made so that the interval covers white, smoothed and ramp-filtered noise alike. Some of
+#: the spectra that the coverage tests draw are members of this list, others lie between or beside.
 SHAPES = {
-    "level": ((1.5, -1.5), (2.5, -0.4), (4.4, 1.1), (6.3, 0.5), (9.4, 0.0), (12.6, 2.3), (16, 3.8)),
-    "ramp": ((1.5, 2.6), (2.5, 2.8), (4.0, 1.9), (6.0, -1.6)),
+    "level": ((1.5, -1.5), (2.5, -0.4), (4.4, 1.1), (6.3, 0.5), (9.4, 0.3), (12.6, 2.3), (16, 3.8)),
+    "ramp": ((1.5, 2.6), (2.5, 2.8), (4.0, 1.9), (6.0, -1.6), (12.0, -1.6)),
     "lifted": ((1.5, 0.0), (6.0, 0.0)),
     "tailed": ((3.0, 0.0), (16.0, 0.0)),
+    "mixed 0.1": ((4.0, -1.2), (16.0, -1.2)),
+    "mixed 0.3": ((4.0, -1.2), (16.0, -1.2)),
 }
 WHITE = 0.3
 
@@ -70,7 +75,13 @@ def _kinds() -> tuple[tuple[str, float], ...]:
     """Return shape and roll-off length of every spectrum but white noise."""
     every = [float(s) for s in LENGTHS]
     ramps = [s for s in every if s <= LONGEST_RAMP]
-    lengths = {"level": every, "ramp": ramps, "lifted": ramps[1::2], "tailed": every[6::3]}
+    lengths = {
+        "level": every,
+        "ramp": ramps,
+        "lifted": [s for s in ramps if s < 6.1][1::2],
+        "tailed": every[6::3],
+    }
+    lengths |= {f"mixed {share}": every[7::2] for share in MIXTURES}
     return tuple((shape, s) for shape, own in lengths.items() for s in own)
 
 
@@ -94,7 +105,7 @@ def _spectrum(shape: str, f: Floats) -> Floats:
     """Return a spectrum at frequencies in units of 1/s."""
     if shape == "tailed":
         found: Floats = (1 + f**2) ** -1.5
-    elif shape == "level":
+    elif shape == "level" or shape.startswith("mixed"):
         found = np.exp(-(f**2))
     else:
         found = (f + LIFT * (shape == "lifted")) * np.exp(-(f**3))
@@ -122,7 +133,12 @@ def pixel_correlation(stretch: tuple[float, float]) -> Floats:
     found[0][0, 0] = 1.0
     for shape, s in _kinds():
         lag = fft.irfft2(_spectrum(shape, s * f), (GRID, GRID))[:REACH, :REACH]
-        found.append(lag / lag[0, 0])
+        lag = lag / lag[0, 0]
+        if shape.startswith("mixed"):
+            share = float(shape.split()[1])
+            lag = (1 - share) * lag
+            lag[0, 0] += share
+        found.append(lag)
     return np.array(found)
 
 

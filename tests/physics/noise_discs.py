@@ -26,11 +26,22 @@ FILTERS = {
     "ramp with Hann": np.sqrt(FREQUENCY) * HANN,
 }
 
+_BLOB = np.exp(-((2 * np.pi * 2.0 * FREQUENCY) ** 2))
+_LEVEL = fft.irfft2(_BLOB, (SIDE, SIDE))[0, 0]
+#: Three tenths of the variance white, the rest filtered by a Gaussian of 2 px; and a ramp under a
+#: Hann window that ends at half the Nyquist frequency.
+BESIDE = {
+    "white and smooth": np.sqrt(0.3 + 0.7 * _BLOB / _LEVEL),
+    "soft ramp": np.sqrt(FREQUENCY)
+    * np.where(FREQUENCY < 0.25, 0.5 + 0.5 * np.cos(4 * np.pi * FREQUENCY), 0),
+}
+EVERY = FILTERS | BESIDE
+
 
 def fields(kind: str, count: int, seed: int) -> np.ndarray:
     """Return periodic fields of Gaussian noise, shape (count, SIDE, SIDE)."""
     white = np.random.default_rng(seed).standard_normal((count, SIDE, SIDE))
-    return fft.irfft2(fft.rfft2(white) * FILTERS[kind], (SIDE, SIDE))
+    return fft.irfft2(fft.rfft2(white) * EVERY[kind], (SIDE, SIDE))
 
 
 @dataclass(frozen=True)
@@ -49,7 +60,7 @@ class Discs:
     @cached_property
     def truth(self) -> float:
         """The standard deviation of the means, from the filter."""
-        rho = fft.irfft2(FILTERS[self.kind] ** 2, (SIDE, SIDE))
+        rho = fft.irfft2(EVERY[self.kind] ** 2, (SIDE, SIDE))
         pairs = fft.irfft2(np.abs(fft.rfft2(self.weights, (SIDE, SIDE))) ** 2, (SIDE, SIDE))
         return math.sqrt(float(np.sum(rho * pairs))) / float(self.weights.sum())
 

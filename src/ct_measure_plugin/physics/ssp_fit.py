@@ -100,11 +100,12 @@ class Agreeing:
     def told(self, values: Floats) -> tuple[Floats, Floats]:
         """Return the best's of values, shape (k, ...), and their standard uncertainty.
 
-        The largest difference from the best, over 1.96, among profiles that agree at 95 %: whose
-        chi-squared is higher by 1.96² at most. The covariance of the best carried through, if that
-        is larger, but by a fifth at most: trials miss the very ends, while to first order a box's
-        samples say nothing of its width. To this is added what the uncertainty of the resolution
-        in the slice does.
+        The largest difference from the best, over 1.96, among profiles that agree at 95 %, whose
+        chi-squared is higher by 1.96² at most; those a little beyond count too, by their
+        difference over the root of that excess, since trials do not lie on the border. The
+        covariance of the best carried through, if that is larger, but by a fifth at most: trials
+        miss the very ends, while to first order a box's samples say nothing of its width. To this
+        is added what the uncertainty of the resolution in the slice does.
         """
         best = values[0]
         scale = np.maximum(np.sqrt(np.maximum(self.excess, 0.0)), NINETY_FIVE)

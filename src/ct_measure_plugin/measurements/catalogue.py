@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING, Any, cast
 from pydantic import ValidationError
 
 from ct_measure_plugin.errors import ArgumentError, RegionError, UnknownNameError
+from ct_measure_plugin.measurements.one_thread import one_thread
 from ct_measure_plugin.physics.regions import Labels, Region
 from ct_measure_plugin.physics.results import ResultGroup
 
@@ -163,9 +164,10 @@ def _each(
     ask = measurement.glance if moving else measurement.measure
     group = expanded(name, (regions,) if isinstance(regions, Region) else regions)
     measurement.check_regions(group)
-    if measurement.regions.together or not group:
-        return (ask(volume, group, settings),)
-    return tuple(ask(volume, (region,), settings) for region in group)
+    with one_thread():
+        if measurement.regions.together or not group:
+            return (ask(volume, group, settings),)
+        return tuple(ask(volume, (region,), settings) for region in group)
 
 
 def measure(

@@ -11,6 +11,7 @@ from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Any
 
 from ct_measure_plugin.measurements import find
+from ct_measure_plugin.measurements.one_thread import one_thread
 from ct_measure_plugin.physics.coverage import slices_of
 from ct_measure_plugin.physics.regions import Disc, Ellipse, Region
 from ct_measure_plugin.physics.results import NotMeasured, Result
@@ -138,7 +139,8 @@ def _measured(
 ) -> tuple[Result | NotMeasured, tuple[Region, ...]]:
     measurement = find(question.name)
     measurement.check_regions(regions)
-    found = measurement.measure(question.volume, regions, question.settings)
+    with one_thread():
+        found = measurement.measure(question.volume, regions, question.settings)
     return found, measurement.marks(question.volume, regions, question.settings, found)
 
 

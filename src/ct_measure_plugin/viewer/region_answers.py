@@ -20,6 +20,7 @@ from psygnal import Signal
 
 from ct_measure_plugin.errors import CtMeasureError
 from ct_measure_plugin.measurements import find
+from ct_measure_plugin.measurements.one_thread import one_thread
 from ct_measure_plugin.measurements.two_images import difference_between
 from ct_measure_plugin.physics.coverage import slices_of
 from ct_measure_plugin.physics.region_difference import region_difference
@@ -236,7 +237,8 @@ class RegionAnswers:
         measure = self._measurement.glance if moving else self._measurement.measure
         try:
             self._measurement.check_regions((ask.region,))
-            return measure(ask.volume, (ask.region,), ask.settings)
+            with one_thread():
+                return measure(ask.volume, (ask.region,), ask.settings)
         except CtMeasureError as error:
             return NotMeasured(str(error), "draw it again", ask.volume.cautions)
 

@@ -95,10 +95,9 @@ class LocalSd:
         """
         x, mean, sd = self._values, self._mean, self._sd
         np.subtract(plane, np.float32(level), out=x, casting="unsafe")
-        hole = ~np.isfinite(x)
-        holed = bool(hole.any())
-        if holed:  # a running sum would carry NaN on to the end of the line
-            x[hole] = 0.0
+        holes = _holes(x) if plane.dtype.kind == "f" else None
+        if holes is not None:  # a running sum would carry NaN on to the end of the line
+            x[holes] = 0.0
         ndimage.uniform_filter(x, self.window_px, output=mean)
         np.multiply(x, x, out=x)
         ndimage.uniform_filter(x, self.window_px, output=sd)
@@ -109,7 +108,13 @@ class LocalSd:
         np.maximum(sd, np.float32(0.0), out=sd)
         np.sqrt(sd, out=sd)
         np.add(mean, np.float32(level), out=mean)
-        if holed:
-            touched = ndimage.maximum_filter(hole, self.window_px)
+        if holes is not None:
+            touched = ndimage.maximum_filter(holes, self.window_px)
             mean[touched] = sd[touched] = np.nan
         return mean, sd
+
+
+def _holes(x: Singles) -> NDArray[np.bool_] | None:
+    """Return where there is no finite value; None if there is one everywhere."""
+    finite = np.isfinite(x)
+    return None if finite.all() else ~finite

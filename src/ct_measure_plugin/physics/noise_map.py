@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import math
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
@@ -12,6 +11,7 @@ from scipy import ndimage
 from ct_measure_plugin.errors import ArgumentError
 from ct_measure_plugin.physics.local_sd import LocalSd, checked_window
 from ct_measure_plugin.physics.noise_mode import Bins, Mode, chi_factor, mode_of
+from ct_measure_plugin.physics.plane_stack import checked_inside, checked_planes, checked_positions
 from ct_measure_plugin.physics.results import Caution, Curve, NotMeasured, Picture, Quantity, Result
 
 if TYPE_CHECKING:
@@ -130,7 +130,8 @@ def noise_map(
     >>> bool(abs(found.noise_sd.value - 12) < 0.2), str(found.window)
     (True, '5.5 mm')
     """
-    planes, z = _checked(image, spacing_mm, z_mm)
+    planes = checked_planes(image, spacing_mm)
+    z = checked_positions(z_mm, len(planes))
     checked_window(window_px, planes.shape)
     low, high = (float(v) for v in range_hu)
     if not low < high:
@@ -150,30 +151,10 @@ def noise_map(
     return _assembled(tally, tally.bins, spacing_mm, z, unit)
 
 
-def _checked(
-    image: ArrayLike, spacing_mm: tuple[float, float], z_mm: Sequence[float] | None
-) -> tuple[NDArray[np.generic], Floats]:
-    # lazy arrays stay what they are, and are read slice by slice
-    data: NDArray[np.generic] = image if hasattr(image, "dtype") else np.asarray(image)  # type: ignore[assignment]
-    if data.ndim == 2:
-        data = data[None]
-    if data.ndim != 3 or data.dtype.kind not in "iuf":
-        raise ArgumentError("image", "must have shape (ny, nx) or (nz, ny, nx)", data.shape)
-    steps = tuple(float(s) for s in spacing_mm)
-    if len(steps) != 2 or not all(0 < s < math.inf for s in steps):
-        raise ArgumentError("spacing_mm", "must hold 2 lengths greater than 0", spacing_mm)
-    z = np.arange(len(data), dtype=float) if z_mm is None else np.asarray(z_mm, dtype=float)
-    if z.shape != (len(data),):
-        raise ArgumentError("z_mm", f"must hold {len(data)} positions", z.shape)
-    return data, z
-
-
 def _allowed(planes: NDArray[np.generic], inside: ArrayLike | None, window_px: int) -> Flags:
     """Return the pixels around which a window lies wholly inside."""
     shape = planes.shape[1:]
-    mask = np.ones(shape, dtype=bool) if inside is None else np.asarray(inside)
-    if mask.shape != shape or mask.dtype != bool:
-        raise ArgumentError("inside", f"must be of bool and have shape {shape}", mask.shape)
+    mask = np.ones(shape, dtype=bool) if inside is None else checked_inside(inside, shape)
     found: Flags = ndimage.minimum_filter(mask, window_px, mode="constant", cval=0)
     return found
 

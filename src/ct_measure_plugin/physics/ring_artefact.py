@@ -2,13 +2,13 @@
 
 from __future__ import annotations
 
-import math
 from typing import TYPE_CHECKING
 
 import numpy as np
 
 from ct_measure_plugin.errors import ArgumentError
 from ct_measure_plugin.physics.cylinder import find_cylinder
+from ct_measure_plugin.physics.plane_stack import checked_inside, checked_planes, checked_positions
 from ct_measure_plugin.physics.results import NotMeasured
 from ct_measure_plugin.physics.ring_answer import RingArtefact, RingReading, assembled
 from ct_measure_plugin.physics.ring_polar import Sight, fault, to_polar
@@ -86,7 +86,8 @@ def ring_artefact(
     >>> found.rings_found.value, abs(found.worst_radius.value - 40) < 2
     (1.0, True)
     """
-    planes, z = _checked(image, spacing_mm, z_mm)
+    planes = checked_planes(image, spacing_mm, least=32)
+    z = checked_positions(z_mm, len(planes))
     if not 0 <= search_px <= 3:
         raise ArgumentError("search_px", "must be from 0 to 3", search_px)
     shape = (planes.shape[1], planes.shape[2])
@@ -115,24 +116,6 @@ def ring_artefact(
     return assembled(planes, sight, polar, looked, z, tried, unit)
 
 
-def _checked(
-    image: ArrayLike, spacing_mm: tuple[float, float], z_mm: Sequence[float] | None
-) -> tuple[NDArray[np.generic], Floats]:
-    # lazy arrays stay what they are, and are read slice by slice
-    data: NDArray[np.generic] = image if hasattr(image, "dtype") else np.asarray(image)  # type: ignore[assignment]
-    if data.ndim == 2:
-        data = data[None]
-    if data.ndim != 3 or data.dtype.kind not in "iuf" or min(data.shape[1:]) < 32:
-        raise ArgumentError("image", "must have shape (ny, nx) or (nz, ny, nx)", data.shape)
-    steps = tuple(float(s) for s in spacing_mm)
-    if len(steps) != 2 or not all(0 < s < math.inf for s in steps):
-        raise ArgumentError("spacing_mm", "must hold 2 lengths greater than 0", spacing_mm)
-    z = np.arange(len(data), dtype=float) if z_mm is None else np.asarray(z_mm, dtype=float)
-    if z.shape != (len(data),):
-        raise ArgumentError("z_mm", f"must hold {len(data)} positions", z.shape)
-    return data, z
-
-
 def _mask(
     planes: NDArray[np.generic],
     spacing_mm: tuple[float, float],
@@ -141,10 +124,7 @@ def _mask(
 ) -> Flags | NotMeasured:
     shape = planes.shape[1:]
     if inside is not None:
-        mask = np.asarray(inside)
-        if mask.shape != shape or mask.dtype != bool:
-            raise ArgumentError("inside", f"must be of bool and have shape {shape}", mask.shape)
-        return mask
+        return checked_inside(inside, shape)
     found = find_cylinder(planes, spacing_mm=spacing_mm, z_mm=z)
     if isinstance(found, NotMeasured):
         return found

@@ -2,13 +2,13 @@
 
 from __future__ import annotations
 
-import math
 from typing import TYPE_CHECKING
 
 import numpy as np
 
 from ct_measure_plugin.errors import ArgumentError
 from ct_measure_plugin.physics.cylinder import Cylinder, find_cylinder, given_cylinder
+from ct_measure_plugin.physics.plane_stack import checked_planes
 from ct_measure_plugin.physics.results import NotMeasured
 from ct_measure_plugin.physics.uniformity_answer import Assembly, Uniformity
 from ct_measure_plugin.physics.uniformity_field import gather
@@ -18,7 +18,7 @@ from ct_measure_plugin.physics.uniformity_samples import Cells, Places, disc_mea
 if TYPE_CHECKING:
     from collections.abc import Sequence
 
-    from numpy.typing import ArrayLike, NDArray
+    from numpy.typing import ArrayLike
 
 __all__ = ["Uniformity", "uniformity"]
 
@@ -88,7 +88,7 @@ def uniformity(
     >>> round(found.cup_depth.value, 1)  # 20 · 0.9²
     16.2
     """
-    planes = _checked(image, spacing_mm)
+    planes = checked_planes(image, spacing_mm, least=16)
     z = np.arange(len(planes), dtype=float) if z_mm is None else np.asarray(z_mm, dtype=float)
     if z.shape != (len(planes),):
         raise ArgumentError("z_mm", f"must hold {len(planes)} positions", z.shape)
@@ -114,19 +114,6 @@ def uniformity(
         shown, found, spacing_mm, places.field, float(discs.centre.mean()), unit
     )
     return Assembly(found, places, cells, sums, discs, unit).result(picture)
-
-
-def _checked(image: ArrayLike, spacing_mm: tuple[float, float]) -> NDArray[np.generic]:
-    # lazy arrays stay what they are, and are read slice by slice
-    data: NDArray[np.generic] = image if hasattr(image, "dtype") else np.asarray(image)  # type: ignore[assignment]
-    if data.ndim == 2:
-        data = data[None]
-    if data.ndim != 3 or data.dtype.kind not in "iuf" or min(data.shape[1:]) < 16:
-        raise ArgumentError("image", "must have shape (ny, nx) or (nz, ny, nx)", data.shape)
-    steps = tuple(float(s) for s in spacing_mm)
-    if len(steps) != 2 or not all(0 < s < math.inf for s in steps):
-        raise ArgumentError("spacing_mm", "must hold 2 lengths greater than 0", spacing_mm)
-    return data
 
 
 def _within(

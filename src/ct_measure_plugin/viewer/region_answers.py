@@ -19,8 +19,7 @@ import numpy as np
 from psygnal import Signal
 
 from ct_measure_plugin.errors import CtMeasureError
-from ct_measure_plugin.measurements import find
-from ct_measure_plugin.measurements.one_thread import one_thread
+from ct_measure_plugin.measurements import find, glance_each, measure_each
 from ct_measure_plugin.measurements.two_images import difference_between
 from ct_measure_plugin.physics.coverage import slices_of
 from ct_measure_plugin.physics.region_difference import region_difference
@@ -119,7 +118,7 @@ class RegionAnswers:
     changed = Signal()
 
     def __init__(self, name: str) -> None:
-        self._measurement = find(name)
+        self._name = name
         self._known: dict[Ask, Result | NotMeasured] = {}
         self._glanced: dict[Ask, Result | NotMeasured] = {}
         self._last: frozenset[Ask] = frozenset()
@@ -129,7 +128,7 @@ class RegionAnswers:
         self._pace = self._glance_pace = 1.0
         self._round = 0
         self._fresh: deque[tuple[Ask, Result | NotMeasured]] = deque()  # a thread adds to it
-        self.following = Following(self._measurement.title)
+        self.following = Following(find(name).title)
         self.following.answered.connect(self._take)
 
     @property
@@ -234,11 +233,9 @@ class RegionAnswers:
     def _answer(self, ask: Ask, *, moving: bool = False) -> Result | NotMeasured:
         if ask.other is not None:
             return self._difference(ask.alone, ask.other, moving=moving)
-        measure = self._measurement.glance if moving else self._measurement.measure
+        ask_each = glance_each if moving else measure_each
         try:
-            self._measurement.check_regions((ask.region,))
-            with one_thread():
-                return measure(ask.volume, (ask.region,), ask.settings)
+            return ask_each(self._name, ask.volume, ask.region, settings=ask.settings)[0]
         except CtMeasureError as error:
             return NotMeasured(str(error), "draw it again", ask.volume.cautions)
 
